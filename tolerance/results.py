@@ -1,0 +1,196 @@
+"""What a run comes to: frozen results, each estimate with its interval beside it, and the tables a user sees.
+
+Impedances are in ohm, shares are fractions of 1, lengths in metres; every interval is two-sided at 95 %.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import pandas as pd
+
+from tolerance.arrays import FloatArray, IntArray
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping
+
+
+@dataclass(frozen=True, slots=True)
+class Interval:
+    """An estimate with the ends of its two-sided 95 % interval."""
+
+    value: float
+    low: float
+    high: float
+
+
+@dataclass(frozen=True, slots=True)
+class Driver:
+    """What one varying property does to one line's impedance: shares of its variance.
+
+    `first` is what the variable explains alone, `total` what would remain were all others known;
+    `shapley` stands only where inputs are correlated, and then ranks.
+    """
+
+    variable: str
+    first: Interval
+    total: Interval
+    shapley: Interval | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Spread:
+    """Histogram of a line's impedances: `counts` (bins,) coupons between `edges` (bins + 1,) [ohm]."""
+
+    edges: FloatArray
+    counts: IntArray
+
+
+@dataclass(frozen=True, slots=True)
+class Prediction:
+    """How a line's impedances were predicted, and how well: errors in ohm, from points the fit has not seen."""
+
+    solver_runs: int
+    degree: int
+    terms: int
+    leave_one_out_error: float
+    held_out_error: float
+    held_out_largest: float
+
+
+@dataclass(frozen=True, slots=True)
+class DirectCheck:
+    """The field solver run on `coupons` of the sample itself, against the prediction: differences in ohm."""
+
+    coupons: int
+    largest: float
+    root_mean_square: float
+    verdicts_that_differ: int
+    share_inside_solved: float
+    share_inside_predicted: float
+
+
+@dataclass(frozen=True, slots=True)
+class Region:
+    """A dielectric of a cross-section: outline (corners, 2) in metres, x sideways and y up."""
+
+    name: str
+    kind: str  # mask | prepreg | core
+    dk: float
+    outline: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Conductor:
+    """Copper of a cross-section: outline (corners, 2) in metres. role: trace | plane | ground."""
+
+    name: str
+    role: str
+    outline: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Drawing:
+    """A line's nominal cross-section to scale."""
+
+    regions: tuple[Region, ...]
+    conductors: tuple[Conductor, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class LineResult:
+    """One line: its target and limits, what its impedance does, and what drives it."""
+
+    name: str
+    kind: str  # in words: "mask-coated microstrip pair"
+    layer: str
+    mode: str  # single | differential | common
+    references: tuple[str, ...]
+    target: float
+    low_limit: float
+    high_limit: float
+    nominal: float
+    mean: Interval
+    deviation: Interval
+    below: Interval
+    above: Interval
+    inside: Interval  # the yield of the line
+    cp: Interval
+    cpk: Interval
+    impossible: int  # coupons whose section cannot exist; they fail
+    drivers: tuple[Driver, ...]  # ranked, largest first; only variables that reach the line
+    spread: Spread
+    prediction: Prediction
+    drawing: Drawing
+    direct: DirectCheck | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Record:
+    """What re-makes a run: the text, the seed, the versions, and what it cost."""
+
+    scenario_text: str
+    scenario_path: str
+    versions: Mapping[str, str]
+    replicates: int
+    solver_runs: int
+    settings: Mapping[str, str]
+    seconds: Mapping[str, float]  # per step; never in the JSON, which is the same for every run
+
+
+@dataclass(frozen=True, slots=True)
+class RunResult:
+    """All that `tolerance run` answers."""
+
+    title: str
+    seed: int
+    coupons: int
+    target_yield: float
+    inside: Interval  # share of coupons on which every line passes
+    impossible: int  # coupons on which some line cannot exist
+    lines: tuple[LineResult, ...]
+    record: Record
+
+    @property
+    def misses_target(self) -> bool:
+        """Whether some line's yield lies under the target yield."""
+        return any(line.inside.value < self.target_yield for line in self.lines)
+
+    @property
+    def line_table(self) -> pd.DataFrame:
+        """One row a line; the unit of a column stands in its name."""
+        return pd.DataFrame([_line_row(line) for line in self.lines])
+
+    @property
+    def driver_table(self) -> pd.DataFrame:
+        """One row for each line and driver, ranked within the line."""
+        return pd.DataFrame([_driver_row(line, rank, driver) for line in self.lines
+                             for rank, driver in enumerate(line.drivers, start=1)])
+
+
+def _interval_columns(name: str, interval: Interval) -> dict[str, float]:
+    return {name: interval.value, f"{name}_low": interval.low, f"{name}_high": interval.high}
+
+
+def _line_row(line: LineResult) -> dict[str, object]:
+    return {
+        "line": line.name, "kind": line.kind, "layer": line.layer, "mode": line.mode,
+        "references": ", ".join(line.references), "target_ohm": line.target,
+        "low_limit_ohm": line.low_limit, "high_limit_ohm": line.high_limit, "nominal_ohm": line.nominal,
+        **_interval_columns("mean_ohm", line.mean), **_interval_columns("std_ohm", line.deviation),
+        **_interval_columns("yield", line.inside), **_interval_columns("below", line.below),
+        **_interval_columns("above", line.above), **_interval_columns("cp", line.cp),
+        **_interval_columns("cpk", line.cpk), "impossible": line.impossible,
+        "solver_runs": line.prediction.solver_runs, "held_out_error_ohm": line.prediction.held_out_error,
+    }
+
+
+def _driver_row(line: LineResult, rank: int, driver: Driver) -> dict[str, object]:
+    row: dict[str, object] = {
+        "line": line.name, "rank": rank, "variable": driver.variable,
+        **_interval_columns("first", driver.first), **_interval_columns("total", driver.total),
+    }
+    if driver.shapley is not None:
+        row.update(_interval_columns("shapley", driver.shapley))
+    return row
