@@ -1,0 +1,37 @@
+"""What `tolerance check` answers: each line at its nominals. Light, so that `check` starts fast.
+
+Values are SI: impedances in ohm, delays in seconds per metre, lengths in metres.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class NominalLine:
+    """One line at the nominals of its layers.
+
+    For a pair `impedance` is the differential impedance, `common_mode` half the even-mode impedance, and
+    `effective_dk` and `delay` are the odd mode's; in common mode all three are the common mode's.
+    """
+
+    name: str
+    kind: str  # in words: "mask-coated microstrip pair"
+    layer: str
+    references: tuple[str, ...]
+    target: float
+    impedance: float
+    effective_dk: float
+    delay: float
+    common_mode: float | None = None
+    even_effective_dk: float | None = None
+    dimensions: tuple[tuple[str, float], ...] = ()  # ("width", 180e-6), ("gap", 150e-6): as they are to be shown
+
+
+@dataclass(frozen=True, slots=True)
+class CheckResult:
+    """All that `tolerance check` answers."""
+
+    title: str
+    lines: tuple[NominalLine, ...]

@@ -1,0 +1,111 @@
+"""Results as JSON text: the contract's keys to the letter, and the same text for the same run.
+
+Nothing that differs between two equal runs goes in: no times, no versions. No NaN or infinity is written: a
+capability that has no finite value (a line that nothing moves) stands as null.
+"""
+
+from __future__ import annotations
+
+import json
+import math
+from typing import TYPE_CHECKING
+
+from tolerance.nominal import CheckResult, NominalLine
+
+if TYPE_CHECKING:
+    from tolerance.results import DirectCheck, Driver, Interval, LineResult, RunResult
+
+PICOSECONDS_PER_MILLIMETRE = 1e9  # of a delay in seconds per metre
+
+
+def run_json(result: RunResult) -> str:
+    """The result of `tolerance run` as one JSON object. ValueError where a number is not finite."""
+    return _text(run_object(result))
+
+
+def check_json(result: CheckResult) -> str:
+    """The result of `tolerance check` as one JSON object. ValueError where a number is not finite."""
+    return _text({"title": result.title, "lines": [_nominal_line(line) for line in result.lines]})
+
+
+def run_object(result: RunResult) -> dict[str, object]:
+    """The same as plain Python values."""
+    return {
+        "title": result.title,
+        "seed": int(result.seed),
+        "coupons": int(result.coupons),
+        "target_yield": float(result.target_yield),
+        "yield": _interval(result.inside),
+        "impossible": int(result.impossible),
+        "solver_runs": int(result.record.solver_runs),
+        "lines": [_line(line) for line in result.lines],
+    }
+
+
+def _text(value: object) -> str:
+    return json.dumps(value, indent=2, allow_nan=False)
+
+
+def _interval(interval: Interval) -> dict[str, float]:
+    return {"value": float(interval.value), "low": float(interval.low), "high": float(interval.high)}
+
+
+def _flat(name: str, interval: Interval) -> dict[str, float]:
+    return {name: float(interval.value), f"{name}_low": float(interval.low), f"{name}_high": float(interval.high)}
+
+
+def _capability(name: str, interval: Interval) -> dict[str, float | None]:
+    return {key: value if math.isfinite(value) else None for key, value in _flat(name, interval).items()}
+
+
+def _line(line: LineResult) -> dict[str, object]:
+    values: dict[str, object] = {
+        "name": line.name, "kind": line.kind, "layer": line.layer, "mode": line.mode,
+        "references": list(line.references),
+        "target_ohm": float(line.target),
+        "low_limit_ohm": float(line.low_limit), "high_limit_ohm": float(line.high_limit),
+        "nominal_ohm": float(line.nominal),
+        **_flat("mean_ohm", line.mean), **_flat("std_ohm", line.deviation),
+        **_flat("below", line.below), **_flat("above", line.above),
+        **_capability("cp", line.cp), **_capability("cpk", line.cpk),
+        "yield": _interval(line.inside),
+        "impossible": int(line.impossible),
+        "solver_runs": int(line.prediction.solver_runs),
+        "held_out_error_ohm": float(line.prediction.held_out_error),
+        "drivers": [_driver(driver) for driver in line.drivers],
+    }
+    if line.direct is not None:
+        values["direct"] = _direct(line.direct)
+    return values
+
+
+def _driver(driver: Driver) -> dict[str, object]:
+    values: dict[str, object] = {
+        "variable": driver.variable, **_flat("first", driver.first), **_flat("total", driver.total),
+    }
+    if driver.shapley is not None:
+        values.update(_flat("shapley", driver.shapley))
+    return values
+
+
+def _direct(direct: DirectCheck) -> dict[str, object]:
+    return {
+        "coupons": int(direct.coupons),
+        "largest_ohm": float(direct.largest),
+        "root_mean_square_ohm": float(direct.root_mean_square),
+        "verdicts_that_differ": int(direct.verdicts_that_differ),
+        "yield_solved": float(direct.share_inside_solved),
+        "yield_predicted": float(direct.share_inside_predicted),
+    }
+
+
+def _nominal_line(line: NominalLine) -> dict[str, object]:
+    return {
+        "name": line.name, "kind": line.kind, "layer": line.layer, "references": list(line.references),
+        "impedance_ohm": float(line.impedance),
+        "target_ohm": float(line.target),
+        "effective_dk": float(line.effective_dk),
+        "delay_ps_per_mm": float(line.delay) * PICOSECONDS_PER_MILLIMETRE,
+        "common_mode_ohm": None if line.common_mode is None else float(line.common_mode),
+        "even_effective_dk": None if line.even_effective_dk is None else float(line.even_effective_dk),
+    }
