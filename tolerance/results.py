@@ -11,32 +11,11 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from tolerance.arrays import FloatArray, IntArray
+from tolerance.statistics.estimates import Driver as Driver
+from tolerance.statistics.estimates import Interval as Interval
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
-
-
-@dataclass(frozen=True, slots=True)
-class Interval:
-    """An estimate with the ends of its two-sided 95 % interval."""
-
-    value: float
-    low: float
-    high: float
-
-
-@dataclass(frozen=True, slots=True)
-class Driver:
-    """What one varying property does to one line's impedance: shares of its variance.
-
-    `first` is what the variable explains alone, `total` what would remain were all others known;
-    `shapley` stands only where inputs are correlated, and then ranks.
-    """
-
-    variable: str
-    first: Interval
-    total: Interval
-    shapley: Interval | None = None
 
 
 @dataclass(frozen=True, slots=True)

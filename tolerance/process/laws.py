@@ -1,0 +1,126 @@
+"""The laws of varying properties: from a standard normal draw (a germ) to the value of the property.
+
+Every shape is an inverse distribution applied to Phi(germ), with each tail computed from its own side, so that
+draws five deviations out are as exact as those in the middle. All of them rise with the germ.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Literal
+
+import numpy as np
+from scipy.special import erf, ndtr, ndtri
+
+from tolerance.arrays import FloatArray
+from tolerance.errors import InputError
+
+if TYPE_CHECKING:
+    from tolerance.scenario.tables import Amount
+
+Shape = Literal["normal", "truncated_normal", "uniform", "triangular", "lognormal"]
+
+DEFAULT_SIGMAS = 3.0  # deviations that a half-width covers unless the scenario says otherwise
+FARTHEST_CUT = 30.0  # deviations between the uncut mean and the nearer end beyond which the cut normal is refused
+
+
+@dataclass(frozen=True, slots=True)
+class Law:
+    """How one property varies about its nominal; SI. What a field means: the scenario format, section Shapes.
+
+    `tolerance` (half-width) and `shift` are amounts, absolute or a share of a reference; `low` and `high`, where
+    given, stand instead of `tolerance`. Of `sigmas` and `cpk` at most one is given.
+    """
+
+    shape: Shape
+    nominal: float
+    tolerance: Amount | None = None
+    shift: Amount | None = None
+    sigmas: float | None = None
+    cpk: float | None = None
+    low: float | None = None
+    high: float | None = None
+
+    def centre(self, *, reference: float) -> float:
+        """Nominal + shift [SI]; percentages are of `reference`."""
+        return self.nominal + _size(self.shift, reference)
+
+    def half_width(self, *, reference: float) -> float:
+        """The tolerance, or half the distance of the ends where those are given [SI]."""
+        if self.low is not None and self.high is not None:
+            return 0.5 * (self.high - self.low)
+        return _size(self.tolerance, reference)
+
+    def ends(self, *, reference: float) -> tuple[float, float]:
+        """The ends of a bounded shape [SI]."""
+        if self.low is not None and self.high is not None:
+            return self.low, self.high
+        centre, half = self.centre(reference=reference), self.half_width(reference=reference)
+        return centre - half, centre + half
+
+    def deviation(self, *, reference: float) -> float:
+        """Standard deviation of the (uncut) normal [SI], or of the logarithm for a lognormal [-].
+
+        Raises InputError where cpk leaves no room, or where a lognormal's nominal or median is not positive.
+        """
+        half = self.half_width(reference=reference)
+        sigmas = DEFAULT_SIGMAS if self.sigmas is None else self.sigmas
+        if self.shape == "lognormal":
+            if self.nominal <= 0.0 or self.centre(reference=reference) <= 0.0:
+                raise InputError("a lognormal law needs a nominal, and a nominal + shift, above 0")
+            return float(np.log1p(half / self.nominal)) / sigmas
+        if self.cpk is None:
+            return half / sigmas
+        room = half - abs(_size(self.shift, reference))
+        if room <= 0.0:
+            raise InputError("a law with cpk needs a shift smaller than its tolerance")
+        return room / (3.0 * self.cpk)
+
+
+def quantile(law: Law, germ: FloatArray, *, reference: float) -> FloatArray:
+    """Values [SI] of the property at standard normal draws `germ` (any shape); result of the same shape.
+
+    reference : what a percentage is of [SI]: the nominal, or for an etch the line's own width.
+    Rises with the germ; -inf and inf give the ends of a bounded shape. Raises InputError as `Law.deviation` does.
+    """
+    centre = law.centre(reference=reference)
+    if law.shape == "normal":
+        return centre + law.deviation(reference=reference) * germ
+    if law.shape == "lognormal":
+        return centre * np.exp(law.deviation(reference=reference) * germ)
+    low, high = law.ends(reference=reference)
+    if low == high:
+        return np.full_like(germ, low)
+    if law.shape == "uniform":
+        return 0.5 * (low + high) + 0.5 * (high - low) * erf(germ * np.sqrt(0.5))
+    if law.shape == "triangular":
+        if not low <= centre <= high:
+            raise InputError("a triangular law needs its peak, nominal + shift, between its ends")
+        return low + (high - low) * _triangular(germ, peak=(centre - low) / (high - low))
+    deviation = law.deviation(reference=reference)
+    cut = _cut_normal(germ, low=(low - centre) / deviation, high=(high - centre) / deviation)
+    return np.clip(centre + deviation * cut, low, high)  # only rounding can lie outside
+
+
+def _triangular(germ: FloatArray, *, peak: float) -> FloatArray:
+    """Triangular quantile on [0, 1] with its peak at `peak`, an end included."""
+    below, above = ndtr(germ), ndtr(-germ)
+    return np.where(below <= peak, np.sqrt(below * peak), 1.0 - np.sqrt(above * (1.0 - peak)))
+
+
+def _cut_normal(germ: FloatArray, *, low: float, high: float) -> FloatArray:
+    """Quantile of a standard normal cut at `low` and `high`; both tail masses are sums of positive terms."""
+    if low > FARTHEST_CUT or high < -FARTHEST_CUT:
+        raise InputError("a truncated normal law needs its mean, nominal + shift, nearer to its ends")
+    mass = ndtr(-low) - ndtr(-high) if low > 0.0 else ndtr(high) - ndtr(low)
+    below = ndtr(low) + ndtr(germ) * mass
+    above = ndtr(-high) + ndtr(-germ) * mass
+    lower_side = below <= above
+    value = ndtri(np.where(lower_side, below, above))
+    return np.where(lower_side, value, -value)
+
+
+def _size(amount: Amount | None, reference: float) -> float:
+    if amount is None:
+        return 0.0
+    return amount.value * reference if amount.relative else amount.value
