@@ -1,0 +1,185 @@
+"""From edges and kernel to the charge on the traces: one dense system a section, batched.
+
+Unknowns are the charges at the nodes. Copper nodes ask for potential 1; dielectric nodes ask that the normal
+displacement passes through. In the units used here the potential is -M q / (2 pi body_dk), vacuum permittivity 1.
+Collocation with product integration on each edge itself; see rules and kernels for the pieces.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from tolerance.arrays import FloatArray
+from tolerance.solver.edges import Edge, Nodes, place_nodes
+from tolerance.solver.kernels import FarImages, SpectralRest
+
+
+@dataclass(frozen=True, slots=True)
+class NearImage:
+    """Charges mirrored at height `level` (sections,) [m]; None is the charge itself.
+
+    touching : names of copper edges that lie on the level, so that their image is themselves.
+    """
+
+    level: FloatArray | None
+    touching: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Medium:
+    """What the dielectrics make of the images: a factor (sections,) for each near image, and the rest."""
+
+    factors: tuple[FloatArray, ...]
+    far: FarImages | None = None
+    rest: SpectralRest | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class System:
+    """Near-image matrices of one batch, each (sections, unknowns, unknowns), shared by every medium and mode."""
+
+    nodes: tuple[Nodes, ...]
+    own: tuple[FloatArray, ...]
+    mirrored: tuple[FloatArray, ...]
+    across: FloatArray
+    height: FloatArray
+    normals: tuple[FloatArray, FloatArray]
+    copper: int  # how many of the unknowns lie on copper; they come first
+
+
+def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]]) -> System:
+    """Place the nodes (copper edges first) and set up the matrices of the near images."""
+    nodes = tuple(place_nodes(edge, unknowns=unknowns, fine=fine)
+                  for edge, (unknowns, fine) in zip(edges, counts, strict=True))
+    across, height = (np.concatenate(parts, axis=1) for parts in zip(*((n.across, n.height) for n in nodes), strict=True))
+    copper = sum(n.across.shape[1] for n in nodes if n.edge.role == "copper")
+    normals = tuple(np.concatenate([np.broadcast_to(n.normal[axis][:, None], n.across.shape) for n in nodes], axis=1)
+                    for axis in (0, 1))
+    own, mirrored = [], []
+    for image in images:
+        pair = _image_matrices(nodes, across, height, image, normals, copper)
+        own.append(pair[0])
+        mirrored.append(pair[1])
+    return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), copper)
+
+
+def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, air: bool = False) -> FloatArray:
+    """True charge on the right-hand trace (or right half) at potential 1, even or odd: (sections,), capacitance / eps0.
+
+    air : copper alone, every Dk 1.
+    """
+    size = system.copper if air else system.across.shape[1]
+    matrix = np.zeros((system.across.shape[0], size, size))
+    for factor, own, mirrored in zip(medium.factors, system.own, system.mirrored, strict=True):
+        if np.any(factor):
+            matrix += factor[:, None, None] * (own[:, :size, :size] + sign * mirrored[:, :size, :size])
+    if medium.far is not None:
+        _add_far_images(matrix, system, medium.far, sign, size)
+    if medium.rest is not None:
+        _add_rest(matrix, system, medium.rest, sign, size)
+    if not air:
+        _turn_into_interface_conditions(matrix, system)
+    wanted = np.zeros((matrix.shape[0], size, 1))
+    wanted[:, : system.copper, 0] = (-2.0 * np.pi * body_dk)[:, None]
+    charges = np.linalg.solve(matrix, wanted)[:, : system.copper, 0]
+    return np.asarray((charges * _true_shares(system, air)).sum(axis=1))
+
+
+def _image_matrices(
+    nodes: Sequence[Nodes], across: FloatArray, height: FloatArray, image: NearImage, normals: Sequence[FloatArray],
+    copper: int,
+) -> tuple[FloatArray, FloatArray]:
+    """Matrices of the image and of its mirror image in x = 0."""
+    own_parts, mirrored_parts = [], []
+    start = 0
+    for source in nodes:
+        stop = start + source.across.shape[1]
+        level_height = source.fine_height if image.level is None else 2.0 * image.level[:, None] - source.fine_height
+        rise = height[:, :, None] - level_height[:, None, :]
+        parts = []
+        for fine_across in (source.fine_across, -source.fine_across):
+            kernel = _kernel(across[:, :, None] - fine_across[:, None, :], rise, normals, copper)
+            parts.append(kernel @ source.refine)
+        itself = image.level is None or source.edge.name in image.touching
+        if itself and source.alone is not None:
+            parts[0][:, start:stop] = source.alone
+            if source.mirrored is not None:
+                parts[1][:, start:stop] = source.mirrored
+        elif itself:
+            parts[0][:, start:stop] = 0.0  # a straight edge has no normal field on itself
+        own_parts.append(parts[0])
+        mirrored_parts.append(parts[1])
+        start = stop
+    return np.concatenate(own_parts, axis=2), np.concatenate(mirrored_parts, axis=2)
+
+
+def _kernel(run: FloatArray, rise: FloatArray, normals: Sequence[FloatArray], copper: int) -> FloatArray:
+    """ln r in the rows of copper, its derivative along the normal in the rows of dielectric."""
+    square = run * run
+    square += rise * rise
+    np.log(square[:, :copper], out=square[:, :copper])
+    square[:, :copper] *= 0.5
+    if copper < run.shape[1]:
+        upper = slice(copper, None)
+        slope = normals[0][:, upper, None] * run[:, upper] + normals[1][:, upper, None] * rise[:, upper]
+        square[:, upper] = slope / square[:, upper]
+    return square
+
+
+def _add_far_images(matrix: FloatArray, system: System, far: FarImages, sign: int, size: int) -> None:
+    across, height = system.across[:, :size], system.height[:, :size]
+    normals = tuple(values[:, :size] for values in system.normals)
+    start = 0
+    for source in system.nodes:
+        stop = start + source.across.shape[1]
+        if start >= size:
+            break
+        # a tail's nodes lie further apart than the images lie below it: it needs its finer places
+        source_across, source_height = ((source.fine_across, source.fine_height) if source.edge.tail
+                                        else (source.across, source.height))
+        total = height[:, :, None] + source_height[:, None, :]
+        block = np.zeros_like(total)
+        for way, side in ((1.0, 1.0), (float(sign), -1.0)):
+            run = across[:, :, None] - side * source_across[:, None, :]
+            for number in range(far.shifts.shape[1]):
+                kernel = _kernel(run, total + far.shifts[:, number, None, None], normals, system.copper)
+                kernel *= (way * far.factors[:, number])[:, None, None]
+                block += kernel
+        matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
+        start = stop
+
+
+def _add_rest(matrix: FloatArray, system: System, rest: SpectralRest, sign: int, size: int) -> None:
+    across, height = system.across[:, :size], system.height[:, :size]
+    matrix += rest.matrix(across, height, sign)
+    if np.any(rest.compensation):
+        square = (rest.distance**2)[:, None, None]
+        own = np.log((across[:, :, None] - across[:, None, :]) ** 2 + square)
+        mirrored = np.log((across[:, :, None] + across[:, None, :]) ** 2 + square)
+        matrix -= 0.5 * rest.compensation[:, None, None] * (own + sign * mirrored)
+
+
+def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:
+    """Rows of dielectric: (left - right) / (2 pi) * field + (left + right) / 2 * density = 0."""
+    start = 0
+    for nodes in system.nodes:
+        stop = start + nodes.across.shape[1]
+        edge = nodes.edge
+        if edge.left_dk is not None and edge.right_dk is not None:
+            matrix[:, start:stop] *= ((edge.left_dk - edge.right_dk) / (2.0 * np.pi))[:, None, None]
+            diagonal = np.arange(start, stop)
+            matrix[:, diagonal, diagonal] += (0.5 * (edge.left_dk + edge.right_dk))[:, None] / nodes.jacobian
+        start = stop
+
+
+def _true_shares(system: System, air: bool) -> FloatArray:
+    parts = []
+    for nodes in system.nodes:
+        if nodes.edge.role == "copper":
+            share = nodes.edge.true_share
+            parts.append(np.ones_like(nodes.across) if share is None or air
+                         else np.broadcast_to(share[:, None], nodes.across.shape))
+    return np.concatenate(parts, axis=1)

@@ -1,0 +1,192 @@
+"""The edges that carry unknown charge: faces of copper, and faces of dielectric that are not in the kernel.
+
+Sections are mirror-symmetric, so only the half x >= 0 is discretised. Heights are counted from the lower face of
+the body (see kernels). Every array of an edge has shape (sections,).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+
+from tolerance.arrays import FloatArray
+from tolerance.sections.section import Ply, Section
+from tolerance.solver.rules import Rule, graded_rule, refinement, self_potential, tail_rule
+
+Role = Literal["copper", "dielectric"]
+#: Sharper grading on copper, where the charge is singular, than on dielectric faces, where it is milder.
+GRADING: dict[Role, int] = {"copper": 3, "dielectric": 2}
+
+
+@dataclass(frozen=True, slots=True)
+class Edge:
+    """A straight edge from `start` to `stop`, each (x, y) of arrays (sections,) [m].
+
+    folded : it crosses x = 0 symmetrically and only its right half carries unknowns (copper of single lines).
+    tail   : it runs sideways from `start` to infinity, and `stop` holds `start` moved by the scale of its nodes.
+    left_dk, right_dk : Dk on either side of a dielectric edge, seen along its direction.
+    true_share : true charge over the charge in the kernel's body, for a copper edge that faces another dielectric.
+    """
+
+    name: str
+    role: Role
+    start: tuple[FloatArray, FloatArray]
+    stop: tuple[FloatArray, FloatArray]
+    folded: bool = False
+    tail: bool = False
+    left_dk: FloatArray | None = None
+    right_dk: FloatArray | None = None
+    true_share: FloatArray | None = None
+
+    @property
+    def length(self) -> FloatArray:
+        """Length [m]; of a tail, the scale of its nodes."""
+        return np.asarray(np.hypot(self.stop[0] - self.start[0], self.stop[1] - self.start[1]))
+
+
+@dataclass(frozen=True, slots=True)
+class Nodes:
+    """An edge with its unknowns: places (sections, unknowns), and the finer places of its quadrature.
+
+    refine : (fine, unknowns) charges at fine places from the unknown charges.
+    alone  : (sections, unknowns, unknowns) logarithmic potential of the edge on itself; None on dielectric.
+    mirrored : the same of the mirror image of a folded edge, else None.
+    jacobian : (sections, unknowns) quadrature weight in metres: density is charge over it.
+    normal : (x, y) of the unit normal to the left, arrays (sections,).
+    """
+
+    edge: Edge
+    across: FloatArray
+    height: FloatArray
+    fine_across: FloatArray
+    fine_height: FloatArray
+    refine: FloatArray
+    alone: FloatArray | None
+    mirrored: FloatArray | None
+    jacobian: FloatArray
+    normal: tuple[FloatArray, FloatArray]
+
+
+def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
+    """Nodes of `edge`; a folded edge gets half of `unknowns` and `fine`, which must be even."""
+    power = GRADING[edge.role]
+    rule = tail_rule(unknowns) if edge.tail else graded_rule(unknowns, power)
+    fine_rule = tail_rule(fine) if edge.tail else graded_rule(fine, power)
+    keep, keep_fine = (slice(unknowns // 2, None), slice(fine // 2, None)) if edge.folded else (slice(None),) * 2
+    across, height = _places(edge, rule, keep)
+    fine_across, fine_height = _places(edge, fine_rule, keep_fine)
+    refine = refinement(unknowns, fine)
+    alone: FloatArray | None = None
+    mirrored: FloatArray | None = None
+    if edge.role == "copper":
+        full = self_potential(unknowns, power) + np.log(0.5 * edge.length)[:, None, None]
+        alone = full[:, keep, keep]
+        mirrored = full[:, keep, : unknowns // 2][:, :, ::-1] if edge.folded else None
+    if edge.folded:
+        refine = refine[keep_fine, keep] + refine[keep_fine, : unknowns // 2][:, ::-1]
+    stretch = edge.length if edge.tail else 0.5 * edge.length
+    direction = ((edge.stop[0] - edge.start[0]) / edge.length, (edge.stop[1] - edge.start[1]) / edge.length)
+    return Nodes(
+        edge=edge, across=across, height=height, fine_across=fine_across, fine_height=fine_height, refine=refine,
+        alone=alone, mirrored=mirrored, jacobian=stretch[:, None] * (rule.weights * rule.slope)[keep],
+        normal=(-direction[1], direction[0]),
+    )
+
+
+def _places(edge: Edge, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray]:
+    position = rule.position[keep]
+    if edge.tail:
+        across = edge.start[0][:, None] + edge.length[:, None] * position
+        return across, np.broadcast_to(edge.start[1][:, None], across.shape)
+    middle = [0.5 * (edge.start[axis] + edge.stop[axis]) for axis in (0, 1)]
+    half = [0.5 * (edge.stop[axis] - edge.start[axis]) for axis in (0, 1)]
+    across, height = (middle[axis][:, None] + half[axis][:, None] * position for axis in (0, 1))
+    return across, height
+
+
+def trace_edges(section: Section, *, foot_height: FloatArray, crest_height: FloatArray) -> list[Edge]:
+    """Faces of the right-hand trace (or of the right half of a single one), its foot and crest at these heights."""
+    setback = 0.5 * (section.foot_width - section.crest_width)
+    if section.gap is None:
+        foot_end, crest_end = 0.5 * section.foot_width, 0.5 * section.crest_width
+        return [
+            Edge("foot", "copper", (-foot_end, foot_height), (foot_end, foot_height), folded=True),
+            Edge("outer side", "copper", (foot_end, foot_height), (crest_end, crest_height)),
+            Edge("crest", "copper", (-crest_end, crest_height), (crest_end, crest_height), folded=True),
+        ]
+    inner, outer = 0.5 * section.gap, 0.5 * section.gap + section.foot_width
+    return [
+        Edge("foot", "copper", (inner, foot_height), (outer, foot_height)),
+        Edge("outer side", "copper", (outer, foot_height), (outer - setback, crest_height)),
+        Edge("crest", "copper", (inner + setback, crest_height), (outer - setback, crest_height)),
+        Edge("inner side", "copper", (inner, foot_height), (inner + setback, crest_height)),
+    ]
+
+
+def outer_foot_edge(section: Section) -> FloatArray:
+    """x of the outer foot edge of the right-hand trace [m]."""
+    if section.gap is None:
+        return 0.5 * section.foot_width
+    return 0.5 * section.gap + section.foot_width
+
+
+def flat_cover_edges(section: Section, *, plies: tuple[Ply, ...], base: FloatArray, split: FloatArray) -> list[Edge]:
+    """Upper faces of flat plies stacked from height `base` upwards, the last one facing air.
+
+    Each is cut at x = `split` into a middle piece and a tail.
+    """
+    edges: list[Edge] = []
+    height = base
+    uppers = [ply.dk for ply in plies[1:]] + [np.ones(section.count)]
+    for number, (ply, upper) in enumerate(zip(plies, uppers, strict=True)):
+        height = height + ply.thickness
+        zero = np.zeros(section.count)
+        name = f"cover {number}"
+        edges.append(Edge(f"{name} middle", "dielectric", (zero, height), (split, height),
+                          left_dk=upper, right_dk=ply.dk))
+        edges.append(_tail(f"{name} tail", split, height, 3.0 * height, left=upper, right=ply.dk))
+    return edges
+
+
+def mask_edges(section: Section, *, merged: bool) -> list[Edge]:
+    """Face of a mask that follows the trace: mesa top, its walls, and the flat beyond (height from the foot).
+
+    merged : the mesas of a pair overlap into one. Single lines have one mesa in any case.
+    """
+    mask = section.mask
+    if mask is None:
+        return []
+    air, flat = np.ones(section.count), mask.on_laminate
+    top = section.thickness + mask.over_copper
+    outer = outer_foot_edge(section) + flat
+    zero = np.zeros(section.count)
+    inner = zero if section.gap is None or merged else 0.5 * section.gap - flat
+    edges = [
+        Edge("mesa top", "dielectric", (inner, top), (outer, top), left_dk=air, right_dk=mask.dk),
+        Edge("mesa outer wall", "dielectric", (outer, top), (outer, flat), left_dk=air, right_dk=mask.dk),
+        _tail("flat tail", outer, flat, 3.0 * flat, left=air, right=mask.dk),
+    ]
+    if section.gap is not None and not merged:
+        edges.append(Edge("mesa inner wall", "dielectric", (inner, flat), (inner, top), left_dk=air, right_dk=mask.dk))
+        edges.append(Edge("flat between", "dielectric", (zero, flat), (inner, flat), left_dk=air, right_dk=mask.dk))
+    return edges
+
+
+def foot_level_edges(section: Section, *, height: FloatArray, below_dk: FloatArray, above_dk: FloatArray) -> list[Edge]:
+    """The face between two dielectrics at the level of a foot that looks away from the plane."""
+    outer = outer_foot_edge(section)
+    scale = height + section.foot_width
+    edges = [_tail("foot level tail", outer, height, scale, left=above_dk, right=below_dk)]
+    if section.gap is not None:
+        zero = np.zeros(section.count)
+        edges.append(Edge("foot level between", "dielectric", (zero, height), (0.5 * section.gap, height),
+                          left_dk=above_dk, right_dk=below_dk))
+    return edges
+
+
+def _tail(
+    name: str, start: FloatArray, height: FloatArray, scale: FloatArray, *, left: FloatArray, right: FloatArray,
+) -> Edge:
+    return Edge(name, "dielectric", (start, height), (start + scale, height), tail=True, left_dk=left, right_dk=right)

@@ -1,0 +1,164 @@
+"""Potential of a line charge between flat dielectric layers and planes.
+
+The charge and the point lie in one layer, the body: the dielectric round the trace, of Dk `body_dk`. Heights y are
+counted from the lower face of that layer. Transformed along x with wavenumber k, the potential of a unit charge is
+1 / (2 k Dk) times a sum of exponentials in k y; each exponential with a constant factor is an image charge.
+(Standard theory of layered media; images in a slab: P. Silvester, Proc. IEE 115 (1968), pages 43-48.)
+
+Written as -1 / (2 pi Dk) * M, the kernels below give M as three kinds of terms:
+  near images   : the charge mirrored at a face of the body, that may touch the charge itself;
+  far images    : charges `shift` below the mirror image at y = 0, well away from every charge;
+  spectral rest : a smooth remainder, as a quadrature over k (between two planes only).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import lru_cache
+
+import numpy as np
+
+from tolerance.arrays import FloatArray, read_only
+
+#: Where exp(-k * distance) counts as nought in the spectral rest.
+LAST_EXPONENT = 17.0
+
+
+@dataclass(frozen=True, slots=True)
+class FlatStack:
+    """Flat plies on one side of the body, outwards, down to a plane: arrays (sections,) [m] and [-]."""
+
+    thicknesses: tuple[FloatArray, ...]
+    dks: tuple[FloatArray, ...]
+
+    @property
+    def depth(self) -> FloatArray:
+        """From the body to the plane [m]."""
+        return np.asarray(sum(self.thicknesses))
+
+    def in_air(self) -> FlatStack:
+        """The same plies with Dk 1."""
+        return FlatStack(self.thicknesses, tuple(np.ones_like(dk) for dk in self.dks))
+
+    def reflection(self, wavenumber: FloatArray, body_dk: FloatArray) -> FloatArray:
+        """Reflected over arriving potential at the face of the body; `wavenumber` and result (sections, k)."""
+        result = -np.ones_like(wavenumber)
+        uppers = (body_dk, *self.dks)[: len(self.dks)]
+        for thickness, dk, upper in reversed(list(zip(self.thicknesses, self.dks, uppers, strict=True))):
+            step = ((upper - dk) / (upper + dk))[:, None]
+            wave = result * np.exp(-2.0 * wavenumber * thickness[:, None])
+            result = (step + wave) / (1.0 + step * wave)
+        return result
+
+    def first_reflection(self, body_dk: FloatArray) -> FloatArray:
+        """The reflection of the nearest face alone: the limit of large wavenumber; -1 where that is the plane."""
+        if not self.dks:
+            return -np.ones_like(body_dk)
+        return np.asarray((body_dk - self.dks[0]) / (body_dk + self.dks[0]))
+
+
+@dataclass(frozen=True, slots=True)
+class FarImages:
+    """Image charges `shift` [m] below the mirror image at y = 0, with factors: both (sections, images)."""
+
+    shifts: FloatArray
+    factors: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class SpectralRest:
+    """What near images leave between two planes: M_rest = -2 * sum over k of a(k) u(x, y; k) u'(x', y'; k).
+
+    wavenumber : (sections, k) [1/m].  lower, upper, cross : factors, quadrature weight over k included, of
+    exp(-k (y + y')), exp(-k (2 D - y - y')) and exp(-k (D + y - y')) with its mirror, D the body's thickness.
+    level : factor of the compensating term exp(-k * distance), whose image pair the near part takes off again.
+    """
+
+    wavenumber: FloatArray
+    lower: FloatArray
+    upper: FloatArray
+    cross: FloatArray
+    level: FloatArray
+    body_thickness: FloatArray
+    compensation: FloatArray  # (sections,) factor of the logarithm taken off in the near part
+    distance: FloatArray  # (sections,) [m]
+
+    def matrix(self, across: FloatArray, height: FloatArray, sign: int) -> FloatArray:
+        """Rest between all nodes (sections, nodes, nodes), even (`sign` 1) or odd (-1) about x = 0."""
+        phase = self.wavenumber[:, None, :] * across[:, :, None]
+        wave = np.cos(phase) if sign > 0 else np.sin(phase)
+        down = wave * np.exp(-self.wavenumber[:, None, :] * height[:, :, None])
+        up = wave * np.exp(-self.wavenumber[:, None, :] * (self.body_thickness[:, None] - height)[:, :, None])
+        lower, upper, cross = (factor[:, None, :] for factor in (self.lower, self.upper, self.cross))
+        left = np.concatenate([down * lower + up * cross, up * upper + down * cross, wave * self.level[:, None, :]], 2)
+        right = np.concatenate([down, up, wave], axis=2)
+        return np.asarray(-2.0 * (left @ right.transpose(0, 2, 1)))
+
+
+def image_multiples(*, plies: int, depth_ratio: float) -> tuple[float, ...]:
+    """Where far images stand, in units of twice the first ply's thickness; `depth_ratio` is plane depth over it.
+
+    One ply's images stand at whole multiples; several need a denser set. Reflections are met to about 5e-6.
+    """
+    multiples, step, last = ([1.0, 2.0, 3.0, 4.0], 1.6, 8.0) if plies == 1 else ([1.0], 1.35, 12.0)
+    while multiples[-1] < last * depth_ratio:
+        multiples.append(multiples[-1] * step)
+    return tuple(multiples)
+
+
+def far_images(stack: FlatStack, body_dk: FloatArray, *, multiples: Sequence[float]) -> FarImages:
+    """Images that stand for the reflection of `stack` beyond its first face.
+
+    Least squares on fixed wavenumbers over fixed image places, exact at wavenumber nought (so that the plane
+    carries the whole opposite charge): a fixed linear map of the reflection, hence smooth in every dimension.
+    """
+    scale = 2.0 * stack.thicknesses[0]
+    wavenumber, solve = _image_fit(tuple(multiples))
+    wanted = stack.reflection(wavenumber / scale[:, None], body_dk) - stack.first_reflection(body_dk)[:, None]
+    at_nought = -1.0 - stack.first_reflection(body_dk)
+    spread = np.exp(-wavenumber * multiples[-1])
+    free = (wanted - at_nought[:, None] * spread) @ solve
+    factors = np.concatenate([free, (at_nought - free.sum(axis=1))[:, None]], axis=1)
+    return FarImages(shifts=scale[:, None] * np.asarray(multiples), factors=factors)
+
+
+def plane_image(depth: FloatArray) -> FarImages:
+    """The one image of a bare plane `depth` below y = 0."""
+    return FarImages(shifts=2.0 * depth[:, None], factors=-np.ones((depth.shape[0], 1)))
+
+
+def spectral_rest(
+    *, below: FlatStack, above: FlatStack, body_dk: FloatArray, body_thickness: FloatArray, distance: FloatArray,
+    count: int,
+) -> SpectralRest:
+    """The rest between two planes beyond the images at both faces of the body.
+
+    distance : (sections,) [m], the shortest way of any ray that the near images leave out.  count : nodes over k.
+    """
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    last = LAST_EXPONENT / distance
+    wavenumber = last[:, None] * 0.5 * (1.0 + nodes)
+    weight = 0.5 * last[:, None] * weights / wavenumber
+    down, up = below.reflection(wavenumber, body_dk), above.reflection(wavenumber, body_dk)
+    first_down, first_up = below.first_reflection(body_dk), above.first_reflection(body_dk)
+    crossing = np.exp(-wavenumber * body_thickness[:, None])
+    many = 1.0 / (1.0 - down * up * crossing**2)
+    compensation = 1.0 + first_down + first_up
+    return SpectralRest(
+        wavenumber=wavenumber,
+        lower=weight * (down * many - first_down[:, None]),
+        upper=weight * (up * many - first_up[:, None]),
+        cross=weight * (down * up * many * crossing),
+        level=weight * compensation[:, None] * np.exp(-wavenumber * distance[:, None]),
+        body_thickness=body_thickness, compensation=compensation, distance=distance,
+    )
+
+
+@lru_cache(maxsize=64)
+def _image_fit(multiples: tuple[float, ...]) -> tuple[FloatArray, FloatArray]:
+    """Wavenumbers (in units of 1 / scale) and the least-squares map from the reflection there to image factors."""
+    wavenumber = np.logspace(-3.0, 1.3, 240) / max(1.0, multiples[-1] / 60.0)
+    images = np.exp(-np.outer(wavenumber, multiples))
+    free = images[:, :-1] - images[:, -1:]
+    return read_only(wavenumber), read_only(np.linalg.pinv(free, rcond=1e-13).T)

@@ -1,0 +1,115 @@
+"""How many nodes each edge gets: chosen once from a line's nominal section, then kept for every draw.
+
+Keeping the counts fixed keeps the impedance a smooth function of every dimension.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from tolerance.arrays import FloatArray
+from tolerance.sections.section import Section
+from tolerance.solver.edges import Edge
+from tolerance.solver.kernels import LAST_EXPONENT, image_multiples
+from tolerance.solver.structure import Structure, shortest_remaining_way, structure
+
+
+@dataclass(frozen=True, slots=True)
+class SolverSettings:
+    """What sets the accuracy: nodes on a copper face, on a dielectric face, on a face that runs to infinity.
+
+    They hold for edges not much longer than their distance to the next edge; longer ones get more.
+    """
+
+    copper_nodes: int = 8
+    dielectric_nodes: int = 12
+    tail_nodes: int = 12
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """Nodes (unknowns, quadrature places) by edge name, image places and nodes over wavenumber."""
+
+    counts: Mapping[str, tuple[int, int]]
+    multiples: tuple[float, ...]
+    wavenumbers: int
+    settings: SolverSettings = field(default_factory=SolverSettings)
+
+    def count(self, edge: Edge) -> tuple[int, int]:
+        """Unknowns and quadrature places of `edge`, also of one that the nominal section does not have."""
+        return self.counts.get(edge.name) or _counts(edge, 4.0, self.settings)
+
+
+def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
+    """The plan for a line whose nominal section is the first of `section`."""
+    settings = settings or SolverSettings()
+    nominal = section.rows(slice(0, 1))
+    parts = structure(nominal)
+    depth_ratio = float(parts.below.depth[0] / parts.below.thicknesses[0][0])
+    counts = {edge.name: _counts(edge, ratio, settings) for edge, ratio in _crowding(parts)}
+    return Plan(
+        counts=counts,
+        multiples=image_multiples(plies=len(parts.below.thicknesses), depth_ratio=depth_ratio),
+        wavenumbers=_wavenumbers(parts), settings=settings,
+    )
+
+
+def _counts(edge: Edge, ratio: float, settings: SolverSettings) -> tuple[int, int]:
+    """Unknowns and quadrature places for an edge `ratio` times as long as the way to its next neighbour."""
+    if edge.tail:
+        return settings.tail_nodes, 2 * settings.tail_nodes
+    base = settings.copper_nodes if edge.role == "copper" else settings.dielectric_nodes
+    more = max(0.0, math.log2(ratio / 4.0)) if ratio > 0.0 else 0.0
+    unknowns = _even(base + 3.0 * more)
+    return unknowns, _even(max(2.0 * unknowns, 1.6 * ratio))
+
+
+def _wavenumbers(parts: Structure) -> int:
+    if parts.above is None:
+        return 0
+    reach = 2.0 * max(float(np.abs(end[0]).max()) for edge in parts.edges for end in (edge.start, edge.stop))
+    return math.ceil(12.0 + 0.25 * LAST_EXPONENT * reach / float(shortest_remaining_way(parts)[0]))
+
+
+def _crowding(parts: Structure) -> list[tuple[Edge, float]]:
+    """Every edge with its length over the way to the nearest edge, image or plane that it does not touch.
+
+    A touching edge counts with its length: it sets the scale on which the charge next to the corner varies.
+    """
+    outlines = [(edge, _points(edge)) for edge in parts.edges]
+    others = [(edge, points) for edge, points in outlines]
+    others += [(edge, points * [-1.0, 1.0]) for edge, points in outlines if not edge.folded]
+    levels = [-float(parts.below.thicknesses[0][0])]
+    if parts.above is not None and parts.body_thickness is not None:
+        levels.append(float(parts.body_thickness[0]))
+    result = []
+    for edge, points in outlines:
+        length = float(edge.length[0])
+        ways = [2.0 * float(np.abs(points[:, 1] - level).min()) for level in levels]
+        ways += [_way(points, there, float(other.length[0])) for other, there in others
+                 if other is not edge or there[0, 0] != points[0, 0]]
+        result.append((edge, length / max(min(ways), 1e-3 * length)))
+    return result
+
+
+def _points(edge: Edge) -> FloatArray:
+    """Places along the first section's edge: shape (places, 2) [m]."""
+    steps = np.linspace(0.0, 1.0, 65)[:, None]
+    start, stop = (np.array([float(end[0][0]), float(end[1][0])]) for end in (edge.start, edge.stop))
+    return np.asarray(start + steps * (stop - start))
+
+
+def _way(here: FloatArray, there: FloatArray, length: float) -> float:
+    distance = np.hypot(*(here[:, None, :] - there[None, :, :]).transpose(2, 0, 1))
+    nearest = float(distance.min())
+    ends = distance[np.ix_([0, -1], [0, -1])]
+    return length if float(ends.min()) < 1e-6 * length else nearest
+
+
+def _even(number: float) -> int:
+    """The smallest even whole number not below `number`."""
+    return 2 * math.ceil(0.5 * number - 1e-9)

@@ -1,0 +1,112 @@
+"""Nodes on an edge, graded to its ends, and what an edge does to itself: numbers that no geometry enters.
+
+An edge of half length `a` is written x = a * position(s), -1 <= s <= 1, where the derivative of `position`
+is proportional to (1 - s^2)^(power - 1). Near a corner the charge grows like distance^(-1/3) (right angle);
+in s with power 3 it becomes a smooth function, so that polynomials through Gauss-Legendre nodes converge fast.
+Graded meshes of this kind: R. Kress, "A Nystroem method for boundary integral equations in domains with corners",
+Numerische Mathematik 58 (1990), pages 145-161.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import lru_cache
+
+import numpy as np
+from numpy.polynomial import polynomial
+
+from tolerance.arrays import FloatArray, read_only
+
+
+@dataclass(frozen=True, slots=True)
+class Rule:
+    """Nodes of one edge; every array has shape (nodes,).
+
+    nodes, weights : Gauss-Legendre on -1..1.   position, slope : the graded map and its derivative.
+    """
+
+    nodes: FloatArray
+    weights: FloatArray
+    position: FloatArray
+    slope: FloatArray
+
+
+@lru_cache(maxsize=256)
+def graded_rule(count: int, power: int) -> Rule:
+    """The rule with `count` nodes for an edge with a corner at both ends."""
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    position, slope = _graded_map(nodes, power)
+    return Rule(*(read_only(values) for values in (nodes, weights, position, slope)))
+
+
+@lru_cache(maxsize=256)
+def tail_rule(count: int) -> Rule:
+    """The rule for an edge that runs from a corner to infinity: x = scale * position, position = u^2 / (1 - u)."""
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    near, far = 0.5 * (1.0 + nodes), 0.5 * (1.0 - nodes)
+    slope = near / far + 0.5 * near**2 / far**2
+    return Rule(*(read_only(values) for values in (nodes, weights, near**2 / far, slope)))
+
+
+@lru_cache(maxsize=256)
+def refinement(count: int, fine_count: int) -> FloatArray:
+    """Charges at `fine_count` nodes from charges at `count` nodes: shape (fine_count, count).
+
+    The density in s is the polynomial through the coarse nodes; the charge of a node is weight times density.
+    """
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    fine_nodes, fine_weights = np.polynomial.legendre.leggauss(fine_count)
+    return read_only(fine_weights[:, None] * _interpolation(nodes, fine_nodes) / weights)
+
+
+@lru_cache(maxsize=64)
+def self_potential(count: int, power: int) -> FloatArray:
+    """Integral of ln |position(s_i) - position(s')| over the edge for unit charge at node j: shape (count, count).
+
+    For an edge of half length `a` the logarithm of `a` is to be added to every entry. Integrated on panels that
+    halve towards the singularity; good to about 1e-13.
+    """
+    rule = graded_rule(count, power)
+    panel_nodes, panel_weights = np.polynomial.legendre.leggauss(20)
+    matrix = np.empty((count, count))
+    for row, node in enumerate(rule.nodes):
+        distance, sign, weight = _halving_panels(float(node), panel_nodes, panel_weights)
+        place = node + sign * distance
+        across = np.abs(_graded_map(place, power)[0] - rule.position[row])
+        across = np.where(distance < 1e-6, rule.slope[row] * distance, across)
+        matrix[row] = (weight * np.log(across)) @ _interpolation(rule.nodes, place)
+    return read_only(matrix / rule.weights)
+
+
+def _halving_panels(node: float, nodes: FloatArray, weights: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Distances from `node`, their sides (-1 or 1) and weights of a rule refined towards it from both sides."""
+    distances, signs, panel_weights = [], [], []
+    for side in (-1.0, 1.0):
+        ends = np.append(abs(side - node) * 0.5 ** np.arange(60), 0.0)
+        middle, half = 0.5 * (ends[:-1] + ends[1:]), 0.5 * (ends[:-1] - ends[1:])
+        distances.append((middle[:, None] + half[:, None] * nodes).ravel())
+        panel_weights.append((half[:, None] * weights).ravel())
+        signs.append(np.full(distances[-1].shape, side))
+    return np.concatenate(distances), np.concatenate(signs), np.concatenate(panel_weights)
+
+
+def _graded_map(nodes: FloatArray, power: int) -> tuple[FloatArray, FloatArray]:
+    """Position and slope of the graded map at `nodes`: position runs from -1 to 1."""
+    derivative = np.array([1.0])
+    for _ in range(power - 1):
+        derivative = polynomial.polymul(derivative, [1.0, 0.0, -1.0])
+    integral = polynomial.polyint(derivative)
+    reach = polynomial.polyval(1.0, integral)
+    return polynomial.polyval(nodes, integral) / reach, polynomial.polyval(nodes, derivative) / reach
+
+
+def _interpolation(nodes: FloatArray, places: FloatArray) -> FloatArray:
+    """Values at `places` of the polynomials that are one at a node and nought at the others (barycentric form)."""
+    difference = nodes[:, None] - nodes
+    np.fill_diagonal(difference, 1.0)
+    scale = 1.0 / np.prod(difference, axis=1)
+    offset = places[:, None] - nodes
+    hit = offset == 0.0
+    ratio = scale / np.where(hit, 1.0, offset)
+    values = ratio / ratio.sum(axis=1, keepdims=True)
+    return np.asarray(np.where(hit.any(axis=1, keepdims=True), hit, values))
