@@ -7,16 +7,14 @@ draws five deviations out are as exact as those in the middle. All of them rise 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Literal
+from typing import Literal
 
 import numpy as np
 from scipy.special import erf, ndtr, ndtri
 
 from tolerance.arrays import FloatArray
 from tolerance.errors import InputError
-
-if TYPE_CHECKING:
-    from tolerance.scenario.tables import Amount
+from tolerance.scenario.amounts import Amount
 
 Shape = Literal["normal", "truncated_normal", "uniform", "triangular", "lognormal"]
 
@@ -121,6 +119,4 @@ def _cut_normal(germ: FloatArray, *, low: float, high: float) -> FloatArray:
 
 
 def _size(amount: Amount | None, reference: float) -> float:
-    if amount is None:
-        return 0.0
-    return amount.value * reference if amount.relative else amount.value
+    return 0.0 if amount is None else amount.of(reference)

@@ -1,0 +1,209 @@
+"""Draws of the process: which variables vary, how they hang together, and scrambled Sobol' samples of them.
+
+A draw is held as standard normals (germs), one a variable; values of properties come out of it through their laws.
+A Gaussian copula makes correlations: the germs of correlated variables are jointly normal.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Collection, Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+
+import numpy as np
+from scipy.special import ndtri
+from scipy.stats import qmc
+
+from tolerance.arrays import FloatArray, IntArray, read_only
+from tolerance.errors import Problem, ScenarioError
+from tolerance.process.laws import Law, quantile
+from tolerance.scenario.properties import Property, members, properties
+from tolerance.scenario.tables import Scenario, Variation
+
+REPLICATES = 8  # independent scrambles of a sample; with 16 intervals of the yield are no narrower, of the mean wider
+SOBOL_BITS = 30  # of a coordinate; points are moved to the middle of their cell, so that 0 never occurs
+ETCH = "etch"  # the property whose percentages are of each line's own width
+
+
+@dataclass(frozen=True, slots=True)
+class Variable:
+    """One standard draw and the properties it moves, each by a law of its own.
+
+    The name is that of the property, or, of properties drawn together, those of all joined by " + ".
+    """
+
+    name: str
+    members: tuple[tuple[Property, Law], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Process:
+    """All that varies. nominals: by property name [SI]; correlation: of the germs, (variables, variables)."""
+
+    variables: tuple[Variable, ...]
+    nominals: Mapping[str, float]
+    correlation: FloatArray
+
+    @property
+    def is_correlated(self) -> bool:
+        return bool(np.any(self.correlation != np.eye(len(self.variables))))
+
+
+@dataclass(frozen=True, slots=True)
+class ProcessDraws:
+    """A sample of the process: germ (coupons, variables), standard normals with their correlation.
+
+    Coupons of one replicate stand together: replicate r has the rows from r * coupons / replicates on.
+    """
+
+    process: Process
+    germ: FloatArray
+    replicates: int = 1
+
+    @property
+    def coupons(self) -> int:
+        return len(self.germ)
+
+    def value(self, name: str) -> FloatArray:
+        """Values [SI] of the property `name` ("P1.thickness"), shape (coupons,). KeyError where there is none."""
+        nominal = self.process.nominals[name]
+        found = self._law(name)
+        if found is None:
+            return np.full(self.coupons, nominal)
+        column, law = found
+        return quantile(law, self.germ[:, column], reference=nominal)
+
+    def etch(self, layer: str, *, width: float) -> FloatArray:
+        """Finished foot width minus drawn width [m] of a line `width` [m] wide on `layer`, shape (coupons,)."""
+        found = self._law(f"{layer}.{ETCH}")
+        if found is None:
+            return np.zeros(self.coupons)
+        column, law = found
+        return quantile(law, self.germ[:, column], reference=width)
+
+    def rows(self, index: slice | IntArray) -> ProcessDraws:
+        """The coupons at `index`, in its order, as a sample of one replicate."""
+        return ProcessDraws(self.process, read_only(self.germ[index]))
+
+    def _law(self, name: str) -> tuple[int, Law] | None:
+        for column, variable in enumerate(self.process.variables):
+            for member, law in variable.members:
+                if member.name == name:
+                    return column, law
+        return None
+
+
+def process_of(scenario: Scenario) -> Process:
+    """The variables of a scenario in its order, and their correlation. Raises ScenarioError, see `correlation_of`."""
+    variables = tuple(variable for variation in scenario.variations for variable in _variables(scenario, variation))
+    nominals = {each.name: each.nominal for each in properties(scenario)}
+    return Process(variables, MappingProxyType(nominals), correlation_of(scenario, variables))
+
+
+def correlation_of(scenario: Scenario, variables: tuple[Variable, ...]) -> FloatArray:
+    """Correlation of the germs, (variables, variables).
+
+    A correlation names a variable, or a property that moves with one. Raises ScenarioError where the matrix is not
+    positive definite, naming the variables.
+    """
+    matrix = np.eye(len(variables))
+    column_of = {name: column for column, variable in enumerate(variables)
+                 for name in (variable.name, *(member.name for member, _ in variable.members))}
+    for correlation in scenario.correlations:
+        one, other = (column_of[name] for name in correlation.between)
+        matrix[one, other] = matrix[other, one] = correlation.coefficient
+    for group in correlated_groups(matrix):
+        block = matrix[np.ix_(group, group)]
+        if np.linalg.eigvalsh(block)[0] <= len(group) * np.finfo(float).eps:
+            names = ", ".join(variables[column].name for column in group)
+            raise ScenarioError([Problem(
+                file=scenario.source, table="[[correlations]]",
+                allowed=f"the coefficients between {names} must make a positive definite matrix; these do not",
+            )])
+    return read_only(matrix)
+
+
+def correlated_groups(correlation: FloatArray) -> list[list[int]]:
+    """Columns that hang together by correlations, directly or through others; only groups of two and more."""
+    groups: list[list[int]] = []
+    left = set(range(len(correlation)))
+    while left:
+        group, edge = set[int](), {min(left)}
+        while edge:
+            group |= edge
+            edge = {int(other) for one in edge for other in np.flatnonzero(correlation[one])} - group
+        left -= group
+        if len(group) > 1:
+            groups.append(sorted(group))
+    return groups
+
+
+def columns_moving(process: Process, names: Collection[str]) -> tuple[int, ...]:
+    """Columns of the variables that move any property in `names`."""
+    return tuple(column for column, variable in enumerate(process.variables)
+                 if any(member.name in names for member, _ in variable.members))
+
+
+def draw_process(
+    process: Process, *, coupons: int, chance: np.random.Generator, replicates: int = REPLICATES
+) -> ProcessDraws:
+    """A sample of `coupons` as independent scrambles of the Sobol' sequence, each of a power of two of points.
+
+    ValueError where coupons / replicates is not a power of two. The sample depends on the process, the sizes and
+    the state of `chance` alone.
+    """
+    germ = np.empty((coupons, len(process.variables)), order="F")
+    block = coupons // replicates
+    if block * replicates != coupons or block & (block - 1):
+        raise ValueError(f"{coupons} coupons do not make {replicates} replicates of a power of two")
+    for replicate, generator in enumerate(chance.spawn(replicates)):
+        germ[replicate * block : (replicate + 1) * block] = sobol_normals(len(process.variables), block, generator)
+    for group in correlated_groups(process.correlation):
+        root = np.linalg.cholesky(process.correlation[np.ix_(group, group)])
+        free = germ[:, group]
+        for row, column in enumerate(group):
+            germ[:, column] = sum(root[row, other] * free[:, other] for other in range(row + 1))
+    return ProcessDraws(process, read_only(germ), replicates)
+
+
+def nominal_draw(process: Process) -> ProcessDraws:
+    """One coupon with every property at its nominal (not at its mean: shifts do not count)."""
+    still = Process((), process.nominals, read_only(np.zeros((0, 0))))
+    return ProcessDraws(still, read_only(np.zeros((1, 0))))
+
+
+def sobol_normals(dimensions: int, points: int, chance: np.random.Generator) -> FloatArray:
+    """Independent standard normals (points, dimensions) from one scramble of the Sobol' sequence."""
+    return ndtri(sobol_uniforms(dimensions, points, chance))
+
+
+def sobol_uniforms(dimensions: int, points: int, chance: np.random.Generator) -> FloatArray:
+    """Uniforms (points, dimensions) in (0, 1) from one scramble of the Sobol' sequence; points: a power of two.
+
+    Scrambling: linear matrix scramble and digital shift (J. Matousek, "On the L2-discrepancy for anchored boxes",
+    Journal of Complexity, volume 14, pages 527-556, 1998), as scipy has it.
+    """
+    if dimensions == 0:
+        return np.empty((points, 0))
+    engine = qmc.Sobol(dimensions, scramble=True, bits=SOBOL_BITS, rng=chance)
+    return np.asarray(engine.random_base2(points.bit_length() - 1) + 0.5**(SOBOL_BITS + 1), dtype=np.float64)
+
+
+def _variables(scenario: Scenario, variation: Variation) -> tuple[Variable, ...]:
+    """One variable for each property that the variation names, or one for all where they are drawn together."""
+    pairs = tuple((each, _law(each, variation)) for each in members(scenario, variation))
+    if variation.together:
+        return (Variable(" + ".join(each.name for each, _ in pairs), pairs),)
+    return tuple(Variable(each.name, ((each, law),)) for each, law in pairs)
+
+
+def _law(each: Property, variation: Variation) -> Law:
+    if variation.shape == "measured":
+        raise ScenarioError([Problem(
+            file=str(variation.file), table="[[variations]]", entry=", ".join(variation.of), key="shape",
+            allowed="measured is not acted on yet",
+        )])
+    return Law(
+        variation.shape, each.nominal, tolerance=variation.tolerance, shift=variation.shift,
+        sigmas=variation.sigmas, cpk=variation.cpk, low=variation.low, high=variation.high,
+    )

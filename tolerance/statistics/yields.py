@@ -1,0 +1,188 @@
+"""Yield, below, above, mean, deviation and capability of impedances against their limits, each with its interval.
+
+Intervals come from the replicates of the sample. Two things make them wider: counts so small that the spread of the
+replicates says little, where the exact binomial interval stands instead (scrambled Sobol' points scatter no more
+than independent ones); and the error of the predicted impedances, where it is given.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.special import betaincinv
+
+from tolerance.arrays import BoolArray, FloatArray, IntArray
+from tolerance.errors import UnfinishedError
+from tolerance.statistics.estimates import CONFIDENCE, Interval, half_interval
+
+RARE = 20  # coupons: with fewer on one side the binomial interval stands
+STILL = 1e-12  # relative range of impedances below which nothing moves them
+FEWEST_POSSIBLE = 2  # coupons of each replicate that must be possible, for a deviation
+
+
+@dataclass(frozen=True, slots=True)
+class LineYield:
+    """One line's coupons against its limits. Shares [-]; mean and deviation [ohm], over possible coupons.
+
+    `cp` and `cpk` are None where the interval of the deviation reaches zero, for then they have no finite bound.
+    """
+
+    inside: Interval
+    below: Interval
+    above: Interval
+    mean: Interval
+    deviation: Interval
+    cp: Interval | None
+    cpk: Interval | None
+    impossible: int
+
+
+@dataclass(frozen=True, slots=True)
+class Judgement:
+    """Every line, and the coupon as a whole: `inside` is the share of coupons on which all lines pass."""
+
+    lines: tuple[LineYield, ...]
+    inside: Interval
+    impossible: int  # coupons on which some line cannot exist
+
+
+@dataclass(frozen=True, slots=True)
+class Limits:
+    """The impedance limits of one line [ohm]; both ends pass."""
+
+    low: float
+    high: float
+
+
+def judge(
+    impedance: FloatArray, possible: BoolArray, limits: tuple[Limits, ...], *,
+    replicates: int, impedance_error: FloatArray | None = None,
+) -> Judgement:
+    """Judge impedance [ohm] (lines, coupons); `possible` (lines, coupons): the section exists. Limits: one a line.
+
+    Impossible coupons fail, and count neither as below nor as above; their impedances may hold anything.
+    impedance_error : (lines,) [ohm] root mean square error of the impedances; ends of intervals move by the share of
+        coupons that it could carry over a limit. Absent: none.
+    Raises UnfinishedError where so few coupons of a line are possible that nothing can be said of its impedance.
+    """
+    errors = np.zeros(len(limits)) if impedance_error is None else impedance_error
+    lines, passing, surely, perhaps = [], [], [], []
+    for values, exists, limit, error in zip(impedance, possible, limits, errors, strict=True):
+        lines.append(judge_line(values, exists, limit, replicates=replicates, impedance_error=float(error)))
+        for verdicts, margin in ((passing, 0.0), (surely, -float(error)), (perhaps, float(error))):
+            verdicts.append(exists & _between(values, limit.low - margin, limit.high + margin))
+    every = [np.logical_and.reduce(verdicts, axis=0) for verdicts in (passing, surely, perhaps)]
+    inside = share_interval(every[0], replicates=replicates, surely=every[1], perhaps=every[2])
+    return Judgement(tuple(lines), inside, int(np.count_nonzero(~np.all(possible, axis=0))))
+
+
+def judge_line(
+    impedance: FloatArray, possible: BoolArray, limit: Limits, *, replicates: int, impedance_error: float = 0.0
+) -> LineYield:
+    """Judge one line: impedance [ohm] and possible, both (coupons,). See `judge`."""
+    error, low, high = impedance_error, limit.low, limit.high
+    sides = ((low, high, 1.0), (-np.inf, low, -1.0), (high, np.inf, -1.0))
+    shares = []
+    for start, end, inclusive in sides:
+        verdicts = [possible & _between(impedance, start - margin, end + margin, inclusive > 0.0)
+                    for margin in (0.0, -error, error)]
+        shares.append(share_interval(verdicts[0], replicates=replicates, surely=verdicts[1], perhaps=verdicts[2]))
+    moments = _moments(impedance, possible, replicates)
+    return LineYield(
+        *shares,
+        mean=_replicate_interval(moments[0]).widened(error, error),
+        deviation=_replicate_interval(moments[1]).widened(error, error).within(0.0, np.inf),
+        **_capabilities(moments, limit, error),
+        impossible=int(np.count_nonzero(~possible)),
+    )
+
+
+def share_interval(
+    verdicts: BoolArray, *, replicates: int, surely: BoolArray | None = None, perhaps: BoolArray | None = None
+) -> Interval:
+    """Share of true `verdicts` (coupons,) with its interval, never of zero width.
+
+    surely, perhaps : verdicts with all doubt counted against and in favour; they move the ends out.
+    """
+    coupons = len(verdicts)
+    count = int(np.count_nonzero(verdicts))
+    if min(count, coupons - count) < RARE:
+        interval = binomial_interval(count, coupons)
+    else:
+        interval = _replicate_interval((count / coupons, np.mean(verdicts.reshape(replicates, -1), axis=1)))
+    if surely is not None and perhaps is not None:
+        interval = interval.widened((count - np.count_nonzero(surely)) / coupons,
+                                    (np.count_nonzero(perhaps) - count) / coupons)
+    return interval.within(0.0, 1.0)
+
+
+def binomial_interval(count: int, trials: int) -> Interval:
+    """Exact 95 % interval of a share, `count` of `trials` independent ones.
+
+    Source: C. J. Clopper and E. S. Pearson, "The use of confidence or fiducial limits illustrated in the case of
+    the binomial", Biometrika, volume 26, pages 404-413, 1934.
+    """
+    tail = 0.5 * (1.0 - CONFIDENCE)
+    low = 0.0 if count == 0 else float(betaincinv(count, trials - count + 1, tail))
+    high = 1.0 if count == trials else float(betaincinv(count + 1, trials - count, 1.0 - tail))
+    return Interval(count / trials, low, high)
+
+
+def histogram(impedance: FloatArray, *, bins: int = 60) -> tuple[FloatArray, IntArray]:
+    """Edges (bins + 1,) [ohm] and counts (bins,) of impedances (coupons,) [ohm], of the possible coupons only."""
+    counts, edges = np.histogram(impedance, bins=bins)
+    return edges.astype(np.float64), counts.astype(np.int64)
+
+
+_Estimates = tuple[float, FloatArray]  # over all coupons, and of each replicate
+
+
+def _replicate_interval(estimates: _Estimates) -> Interval:
+    value, each = estimates
+    half = float(half_interval(each))
+    return Interval(value, value - half, value + half)
+
+
+def _between(values: FloatArray, low: float, high: float, inclusive: bool = True) -> BoolArray:
+    return (values >= low) & (values <= high) if inclusive else (values > low) & (values < high)
+
+
+def _moments(impedance: FloatArray, possible: BoolArray, replicates: int) -> tuple[_Estimates, _Estimates]:
+    """Mean and deviation [ohm] of the possible coupons, over all and of each replicate."""
+    blocks = [values[exists] for values, exists in zip(
+        impedance.reshape(replicates, -1), possible.reshape(replicates, -1), strict=True)]
+    if min(len(block) for block in blocks) < FEWEST_POSSIBLE:
+        count, coupons = np.count_nonzero(possible), len(possible)
+        raise UnfinishedError(f"only {count} of {coupons} coupons have a section that can exist")
+    whole = np.concatenate(blocks)
+    mean = float(np.mean(whole))
+    if np.ptp(whole) <= STILL * abs(mean):
+        return (mean, np.full(replicates, mean)), (0.0, np.zeros(replicates))
+    means = np.array([np.mean(block) for block in blocks])
+    deviations = np.array([np.std(block, ddof=1) for block in blocks])
+    return (mean, means), (float(np.std(whole, ddof=1)), deviations)
+
+
+def _capabilities(
+    moments: tuple[_Estimates, _Estimates], limit: Limits, error: float
+) -> dict[str, Interval | None]:
+    """Cp and Cpk, None where the interval of the deviation reaches zero.
+
+    Source: V. E. Kane, "Process capability indices", Journal of Quality Technology, volume 18, pages 41-52, 1986.
+    """
+    (mean, means), (deviation, deviations) = moments
+    if deviation - float(half_interval(deviations)) - error <= 0.0:
+        return {"cp": None, "cpk": None}
+    result: dict[str, Interval | None] = {}
+    for name, room, rooms in (
+        ("cp", 0.5 * (limit.high - limit.low), np.full_like(means, 0.5 * (limit.high - limit.low))),
+        ("cpk", min(limit.high - mean, mean - limit.low), np.minimum(limit.high - means, means - limit.low)),
+    ):
+        value = room / (3.0 * deviation)
+        moved = 0.0 if name == "cp" else error
+        corners = [(room + side * moved) / (3.0 * (deviation + other * error))
+                   for side in (-1.0, 1.0) for other in (-1.0, 1.0)]
+        interval = _replicate_interval((value, rooms / (3.0 * deviations)))
+        result[name] = interval.widened(value - min(corners), max(corners) - value)
+    return result
