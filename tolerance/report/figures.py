@@ -1,0 +1,113 @@
+"""The figures of a run as PNG files: one page of all lines, and one page a line with its spread, drivers and section."""
+
+from __future__ import annotations
+
+import os
+import warnings
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+
+from tolerance.errors import UnfinishedError
+from tolerance.report.file_names import file_names
+from tolerance.report.looks import FAIL, FAINT_INK, INK, LARGE, MEDIUM, PAGE, RESOLUTION, SMALL, TITLE, our_looks
+from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
+from tolerance.report.section_plot import draw_section
+from tolerance.report.tables import MISSES, verdict
+from tolerance.report.wording import LengthUnit, share_range_text, share_text, shorten, trimmed
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from tolerance.results import Interval, LineResult, RunResult
+
+OVERVIEW = "all lines"
+NAME_LENGTH = 58
+ROW_OF_OVERVIEW = 0.5  # inches at least
+PACKING = 1  # of the PNG files: quick, a few per cent larger
+
+
+def write_figures(result: RunResult, folder: Path, lengths: LengthUnit,
+                  on_progress: Callable[[str, int, int], None] | None = None) -> list[Path]:
+    """Write all figures of a run into `folder` (made if missing) and return their paths.
+
+    Raises UnfinishedError where a file cannot be written.
+    """
+    names = file_names([line.name for line in result.lines], taken=(OVERVIEW,))
+    paths = [_write(overview_page(result), folder / f"{OVERVIEW}.png")]
+    for number, (name, line) in enumerate(zip(names, result.lines, strict=True), start=1):
+        page = line_page(line, target_yield=result.target_yield, lengths=lengths)
+        paths.append(_write(page, folder / f"{name}.png"))
+        if on_progress is not None:
+            on_progress("figures", number, len(names))
+    return paths
+
+
+def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> Figure:
+    """One line on a page: spread and drivers above, the cross-section below."""
+    with our_looks():
+        page = _page(PAGE[1])
+        _head(page, shorten(line.name, NAME_LENGTH), f"{line.kind} on {line.layer}{_over(line.references)}",
+              line.inside, target_yield)
+        draw_spread(page.add_axes((0.065, 0.49, 0.43, 0.32)), line, target_yield=target_yield)
+        draw_drivers(page.add_axes((0.56, 0.49, 0.40, 0.32)), line)
+        draw_section(page.add_axes((0.065, 0.085, 0.69, 0.29)), line, lengths=lengths)
+    return page
+
+
+def overview_page(result: RunResult) -> Figure:
+    """All lines on a page, the yield of all together at its head."""
+    height = max(PAGE[1], 2.0 + ROW_OF_OVERVIEW * len(result.lines))
+    with our_looks():
+        page = _page(height)
+        _head(page, shorten(result.title, NAME_LENGTH), f"all lines, {result.coupons:,} coupons, seed {result.seed}",
+              result.inside, result.target_yield, judged=False)
+        axes = page.add_axes((0.225, 0.65 / height, 0.555, 1.0 - 1.95 / height))
+        draw_overview(axes, result, result.lines)
+    return page
+
+
+def _page(height: float) -> Figure:
+    page = Figure(figsize=(PAGE[0], height), dpi=RESOLUTION)
+    FigureCanvasAgg(page)
+    return page
+
+
+def _over(references: tuple[str, ...]) -> str:
+    return f", reference {' and '.join(references)}" if references else ""
+
+
+def _head(page: Figure, title: str, subtitle: str, inside: Interval, target_yield: float, *,
+          judged: bool = True) -> None:
+    """Title on the left, the yield with its interval and the verdict on the right."""
+    height = page.get_figheight()
+    first, second = 1.0 - 0.42 / height, 1.0 - 0.78 / height
+    page.text(0.025, first, title, fontsize=TITLE, weight="bold", va="center")
+    page.text(0.025, second, subtitle, fontsize=MEDIUM, color=FAINT_INK, va="center")
+    word = verdict(inside.value, target_yield)
+    color = FAIL if judged and word == MISSES else INK
+    aim = f"{trimmed(100.0 * target_yield, 3)} %"
+    page.text(0.975, first, f"yield {share_text(inside)}", fontsize=TITLE, weight="bold", va="center", ha="right",
+              color=color)
+    remark = f"{word} the target of {aim}" if judged else f"all lines of a coupon pass; target of each line {aim}"
+    page.text(0.975, second, f"95 % interval {share_range_text(inside)} %; {remark}", fontsize=MEDIUM, va="center",
+              ha="right", color=color)
+
+
+def _write(page: Figure, path: Path) -> Path:
+    """Write a page beside its place and move it there, so that no half-written file is ever seen."""
+    beside = path.with_name(f".{path.name}.part")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        with our_looks(), warnings.catch_warnings():
+            warnings.filterwarnings("ignore", message="Glyph .* missing from font")  # drawn as an empty box
+            page.savefig(beside, format="png", dpi=RESOLUTION, metadata={"Software": None},
+                         pil_kwargs={"compress_level": PACKING})
+        os.replace(beside, path)
+    except OSError as problem:
+        raise UnfinishedError(f"could not write {path}: {problem.strerror or problem}") from problem
+    finally:
+        beside.unlink(missing_ok=True)
+    return path

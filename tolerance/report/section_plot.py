@@ -1,0 +1,249 @@
+"""The cross-section of a line to scale, with what it is made of and its main dimensions.
+
+Outlines that reach the sides of a drawing go on in truth, so they are drawn to the edge of the view, which is cut to
+the surroundings of the traces.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from matplotlib.patches import Polygon
+
+from tolerance.report.looks import (
+    AIR,
+    COPPER,
+    CORE_GRAIN,
+    FAINT_INK,
+    INK,
+    MATERIAL,
+    PAPER,
+    SMALL,
+)
+from tolerance.report.wording import METRES_IN, LengthUnit, fixed, length_text, shorten
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from matplotlib.axes import Axes
+
+    from tolerance.arrays import FloatArray
+    from tolerance.results import Conductor, Drawing, LineResult
+
+ROOM_SIDEWAYS = 1.6  # view over the width of what the line consists of
+ROOM_UPRIGHT = 1.16  # view over the height of the section
+LETTER_WIDTH = 0.56  # of the letter size, on average
+ROW_HEIGHT = 1.35  # of the letter size
+LABEL_WIDTH = 32
+MATERIAL_NAME = {"mask": "mask", "prepreg": "prepreg", "core": "core"}
+
+
+@dataclass(frozen=True, slots=True)
+class View:
+    """What part of a section is seen [m], and how large it is drawn."""
+
+    left: float
+    right: float
+    bottom: float
+    top: float
+    points_per_metre: float
+
+    def metres(self, points: float) -> float:
+        """How long so many printer's points are in the section."""
+        return points / self.points_per_metre
+
+
+def draw_section(axes: Axes, line: LineResult, *, lengths: LengthUnit) -> Axes:
+    """The nominal cross-section of one line: dielectrics with their Dk, copper, dimensions; equal scales."""
+    drawing, unit = line.drawing, METRES_IN[lengths]
+    view = view_of(drawing, axes)
+    axes.set_facecolor(AIR)
+    for region in drawing.regions:
+        outline = _reaching(region.outline, drawing, view) / unit
+        axes.add_patch(Polygon(outline, closed=True, facecolor=MATERIAL[region.kind], edgecolor=FAINT_INK,
+                               linewidth=0.8))
+        if region.kind == "core":
+            axes.add_patch(Polygon(outline, closed=True, fill=False, edgecolor=CORE_GRAIN, linewidth=0.0, hatch="."))
+    for conductor in drawing.conductors:
+        axes.add_patch(Polygon(_reaching(conductor.outline, drawing, view) / unit, closed=True,
+                               facecolor=COPPER[conductor.role], edgecolor=INK, linewidth=0.8))
+    axes.set_xlim(view.left / unit, view.right / unit)
+    axes.set_ylim(view.bottom / unit, view.top / unit)
+    axes.set_aspect("equal", adjustable="box")
+    axes.set(xlabel=f"sideways [{lengths}]", ylabel=f"height [{lengths}]")
+    axes.locator_params(axis="y", nbins=5)
+    axes.set_title("cross-section at the nominals, to scale")
+    _name_materials(axes, drawing, view, lengths)
+    _mark_widths(axes, drawing, view, lengths)
+    _mark_heights(axes, drawing, view, lengths)
+    return axes
+
+
+def view_of(drawing: Drawing, axes: Axes) -> View:
+    """The part of the section that the axes show: all of its height, sideways the traces and their surroundings."""
+    box = axes.get_position()
+    figure = axes.get_figure(root=True)
+    assert figure is not None
+    wide, high = (72.0 * box.width * figure.get_figwidth(), 72.0 * box.height * figure.get_figheight())
+    corners = np.vstack([item.outline for item in (*drawing.regions, *drawing.conductors)])
+    bottom, top = float(corners[:, 1].min()), float(corners[:, 1].max())
+    inner = np.concatenate([_sides(conductor) for conductor in drawing.conductors if conductor.role == "trace"]
+                           + [_inner_edges(drawing)])
+    middle, extent = 0.5 * float(inner.min() + inner.max()), float(inner.max() - inner.min())
+    height = max(ROOM_UPRIGHT * (top - bottom), ROOM_SIDEWAYS * extent * high / wide)
+    width, centre = height * wide / high, 0.5 * (bottom + top)
+    return View(middle - width / 2, middle + width / 2, centre - height / 2, centre + height / 2, high / height)
+
+
+def _sides(conductor: Conductor) -> FloatArray:
+    xs = conductor.outline[:, 0]
+    return np.array([xs.min(), xs.max()])
+
+
+def _inner_edges(drawing: Drawing) -> FloatArray:
+    """Where coplanar grounds begin, each on its side of the traces."""
+    middle = np.mean([_sides(conductor).mean() for conductor in drawing.conductors if conductor.role == "trace"])
+    edges = [_sides(conductor) for conductor in drawing.conductors if conductor.role == "ground"]
+    return np.array([side[1] if side.mean() < middle else side[0] for side in edges])
+
+
+def _reaching(outline: FloatArray, drawing: Drawing, view: View) -> FloatArray:
+    """The outline, its outermost corners drawn out to the edge of the view."""
+    xs = np.concatenate([item.outline[:, 0] for item in (*drawing.regions, *drawing.conductors)])
+    reached = outline.copy()
+    reached[outline[:, 0] <= xs.min(), 0] = min(float(xs.min()), view.left)
+    reached[outline[:, 0] >= xs.max(), 0] = max(float(xs.max()), view.right)
+    return reached
+
+
+def _range_at(outline: FloatArray, x: float) -> tuple[float, float] | None:
+    """Lowest and highest point of an outline on the upright line through x; None where they do not meet."""
+    start, end = outline, np.roll(outline, -1, axis=0)
+    crosses = (np.minimum(start[:, 0], end[:, 0]) <= x) & (x <= np.maximum(start[:, 0], end[:, 0])) \
+        & (start[:, 0] != end[:, 0])
+    if not crosses.any():
+        return None
+    start, end = start[crosses], end[crosses]
+    ys = start[:, 1] + (x - start[:, 0]) / (end[:, 0] - start[:, 0]) * (end[:, 1] - start[:, 1])
+    return float(ys.min()), float(ys.max())
+
+
+def _apart(positions: Sequence[float], spacing: float) -> list[float]:
+    """Rising positions moved as little as needed to stand at least `spacing` apart."""
+    groups: list[tuple[float, int]] = []  # sum and count of neighbours that stand as close as they may
+    for place, position in enumerate(positions):
+        groups.append((position - spacing * place, 1))
+        while len(groups) > 1 and groups[-2][0] / groups[-2][1] > groups[-1][0] / groups[-1][1]:
+            total, count = groups.pop()
+            groups[-1] = (groups[-1][0] + total, groups[-1][1] + count)
+    level = [total / count for total, count in groups for _ in range(count)]
+    return [value + spacing * place for place, value in enumerate(level)]
+
+
+def _name_materials(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> None:
+    """Beside the section: name, kind and Dk of each dielectric and each plane."""
+    unit, labels = METRES_IN[lengths], []
+    for region in drawing.regions:
+        seen = _range_at(_reaching(region.outline, drawing, view), view.right)
+        if seen is not None:
+            kind = MATERIAL_NAME[region.kind]
+            name = region.name if kind in region.name.split() else f"{region.name}, {kind}"
+            labels.append((0.5 * sum(seen), f"{shorten(name, LABEL_WIDTH - 9)}, Dk {fixed(region.dk, 2)}"))
+    for conductor in drawing.conductors:
+        seen = _range_at(_reaching(conductor.outline, drawing, view), view.right)
+        if seen is not None:
+            labels.append((0.5 * sum(seen), f"{shorten(conductor.name, LABEL_WIDTH - 9)}, {conductor.role}"))
+    labels.sort()
+    places = _apart([height for height, _ in labels], view.metres(ROW_HEIGHT * SMALL))
+    for (height, label), place in zip(labels, places, strict=True):
+        axes.annotate(label, (view.right / unit, height / unit), textcoords="data",
+                      xytext=((view.right + view.metres(22.0)) / unit, place / unit), fontsize=SMALL, va="center", ha="left", annotation_clip=False,
+                      arrowprops={"arrowstyle": "-", "color": FAINT_INK, "linewidth": 0.8, "shrinkA": 1.0,
+                                  "shrinkB": 0.0})
+
+
+def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> None:
+    """Width of a trace, gaps to its neighbours at the same height: marked at the foot, inside the laminate."""
+    feet = _feet(drawing)
+    traces = [foot for foot in feet if foot.role == "trace"]
+    level = [foot for foot in feet if abs(foot.height - traces[0].height) <= 1e-9]
+    spans = [(traces[0].left, traces[0].right, f"width {length_text(traces[0].right - traces[0].left, lengths)}")]
+    for one, other in zip(level, level[1:], strict=False):
+        word = "gap" if one.role == other.role else "ground gap"
+        if not any(f"{word} {length_text(other.left - one.right, lengths)}" == text for _, _, text in spans):
+            spans.append((one.right, other.left, f"{word} {length_text(other.left - one.right, lengths)}"))
+    spans.sort()
+    away = traces[0].away
+    height = traces[0].height + away * view.metres(7.0)
+    for left, right, _ in spans:
+        _dimension(axes, (left, height), (right, height), lengths)
+    fits = all((right - left) >= view.metres(LETTER_WIDTH * SMALL * (len(text) - 1)) for left, right, text in spans)
+    if len(spans) > 1 and not fits:
+        middle = 0.5 * (min(left for left, _, _ in spans) + max(right for _, right, _ in spans))
+        spans = [(middle, middle, ", ".join(text for _, _, text in spans))]
+    for left, right, text in spans:
+        _words(axes, (0.5 * (left + right), height + away * view.metres(14.0)), text, lengths, ha="center")
+
+
+def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> None:
+    """Heights along the upright line through the outermost trace: to the planes, of the copper, of what covers it."""
+    trace = min((item for item in drawing.conductors if item.role == "trace"), key=lambda item: item.outline[:, 0].min())
+    middle = float(_sides(trace).mean())
+    copper = [seen for item in drawing.conductors
+              if (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
+    covers = [seen[1] for item in drawing.regions
+              if (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
+    levels = sorted({round(level, 12) for level in (*(end for seen in copper for end in seen), *covers)})
+    planes = [seen for item in drawing.conductors if item.role == "plane"
+              and (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
+    steps = [(low, high) for low, high in zip(levels, levels[1:], strict=False)
+             if not any(seen[0] <= 0.5 * (low + high) <= seen[1] for seen in planes)]
+    left = min(float(_sides(item)[0]) for item in drawing.conductors if item.role == "trace")
+    edges = _inner_edges(drawing)
+    place = 0.5 * (left + float(edges.min())) if edges.size else left - view.metres(34.0)
+    texts = _apart([0.5 * (low + high) for low, high in steps], view.metres(ROW_HEIGHT * SMALL))
+    for (low, high), height in zip(steps, texts, strict=True):
+        _dimension(axes, (place, low), (place, high), lengths)
+        _words(axes, (place - view.metres(9.0), height), length_text(high - low, lengths), lengths, ha="right")
+
+
+@dataclass(frozen=True, slots=True)
+class Foot:
+    """The wider of the two level faces of a trace or ground [m]; `away` points from it out of the copper."""
+
+    role: str
+    left: float
+    right: float
+    height: float
+    away: float
+
+
+def _feet(drawing: Drawing) -> list[Foot]:
+    """The feet of all traces and grounds, from left to right."""
+    feet = []
+    for conductor in drawing.conductors:
+        if conductor.role == "plane":
+            continue
+        ys = conductor.outline[:, 1]
+        faces = []
+        for height, away in ((float(ys.min()), -1.0), (float(ys.max()), 1.0)):
+            xs = conductor.outline[np.isclose(ys, height, rtol=0.0, atol=1e-12), 0]
+            faces.append(Foot(conductor.role, float(xs.min()), float(xs.max()), height, away))
+        feet.append(max(faces, key=lambda face: (face.right - face.left, -face.away)))
+    return sorted(feet, key=lambda foot: foot.left)
+
+
+def _dimension(axes: Axes, start: tuple[float, float], end: tuple[float, float], lengths: LengthUnit) -> None:
+    unit = METRES_IN[lengths]
+    marker = "|" if start[1] == end[1] else "_"
+    axes.plot([start[0] / unit, end[0] / unit], [start[1] / unit, end[1] / unit], color=INK, linewidth=1.0,
+              marker=marker, markersize=8, markeredgewidth=1.0, zorder=5)
+
+
+def _words(axes: Axes, place: tuple[float, float], text: str, lengths: LengthUnit, *, ha: str) -> None:
+    unit = METRES_IN[lengths]
+    axes.text(place[0] / unit, place[1] / unit, text, ha="center" if ha == "center" else "right", va="center",
+              fontsize=SMALL, zorder=6, clip_on=False,
+              bbox={"facecolor": PAPER, "edgecolor": "none", "alpha": 0.85, "pad": 1.2})

@@ -1,0 +1,170 @@
+"""The answer on the terminal: tables that fit 80 columns.
+
+Colour only strengthens what a word already says, and is left to rich: none where the output is no terminal or
+NO_COLOR is set.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from rich import box
+from rich.padding import Padding
+from rich.table import Table as RichTable
+from rich.text import Text
+
+from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
+from tolerance.report.wording import (
+    CAUTION,
+    METRES_IN,
+    LengthUnit,
+    fixed,
+    length_text,
+    percent,
+    share_with_range,
+    shorten,
+    trimmed,
+    two_rows,
+)
+
+if TYPE_CHECKING:
+    from rich.console import Console
+
+    from tolerance.nominal import CheckResult, NominalLine
+    from tolerance.results import LineResult, RunResult
+
+NARROWEST_NAME = 15
+WIDEST_NAME = 40
+OTHER_COLUMNS = 65  # what the widest table needs beside the names
+DRIVERS_SHOWN = 3
+LONGEST_DRIVER = 34
+NAMES_IN_VERDICT = 4
+
+
+def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
+    """Nominal impedance, effective Dk and delay of each line."""
+    per_length = "mm" if lengths == "um" else "inch"
+    table = _table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
+                   ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
+                   (f"delay\n\n[ps/{per_length}]", False))
+    for line in result.lines:
+        table.add_row(Text(two_rows(line.name, _name_width(console))), *_check_cells(line, lengths))
+    _say(console, result.title, style="bold")
+    _print_table(console, table)
+    if any(line.common_mode is not None for line in result.lines):
+        _say(console, "Pairs: differential impedance with the odd mode's effective Dk and delay, unless the kind says "
+                      "common mode.")
+
+
+def print_run(result: RunResult, console: Console) -> None:
+    """Yield of every line and of the board, what drives it, and how far the numbers can be trusted."""
+    _say(console, result.title, style="bold")
+    _print_table(console, _yield_table(result, _name_width(console)))
+    _print_table(console, _driver_table(result, _name_width(console), console.width))
+    _say(console, f"All lines together: {share_with_range(result.inside)} of {result.coupons:,} coupons pass "
+                  f"(seed {result.seed}).", style="bold")
+    _say_verdict(result, console)
+    _say_impossible(result, console)
+    _say_direct(result, console)
+    _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
+
+
+def _name_width(console: Console) -> int:
+    return min(max(console.width - OTHER_COLUMNS, NARROWEST_NAME), WIDEST_NAME)
+
+
+def _table(*columns: tuple[str, bool]) -> RichTable:
+    """An empty table; a column is its heading and whether it holds text (on the left, may wrap) or numbers."""
+    table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
+    for heading, is_text in columns:
+        table.add_column(Text(heading), justify="left" if is_text else "right", no_wrap=not is_text, overflow="fold")
+    return table
+
+
+def _print_table(console: Console, table: RichTable) -> None:
+    console.print(Padding(table, (1, 0, 1, 0)))
+
+
+def _say(console: Console, sentence: str, *, style: str = "") -> None:
+    console.print(Text(sentence, style=style))
+
+
+def _yield_table(result: RunResult, name_width: int) -> RichTable:
+    table = _table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
+                   ("dev.\n\n[ohm]", False), ("yield\ninterval\n[%]", False), ("below\nabove\n[%]", False),
+                   ("Cpk", False))
+    for line in result.lines:
+        words = line_words(line, result.target_yield)
+        missed = words.verdict == MISSES
+        mark = "bold red" if missed else ""
+        below, above = words.below.removesuffix(" %"), words.above.removesuffix(" %")
+        table.add_row(
+            Text(two_rows(line.name, name_width)), f"{words.target}\n{words.limits}",
+            f"{words.nominal}\n{words.mean}", f"\n{words.deviation}",
+            Text(f"{words.inside.removesuffix(' %')}\n{words.inside_range}", style=mark), f"{below}\n{above}",
+            Text(f"{words.cpk}\n{words.verdict if missed else ''}", style=mark),
+        )
+    return table
+
+
+def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
+    measures = {ranking_name(line) for line in result.lines if line.drivers} or {"total effect"}
+    table = _table(("line", True), (f"largest drivers, by {' or '.join(sorted(measures))}", True),
+                   ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
+    for line in result.lines:
+        table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)), str(line.prediction.solver_runs),
+                      fixed(line.prediction.held_out_error, 4))
+    return table
+
+
+def _drivers(line: LineResult, width: int) -> str:
+    """The largest drivers, broken only between two of them."""
+    rows = [""]
+    for driver in line.drivers[:DRIVERS_SHOWN]:
+        words = f"{shorten(driver.variable, LONGEST_DRIVER)} {percent(ranking(driver).value, 0)}"
+        joined = f"{rows[-1]}, {words}" if rows[-1] else words
+        if len(joined) <= width:
+            rows[-1] = joined
+        else:
+            rows.append(words)
+    return "\n".join(rows) if line.drivers else "none: nothing that varies reaches it"
+
+
+def _say_verdict(result: RunResult, console: Console) -> None:
+    target = f"{trimmed(100.0 * result.target_yield, 3)} %"
+    missing = [line.name for line in result.lines if line.inside.value < result.target_yield]
+    if not missing:
+        _say(console, f"Every line meets the target yield of {target}.")
+        return
+    named = ", ".join(f'"{shorten(name, LONGEST_DRIVER)}"' for name in missing[:NAMES_IN_VERDICT])
+    more = f" and {len(missing) - NAMES_IN_VERDICT} more" if len(missing) > NAMES_IN_VERDICT else ""
+    _say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
+
+
+def _say_impossible(result: RunResult, console: Console) -> None:
+    if result.impossible == 0:
+        return
+    lines = ", ".join(f'"{shorten(line.name, LONGEST_DRIVER)}" {line.impossible:,}'
+                      for line in result.lines if line.impossible)
+    _say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
+                  f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
+
+
+def _say_direct(result: RunResult, console: Console) -> None:
+    for line in result.lines:
+        if line.direct is not None:
+            _say(console, f'Field solver itself on {line.direct.coupons:,} coupons of '
+                          f'"{shorten(line.name, LONGEST_DRIVER)}": predictions off by at most '
+                          f"{fixed(line.direct.largest, 4)} ohm, verdicts that differ: "
+                          f"{line.direct.verdicts_that_differ}.")
+
+
+def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:
+    per_length = 1e-3 if lengths == "um" else 1000.0 * METRES_IN["mil"]
+    details = [line.kind, f"{line.layer} over {', '.join(line.references)}" if line.references else line.layer,
+               *(f"{name} {length_text(size, lengths)}" for name, size in line.dimensions)]
+    if line.common_mode is not None:
+        details.append(f"common {fixed(line.common_mode, 2)} ohm")
+    return (Text("\n".join(details)), trimmed(line.target, 2), fixed(line.impedance, 2),
+            fixed(100.0 * (line.impedance / line.target - 1.0), 1), fixed(line.effective_dk, 3),
+            fixed(line.delay * per_length * 1e12, 2 if lengths == "um" else 1))

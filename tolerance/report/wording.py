@@ -1,0 +1,84 @@
+"""How numbers are worded: the same digits in text, sheet and figure, and no more of them than are known."""
+
+from __future__ import annotations
+
+import math
+import textwrap
+from typing import TYPE_CHECKING, Literal
+
+if TYPE_CHECKING:
+    from tolerance.results import Interval
+
+LengthUnit = Literal["um", "mil"]
+
+METRES_IN = {"um": 1e-6, "mil": 25.4e-6}
+LENGTH_DIGITS = {"um": 1, "mil": 2}
+MOST_PERCENT_DIGITS = 4
+CAUTION = ("A predicted yield is an estimate: it is as good as the tolerances that went in. "
+           "The fabricator's process data and measured coupons decide.")
+
+
+def fixed(value: float | None, digits: int) -> str:
+    """The value with so many digits after the point; "-" where there is none."""
+    if value is None or not math.isfinite(value):
+        return "-"
+    text = f"{value:.{digits}f}"
+    return text.removeprefix("-") if float(text) == 0.0 else text
+
+
+def percent_digits(interval: Interval) -> int:
+    """Digits after the point of a percentage that its interval allows: the last one moves by 2 to 20 inside it."""
+    half_width = 100.0 * max(interval.high - interval.value, interval.value - interval.low)
+    if not half_width > 0.0:
+        return MOST_PERCENT_DIGITS
+    return min(max(math.ceil(-math.log10(half_width / 2.0)), 0), MOST_PERCENT_DIGITS)
+
+
+def percent(share: float, digits: int) -> str:
+    """0.9843 -> "98.43 %"."""
+    return f"{fixed(100.0 * share, digits)} %"
+
+
+def share_text(interval: Interval) -> str:
+    """The share in percent, with the digits that its interval allows."""
+    return percent(interval.value, percent_digits(interval))
+
+
+def share_range_text(interval: Interval) -> str:
+    """The ends of a share's interval in percent: "[98.38, 98.48]"."""
+    digits = percent_digits(interval)
+    return f"[{fixed(100.0 * interval.low, digits)}, {fixed(100.0 * interval.high, digits)}]"
+
+
+def share_with_range(interval: Interval) -> str:
+    """98.43 % [98.38, 98.48]."""
+    return f"{share_text(interval)} {share_range_text(interval)}"
+
+
+def trimmed(value: float, digits: int) -> str:
+    """The value with at most so many digits after the point: 50.0 -> "50"."""
+    text = fixed(value, digits)
+    return text.rstrip("0").rstrip(".") if "." in text else text
+
+
+def length_text(metres: float, lengths: LengthUnit) -> str:
+    """180e-6 -> "180 um"; "7.09 mil"."""
+    return f"{trimmed(metres / METRES_IN[lengths], LENGTH_DIGITS[lengths])} {lengths}"
+
+
+def shorten(text: str, width: int) -> str:
+    """The text in at most `width` signs on one line, cut in its middle: names mostly differ at their ends."""
+    text = " ".join(text.split())
+    if len(text) <= width:
+        return text
+    kept = width - 3
+    return f"{text[:kept - kept // 2].rstrip()}...{text[len(text) - kept // 2:].lstrip()}"
+
+
+def two_rows(text: str, width: int) -> str:
+    """The text on at most two rows of so many signs, broken between words where that serves."""
+    text = " ".join(text.split())
+    rows = textwrap.wrap(text, width)
+    if len(rows) <= 2:
+        return "\n".join(rows)
+    return f"{rows[0]}\n...{text[3 - width:].lstrip()}"
