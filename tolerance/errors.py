@@ -5,7 +5,8 @@ Anything else that is raised keeps its traceback: it is a defect of this program
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import json
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 
@@ -29,7 +30,10 @@ class InputError(ToleranceError):
 
 @dataclass(frozen=True, slots=True)
 class Problem:
-    """One mistake in a scenario: where it stands, what was given, and what is allowed."""
+    """One mistake in a scenario: where it stands, what was given, and what is allowed.
+
+    `entry` is the name of the entry of a table; one that has none is told by its `number`, counted from 1.
+    """
 
     file: str
     table: str
@@ -37,11 +41,16 @@ class Problem:
     entry: str = ""
     key: str = ""
     given: object = None
+    number: int = 0
 
     def __str__(self) -> str:
         """`orchard.toml: [[lines]] "clock pair": gap = "-4 mil": must be a length above 0 um`."""
-        place = self.table + (f' "{self.entry}"' if self.entry else "")
-        value = f" = {_as_toml(self.given)}" if self.given is not None else ""
+        place = self.table
+        if self.entry:
+            place += f" {as_toml(self.entry)}"
+        elif self.number:
+            place += f" number {self.number}"
+        value = f" = {as_toml(self.given)}" if self.given is not None else ""
         parts = [self.file, place, self.key + value if self.key else "", self.allowed]
         return ": ".join(part for part in parts if part)
 
@@ -56,9 +65,25 @@ class ScenarioError(ToleranceError):
         super().__init__("\n".join(str(problem) for problem in self.problems))
 
 
-def _as_toml(value: object) -> str:
-    """The value as it would stand in the scenario, cut where it is long."""
+_LONGEST_SHOWN = 80
+
+
+def as_toml(value: object) -> str:
+    """The value as it would stand in the scenario, on one line, cut where it is long."""
+    text = _toml_text(value)
+    return text if len(text) <= _LONGEST_SHOWN else text[: _LONGEST_SHOWN - 3] + "..."
+
+
+def _toml_text(value: object) -> str:
     if isinstance(value, bool):
         return "true" if value else "false"
-    text = f'"{value}"' if isinstance(value, str) else str(value)
-    return text if len(text) <= 80 else text[:77] + "..."
+    if isinstance(value, int) and value.bit_length() > 4 * _LONGEST_SHOWN:
+        return "an integer of very many digits"
+    if isinstance(value, str):
+        return json.dumps(value[: 2 * _LONGEST_SHOWN], ensure_ascii=False)
+    if isinstance(value, Mapping):
+        pairs = ", ".join(f"{name} = {as_toml(item)}" for name, item in value.items())
+        return f"{{ {pairs} }}" if pairs else "{}"
+    if isinstance(value, Sequence):
+        return "[" + ", ".join(as_toml(item) for item in value[:_LONGEST_SHOWN]) + "]"
+    return str(value)

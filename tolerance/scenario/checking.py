@@ -1,0 +1,74 @@
+"""A scenario read and checked whole: every problem in one go, or a Scenario that nobody needs to check again."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterable, Sequence
+from pathlib import Path
+
+from tolerance.errors import ScenarioError
+from tolerance.scenario.documents import Document, Finding
+from tolerance.scenario.drafts import Draft, Drafts, Model, draft_tables
+from tolerance.scenario.entry_rules import entry_findings
+from tolerance.scenario.not_yet import not_yet_findings
+from tolerance.scenario.reading import document_of, read_document
+from tolerance.scenario.stack_rules import stack_findings
+from tolerance.scenario.tables import FORMAT, Report, Scenario
+from tolerance.scenario.variation_rules import variation_findings
+
+
+def load(path: str | os.PathLike[str]) -> Scenario:
+    """The scenario in the TOML file at `path`, with all it extends.
+
+    Raises InputError when there is no such file to read, ScenarioError with every problem of its text otherwise.
+    """
+    document, findings = read_document(Path(path))
+    return _checked(document, findings, source=str(path))
+
+
+def parse(text: str, *, name: str = "scenario.toml", folder: str | os.PathLike[str] = ".") -> Scenario:
+    """The scenario in a text, as if it stood in the file `name` in `folder`. Raises ScenarioError."""
+    content = text.encode("utf-8", errors="surrogatepass")
+    document, findings = document_of(content, name=name, folder=Path(folder))
+    return _checked(document, findings, source=name)
+
+
+def _checked(document: Document, findings: Sequence[Finding], *, source: str) -> Scenario:
+    """The document as a Scenario. Raises ScenarioError with all problems, sorted by place."""
+    drafts, found = draft_tables(document)
+    problems = [*findings, *found, *entry_findings(drafts), *stack_findings(drafts), *variation_findings(drafts)]
+    problems = _one_for_each_key([*problems, *not_yet_findings(document)])
+    if problems:
+        raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])
+    return _scenario(document, drafts, source)
+
+
+def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
+    """The first problem of every key; names in lists may each have one."""
+    kept: dict[tuple[object, ...], Finding] = {}
+    for finding in findings:
+        problem = finding.problem
+        several = problem.allowed if problem.key in ("of", "between", "references") else ""
+        kept.setdefault((finding.place, problem.table, problem.entry, problem.key, several), finding)
+    return list(kept.values())
+
+
+def _scenario(document: Document, drafts: Drafts, source: str) -> Scenario:
+    return Scenario(
+        format=FORMAT, title=document.top.values["title"], evaluation=_model(drafts.evaluation),
+        layers=_models(drafts.layers), lines=_models(drafts.lines), variations=_models(drafts.variations),
+        correlations=_models(drafts.correlations), offers=_models(drafts.offers),
+        test=None if drafts.test is None else _model(drafts.test),
+        report=_model(drafts.report) if "report" in document.tables else Report(),
+        source=source, text=document.text,
+    )
+
+
+def _models(drafts: Iterable[Draft[Model]]) -> tuple[Model, ...]:
+    return tuple(_model(draft) for draft in drafts)
+
+
+def _model(draft: Draft[Model]) -> Model:
+    if draft.model is None:
+        raise AssertionError("a table without a model has a problem, and that was told")
+    return draft.model

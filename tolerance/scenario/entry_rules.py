@@ -1,0 +1,219 @@
+"""What the keys of one entry say together: which keys a kind of layer, of line, of variation takes and needs."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from types import MappingProxyType
+from typing import NamedTuple
+
+from tolerance.scenario.documents import Finding
+from tolerance.scenario.drafts import Draft, Drafts, kind_of
+from tolerance.scenario.keys import Range, listed
+from tolerance.scenario.tables import (
+    COPPER,
+    CORE,
+    LARGEST_COUPONS,
+    MASK,
+    PREPREG,
+    SMALLEST_COUPONS,
+    Evaluation,
+    ImpedanceTest,
+    Layer,
+    LevelShares,
+    Line,
+    Variation,
+)
+
+RESIN_KEYS = ("resin_dk", "glass_dk", "resin_content", "glass_areal_weight")
+
+
+class LayerKeys(NamedTuple):
+    """Keys that a kind of layer needs, and those it takes besides."""
+
+    needed: tuple[str, ...]
+    taken: tuple[str, ...]
+
+
+LAYER_KEYS: Mapping[str, LayerKeys] = MappingProxyType({
+    MASK: LayerKeys(("thickness", "over_copper", "dk"), ("df", "dk_frequency")),
+    COPPER: LayerKeys(("use", "foil"), ("plating", "etch_factor", "foot", "conductivity", "roughness_foot",
+                                        "roughness_crest")),
+    PREPREG: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS)),
+    CORE: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS)),
+})
+
+_ENDS = ("low", "high")
+_MEASURED = ("file", "column", "sheet")
+
+
+class ShapeKeys(NamedTuple):
+    """Which of the exclusive keys a shape takes."""
+
+    sigmas: bool = False
+    cpk: bool = False
+    ends: bool = False
+
+
+SHAPE_KEYS: Mapping[str, ShapeKeys] = MappingProxyType({
+    "normal": ShapeKeys(sigmas=True, cpk=True),
+    "truncated_normal": ShapeKeys(sigmas=True, ends=True),
+    "uniform": ShapeKeys(ends=True),
+    "triangular": ShapeKeys(ends=True),
+    "lognormal": ShapeKeys(sigmas=True),
+})
+
+
+def entry_findings(drafts: Drafts) -> Iterator[Finding]:
+    """Everything that keys of one entry have wrong together."""
+    has_frequency = "frequency" in drafts.evaluation.entry.values
+    has_limit = "limit" in drafts.evaluation.entry.values
+    for layer in drafts.layers:
+        yield from _layer(layer, has_frequency)
+    for line in drafts.lines:
+        yield from _line(line, has_limit)
+    for variation in drafts.variations:
+        yield from _variation(variation)
+    if drafts.test is not None:
+        yield from _test(drafts.test)
+    yield from _coupons(drafts.evaluation, drafts.variations)
+
+
+def _layer(draft: Draft[Layer], has_frequency: bool) -> Iterator[Finding]:
+    entry, kind = draft.entry, draft.text("kind")
+    if kind is None:
+        return
+    needed, taken = LAYER_KEYS[kind]
+    by_resin = any(key in entry.values for key in RESIN_KEYS)
+    known = ("name", "kind", *needed, *taken)
+    for key in entry.values:
+        if key not in known and key not in draft.bad:
+            yield entry.finding(key, f"not a key of {kind}, which has {listed(known[2:], 'and')}")
+    if by_resin and kind in (PREPREG, CORE):
+        needed = RESIN_KEYS
+        if "dk" in entry.values:
+            yield entry.finding("dk", f"not together with {listed(RESIN_KEYS, 'and')}: give one or the other")
+    if has_frequency and kind != COPPER:
+        needed = (*needed, "df")
+    for key in needed:
+        if key not in entry.values:
+            why = " (needed with evaluation.frequency)" if key == "df" else ""
+            yield entry.finding(key, f"missing; must be {kind_of(Layer, key).allowed}{why}")
+
+
+def _line(draft: Draft[Line], has_limit: bool) -> Iterator[Finding]:
+    entry, values = draft.entry, draft.entry.values
+    if "limit" not in values and not has_limit:
+        yield entry.finding("limit", f"missing here and in [evaluation]; must be {kind_of(Line, 'limit').allowed}")
+    if "partner" in values:
+        for key in ("gap", "ground_gap"):
+            if key in values:
+                yield entry.finding(key, "not together with partner, which makes the line a broadside pair")
+    elif "offset" in values:
+        yield entry.finding("offset", "only together with partner: it shifts the partner of a broadside pair")
+    if "mode" in values and "gap" not in values and "partner" not in values:
+        yield entry.finding("mode", "only for pairs: together with gap or partner")
+
+
+def _variation(draft: Draft[Variation]) -> Iterator[Finding]:
+    entry = draft.entry
+    if "shape" in draft.bad:
+        return
+    shape = str(entry.values.get("shape", "normal"))
+    if shape == "measured":
+        yield from _measured(draft)
+        return
+    for key in _MEASURED:
+        if key in entry.values:
+            yield entry.finding(key, 'only with shape = "measured"')
+    yield from _half_width(draft, shape)
+    takes = SHAPE_KEYS[shape]
+    for key, taken in (("sigmas", takes.sigmas), ("cpk", takes.cpk)):
+        if key in entry.values and not taken:
+            shapes = [f'"{name}"' for name, keys in SHAPE_KEYS.items() if getattr(keys, key)]
+            yield entry.finding(key, f"only with shape = {listed(shapes)}")
+    if takes.cpk and "sigmas" in entry.values and "cpk" in entry.values:
+        yield entry.finding("cpk", "not together with sigmas: give one or the other")
+
+
+def _half_width(draft: Draft[Variation], shape: str) -> Iterator[Finding]:
+    """Either `tolerance`, or `low` and `high` where the shape takes them."""
+    entry, model = draft.entry, draft.model
+    ends = [key for key in _ENDS if key in entry.values]
+    with_ends = SHAPE_KEYS[shape].ends
+    if ends and not with_ends:
+        shapes = [f'"{name}"' for name, keys in SHAPE_KEYS.items() if keys.ends]
+        yield from (entry.finding(key, f"only with shape = {listed(shapes)}") for key in ends)
+    elif ends and "tolerance" in entry.values:
+        yield entry.finding("tolerance", "not together with low and high: give one or the other")
+    elif len(ends) == 1:
+        missing = "high" if ends == ["low"] else "low"
+        yield entry.finding(missing, f"missing; low and high stand together: {kind_of(Variation, missing).allowed}")
+    elif ends and shape == "uniform" and "shift" in entry.values:
+        yield entry.finding("shift", "not together with the low and high of a uniform, which say all")
+    if not ends and "tolerance" not in entry.values:
+        instead = "; or low and high instead" if with_ends else ""
+        yield entry.finding("tolerance", f"missing; must be {kind_of(Variation, 'tolerance').allowed}{instead}")
+    if model is not None and model.low is not None and model.high is not None and model.low >= model.high:
+        yield entry.finding("high", "must be above low")
+
+
+def _measured(draft: Draft[Variation]) -> Iterator[Finding]:
+    entry = draft.entry
+    for key in ("file", "column"):
+        if key not in entry.values:
+            yield entry.finding(key, f"missing; shape = \"measured\" needs {kind_of(Variation, key).allowed}")
+    for key in ("tolerance", *_ENDS, "sigmas", "cpk"):
+        if key in entry.values:
+            yield entry.finding(key, 'not with shape = "measured", which takes its spread from the file')
+    file = draft.text("file")
+    if file is None:
+        return
+    place = entry.places["file"]
+    suffix = file.rpartition(".")[2].lower()
+    if suffix not in ("csv", "xlsx"):
+        yield entry.finding("file", "must be the path of a CSV or XLSX file: its name must end in .csv or .xlsx")
+    elif not (place.folder / file).is_file():
+        yield entry.finding("file", f"must be the path of a file, from the folder of {place.file}: there is none")
+    if suffix == "csv" and "sheet" in entry.values:
+        yield entry.finding("sheet", "only with an XLSX file")
+
+
+def _test(draft: Draft[ImpedanceTest]) -> Iterator[Finding]:
+    entry, test = draft.entry, draft.model
+    for key, other in (("sample_size", "accept_number"), ("accept_number", "sample_size")):
+        if key in entry.values and other not in entry.values:
+            yield entry.finding(other, f"missing; {key} and accept_number stand together" if other == "accept_number"
+                                else f"missing; {key} and sample_size stand together")
+    if test is None or test.sample_size is None or test.accept_number is None:
+        return
+    coupons = test.panels_per_lot * test.coupons_per_panel
+    if test.sample_size > coupons:
+        yield entry.finding("sample_size", f"must be at most the {coupons} coupons of a lot "
+                                           "(panels_per_lot x coupons_per_panel)")
+    if test.accept_number >= test.sample_size:
+        yield entry.finding("accept_number", f"must be below sample_size, {test.sample_size}")
+
+
+def _coupons(draft: Draft[Evaluation], variations: tuple[Draft[Variation], ...]) -> Iterator[Finding]:
+    """A power of two, unless coupons are drawn as whole lots."""
+    coupons = draft.entry.values.get("coupons")
+    if coupons is None or "coupons" in draft.bad or any(has_levels(variation) for variation in variations):
+        return
+    if coupons & (coupons - 1) or not Range(SMALLEST_COUPONS, LARGEST_COUPONS).holds(coupons):
+        nearest = _nearest_powers(coupons)
+        yield draft.entry.finding("coupons", f"must be a power of two from {SMALLEST_COUPONS} to {LARGEST_COUPONS}"
+                                             f", such as {nearest}")
+
+
+def has_levels(draft: Draft[Variation]) -> bool:
+    """Whether the variation has a share at lot or panel level."""
+    if "level" in draft.bad or "level" not in draft.entry.values:
+        return False
+    level = kind_of(Variation, "level").read(draft.entry.values["level"], from_file=True)
+    return isinstance(level, LevelShares) and (level.lot > 0.0 or level.panel > 0.0)
+
+
+def _nearest_powers(coupons: int) -> str:
+    below = max(SMALLEST_COUPONS, 1 << (coupons.bit_length() - 1))
+    above = min(LARGEST_COUPONS, below * 2)
+    return f"{below} or {above}" if below < coupons else f"{below}"
