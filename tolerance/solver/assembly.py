@@ -67,7 +67,7 @@ def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: S
 
 
 def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, air: bool = False) -> FloatArray:
-    """True charge on the right-hand trace (or right half) at potential 1, even or odd: (sections,), capacitance / eps0.
+    """Charge on the right-hand trace (or right half) at potential 1, even or odd: (sections,), capacitance / eps0.
 
     air : copper alone, every Dk 1.
     """
@@ -84,8 +84,7 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
         _turn_into_interface_conditions(matrix, system)
     wanted = np.zeros((matrix.shape[0], size, 1))
     wanted[:, : system.copper, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    charges = np.linalg.solve(matrix, wanted)[:, : system.copper, 0]
-    return np.asarray((charges * _true_shares(system, air)).sum(axis=1))
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.copper, 0].sum(axis=1))
 
 
 def _image_matrices(
@@ -173,13 +172,3 @@ def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:
             diagonal = np.arange(start, stop)
             matrix[:, diagonal, diagonal] += (0.5 * (edge.left_dk + edge.right_dk))[:, None] / nodes.jacobian
         start = stop
-
-
-def _true_shares(system: System, air: bool) -> FloatArray:
-    parts = []
-    for nodes in system.nodes:
-        if nodes.edge.role == "copper":
-            share = nodes.edge.true_share
-            parts.append(np.ones_like(nodes.across) if share is None or air
-                         else np.broadcast_to(share[:, None], nodes.across.shape))
-    return np.concatenate(parts, axis=1)

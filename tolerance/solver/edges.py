@@ -12,7 +12,7 @@ from typing import Literal
 import numpy as np
 
 from tolerance.arrays import FloatArray
-from tolerance.sections.section import Ply, Section
+from tolerance.sections.section import Section
 from tolerance.solver.rules import Rule, graded_rule, refinement, self_potential, tail_rule
 
 Role = Literal["copper", "dielectric"]
@@ -27,7 +27,6 @@ class Edge:
     folded : it crosses x = 0 symmetrically and only its right half carries unknowns (copper of single lines).
     tail   : it runs sideways from `start` to infinity, and `stop` holds `start` moved by the scale of its nodes.
     left_dk, right_dk : Dk on either side of a dielectric edge, seen along its direction.
-    true_share : true charge over the charge in the kernel's body, for a copper edge that faces another dielectric.
     """
 
     name: str
@@ -38,7 +37,6 @@ class Edge:
     tail: bool = False
     left_dk: FloatArray | None = None
     right_dk: FloatArray | None = None
-    true_share: FloatArray | None = None
 
     @property
     def length(self) -> FloatArray:
@@ -106,8 +104,9 @@ def _places(edge: Edge, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray
     return across, height
 
 
-def trace_edges(section: Section, *, foot_height: FloatArray, crest_height: FloatArray) -> list[Edge]:
-    """Faces of the right-hand trace (or of the right half of a single one), its foot and crest at these heights."""
+def trace_edges(section: Section) -> list[Edge]:
+    """Faces of the right-hand trace, or of the right half of a single one."""
+    foot_height, crest_height = np.zeros(section.count), section.thickness
     setback = 0.5 * (section.foot_width - section.crest_width)
     if section.gap is None:
         foot_end, crest_end = 0.5 * section.foot_width, 0.5 * section.crest_width
@@ -132,24 +131,6 @@ def outer_foot_edge(section: Section) -> FloatArray:
     return 0.5 * section.gap + section.foot_width
 
 
-def flat_cover_edges(section: Section, *, plies: tuple[Ply, ...], base: FloatArray, split: FloatArray) -> list[Edge]:
-    """Upper faces of flat plies stacked from height `base` upwards, the last one facing air.
-
-    Each is cut at x = `split` into a middle piece and a tail.
-    """
-    edges: list[Edge] = []
-    height = base
-    uppers = [ply.dk for ply in plies[1:]] + [np.ones(section.count)]
-    for number, (ply, upper) in enumerate(zip(plies, uppers, strict=True)):
-        height = height + ply.thickness
-        zero = np.zeros(section.count)
-        name = f"cover {number}"
-        edges.append(Edge(f"{name} middle", "dielectric", (zero, height), (split, height),
-                          left_dk=upper, right_dk=ply.dk))
-        edges.append(_tail(f"{name} tail", split, height, 3.0 * height, left=upper, right=ply.dk))
-    return edges
-
-
 def mask_edges(section: Section, *, merged: bool) -> list[Edge]:
     """Face of a mask that follows the trace: mesa top, its walls, and the flat beyond (height from the foot).
 
@@ -171,18 +152,6 @@ def mask_edges(section: Section, *, merged: bool) -> list[Edge]:
     if section.gap is not None and not merged:
         edges.append(Edge("mesa inner wall", "dielectric", (inner, flat), (inner, top), left_dk=air, right_dk=mask.dk))
         edges.append(Edge("flat between", "dielectric", (zero, flat), (inner, flat), left_dk=air, right_dk=mask.dk))
-    return edges
-
-
-def foot_level_edges(section: Section, *, height: FloatArray, below_dk: FloatArray, above_dk: FloatArray) -> list[Edge]:
-    """The face between two dielectrics at the level of a foot that looks away from the plane."""
-    outer = outer_foot_edge(section)
-    scale = height + section.foot_width
-    edges = [_tail("foot level tail", outer, height, scale, left=above_dk, right=below_dk)]
-    if section.gap is not None:
-        zero = np.zeros(section.count)
-        edges.append(Edge("foot level between", "dielectric", (zero, height), (0.5 * section.gap, height),
-                          left_dk=above_dk, right_dk=below_dk))
     return edges
 
 

@@ -8,7 +8,7 @@ counted from the lower face of that layer. Transformed along x with wavenumber k
 Written as -1 / (2 pi Dk) * M, the kernels below give M as three kinds of terms:
   near images   : the charge mirrored at a face of the body, that may touch the charge itself;
   far images    : charges `shift` below the mirror image at y = 0, well away from every charge;
-  spectral rest : a smooth remainder, as a quadrature over k (between two planes only).
+  spectral rest : a smooth remainder, as a quadrature over k (where flat plies or planes lie on both sides).
 """
 
 from __future__ import annotations
@@ -27,34 +27,37 @@ LAST_EXPONENT = 17.0
 
 @dataclass(frozen=True, slots=True)
 class FlatStack:
-    """Flat plies on one side of the body, outwards, down to a plane: arrays (sections,) [m] and [-]."""
+    """Flat plies on one side of the body, outwards, then a plane or air: arrays (sections,) [m] and [-]."""
 
     thicknesses: tuple[FloatArray, ...]
     dks: tuple[FloatArray, ...]
+    plane: bool = True
 
     @property
     def depth(self) -> FloatArray:
-        """From the body to the plane [m]."""
+        """From the body to the end of the plies [m]."""
         return np.asarray(sum(self.thicknesses))
 
     def in_air(self) -> FlatStack:
         """The same plies with Dk 1."""
-        return FlatStack(self.thicknesses, tuple(np.ones_like(dk) for dk in self.dks))
+        return FlatStack(self.thicknesses, tuple(np.ones_like(dk) for dk in self.dks), self.plane)
 
     def reflection(self, wavenumber: FloatArray, body_dk: FloatArray) -> FloatArray:
         """Reflected over arriving potential at the face of the body; `wavenumber` and result (sections, k)."""
-        result = -np.ones_like(wavenumber)
+        innermost = self.dks[-1] if self.dks else body_dk
+        ending = -np.ones_like(body_dk) if self.plane else (innermost - 1.0) / (innermost + 1.0)
+        result = np.broadcast_to(ending[:, None], wavenumber.shape)
         uppers = (body_dk, *self.dks)[: len(self.dks)]
         for thickness, dk, upper in reversed(list(zip(self.thicknesses, self.dks, uppers, strict=True))):
             step = ((upper - dk) / (upper + dk))[:, None]
             wave = result * np.exp(-2.0 * wavenumber * thickness[:, None])
             result = (step + wave) / (1.0 + step * wave)
-        return result
+        return np.asarray(result)
 
     def first_reflection(self, body_dk: FloatArray) -> FloatArray:
         """The reflection of the nearest face alone: the limit of large wavenumber; -1 where that is the plane."""
         if not self.dks:
-            return -np.ones_like(body_dk)
+            return -np.ones_like(body_dk) if self.plane else np.asarray((body_dk - 1.0) / (body_dk + 1.0))
         return np.asarray((body_dk - self.dks[0]) / (body_dk + self.dks[0]))
 
 
@@ -68,7 +71,7 @@ class FarImages:
 
 @dataclass(frozen=True, slots=True)
 class SpectralRest:
-    """What near images leave between two planes: M_rest = -2 * sum over k of a(k) u(x, y; k) u'(x', y'; k).
+    """What near images leave of flat plies on both sides: M_rest = -2 * sum over k of a(k) u(x, y; k) u'(x', y'; k).
 
     wavenumber : (sections, k) [1/m].  lower, upper, cross : factors, quadrature weight over k included, of
     exp(-k (y + y')), exp(-k (2 D - y - y')) and exp(-k (D + y - y')) with its mirror, D the body's thickness.
@@ -132,14 +135,14 @@ def spectral_rest(
     *, below: FlatStack, above: FlatStack, body_dk: FloatArray, body_thickness: FloatArray, distance: FloatArray,
     count: int,
 ) -> SpectralRest:
-    """The rest between two planes beyond the images at both faces of the body.
+    """The rest, beyond the images at both faces of the body, of the plies and planes on both sides.
 
     distance : (sections,) [m], the shortest way of any ray that the near images leave out.  count : nodes over k.
     """
     nodes, weights = np.polynomial.legendre.leggauss(count)
     last = LAST_EXPONENT / distance
-    wavenumber = last[:, None] * 0.5 * (1.0 + nodes)
-    weight = 0.5 * last[:, None] * weights / wavenumber
+    wavenumber = last[:, None] * (0.5 * (1.0 + nodes)) ** 2
+    weight = weights * 2.0 / (1.0 + nodes)  # over the wavenumber: d k / k
     down, up = below.reflection(wavenumber, body_dk), above.reflection(wavenumber, body_dk)
     first_down, first_up = below.first_reflection(body_dk), above.first_reflection(body_dk)
     crossing = np.exp(-wavenumber * body_thickness[:, None])

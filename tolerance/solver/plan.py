@@ -49,12 +49,9 @@ def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
     settings = settings or SolverSettings()
     nominal = section.rows(slice(0, 1))
     parts = structure(nominal)
-    depth_ratio = float(parts.below.depth[0] / parts.below.thicknesses[0][0])
     counts = {edge.name: _counts(edge, ratio, settings) for edge, ratio in _crowding(parts)}
     return Plan(
-        counts=counts,
-        multiples=image_multiples(plies=len(parts.below.thicknesses), depth_ratio=depth_ratio),
-        wavenumbers=_wavenumbers(parts), settings=settings,
+        counts=counts, multiples=_multiples(parts), wavenumbers=_wavenumbers(parts), settings=settings,
     )
 
 
@@ -63,16 +60,26 @@ def _counts(edge: Edge, ratio: float, settings: SolverSettings) -> tuple[int, in
     if edge.tail:
         return settings.tail_nodes, 2 * settings.tail_nodes
     base = settings.copper_nodes if edge.role == "copper" else settings.dielectric_nodes
-    more = max(0.0, math.log2(ratio / 4.0)) if ratio > 0.0 else 0.0
-    unknowns = _even(base + 3.0 * more)
-    return unknowns, _even(max(2.0 * unknowns, 1.6 * ratio))
+    more = max(0.0, math.log2(ratio / 2.5)) if ratio > 0.0 else 0.0
+    unknowns = _even(base + 4.0 * more)
+    return unknowns, _even(max(2.0 * unknowns, 2.0 * ratio))
+
+
+def _multiples(parts: Structure) -> tuple[float, ...]:
+    if parts.above is not None:
+        return ()
+    depth_ratio = float(parts.below.depth[0] / parts.below.thicknesses[0][0])
+    return image_multiples(plies=len(parts.below.thicknesses), depth_ratio=depth_ratio)
 
 
 def _wavenumbers(parts: Structure) -> int:
+    """Enough to follow cos(k x) across the section and the decay with the whole depth of the plies."""
     if parts.above is None:
         return 0
-    reach = 2.0 * max(float(np.abs(end[0]).max()) for edge in parts.edges for end in (edge.start, edge.stop))
-    return math.ceil(12.0 + 0.25 * LAST_EXPONENT * reach / float(shortest_remaining_way(parts)[0]))
+    shortest = float(shortest_remaining_way(parts)[0])
+    across = max(float(np.abs(end[0]).max()) for edge in parts.edges for end in (edge.start, edge.stop))
+    depth = float(np.max([parts.below.depth + parts.above.depth]))
+    return math.ceil(16.0 + 0.5 * LAST_EXPONENT * 2.0 * across / shortest + 4.0 * math.sqrt(depth / shortest))
 
 
 def _crowding(parts: Structure) -> list[tuple[Edge, float]]:
@@ -83,7 +90,7 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float]]:
     outlines = [(edge, _points(edge)) for edge in parts.edges]
     others = [(edge, points) for edge, points in outlines]
     others += [(edge, points * [-1.0, 1.0]) for edge, points in outlines if not edge.folded]
-    levels = [-float(parts.below.thicknesses[0][0])]
+    levels = [-float(parts.below.thicknesses[0][0])] if parts.below.thicknesses else []
     if parts.above is not None and parts.body_thickness is not None:
         levels.append(float(parts.body_thickness[0]))
     result = []
