@@ -18,7 +18,7 @@ from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.errors import Problem, ScenarioError
 from tolerance.process.laws import Law, quantile
 from tolerance.scenario.properties import Property, members, properties
-from tolerance.scenario.tables import Scenario, Variation
+from tolerance.scenario.tables import COPPER, Scenario, Variation
 
 REPLICATES = 8  # independent scrambles of a sample; with 16 intervals of the yield are no narrower, of the mean wider
 SOBOL_BITS = 30  # of a coordinate; points are moved to the middle of their cell, so that 0 never occurs
@@ -38,7 +38,11 @@ class Variable:
 
 @dataclass(frozen=True, slots=True)
 class Process:
-    """All that varies. nominals: by property name [SI]; correlation: of the germs, (variables, variables)."""
+    """All that varies, and the nominals of it and of what does not.
+
+    nominals : by property name [SI]; a copper layer has its plating and etch factor there even where 0 or infinite.
+    correlation : of the germs, (variables, variables).
+    """
 
     variables: tuple[Variable, ...]
     nominals: Mapping[str, float]
@@ -46,7 +50,7 @@ class Process:
 
     @property
     def is_correlated(self) -> bool:
-        return bool(np.any(self.correlation != np.eye(len(self.variables))))
+        return len(correlated_groups(self.correlation)) > 0
 
 
 @dataclass(frozen=True, slots=True)
@@ -97,6 +101,9 @@ def process_of(scenario: Scenario) -> Process:
     """The variables of a scenario in its order, and their correlation. Raises ScenarioError, see `correlation_of`."""
     variables = tuple(variable for variation in scenario.variations for variable in _variables(scenario, variation))
     nominals = {each.name: each.nominal for each in properties(scenario)}
+    for layer in scenario.layers:
+        if layer.kind == COPPER:  # also where they are 0 or infinite, and so cannot vary
+            nominals |= {f"{layer.name}.plating": layer.plating, f"{layer.name}.etch_factor": layer.etch_factor}
     return Process(variables, MappingProxyType(nominals), correlation_of(scenario, variables))
 
 

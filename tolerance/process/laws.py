@@ -83,21 +83,21 @@ def quantile(law: Law, germ: FloatArray, *, reference: float) -> FloatArray:
     """
     centre = law.centre(reference=reference)
     if law.shape == "normal":
-        return centre + law.deviation(reference=reference) * germ
+        return np.asarray(centre + law.deviation(reference=reference) * germ, dtype=np.float64)
     if law.shape == "lognormal":
-        return centre * np.exp(law.deviation(reference=reference) * germ)
+        return np.asarray(centre * np.exp(law.deviation(reference=reference) * germ), dtype=np.float64)
     low, high = law.ends(reference=reference)
     if low == high:
         return np.full_like(germ, low)
     if law.shape == "uniform":
-        return 0.5 * (low + high) + 0.5 * (high - low) * erf(germ * np.sqrt(0.5))
+        return np.asarray(0.5 * (low + high) + 0.5 * (high - low) * erf(germ * np.sqrt(0.5)), dtype=np.float64)
     if law.shape == "triangular":
         if not low <= centre <= high:
             raise InputError("a triangular law needs its peak, nominal + shift, between its ends")
         return low + (high - low) * _triangular(germ, peak=(centre - low) / (high - low))
     deviation = law.deviation(reference=reference)
     cut = _cut_normal(germ, low=(low - centre) / deviation, high=(high - centre) / deviation)
-    return np.clip(centre + deviation * cut, low, high)  # only rounding can lie outside
+    return np.asarray(np.clip(centre + deviation * cut, low, high), dtype=np.float64)  # only rounding can lie outside
 
 
 def _triangular(germ: FloatArray, *, peak: float) -> FloatArray:

@@ -67,12 +67,12 @@ def judge(
     Raises UnfinishedError where so few coupons of a line are possible that nothing can be said of its impedance.
     """
     errors = np.zeros(len(limits)) if impedance_error is None else impedance_error
-    lines, passing, surely, perhaps = [], [], [], []
-    for values, exists, limit, error in zip(impedance, possible, limits, errors, strict=True):
-        lines.append(judge_line(values, exists, limit, replicates=replicates, impedance_error=float(error)))
-        for verdicts, margin in ((passing, 0.0), (surely, -float(error)), (perhaps, float(error))):
-            verdicts.append(exists & _between(values, limit.low - margin, limit.high + margin))
-    every = [np.logical_and.reduce(verdicts, axis=0) for verdicts in (passing, surely, perhaps)]
+    lines: list[LineYield] = []
+    every = np.ones((3, impedance.shape[1]), dtype=np.bool_)  # passes; surely passes; perhaps passes
+    for values, exists, limit, error in zip(impedance, possible, limits, errors.tolist(), strict=True):
+        lines.append(judge_line(values, exists, limit, replicates=replicates, impedance_error=error))
+        for verdicts, margin in zip(every, (0.0, -error, error), strict=True):
+            verdicts &= exists & _between(values, limit.low - margin, limit.high + margin)
     inside = share_interval(every[0], replicates=replicates, surely=every[1], perhaps=every[2])
     return Judgement(tuple(lines), inside, int(np.count_nonzero(~np.all(possible, axis=0))))
 
@@ -81,21 +81,34 @@ def judge_line(
     impedance: FloatArray, possible: BoolArray, limit: Limits, *, replicates: int, impedance_error: float = 0.0
 ) -> LineYield:
     """Judge one line: impedance [ohm] and possible, both (coupons,). See `judge`."""
-    error, low, high = impedance_error, limit.low, limit.high
-    sides = ((low, high, 1.0), (-np.inf, low, -1.0), (high, np.inf, -1.0))
-    shares = []
-    for start, end, inclusive in sides:
-        verdicts = [possible & _between(impedance, start - margin, end + margin, inclusive > 0.0)
-                    for margin in (0.0, -error, error)]
-        shares.append(share_interval(verdicts[0], replicates=replicates, surely=verdicts[1], perhaps=verdicts[2]))
-    moments = _moments(impedance, possible, replicates)
+    error = impedance_error
+    mean, deviation = _moments(impedance, possible, replicates)
+    fixed = deviation[0] - float(half_interval(deviation[1])) - error <= 0.0
+    shares = {
+        name: _share(impedance, possible, low, high, error=error, replicates=replicates)
+        for name, low, high in (
+            ("inside", limit.low, limit.high),
+            ("below", -np.inf, np.nextafter(limit.low, -np.inf)),
+            ("above", np.nextafter(limit.high, np.inf), np.inf),
+        )
+    }
     return LineYield(
-        *shares,
-        mean=_replicate_interval(moments[0]).widened(error, error),
-        deviation=_replicate_interval(moments[1]).widened(error, error).within(0.0, np.inf),
-        **_capabilities(moments, limit, error),
+        inside=shares["inside"], below=shares["below"], above=shares["above"],
+        mean=_replicate_interval(mean).widened(error, error),
+        deviation=_replicate_interval(deviation).widened(error, error).within(0.0, np.inf),
+        cp=None if fixed else _cp(deviation, limit, error),
+        cpk=None if fixed else _cpk(mean, deviation, limit, error),
         impossible=int(np.count_nonzero(~possible)),
     )
+
+
+def _share(
+    impedance: FloatArray, possible: BoolArray, low: float, high: float, *, error: float, replicates: int
+) -> Interval:
+    """Share of possible coupons from `low` to `high` [ohm], both included."""
+    verdicts, surely, perhaps = (possible & _between(impedance, low - margin, high + margin)
+                                 for margin in (0.0, -error, error))
+    return share_interval(verdicts, replicates=replicates, surely=surely, perhaps=perhaps)
 
 
 def share_interval(
@@ -144,8 +157,8 @@ def _replicate_interval(estimates: _Estimates) -> Interval:
     return Interval(value, value - half, value + half)
 
 
-def _between(values: FloatArray, low: float, high: float, inclusive: bool = True) -> BoolArray:
-    return (values >= low) & (values <= high) if inclusive else (values > low) & (values < high)
+def _between(values: FloatArray, low: float, high: float) -> BoolArray:
+    return np.asarray((values >= low) & (values <= high), dtype=np.bool_)
 
 
 def _moments(impedance: FloatArray, possible: BoolArray, replicates: int) -> tuple[_Estimates, _Estimates]:
@@ -164,25 +177,23 @@ def _moments(impedance: FloatArray, possible: BoolArray, replicates: int) -> tup
     return (mean, means), (float(np.std(whole, ddof=1)), deviations)
 
 
-def _capabilities(
-    moments: tuple[_Estimates, _Estimates], limit: Limits, error: float
-) -> dict[str, Interval | None]:
-    """Cp and Cpk, None where the interval of the deviation reaches zero.
+def _cp(deviation: _Estimates, limit: Limits, error: float) -> Interval:
+    """Distance of the limits over six deviations.
 
-    Source: V. E. Kane, "Process capability indices", Journal of Quality Technology, volume 18, pages 41-52, 1986.
+    Source of both: V. E. Kane, "Process capability indices", Journal of Quality Technology, volume 18, pages 41-52,
+    1986.
     """
-    (mean, means), (deviation, deviations) = moments
-    if deviation - float(half_interval(deviations)) - error <= 0.0:
-        return {"cp": None, "cpk": None}
-    result: dict[str, Interval | None] = {}
-    for name, room, rooms in (
-        ("cp", 0.5 * (limit.high - limit.low), np.full_like(means, 0.5 * (limit.high - limit.low))),
-        ("cpk", min(limit.high - mean, mean - limit.low), np.minimum(limit.high - means, means - limit.low)),
-    ):
-        value = room / (3.0 * deviation)
-        moved = 0.0 if name == "cp" else error
-        corners = [(room + side * moved) / (3.0 * (deviation + other * error))
-                   for side in (-1.0, 1.0) for other in (-1.0, 1.0)]
-        interval = _replicate_interval((value, rooms / (3.0 * deviations)))
-        result[name] = interval.widened(value - min(corners), max(corners) - value)
-    return result
+    width, value = limit.high - limit.low, deviation[0]
+    interval = _replicate_interval((width / (6.0 * value), width / (6.0 * deviation[1])))
+    lowest, highest = width / (6.0 * (value + error)), width / (6.0 * (value - error))
+    return interval.widened(interval.value - lowest, highest - interval.value)
+
+
+def _cpk(mean: _Estimates, deviation: _Estimates, limit: Limits, error: float) -> Interval:
+    """Distance of the mean to the nearer limit over three deviations."""
+    room = min(limit.high - mean[0], mean[0] - limit.low)
+    rooms = np.minimum(limit.high - mean[1], mean[1] - limit.low)
+    interval = _replicate_interval((room / (3.0 * deviation[0]), rooms / (3.0 * deviation[1])))
+    corners = [(room + side * error) / (3.0 * (deviation[0] + other * error))
+               for side in (-1.0, 1.0) for other in (-1.0, 1.0)]
+    return interval.widened(interval.value - min(corners), max(corners) - interval.value)

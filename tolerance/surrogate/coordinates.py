@@ -94,7 +94,7 @@ def _coordinate(variable: Variable, germ: FloatArray, width: float) -> FloatArra
     if _stays_positive(law, reference):
         floor = 0.5 * LOWEST_SHARE * law.nominal  # never met by a draw, see FARTHEST_GERM
         value, low, high = np.log(np.maximum(value, floor)), np.log(low), np.log(high)
-    return (2.0 * value - (low + high)) / (high - low)
+    return np.asarray((2.0 * value - (low + high)) / (high - low), dtype=np.float64)
 
 
 def _stays_positive(law: Law, reference: float) -> bool:

@@ -42,6 +42,34 @@ def count_runs(dimensions: int, degree: int) -> int:
 
 
 @dataclass(frozen=True, slots=True)
+class PowerForm:
+    """A polynomial of degree up to 3 as constant + x . (linear + quadratic x + cubic (products of pairs)).
+
+    linear (d,), quadratic (d, d) lower triangle, cubic (d, d (d + 1) / 2): for coordinate i the factors of x_j x_k,
+    k <= j <= i, in the order of numpy's lower triangle; None where the degree is below 3.
+    """
+
+    constant: float
+    linear: FloatArray
+    quadratic: FloatArray
+    cubic: FloatArray | None
+
+    def evaluate(self, coordinates: FloatArray) -> FloatArray:
+        """Values at `coordinates` (points, dimensions), in blocks; result (points,)."""
+        values = np.empty(len(coordinates))
+        first, second = np.tril_indices(coordinates.shape[1])
+        for start in range(0, len(coordinates), BLOCK_ROWS):
+            x = np.ascontiguousarray(coordinates[start : start + BLOCK_ROWS].T)
+            slope = self.quadratic @ x
+            slope += self.linear[:, np.newaxis]
+            if self.cubic is not None:
+                slope += self.cubic @ (x[first] * x[second])
+            values[start : start + BLOCK_ROWS] = np.einsum("ij,ij->j", slope, x)
+        values += self.constant
+        return values
+
+
+@dataclass(frozen=True, slots=True)
 class Polynomial:
     """sum of coefficients x products of Legendre polynomials.
 
@@ -56,25 +84,15 @@ class Polynomial:
     coefficients: FloatArray
     leave_one_out: float
     runs: int
+    powers: PowerForm
 
     @property
     def terms(self) -> int:
         return len(self.coefficients)
 
     def evaluate(self, coordinates: FloatArray) -> FloatArray:
-        """Values at `coordinates` (points, dimensions); result (points,). Fast in blocks of any memory layout."""
-        constant, linear, quadratic, cubic = _power_form(self.exponents, self.coefficients)
-        values = np.empty(len(coordinates))
-        first, second = np.tril_indices(coordinates.shape[1])
-        for start in range(0, len(coordinates), BLOCK_ROWS):
-            x = np.ascontiguousarray(coordinates[start : start + BLOCK_ROWS].T)
-            slope = quadratic @ x
-            slope += linear[:, np.newaxis]
-            if self.degree > 2:
-                slope += cubic @ (x[first] * x[second])
-            values[start : start + BLOCK_ROWS] = np.einsum("ij,ij->j", slope, x)
-        values += constant
-        return values
+        """Values at `coordinates` (points, dimensions); result (points,)."""
+        return self.powers.evaluate(coordinates)
 
 
 def fit(coordinates: FloatArray, values: FloatArray, *, degree: int) -> Polynomial:
@@ -87,10 +105,10 @@ def fit(coordinates: FloatArray, values: FloatArray, *, degree: int) -> Polynomi
     """
     if not (np.all(np.isfinite(coordinates)) and np.all(np.isfinite(values))):
         raise UnfinishedError("a training run gave a value that is not finite")
-    exponents = _exponents(coordinates.shape[1], degree)
+    exponents = full_exponents(coordinates.shape[1], degree)
     points, terms = len(values), len(exponents)
     if coordinates.shape[1] == 0:
-        return Polynomial(degree, exponents, read_only([np.mean(values)]), 0.0, points)
+        return polynomial(degree, exponents, read_only([np.mean(values)]), runs=points)
     if points <= terms:
         raise UnfinishedError(f"{points} training runs are too few for a polynomial of {terms} terms")
     orthogonal, triangular = np.linalg.qr(_basis(coordinates, exponents))
@@ -100,10 +118,18 @@ def fit(coordinates: FloatArray, values: FloatArray, *, degree: int) -> Polynomi
     leverage = np.einsum("ij,ij->i", orthogonal, orthogonal)
     residual = values - orthogonal @ (orthogonal.T @ values)
     leave_one_out = float(np.sqrt(np.mean((residual / (1.0 - leverage)) ** 2)))
-    return Polynomial(degree, exponents, read_only(coefficients), leave_one_out, points)
+    return polynomial(degree, exponents, read_only(coefficients), leave_one_out=leave_one_out, runs=points)
 
 
-def _exponents(dimensions: int, degree: int) -> IntArray:
+def polynomial(
+    degree: int, exponents: IntArray, coefficients: FloatArray, *, leave_one_out: float = 0.0, runs: int = 0
+) -> Polynomial:
+    """The polynomial of these terms, ready to be evaluated."""
+    powers = _power_form(degree, exponents, coefficients)
+    return Polynomial(degree, exponents, coefficients, leave_one_out, runs, powers)
+
+
+def full_exponents(dimensions: int, degree: int) -> IntArray:
     """Every combination of degrees with a sum up to `degree`, shape (terms, dimensions), lower sums first."""
     rows = []
     for total in range(degree + 1):
@@ -138,14 +164,7 @@ _POWERS = (  # Legendre polynomials in powers of x: degree -> ((power, factor), 
 )
 
 
-def _power_form(
-    exponents: IntArray, coefficients: FloatArray
-) -> tuple[float, FloatArray, FloatArray, FloatArray]:
-    """The same polynomial as constant + x . (linear + quadratic x + cubic (products of pairs)).
-
-    linear (d,), quadratic (d, d) lower triangle, cubic (d, d (d + 1) / 2): for coordinate i the factors of x_j x_k,
-    k <= j <= i, in the order of numpy's lower triangle.
-    """
+def _power_form(degree: int, exponents: IntArray, coefficients: FloatArray) -> PowerForm:
     dimensions = exponents.shape[1]
     constant, linear = 0.0, np.zeros(dimensions)
     quadratic = np.zeros((dimensions, dimensions))
@@ -166,4 +185,4 @@ def _power_form(
                     quadratic[one, two] += factor
                 case [one, two, three]:
                     cubic[one, two * (two + 1) // 2 + three] += factor
-    return float(constant), linear, quadratic, cubic
+    return PowerForm(float(constant), linear, quadratic, cubic if degree > 2 else None)
