@@ -19,10 +19,101 @@ from tolerance.results import (
     RunResult,
     Spread,
 )
+from tolerance.scenario.checking import parse
+from tolerance.scenario.tables import Scenario
 
-SCENARIO_TEXT = 'format = 1\ntitle = "Orchard gateway"\n\n[evaluation]\nlimit = "10 %"\n'
+SCENARIO_TEXT = """format = 1
+title = "Orchard gateway, 6 layers"   # an invented board
+
+[evaluation]
+limit = "7 %"
+seed = 1
+
+[[layers]]
+name = "top mask"
+kind = "mask"
+thickness = "25 um"
+over_copper = "15 um"
+dk = 3.5
+
+[[layers]]
+name = "L1"
+kind = "copper"
+use = "signal"
+foil = "18 um"
+plating = "25 um"
+etch_factor = 3.0
+
+[[layers]]
+name = "P1"
+kind = "prepreg"
+thickness = "100 um"
+dk = 4.0
+
+[[layers]]
+name = "L2"
+kind = "copper"
+use = "plane"
+foil = "17 um"
+
+[[layers]]
+name = "C1"
+kind = "core"
+thickness = "0.8 mm"
+dk = 4.2
+
+[[layers]]
+name = "L3"
+kind = "copper"
+use = "plane"
+foil = "17 um"
+
+[[lines]]
+name = "radio feed"
+layer = "L1"
+width = "180 um"
+target = "50 ohm"
+
+[[lines]]
+name = "display pair"
+layer = "L1"
+width = "120 um"
+gap = "150 um"
+target = "100 ohm"
+limit = "10 %"
+
+[[variations]]
+of = "L1.etch"
+tolerance = "10 %"
+
+[[variations]]
+of = "P1.thickness"
+tolerance = "8 um"
+cpk = 1.33
+shift = "2 um"
+
+[[variations]]
+of = "*.dk"
+shape = "uniform"
+tolerance = "5 %"
+
+[[variations]]
+of = ["top mask.thickness", "top mask.over_copper"]
+shape = "truncated_normal"
+sigmas = 2
+tolerance = "10 um"
+together = true
+
+[report]
+lengths = "um"
+"""
 LONG_NAME = "differential camera link from the front connector to the image processor, channel"
 WIDE = 4e-3
+
+
+def made_up_scenario(lengths: str = "um") -> Scenario:
+    """The scenario that the text above says."""
+    return parse(SCENARIO_TEXT.replace('lengths = "um"', f'lengths = "{lengths}"'))
 
 
 def rectangle(left: float, right: float, bottom: float, top: float) -> FloatArray:

@@ -1,18 +1,15 @@
-"""The figures of a run as PNG files: one page of all lines, and one page a line with its spread, drivers and section."""
+"""The figures of a run as PNG files: a page of all lines, and a page for each line: spread, drivers, cross-section."""
 
 from __future__ import annotations
 
-import os
 import warnings
-from pathlib import Path
 from typing import TYPE_CHECKING
 
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 
-from tolerance.errors import UnfinishedError
-from tolerance.report.file_names import file_names
-from tolerance.report.looks import FAIL, FAINT_INK, INK, LARGE, MEDIUM, PAGE, RESOLUTION, SMALL, TITLE, our_looks
+from tolerance.report.files import file_names, put_in_place
+from tolerance.report.looks import FAIL, FAINT_INK, INK, MEDIUM, PAGE, RESOLUTION, TITLE, our_looks
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section
 from tolerance.report.tables import MISSES, verdict
@@ -20,6 +17,7 @@ from tolerance.report.wording import LengthUnit, share_range_text, share_text, s
 
 if TYPE_CHECKING:
     from collections.abc import Callable
+    from pathlib import Path
 
     from tolerance.results import Interval, LineResult, RunResult
 
@@ -51,8 +49,8 @@ def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> 
         page = _page(PAGE[1])
         _head(page, shorten(line.name, NAME_LENGTH), f"{line.kind} on {line.layer}{_over(line.references)}",
               line.inside, target_yield)
-        draw_spread(page.add_axes((0.065, 0.49, 0.43, 0.32)), line, target_yield=target_yield)
-        draw_drivers(page.add_axes((0.56, 0.49, 0.40, 0.32)), line)
+        draw_spread(page.add_axes((0.065, 0.505, 0.43, 0.31)), line, target_yield=target_yield)
+        draw_drivers(page.add_axes((0.56, 0.505, 0.40, 0.31)), line)
         draw_section(page.add_axes((0.065, 0.085, 0.69, 0.29)), line, lengths=lengths)
     return page
 
@@ -97,17 +95,10 @@ def _head(page: Figure, title: str, subtitle: str, inside: Interval, target_yiel
 
 
 def _write(page: Figure, path: Path) -> Path:
-    """Write a page beside its place and move it there, so that no half-written file is ever seen."""
-    beside = path.with_name(f".{path.name}.part")
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        with our_looks(), warnings.catch_warnings():
-            warnings.filterwarnings("ignore", message="Glyph .* missing from font")  # drawn as an empty box
-            page.savefig(beside, format="png", dpi=RESOLUTION, metadata={"Software": None},
-                         pil_kwargs={"compress_level": PACKING})
-        os.replace(beside, path)
-    except OSError as problem:
-        raise UnfinishedError(f"could not write {path}: {problem.strerror or problem}") from problem
-    finally:
-        beside.unlink(missing_ok=True)
-    return path
+    def save(beside: Path) -> None:
+        page.savefig(beside, format="png", dpi=RESOLUTION, metadata={"Software": None},
+                     pil_kwargs={"compress_level": PACKING})
+
+    with our_looks(), warnings.catch_warnings():
+        warnings.filterwarnings("ignore", message="Glyph .* missing from font")  # drawn as an empty box
+        return put_in_place(path, save)

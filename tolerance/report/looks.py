@@ -32,23 +32,20 @@ PAGE = (13.333, 7.5)  # inches, a slide
 RESOLUTION = 120  # dots an inch
 SMALL, MEDIUM, LARGE, TITLE = 10.5, 12.0, 15.0, 22.0  # points
 
-_SETTINGS: dict[str, object] = {
-    "font.family": "sans-serif", "font.sans-serif": ["DejaVu Sans"], "font.size": MEDIUM,
-    "text.parse_math": False, "text.usetex": False, "axes.unicode_minus": False,
-    "figure.facecolor": PAPER, "savefig.facecolor": PAPER, "axes.facecolor": PAPER,
-    "axes.edgecolor": FAINT_INK, "axes.labelcolor": INK, "axes.linewidth": 0.8, "axes.spines.top": False,
-    "axes.spines.right": False, "axes.grid": False, "axes.labelsize": MEDIUM, "axes.titlesize": LARGE,
-    "axes.titlelocation": "left", "axes.titlepad": 10.0, "axes.titlecolor": INK, "text.color": INK,
-    "xtick.color": FAINT_INK, "ytick.color": FAINT_INK, "xtick.labelcolor": INK, "ytick.labelcolor": INK,
-    "xtick.labelsize": SMALL, "ytick.labelsize": SMALL, "xtick.direction": "out", "ytick.direction": "out",
-    "hatch.linewidth": 0.9, "lines.linewidth": 1.6, "patch.linewidth": 0.8, "path.simplify": True,
-    "axes.autolimit_mode": "data", "axes.prop_cycle": mpl.rcParamsDefault["axes.prop_cycle"],
-}
-
 
 def our_looks() -> AbstractContextManager[None]:
     """A context in which figures get our looks; the settings of whoever calls come back after it."""
-    return mpl.rc_context(_SETTINGS)
+    return mpl.rc_context({
+        "font.family": "sans-serif", "font.sans-serif": ["DejaVu Sans"], "font.size": MEDIUM,
+        "text.parse_math": False, "text.usetex": False, "axes.unicode_minus": False,
+        "figure.facecolor": PAPER, "savefig.facecolor": PAPER, "axes.facecolor": PAPER, "savefig.bbox": None,
+        "axes.edgecolor": FAINT_INK, "axes.labelcolor": INK, "axes.linewidth": 0.8, "axes.spines.top": False,
+        "axes.spines.right": False, "axes.grid": False, "axes.labelsize": MEDIUM, "axes.titlesize": LARGE,
+        "axes.titlelocation": "left", "axes.titlepad": 10.0, "axes.titlecolor": INK, "text.color": INK,
+        "xtick.color": FAINT_INK, "ytick.color": FAINT_INK, "xtick.labelcolor": INK, "ytick.labelcolor": INK,
+        "xtick.labelsize": SMALL, "ytick.labelsize": SMALL, "hatch.linewidth": 0.9, "lines.linewidth": 1.6,
+        "axes.formatter.use_locale": False,
+    })
 
 
 def quiet_axes(axes: Axes, *, grid: str) -> None:

@@ -22,7 +22,7 @@ from tolerance.report.looks import (
     quiet_axes,
 )
 from tolerance.report.tables import MISSES, LineWords, line_words, ranking, ranking_name
-from tolerance.report.wording import percent, shorten
+from tolerance.report.wording import percent, shorten, trimmed
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -145,8 +145,8 @@ def draw_overview(axes: Axes, result: RunResult, lines: Sequence[LineResult]) ->
     for row, line in enumerate(lines):
         _draw_overview_row(axes, row, line, reach=reach, target_yield=result.target_yield)
     axes.axvline(0.0, color=INK, linewidth=0.9, zorder=0.5)
-    axes.set_yticks([row - 0.4 for row in range(len(lines))], [f"{shorten(line.name, OVERVIEW_NAME)}\n{line_words(line, 0.0).target} ohm"
-                                                            for line in lines])
+    names = [f"{shorten(line.name, OVERVIEW_NAME)}\n{trimmed(line.target, 2)} ohm" for line in lines]
+    axes.set_yticks([row - 0.4 for row in range(len(lines))], names)
     axes.tick_params(axis="y", length=0)
     axes.spines["left"].set_visible(False)
     axes.set_xlabel("impedance off its target [%]; dashed: limits; hatched: what fails")

@@ -7,6 +7,7 @@ the surroundings of the traces.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -87,14 +88,23 @@ def view_of(drawing: Drawing, axes: Axes) -> View:
     figure = axes.get_figure(root=True)
     assert figure is not None
     wide, high = (72.0 * box.width * figure.get_figwidth(), 72.0 * box.height * figure.get_figheight())
-    corners = np.vstack([item.outline for item in (*drawing.regions, *drawing.conductors)])
+    corners = _corners(drawing)
     bottom, top = float(corners[:, 1].min()), float(corners[:, 1].max())
-    inner = np.concatenate([_sides(conductor) for conductor in drawing.conductors if conductor.role == "trace"]
-                           + [_inner_edges(drawing)])
+    inner = np.concatenate([_sides(conductor) for conductor in _traces(drawing)] + [_inner_edges(drawing)])
     middle, extent = 0.5 * float(inner.min() + inner.max()), float(inner.max() - inner.min())
     height = max(ROOM_UPRIGHT * (top - bottom), ROOM_SIDEWAYS * extent * high / wide)
     width, centre = height * wide / high, 0.5 * (bottom + top)
     return View(middle - width / 2, middle + width / 2, centre - height / 2, centre + height / 2, high / height)
+
+
+def _corners(drawing: Drawing) -> FloatArray:
+    """All corners of all outlines, shape (corners, 2)."""
+    return np.vstack([region.outline for region in drawing.regions]
+                     + [conductor.outline for conductor in drawing.conductors])
+
+
+def _traces(drawing: Drawing) -> list[Conductor]:
+    return [conductor for conductor in drawing.conductors if conductor.role == "trace"]
 
 
 def _sides(conductor: Conductor) -> FloatArray:
@@ -104,14 +114,14 @@ def _sides(conductor: Conductor) -> FloatArray:
 
 def _inner_edges(drawing: Drawing) -> FloatArray:
     """Where coplanar grounds begin, each on its side of the traces."""
-    middle = np.mean([_sides(conductor).mean() for conductor in drawing.conductors if conductor.role == "trace"])
+    middle = np.mean([_sides(conductor).mean() for conductor in _traces(drawing)])
     edges = [_sides(conductor) for conductor in drawing.conductors if conductor.role == "ground"]
     return np.array([side[1] if side.mean() < middle else side[0] for side in edges])
 
 
 def _reaching(outline: FloatArray, drawing: Drawing, view: View) -> FloatArray:
     """The outline, its outermost corners drawn out to the edge of the view."""
-    xs = np.concatenate([item.outline[:, 0] for item in (*drawing.regions, *drawing.conductors)])
+    xs = _corners(drawing)[:, 0]
     reached = outline.copy()
     reached[outline[:, 0] <= xs.min(), 0] = min(float(xs.min()), view.left)
     reached[outline[:, 0] >= xs.max(), 0] = max(float(xs.max()), view.right)
@@ -159,7 +169,8 @@ def _name_materials(axes: Axes, drawing: Drawing, view: View, lengths: LengthUni
     places = _apart([height for height, _ in labels], view.metres(ROW_HEIGHT * SMALL))
     for (height, label), place in zip(labels, places, strict=True):
         axes.annotate(label, (view.right / unit, height / unit), textcoords="data",
-                      xytext=((view.right + view.metres(22.0)) / unit, place / unit), fontsize=SMALL, va="center", ha="left", annotation_clip=False,
+                      xytext=((view.right + view.metres(22.0)) / unit, place / unit), fontsize=SMALL, va="center",
+                      ha="left", annotation_clip=False,
                       arrowprops={"arrowstyle": "-", "color": FAINT_INK, "linewidth": 0.8, "shrinkA": 1.0,
                                   "shrinkB": 0.0})
 
@@ -170,7 +181,7 @@ def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) 
     traces = [foot for foot in feet if foot.role == "trace"]
     level = [foot for foot in feet if abs(foot.height - traces[0].height) <= 1e-9]
     spans = [(traces[0].left, traces[0].right, f"width {length_text(traces[0].right - traces[0].left, lengths)}")]
-    for one, other in zip(level, level[1:], strict=False):
+    for one, other in pairwise(level):
         word = "gap" if one.role == other.role else "ground gap"
         if not any(f"{word} {length_text(other.left - one.right, lengths)}" == text for _, _, text in spans):
             spans.append((one.right, other.left, f"{word} {length_text(other.left - one.right, lengths)}"))
@@ -189,7 +200,7 @@ def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) 
 
 def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> None:
     """Heights along the upright line through the outermost trace: to the planes, of the copper, of what covers it."""
-    trace = min((item for item in drawing.conductors if item.role == "trace"), key=lambda item: item.outline[:, 0].min())
+    trace = min(_traces(drawing), key=lambda item: float(item.outline[:, 0].min()))
     middle = float(_sides(trace).mean())
     copper = [seen for item in drawing.conductors
               if (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
@@ -198,9 +209,9 @@ def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit)
     levels = sorted({round(level, 12) for level in (*(end for seen in copper for end in seen), *covers)})
     planes = [seen for item in drawing.conductors if item.role == "plane"
               and (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
-    steps = [(low, high) for low, high in zip(levels, levels[1:], strict=False)
+    steps = [(low, high) for low, high in pairwise(levels)
              if not any(seen[0] <= 0.5 * (low + high) <= seen[1] for seen in planes)]
-    left = min(float(_sides(item)[0]) for item in drawing.conductors if item.role == "trace")
+    left = min(float(_sides(item)[0]) for item in _traces(drawing))
     edges = _inner_edges(drawing)
     place = 0.5 * (left + float(edges.min())) if edges.size else left - view.metres(34.0)
     texts = _apart([0.5 * (low + high) for low, high in steps], view.metres(ROW_HEIGHT * SMALL))

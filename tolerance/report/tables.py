@@ -135,8 +135,8 @@ SUMMARY_COLUMNS = (
     Column("name", "line"), Column("target_ohm", "target", "ohm", 2),
     Column("low_limit_ohm", "low limit", "ohm", 2), Column("high_limit_ohm", "high limit", "ohm", 2),
     Column("mean_ohm", "mean", "ohm", 2), Column("std_ohm", "deviation", "ohm", 2),
-    Column("yield", "yield", "share", 2), Column("yield_low", "low end", "share", 2),
-    Column("yield_high", "high end", "share", 2), Column("verdict", "verdict"),
+    Column("yield", "yield", "share", 2), Column("yield_low", "yield, low end", "share", 2),
+    Column("yield_high", "yield, high end", "share", 2), Column("verdict", "verdict"),
     Column("below", "below limit", "share", 2), Column("above", "above limit", "share", 2),
     Column("cpk", "Cpk", "", 2), Column("drivers", "largest drivers, share of the variance"),
 )

@@ -112,8 +112,8 @@ def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
     table = _table(("line", True), (f"largest drivers, by {' or '.join(sorted(measures))}", True),
                    ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
-        table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)), str(line.prediction.solver_runs),
-                      fixed(line.prediction.held_out_error, 4))
+        table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
+                      str(line.prediction.solver_runs), fixed(line.prediction.held_out_error, 4))
     return table
 
 

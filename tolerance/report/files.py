@@ -1,8 +1,12 @@
-"""Names of files made from names that a user gave: safe on every system, unique, still readable."""
+"""Files of a report: names made from names that a user gave, and files that appear whole or not at all."""
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import os
+from collections.abc import Callable, Sequence
+from pathlib import Path
+
+from tolerance.errors import UnfinishedError
 
 LONGEST = 60
 RESERVED = {"con", "prn", "aux", "nul", *(f"{port}{number}" for port in ("com", "lpt") for number in range(10))}
@@ -24,6 +28,24 @@ def file_names(names: Sequence[str], *, taken: Sequence[str] = ()) -> list[str]:
         used.add(candidate.casefold())
         unique.append(candidate)
     return unique
+
+
+def put_in_place(path: Path, write: Callable[[Path], object]) -> Path:
+    """Have `write` fill a file beside `path` and move it there; its folder is made if missing. Returns `path`.
+
+    Raises UnfinishedError where that cannot be done (no room, no right, the file open elsewhere).
+    """
+    beside = path.with_name(f".{path.name}.{os.getpid()}.part")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        try:
+            write(beside)
+            os.replace(beside, path)
+        finally:
+            beside.unlink(missing_ok=True)
+    except OSError as problem:
+        raise UnfinishedError(f"could not write {path}: {problem.strerror or problem}") from problem
+    return path
 
 
 def _safe(name: str) -> str:

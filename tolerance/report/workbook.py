@@ -1,0 +1,206 @@
+"""The workbook of a run: summary, lines, drivers, the scenario as understood, and what re-makes the run."""
+
+from __future__ import annotations
+
+import textwrap
+from typing import TYPE_CHECKING
+
+from openpyxl import Workbook
+from openpyxl.cell.cell import ILLEGAL_CHARACTERS_RE
+from openpyxl.cell.cell import Cell as SheetCell
+from openpyxl.formatting.rule import Rule
+from openpyxl.styles import Alignment, Border, Font, PatternFill, Side
+from openpyxl.styles.differential import DifferentialStyle
+from openpyxl.utils import get_column_letter
+from openpyxl.worksheet.properties import PageSetupProperties
+
+from tolerance.report.files import put_in_place
+from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
+from tolerance.report.understood import board_thickness, drawn_table, stackup_table, variation_table
+from tolerance.report.wording import CAUTION, length_text, share_range_text, share_text, trimmed
+
+if TYPE_CHECKING:
+    from pathlib import Path
+
+    from openpyxl.worksheet.worksheet import Worksheet
+
+    from tolerance.results import RunResult
+    from tolerance.scenario.tables import Scenario
+
+INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3EC", "B4BAC8"
+LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
+LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
+NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
+ROW = 15.0  # points, one row of letters of the usual size
+
+
+def write_workbook(result: RunResult, scenario: Scenario, path: Path) -> Path:
+    """Write the workbook, whole or not at all. Raises UnfinishedError where it cannot be written."""
+    return put_in_place(path, workbook(result, scenario).save)
+
+
+def workbook(result: RunResult, scenario: Scenario) -> Workbook:
+    """The workbook, not yet written."""
+    book = Workbook()
+    book.properties.creator = "tolerance"
+    book.properties.title = _clean(result.title)
+    first = book.active
+    assert first is not None
+    book.remove(first)
+    _summary_sheet(book.create_sheet("Summary"), result, scenario)
+    for name, table in (
+        ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
+        ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
+    ):
+        sheet = book.create_sheet(name)
+        _write_table(sheet, table, top=1)
+        sheet.freeze_panes = "B2"
+        if name == "Lines":
+            _mark_misses(sheet, table, top=1, target_yield=result.target_yield)
+    _record_sheet(book.create_sheet("Run record"), result)
+    return book
+
+
+def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> None:
+    missing = [line.name for line in result.lines if line.inside.value < result.target_yield]
+    aim = f"{trimmed(100.0 * result.target_yield, 3)} %"
+    ends = share_range_text(result.inside)
+    sentences = [
+        (result.title, _font(16, bold=True)),
+        (f"{share_text(result.inside)} of the coupons pass on every line (95 % interval {ends} %; "
+         f"{result.coupons:,} coupons, seed {result.seed}).", _font(13, bold=True)),
+        (f"{len(missing)} of {len(result.lines)} lines {'MISS' if len(missing) != 1 else MISSES} the target yield "
+         f"of {aim}." if missing else f"Every line meets the target yield of {aim}.",
+         _font(12, bold=bool(missing), color=FAIL if missing else INK)),
+        (f"{len(scenario.layers)} layers, {length_text(board_thickness(scenario), scenario.report.lengths)} thick"
+         + (f"; {result.impossible:,} coupons cannot exist and count as failing" if result.impossible else "")
+         + ". Yield: share of coupons inside the limits; its ends: 95 % interval of the computation alone.",
+         _font()),
+        (CAUTION, _font(italic=True)),
+    ]
+    for row, (sentence, font) in enumerate(sentences, start=1):
+        _put(sheet, row, 1, sentence).font = font
+        sheet.row_dimensions[row].height = 1.5 * float(font.size or 11.0)
+    table, top = summary_table(result), len(sentences) + 2
+    _write_table(sheet, table, top=top)
+    _mark_misses(sheet, table, top=top, target_yield=result.target_yield)
+    sheet.freeze_panes = f"B{top + 1}"
+
+
+def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
+    """Headings in row `top`, filterable, and the rows below them."""
+    for column, heading in enumerate(table.columns, start=1):
+        cell = _put(sheet, top, column, heading.head)
+        cell.font = _font(bold=True)
+        cell.fill = PatternFill("solid", start_color=HEAD_FILL)
+        cell.border = Border(bottom=Side(style="thin", color=HAIRLINE))
+        cell.alignment = _alignment(table, column - 1, wrap=True)
+        sheet.column_dimensions[get_column_letter(column)].width = _width(table, column - 1)
+    sheet.row_dimensions[top].height = ROW * max(_head_rows(table, column) for column in range(len(table.columns)))
+    for row, cells in enumerate(table.rows, start=top + 1):
+        for column, (heading, value) in enumerate(zip(table.columns, cells, strict=True), start=1):
+            cell = _put(sheet, row, column, value)
+            cell.alignment = _alignment(table, column - 1)
+            if isinstance(value, int | float):
+                cell.number_format = number_format(heading)
+    last = get_column_letter(len(table.columns))
+    sheet.auto_filter.ref = f"A{top}:{last}{max(top + len(table.rows), top + 1)}"
+    sheet.sheet_view.showGridLines = False
+    sheet.page_setup.orientation = "landscape"
+    sheet.page_setup.fitToHeight = 0
+    sheet.sheet_properties.pageSetUpPr = PageSetupProperties(fitToPage=True)
+    sheet.print_title_rows = f"{top}:{top}"
+
+
+def _alignment(table: Table, column: int, *, wrap: bool = False) -> Alignment:
+    """Columns of numbers stand on the right, heading included; text on the left, away from the numbers before it."""
+    numbers = any(isinstance(row[column], int | float) for row in table.rows)
+    numbers = numbers and not any(isinstance(row[column], str) for row in table.rows)
+    return Alignment(vertical="top", horizontal="right" if numbers else "left", indent=0 if numbers else 1,
+                     wrap_text=wrap)
+
+
+def number_format(column: Column) -> str:
+    """How a spreadsheet shows a column's numbers."""
+    if column.digits is None:
+        return "General"
+    places = f"0.{'0' * column.digits}" if column.digits else "0"
+    return f"{places}%" if column.unit == "share" else places
+
+
+def _width(table: Table, column: int) -> float:
+    """Letters that the cells of a column need; its heading may take three rows."""
+    heading = table.columns[column]
+    longest_word = max(len(word) for word in heading.head.split())
+    cells = max((len(_shown(heading, row[column])) for row in table.rows), default=0)
+    return min(max(NARROWEST, len(heading.head) / 2.0, longest_word + 4, cells + 3), WIDEST)
+
+
+def _head_rows(table: Table, column: int) -> int:
+    """Rows that a heading takes when it is wrapped into its column."""
+    return len(textwrap.wrap(table.columns[column].head, max(int(_width(table, column)) - 3, 1)))
+
+
+def _shown(column: Column, value: Cell) -> str:
+    if isinstance(value, float) and column.digits is not None:
+        return f"{100.0 * value:.{column.digits}f}%" if column.unit == "share" else f"{value:.{column.digits}f}"
+    return "" if value is None else f"{value:.8g}" if isinstance(value, float) else str(value)
+
+
+def _mark_misses(sheet: Worksheet, table: Table, *, top: int, target_yield: float) -> None:
+    """Mark yield and verdict of the lines under the target; the verdict says so in words too."""
+    keys = [column.key for column in table.columns]
+    first, last = top + 1, top + max(len(table.rows), 1)
+    letter = get_column_letter(keys.index("yield") + 1)
+    for key in ("name", "yield", "verdict"):
+        marked = get_column_letter(keys.index(key) + 1)
+        look = DifferentialStyle(font=Font(bold=True, color=FAIL), fill=PatternFill(bgColor=FAIL_FILL))
+        rule = Rule(type="expression", dxf=look,
+                    formula=[f"AND(ISNUMBER(${letter}{first}),${letter}{first}<{target_yield!r})"])
+        sheet.conditional_formatting.add(f"{marked}{first}:{marked}{last}", rule)
+
+
+def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
+    record = result.record
+    rows: list[tuple[Cell, ...]] = [
+        ("title", result.title), ("scenario file", record.scenario_path), ("seed", result.seed),
+        ("coupons", result.coupons), ("independent replicates", record.replicates),
+        ("target yield", result.target_yield), ("field solver runs", record.solver_runs),
+        ("largest held-out error [ohm]", max((line.prediction.held_out_largest for line in result.lines), default=0.0)),
+        *((f"setting: {name}", value) for name, value in record.settings.items()),
+        *((f"version: {name}", value) for name, value in record.versions.items()),
+        *((f"seconds: {name}", round(float(value), 3)) for name, value in record.seconds.items()),
+        *(("scenario text", text) for line in record.scenario_text.splitlines() for text in _pieces(line)),
+    ]
+    _write_table(sheet, Table((Column("item", "item"), Column("value", "value")), tuple(rows)), top=1)
+    sheet.column_dimensions["B"].width = 110
+    sheet.freeze_panes = "B2"
+
+
+def _pieces(line: str) -> list[str]:
+    """A line of text in pieces that a cell takes."""
+    return [line[start:start + LONGEST_TEXT] for start in range(0, max(len(line), 1), LONGEST_TEXT)]
+
+
+def _clean(text: str) -> str:
+    """Without the control characters that a workbook cannot hold."""
+    return ILLEGAL_CHARACTERS_RE.sub("\N{REPLACEMENT CHARACTER}", text)
+
+
+def _put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
+    """Write one cell. Text stays text, also where it begins like a formula."""
+    cell = sheet.cell(row=row, column=column)
+    assert isinstance(cell, SheetCell)
+    if isinstance(value, str):
+        cell.value = _clean(value)
+        cell.data_type = "s"
+        if value.startswith(LIKE_A_FORMULA):
+            cell.quotePrefix = True
+    elif value is not None:
+        cell.value = value
+    cell.font = _font()
+    return cell
+
+
+def _font(size: float = 11.0, *, bold: bool = False, italic: bool = False, color: str = INK) -> Font:
+    return Font(name="Calibri", size=size, bold=bold, italic=italic, color=color)
