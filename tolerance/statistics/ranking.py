@@ -1,0 +1,45 @@
+"""The drivers of one line, ranked: which variables move its impedance, and by what share."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from tolerance.arrays import FloatArray
+from tolerance.process.draws import correlated_groups
+from tolerance.statistics.dependent import dependent_indices
+from tolerance.statistics.drivers import Model, sobol_indices
+from tolerance.statistics.estimates import Driver, interval_of
+from tolerance.surrogate.prediction import Predictor
+
+
+def model_of(predictor: Predictor) -> Model:
+    """The predicted impedance [ohm] of one line, as a response of the variables that reach it."""
+    coordinates = predictor.coordinates
+    return Model(coordinates.names, coordinates.of_one, predictor.impedance_at, coordinates.correlation)
+
+
+def rank_drivers(model: Model, *, chance: np.random.Generator, with_shapley: bool) -> tuple[Driver, ...]:
+    """Every variable of the model with its shares of the variance, largest first.
+
+    Ranked by total effect, or, where `with_shapley` (when anything in the scenario is correlated), by Shapley effect;
+    equal ones stay in the order of the model. Correlated variables have their conditional indices; without
+    correlation the indices are SALib's.
+    """
+    index_chance, shapley_chance = chance.spawn(2)
+    shapley: FloatArray | None = None
+    if with_shapley:
+        dependent = dependent_indices(model, chance=shapley_chance)
+        first, total, shapley = dependent.first, dependent.total, dependent.shapley
+    if not correlated_groups(model.correlation):
+        independent = sobol_indices(model, chance=index_chance)
+        first, total = independent.first, independent.total
+    drivers = (
+        Driver(name, interval_of(first[:, position]), interval_of(total[:, position]),
+               None if shapley is None else interval_of(shapley[:, position]))
+        for position, name in enumerate(model.names)
+    )
+    return tuple(sorted(drivers, key=_share_that_ranks, reverse=True))
+
+
+def _share_that_ranks(driver: Driver) -> float:
+    return driver.total.value if driver.shapley is None else driver.shapley.value
