@@ -21,8 +21,8 @@ if TYPE_CHECKING:
 
     from tolerance.results import Interval, LineResult, RunResult
 
-OVERVIEW = "all lines"
-NAME_LENGTH = 58
+OVERVIEW = "all-lines"
+NAME_LENGTH = 48
 ROW_OF_OVERVIEW = 0.5  # inches at least
 PACKING = 1  # of the PNG files: quick, a few per cent larger
 

@@ -21,7 +21,7 @@ from tolerance.report.looks import (
     SMALL,
     quiet_axes,
 )
-from tolerance.report.tables import MISSES, LineWords, line_words, ranking, ranking_name
+from tolerance.report.tables import MISSES, LineWords, line_words, ranking
 from tolerance.report.wording import percent, shorten, trimmed
 
 if TYPE_CHECKING:
@@ -31,8 +31,9 @@ if TYPE_CHECKING:
 
     from tolerance.results import Driver, LineResult, RunResult
 
-HEADROOM = 1.42  # of the histogram, for the words above it
+HEADROOM = 1.50  # of the histogram, for the words above it
 ROOM_BESIDE = 0.24  # outside each limit, of the distance between the limits
+ROOM_FOR_WORDS = 0.18  # outside each limit at least, of all that is shown
 DRIVERS_SHOWN = 6
 FEWEST_ROWS = 5  # so that a single driver is not drawn as a wall
 LONGEST_DRIVER = 60
@@ -46,6 +47,8 @@ def draw_spread(axes: Axes, line: LineResult, *, target_yield: float) -> Axes:
     height = HEADROOM * max(float(counts.max(initial=0)), 1.0)
     room = ROOM_BESIDE * (line.high_limit - line.low_limit)
     left, right = min(float(edges[0]), line.low_limit - room), max(float(edges[-1]), line.high_limit + room)
+    left = min(left, line.low_limit - ROOM_FOR_WORDS * (right - left))
+    right = max(right, line.high_limit + ROOM_FOR_WORDS * (right - left))
     axes.set_xlim(left, right)
     axes.set_ylim(0.0, height)
     axes.stairs(counts, edges, fill=True, facecolor=BODY, edgecolor="none")
@@ -56,7 +59,7 @@ def draw_spread(axes: Axes, line: LineResult, *, target_yield: float) -> Axes:
         tail.set_clip_path(Rectangle((start, 0.0), end - start, height, transform=axes.transData))
     for limit in (line.low_limit, line.high_limit):
         axes.axvline(limit, ymax=0.97, color=INK, linestyle=(0, (5, 3)), linewidth=1.6)
-    axes.axvline(line.target, ymax=0.82, color=INK, linewidth=1.2)
+    axes.axvline(line.target, ymax=0.675, color=INK, linewidth=1.2)
     axes.plot([line.nominal], [0.0], marker="^", markersize=11, color=PAPER, markeredgecolor=INK,
               markeredgewidth=1.4, clip_on=False, zorder=6)
     _spread_words(axes, line, words)
@@ -76,7 +79,7 @@ def _spread_words(axes: Axes, line: LineResult, words: LineWords) -> None:
                                                     (share, 0.88, MEDIUM, "bold", FAIL)):
             axes.annotate(remark, (limit, height), xycoords=("data", "axes fraction"), xytext=(6 * outwards, 0),
                           textcoords="offset points", va="top", ha=side, fontsize=size, weight=weight, color=color)
-    axes.annotate(f"target {words.target}", (line.target, 0.82), xycoords=("data", "axes fraction"), xytext=(0, 2),
+    axes.annotate(f"target {words.target}", (line.target, 0.675), xycoords=("data", "axes fraction"), xytext=(0, 2),
                   textcoords="offset points", va="bottom", ha="center", fontsize=SMALL)
 
 
@@ -89,7 +92,6 @@ def _remark(axes: Axes, text: str) -> None:
 def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     """What drives one line's impedance: ranked bars with intervals, the first-order effect marked on each."""
     shown = line.drivers[:DRIVERS_SHOWN]
-    measure = ranking_name(line)
     axes.set_title("what drives it")
     if not shown:
         axes.set_axis_off()
@@ -104,8 +106,9 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
     axes.set_xlabel("share of the variance [%]")
-    _remark(axes, f"bar: {measure}; diamond: first-order"
-            + ("; cross: total" if any(driver.shapley is not None for driver in shown) else ""))
+    with_shapley = any(driver.shapley is not None for driver in shown)
+    _remark(axes, "bar: Shapley; diamond: first-order; cross: total" if with_shapley
+            else "bar: total effect; diamond: first-order")
     quiet_axes(axes, grid="x")
     rest = line.drivers[DRIVERS_SHOWN:]
     if rest:
@@ -165,6 +168,8 @@ def _draw_overview_row(axes: Axes, row: int, line: LineResult, *, reach: float, 
         tail = axes.stairs(ridge, off_target, baseline=row, fill=True, facecolor=FAIL_FILL, edgecolor=FAIL,
                            hatch=HATCH_FAIL, linewidth=0.9)
         tail.set_clip_path(Rectangle((start, row - 1.0), end - start, 1.0, transform=axes.transData))
+    if min(abs(off_target[0]), abs(off_target[-1])) > reach and off_target[0] * off_target[-1] > 0.0:
+        _say_beyond(axes, row, 100.0 * (line.mean.value / line.target - 1.0))
     axes.plot([low, low], [row, row - 0.82], color=INK, linestyle=(0, (4, 2)), linewidth=1.3)
     axes.plot([high, high], [row, row - 0.82], color=INK, linestyle=(0, (4, 2)), linewidth=1.3)
     axes.axhline(row, color=FAINT_INK, linewidth=0.7)
@@ -175,3 +180,12 @@ def _draw_overview_row(axes: Axes, row: int, line: LineResult, *, reach: float, 
     axes.annotate(f"{words.inside_range}\n{words.verdict}", (1.0, row - 0.40), xycoords=("axes fraction", "data"),
                   xytext=(108, 0), textcoords="offset points", va="center", fontsize=SMALL,
                   color=FAIL if missed else FAINT_INK)
+
+
+def _say_beyond(axes: Axes, row: int, mean: float) -> None:
+    """A spread that lies outside the picture altogether is told of at its edge."""
+    right = mean > 0.0
+    axes.annotate(f"all beyond: mean {mean:+.0f} %", (1.0 if right else 0.0, row - 0.40),
+                  xycoords=("axes fraction", "data"), xytext=(-8 if right else 8, 0), textcoords="offset points",
+                  ha="right" if right else "left", va="center", fontsize=SMALL, color=FAIL,
+                  bbox={"facecolor": PAPER, "edgecolor": "none", "pad": 2.0})

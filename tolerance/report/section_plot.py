@@ -77,8 +77,8 @@ def draw_section(axes: Axes, line: LineResult, *, lengths: LengthUnit) -> Axes:
     axes.locator_params(axis="y", nbins=5)
     axes.set_title("cross-section at the nominals, to scale")
     _name_materials(axes, drawing, view, lengths)
-    _mark_widths(axes, drawing, view, lengths)
-    _mark_heights(axes, drawing, view, lengths)
+    words_begin = _mark_widths(axes, drawing, view, lengths)
+    _mark_heights(axes, drawing, view, lengths, right=words_begin - view.metres(14.0))
     return axes
 
 
@@ -175,8 +175,11 @@ def _name_materials(axes: Axes, drawing: Drawing, view: View, lengths: LengthUni
                                   "shrinkB": 0.0})
 
 
-def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> None:
-    """Width of a trace, gaps to its neighbours at the same height: marked at the foot, inside the laminate."""
+def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> float:
+    """Width of a trace, gaps to its neighbours at the same height: marked at the foot, inside the laminate.
+
+    Returns where the marks and their words begin [m].
+    """
     feet = _feet(drawing)
     traces = [foot for foot in feet if foot.role == "trace"]
     level = [foot for foot in feet if abs(foot.height - traces[0].height) <= 1e-9]
@@ -196,9 +199,12 @@ def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) 
         spans = [(middle, middle, ", ".join(text for _, _, text in spans))]
     for left, right, text in spans:
         _words(axes, (0.5 * (left + right), height + away * view.metres(14.0)), text, lengths, ha="center")
+    return min(*(foot.left for foot in traces),
+               *(0.5 * (left + right - view.metres(LETTER_WIDTH * SMALL * len(text))) for left, right, text in spans))
 
 
-def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> None:
+def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit, *,
+                  right: float) -> None:
     """Heights along the upright line through the outermost trace: to the planes, of the copper, of what covers it."""
     trace = min(_traces(drawing), key=lambda item: float(item.outline[:, 0].min()))
     middle = float(_sides(trace).mean())
@@ -211,10 +217,12 @@ def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit)
               and (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
     steps = [(low, high) for low, high in pairwise(levels)
              if not any(seen[0] <= 0.5 * (low + high) <= seen[1] for seen in planes)]
-    left = min(float(_sides(item)[0]) for item in _traces(drawing))
-    edges = _inner_edges(drawing)
-    place = 0.5 * (left + float(edges.min())) if edges.size else left - view.metres(34.0)
+    left = float(_sides(trace)[0])
+    place = min(left - view.metres(34.0), right)
     texts = _apart([0.5 * (low + high) for low, high in steps], view.metres(ROW_HEIGHT * SMALL))
+    for level in {end for step in steps for end in step}:
+        axes.plot([place / METRES_IN[lengths], left / METRES_IN[lengths]], [level / METRES_IN[lengths]] * 2,
+                  color=FAINT_INK, linewidth=0.7, linestyle=(0, (1, 2)))
     for (low, high), height in zip(steps, texts, strict=True):
         _dimension(axes, (place, low), (place, high), lengths)
         _words(axes, (place - view.metres(9.0), height), length_text(high - low, lengths), lengths, ha="right")
