@@ -11,6 +11,9 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from tolerance.arrays import FloatArray, IntArray
+from tolerance.sections.drawing import Conductor as Conductor
+from tolerance.sections.drawing import Drawing as Drawing
+from tolerance.sections.drawing import Region as Region
 from tolerance.statistics.estimates import Driver as Driver
 from tolerance.statistics.estimates import Interval as Interval
 
@@ -48,33 +51,6 @@ class DirectCheck:
     verdicts_that_differ: int
     share_inside_solved: float
     share_inside_predicted: float
-
-
-@dataclass(frozen=True, slots=True)
-class Region:
-    """A dielectric of a cross-section: outline (corners, 2) in metres, x sideways and y up."""
-
-    name: str
-    kind: str  # mask | prepreg | core
-    dk: float
-    outline: FloatArray
-
-
-@dataclass(frozen=True, slots=True)
-class Conductor:
-    """Copper of a cross-section: outline (corners, 2) in metres. role: trace | plane | ground."""
-
-    name: str
-    role: str
-    outline: FloatArray
-
-
-@dataclass(frozen=True, slots=True)
-class Drawing:
-    """A line's nominal cross-section to scale."""
-
-    regions: tuple[Region, ...]
-    conductors: tuple[Conductor, ...]
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,0 +1,115 @@
+"""A line's nominal cross-section as outlines to be drawn to scale."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from tolerance.arrays import FloatArray, read_only
+from tolerance.sections.section import Ply, Section
+from tolerance.sections.surroundings import Surroundings
+
+
+@dataclass(frozen=True, slots=True)
+class Region:
+    """A dielectric of a cross-section: outline (corners, 2) in metres, x sideways and y up."""
+
+    name: str
+    kind: str  # mask | prepreg | core
+    dk: float
+    outline: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Conductor:
+    """Copper of a cross-section: outline (corners, 2) in metres. role: trace | plane | ground."""
+
+    name: str
+    role: str
+    outline: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Drawing:
+    """A line's nominal cross-section to scale."""
+
+    regions: tuple[Region, ...]
+    conductors: tuple[Conductor, ...]
+
+
+def drawing_of(section: Section, surroundings: Surroundings, layer: str) -> Drawing:
+    """Outlines of the first section of the batch; `layer` names the copper of the traces.
+
+    Heights run as in the stackup, top layer up, whichever way the foot points.
+    """
+    one = section.rows(slice(0, 1))
+    reach = _reach(one)
+    thickness, foot_depth = float(one.thickness[0]), sum(float(ply.thickness[0]) for ply in one.foot_side)
+    crest_top = thickness + sum(float(ply.thickness[0]) for ply in one.crest_side)
+    regions = [*_plies(one.foot_side, reach, start=0.0, way=-1.0),
+               *_plies(one.crest_side, reach, start=0.0, way=1.0, first_extra=thickness), *_mask(one, reach)]
+    copper = [Conductor(layer, "trace", outline) for outline in _traces(one)]
+    sheet = 0.35 * thickness + 0.02 * (foot_depth + crest_top)
+    for plane, low, high in ((surroundings.foot_plane, -foot_depth - sheet, -foot_depth),
+                             (surroundings.crest_plane, crest_top, crest_top + sheet)):
+        if plane is not None:
+            copper.append(Conductor(plane, "plane", _box(reach, low, high)))
+    way = -1.0 if surroundings.foot_up else 1.0
+    return Drawing(
+        tuple(Region(part.name, part.kind, part.dk, read_only(part.outline * [1.0, way])) for part in regions),
+        tuple(Conductor(part.name, part.role, read_only(part.outline * [1.0, way])) for part in copper),
+    )
+
+
+def _reach(one: Section) -> float:
+    """How far sideways the drawing goes."""
+    depth = sum(float(ply.thickness[0]) for ply in (*one.foot_side, *one.crest_side))
+    mask = 0.0 if one.mask is None else 2.0 * float(one.mask.on_laminate[0])
+    gap = 0.0 if one.gap is None else float(one.gap[0]) + float(one.foot_width[0])
+    return 0.5 * gap + 0.5 * float(one.foot_width[0]) + mask + max(depth, float(one.foot_width[0]))
+
+
+def _plies(
+    plies: tuple[Ply, ...], reach: float, *, start: float, way: float, first_extra: float = 0.0,
+) -> list[Region]:
+    regions, height = [], start
+    for number, ply in enumerate(plies):
+        further = height + way * (float(ply.thickness[0]) + (first_extra if number == 0 else 0.0))
+        regions.append(Region(ply.name, ply.kind, float(ply.dk[0]), _box(reach, min(height, further),
+                                                                           max(height, further))))
+        height = further
+    return regions
+
+
+def _mask(one: Section, reach: float) -> list[Region]:
+    if one.mask is None:
+        return []
+    flat = float(one.mask.on_laminate[0])
+    top = max(flat, float(one.thickness[0] + one.mask.over_copper[0]))
+    outer = [(-reach, 0.0), (-reach, flat)]
+    for left, right in _mesas(one, flat):
+        outer += [(left, flat), (left, top), (right, top), (right, flat)]
+    outline = np.array([*outer, (reach, flat), (reach, 0.0)])
+    return [Region(one.mask.name, "mask", float(one.mask.dk[0]), outline)]
+
+
+def _mesas(one: Section, flat: float) -> list[tuple[float, float]]:
+    width = float(one.foot_width[0])
+    if one.gap is None:
+        return [(-0.5 * width - flat, 0.5 * width + flat)]
+    inner, outer = 0.5 * float(one.gap[0]) - flat, 0.5 * float(one.gap[0]) + width + flat
+    return [(-outer, outer)] if inner <= 0.0 else [(-outer, -inner), (inner, outer)]
+
+
+def _traces(one: Section) -> list[FloatArray]:
+    foot, crest, thickness = (float(value[0]) for value in (one.foot_width, one.crest_width, one.thickness))
+    shape = np.array([(-0.5 * foot, 0.0), (0.5 * foot, 0.0), (0.5 * crest, thickness), (-0.5 * crest, thickness)])
+    if one.gap is None:
+        return [shape]
+    shift = 0.5 * (float(one.gap[0]) + foot)
+    return [shape - [shift, 0.0], shape + [shift, 0.0]]
+
+
+def _box(reach: float, low: float, high: float) -> FloatArray:
+    return np.array([(-reach, low), (reach, low), (reach, high), (-reach, high)])
