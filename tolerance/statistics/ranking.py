@@ -7,8 +7,8 @@ import numpy as np
 from tolerance.arrays import FloatArray
 from tolerance.process.draws import correlated_groups
 from tolerance.statistics.dependent import dependent_indices
-from tolerance.statistics.drivers import Model, sobol_indices
-from tolerance.statistics.estimates import Driver, interval_of
+from tolerance.statistics.drivers import Model, ranked, sobol_indices
+from tolerance.statistics.estimates import Driver
 from tolerance.surrogate.prediction import Predictor
 
 
@@ -25,6 +25,8 @@ def rank_drivers(model: Model, *, chance: np.random.Generator, with_shapley: boo
     equal ones stay in the order of the model. Correlated variables have their conditional indices; without
     correlation the indices are SALib's.
     """
+    if not model.names:
+        return ()
     index_chance, shapley_chance = chance.spawn(2)
     shapley: FloatArray | None = None
     if with_shapley:
@@ -33,13 +35,4 @@ def rank_drivers(model: Model, *, chance: np.random.Generator, with_shapley: boo
     if not correlated_groups(model.correlation):
         independent = sobol_indices(model, chance=index_chance)
         first, total = independent.first, independent.total
-    drivers = (
-        Driver(name, interval_of(first[:, position]), interval_of(total[:, position]),
-               None if shapley is None else interval_of(shapley[:, position]))
-        for position, name in enumerate(model.names)
-    )
-    return tuple(sorted(drivers, key=_share_that_ranks, reverse=True))
-
-
-def _share_that_ranks(driver: Driver) -> float:
-    return driver.total.value if driver.shapley is None else driver.shapley.value
+    return ranked(model, first, total, shapley)
