@@ -23,6 +23,8 @@ from tolerance.arrays import FloatArray, read_only
 
 #: Where exp(-k * distance) counts as nought in the spectral rest.
 LAST_EXPONENT = 17.0
+#: Largest error of a reflection (of 1) by far images.
+IMAGE_ERROR = 5e-6
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,15 +101,29 @@ class SpectralRest:
         return np.asarray(-2.0 * (left @ right.transpose(0, 2, 1)))
 
 
-def image_multiples(*, plies: int, depth_ratio: float) -> tuple[float, ...]:
-    """Where far images stand, in units of twice the first ply's thickness; `depth_ratio` is plane depth over it.
+def image_multiples(stack: FlatStack, body_dk: FloatArray) -> tuple[float, ...]:
+    """Where far images stand, in units of twice the first ply's thickness, for the first section of the stack.
 
-    One ply's images stand at whole multiples; several need a denser set. Reflections are met to about 5e-6.
+    One ply's images stand at whole multiples, the last ones wider apart; several plies need a denser set. The
+    smallest set is taken that meets the reflection to IMAGE_ERROR.
     """
-    multiples, step, last = ([1.0, 2.0, 3.0, 4.0], 1.6, 8.0) if plies == 1 else ([1.0], 1.35, 12.0)
-    while multiples[-1] < last * depth_ratio:
-        multiples.append(multiples[-1] * step)
-    return tuple(multiples)
+    nominal = FlatStack(tuple(part[:1] for part in stack.thicknesses), tuple(part[:1] for part in stack.dks))
+    depth_ratio = float(nominal.depth[0] / nominal.thicknesses[0][0])
+    if len(nominal.dks) == 1:
+        candidates = [(1.0,), (1.0, 2.0), (1.0, 2.0, 3.0), (1.0, 2.0, 3.0, 4.0), (1.0, 2.0, 3.0, 4.0, 6.4),
+                      (1.0, 2.0, 3.0, 4.0, 6.4, 10.2)]
+    else:
+        candidates = [tuple(step ** np.arange(1 + np.ceil(np.log(12.0 * depth_ratio) / np.log(step))))
+                      for step in (1.45, 1.35, 1.25)]
+    scale = 2.0 * nominal.thicknesses[0]
+    wavenumber = np.logspace(-4.0, 1.5, 300)[None, :] / scale[:, None]
+    wanted = nominal.reflection(wavenumber, body_dk[:1]) - nominal.first_reflection(body_dk[:1])[:, None]
+    for multiples in candidates:
+        images = far_images(nominal, body_dk[:1], multiples=multiples)
+        met = np.exp(-wavenumber[0][:, None] * images.shifts[0]) @ images.factors[0]
+        if np.abs(met - wanted[0]).max() < IMAGE_ERROR:
+            break
+    return multiples
 
 
 def far_images(stack: FlatStack, body_dk: FloatArray, *, multiples: Sequence[float]) -> FarImages:
@@ -121,6 +137,8 @@ def far_images(stack: FlatStack, body_dk: FloatArray, *, multiples: Sequence[flo
     wanted = stack.reflection(wavenumber / scale[:, None], body_dk) - stack.first_reflection(body_dk)[:, None]
     at_nought = -1.0 - stack.first_reflection(body_dk)
     spread = np.exp(-wavenumber * multiples[-1])
+    if len(multiples) == 1:
+        return FarImages(shifts=scale[:, None], factors=at_nought[:, None])
     free = (wanted - at_nought[:, None] * spread) @ solve
     factors = np.concatenate([free, (at_nought - free.sum(axis=1))[:, None]], axis=1)
     return FarImages(shifts=scale[:, None] * np.asarray(multiples), factors=factors)

@@ -66,10 +66,7 @@ def _counts(edge: Edge, ratio: float, settings: SolverSettings) -> tuple[int, in
 
 
 def _multiples(parts: Structure) -> tuple[float, ...]:
-    if parts.above is not None:
-        return ()
-    depth_ratio = float(parts.below.depth[0] / parts.below.thicknesses[0][0])
-    return image_multiples(plies=len(parts.below.thicknesses), depth_ratio=depth_ratio)
+    return image_multiples(parts.below, parts.body_dk) if parts.above is None else ()
 
 
 def _wavenumbers(parts: Structure) -> int:
