@@ -15,7 +15,6 @@ from scipy.special import ndtri
 from scipy.stats import qmc
 
 from tolerance.arrays import FloatArray, IntArray, read_only
-from tolerance.errors import Problem, ScenarioError
 from tolerance.process.laws import Law, quantile
 from tolerance.scenario.properties import Property, members, properties
 from tolerance.scenario.tables import COPPER, Scenario, Variation
@@ -98,7 +97,7 @@ class ProcessDraws:
 
 
 def process_of(scenario: Scenario) -> Process:
-    """The variables of a scenario in its order, and their correlation. Raises ScenarioError, see `correlation_of`."""
+    """The variables of a scenario in its order, and their correlation."""
     variables = tuple(variable for variation in scenario.variations for variable in _variables(scenario, variation))
     nominals = {each.name: each.nominal for each in properties(scenario)}
     for layer in scenario.layers:
@@ -108,25 +107,13 @@ def process_of(scenario: Scenario) -> Process:
 
 
 def correlation_of(scenario: Scenario, variables: tuple[Variable, ...]) -> FloatArray:
-    """Correlation of the germs, (variables, variables).
-
-    A correlation names a variable, or a property that moves with one. Raises ScenarioError where the matrix is not
-    positive definite, naming the variables.
-    """
+    """Correlation of the germs, (variables, variables). A correlation names a variable, or a property that it moves."""
     matrix = np.eye(len(variables))
     column_of = {name: column for column, variable in enumerate(variables)
                  for name in (variable.name, *(member.name for member, _ in variable.members))}
     for correlation in scenario.correlations:
         one, other = (column_of[name] for name in correlation.between)
         matrix[one, other] = matrix[other, one] = correlation.coefficient
-    for group in correlated_groups(matrix):
-        block = matrix[np.ix_(group, group)]
-        if np.linalg.eigvalsh(block)[0] <= len(group) * np.finfo(float).eps:
-            names = ", ".join(variables[column].name for column in group)
-            raise ScenarioError([Problem(
-                file=scenario.source, table="[[correlations]]",
-                allowed=f"the coefficients between {names} must make a positive definite matrix; these do not",
-            )])
     return read_only(matrix)
 
 
@@ -206,10 +193,7 @@ def _variables(scenario: Scenario, variation: Variation) -> tuple[Variable, ...]
 
 def _law(each: Property, variation: Variation) -> Law:
     if variation.shape == "measured":
-        raise ScenarioError([Problem(
-            file=str(variation.file), table="[[variations]]", entry=", ".join(variation.of), key="shape",
-            allowed="measured is not acted on yet",
-        )])
+        raise ValueError("a measured law is not acted on yet, and is refused when the scenario is checked")
     return Law(
         variation.shape, each.nominal, tolerance=variation.tolerance, shift=variation.shift,
         sigmas=variation.sigmas, cpk=variation.cpk, low=variation.low, high=variation.high,

@@ -19,7 +19,7 @@ from tolerance.scenario.amounts import Amount
 Shape = Literal["normal", "truncated_normal", "uniform", "triangular", "lognormal"]
 
 DEFAULT_SIGMAS = 3.0  # deviations that a half-width covers unless the scenario says otherwise
-FARTHEST_CUT = 30.0  # deviations between the uncut mean and the nearer end beyond which the cut normal is refused
+FARTHEST_CUT = 30.0  # deviations from the mean to the nearer end beyond which tail masses lose their digits
 
 
 @dataclass(frozen=True, slots=True)
