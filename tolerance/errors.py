@@ -52,7 +52,7 @@ class Problem:
             place += f" number {self.number}"
         value = f" = {as_toml(self.given)}" if self.given is not None else ""
         parts = [self.file, place, self.key + value if self.key else "", self.allowed]
-        return ": ".join(part for part in parts if part)
+        return on_one_line(": ".join(part for part in parts if part))
 
 
 class ScenarioError(ToleranceError):
@@ -63,6 +63,11 @@ class ScenarioError(ToleranceError):
     def __init__(self, problems: Sequence[Problem]) -> None:
         self.problems = tuple(problems)
         super().__init__("\n".join(str(problem) for problem in self.problems))
+
+
+def on_one_line(text: str) -> str:
+    """The text with every character that does not print (a line end, say) as its escape."""
+    return "".join(one if one.isprintable() else one.encode("unicode_escape").decode("ascii") for one in text)
 
 
 _LONGEST_SHOWN = 80

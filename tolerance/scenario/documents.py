@@ -10,12 +10,13 @@ from types import MappingProxyType
 from typing import Any, NamedTuple
 
 from tolerance.errors import Problem
-from tolerance.scenario.keys import close_match
+from tolerance.scenario.keys import close_match, meant_by
 from tolerance.scenario.places import Lines
 
 TOP_KEYS = ("format", "title", "extends")
 SINGLE_TABLES = ("evaluation", "test", "report")
 ENTRY_TABLES = ("layers", "lines", "variations", "correlations", "offers")
+_KNOWN = (*TOP_KEYS, *SINGLE_TABLES, *ENTRY_TABLES)
 LABEL_KEYS: Mapping[str, str] = MappingProxyType({
     "layers": "name", "lines": "name", "variations": "of", "correlations": "between", "offers": "of",
 })
@@ -80,19 +81,31 @@ class Document:
 
 
 def outline(raw: Mapping[str, Any], *, text: str, lines: Lines, origin: Place) -> tuple[Document, list[Finding]]:
-    """The document of one file, and what is wrong with its outline. `origin` is the place of the file itself."""
+    """The document of one file, and what is wrong with its outline. `origin` is the place of the file itself.
+
+    A misspelled name is told, and read as the one that is meant, so that it does not bring other problems with it.
+    """
     findings: list[Finding] = []
-    top = _entry("", 0, {key: raw[key] for key in TOP_KEYS if key in raw}, lines, origin)
+    tops: dict[str, Any] = {}
+    top_places: dict[str, Place] = {}
     tables: dict[str, Entry] = {}
     entries: dict[str, tuple[Entry, ...]] = {}
-    for name, value in raw.items():
-        place = origin._replace(line=_line(lines, name, 0, "") or lines.get(("", 0, name), 0))
-        if name in SINGLE_TABLES and isinstance(value, dict):
-            tables[name] = _entry(name, 0, value, lines, place)
+    for written, value in raw.items():
+        place = origin._replace(line=_line(lines, written, 0, "") or _line(lines, "", 0, written))
+        name = written if written in _KNOWN else meant_by(written, _KNOWN) or written
+        if name != written or name not in _KNOWN:
+            findings.append(_unknown(written, value, place))
+            name = "" if name in raw else name
+        if name in TOP_KEYS:
+            tops[name], top_places[name] = value, place
+        elif name in SINGLE_TABLES and isinstance(value, dict):
+            tables[name] = _entry(name, 0, value, _renamed(lines, written, name), place)
         elif name in ENTRY_TABLES and isinstance(value, list) and all(isinstance(item, dict) for item in value):
-            entries[name] = tuple(_entry(name, number, item, lines, place) for number, item in enumerate(value, 1))
-        elif name not in TOP_KEYS:
-            findings.append(_misplaced(name, value, place))
+            renamed = _renamed(lines, written, name)
+            entries[name] = tuple(_entry(name, number, item, renamed, place) for number, item in enumerate(value, 1))
+        elif written in _KNOWN:
+            findings.append(_misplaced(written, value, place))
+    top = Entry(table="", values=tops, place=origin, places=top_places)
     return Document(top=top, tables=tables, entries=entries, text=text), findings
 
 
@@ -106,15 +119,21 @@ def _line(lines: Lines, table: str, number: int, key: str) -> int:
     return lines.get((table, number, key), 0)
 
 
+def _renamed(lines: Lines, written: str, name: str) -> Lines:
+    return {(name, number, key): line for (table, number, key), line in lines.items() if table == written}
+
+
+def _unknown(name: str, value: object, place: Place) -> Finding:
+    is_table = isinstance(value, (dict, list))
+    allowed = f"unknown {'table' if is_table else 'key'}{close_match(name, _KNOWN)}"
+    return Finding(place, Problem(file=place.file, table="", key=name, given=None if is_table else value,
+                                  allowed=allowed))
+
+
 def _misplaced(name: str, value: object, place: Place) -> Finding:
-    """A top-level key that is none, or a table written as something else."""
-    if name in SINGLE_TABLES:
-        shown, allowed = name, f"must be a table, headed [{name}]"
-    elif name in ENTRY_TABLES:
-        shown, allowed = name, f"must be a list of tables, each headed [[{name}]]"
-    else:
-        known = (*TOP_KEYS, *SINGLE_TABLES, *ENTRY_TABLES)
-        what = "table" if isinstance(value, (dict, list)) else "key"
-        shown, allowed = name, f"unknown {what}{close_match(name, known)}"
+    """A table that is written as something else."""
+    heading = f"[{name}]" if name in SINGLE_TABLES else f"[[{name}]]"
+    what = "a table" if name in SINGLE_TABLES else "a list of tables, each"
     given = None if isinstance(value, (dict, list)) else value
-    return Finding(place, Problem(file=place.file, table="", key=shown, given=given, allowed=allowed))
+    return Finding(place, Problem(file=place.file, table="", key=name, given=given,
+                                  allowed=f"must be {what} headed {heading}"))

@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any, Generic, TypeVar
 
 from pydantic import ValidationError
 from pydantic.fields import FieldInfo
 
 from tolerance.scenario.documents import Document, Entry, Finding
-from tolerance.scenario.keys import FROM_FILE, Kind, RefusedError, Text, close_match
+from tolerance.scenario.keys import FROM_FILE, Kind, RefusedError, Text, close_match, meant_by
 from tolerance.scenario.tables import (
     Correlation,
     Evaluation,
@@ -91,7 +91,8 @@ def _kind(info: FieldInfo) -> Kind:
     raise TypeError("every key of a table says what it may hold")
 
 
-def _draft(entry: Entry, model: type[Model], findings: list[Finding]) -> Draft[Model]:
+def _draft(written: Entry, model: type[Model], findings: list[Finding]) -> Draft[Model]:
+    entry = _as_meant(written, model, findings)
     try:
         return Draft(entry, model.model_validate(dict(entry.values), context=dict(FROM_FILE)), frozenset())
     except ValidationError as problems:
@@ -100,10 +101,23 @@ def _draft(entry: Entry, model: type[Model], findings: list[Finding]) -> Draft[M
     return Draft(entry, None, frozenset(found))
 
 
+def _as_meant(entry: Entry, model: type[Table], findings: list[Finding]) -> Entry:
+    """The entry without unknown keys, each told; a misspelled key is read as the one that is meant."""
+    known = model.model_fields
+    values, places = dict(entry.values), dict(entry.places)
+    for key in entry.values:
+        if key in known:
+            continue
+        findings.append(entry.finding(key, f"unknown key{close_match(key, known)}"))
+        value, place = values.pop(key), places.pop(key)
+        meant = meant_by(key, known)
+        if meant is not None and meant not in values:
+            values[meant], places[meant] = value, place
+    return replace(entry, values=values, places=places)
+
+
 def _words(model: type[Table], key: str, error: Mapping[str, Any]) -> str:
     """What is allowed, instead of pydantic's own message."""
-    if key not in model.model_fields:
-        return f"unknown key{close_match(key, model.model_fields)}"
     if error["type"] == "missing":
         return f"missing; must be {kind_of(model, key).allowed}"
     context = error.get("ctx", {})

@@ -75,6 +75,7 @@ def entry_findings(drafts: Drafts) -> Iterator[Finding]:
         yield from _variation(variation)
     if drafts.test is not None:
         yield from _test(drafts.test)
+        yield from _guard_band(drafts.test, drafts)
     yield from _coupons(drafts.evaluation, drafts.variations)
 
 
@@ -192,6 +193,19 @@ def _test(draft: Draft[ImpedanceTest]) -> Iterator[Finding]:
                                            "(panels_per_lot x coupons_per_panel)")
     if test.accept_number >= test.sample_size:
         yield entry.finding("accept_number", f"must be below sample_size, {test.sample_size}")
+
+
+def _guard_band(draft: Draft[ImpedanceTest], drafts: Drafts) -> Iterator[Finding]:
+    """What is taken off both limits must leave something between them, on every line."""
+    general = drafts.evaluation.model.limit if drafts.evaluation.model is not None else None
+    for line in drafts.lines:
+        if draft.model is None or line.model is None:
+            continue
+        limit = general if line.model.limit is None else line.model.limit
+        if limit is not None and draft.model.guard_band >= limit * line.model.target:
+            yield draft.entry.finding("guard_band", "must be below the half-width of the limits of every line; of "
+                                      f'"{line.model.name}" it is {limit * line.model.target:.6g} ohm')
+            return
 
 
 def _coupons(draft: Draft[Evaluation], variations: tuple[Draft[Variation], ...]) -> Iterator[Finding]:

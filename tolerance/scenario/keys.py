@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import difflib
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from types import MappingProxyType
 from typing import Any, TypeGuard
@@ -21,6 +21,7 @@ from tolerance.units import MEASURES, MeasureName, QuantityError, read_quantity,
 
 FROM_FILE: Mapping[str, bool] = MappingProxyType({"from_file": True})
 _LONGEST_TEXT = 500
+_MOST_LISTED = 20
 _NUMBER_PATTERN = r"\s*[+-]?([0-9]+(\.[0-9]*)?|\.[0-9]+)([eE][+-]?[0-9]{1,3})?\s*"
 
 
@@ -71,11 +72,13 @@ class Range:
         above = value >= self.low if self.low_in else value > self.low
         return above and (value <= self.high if self.high_in else value < self.high)
 
-    def words(self, write: Any) -> str:
+    def words(self, write: Callable[[float], str]) -> str:
         """`above 0 um and up to 5000 um`; `write` makes the text of an end."""
         low = f"{'from' if self.low_in else 'above'} {write(self.low)}" if math.isfinite(self.low) else ""
         high = f"{'up to' if self.high_in else 'below'} {write(self.high)}" if math.isfinite(self.high) else ""
-        return f"{low} and {high}" if low and high and not (self.low_in and self.high_in) else f"{low} {high}".strip()
+        if low and high:
+            return f"{low} {high}" if self.low_in and self.high_in else f"{low} and {high}"
+        return f"{low} up" if low and self.low_in else f"{low}{high}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -186,8 +189,8 @@ class Text(Kind):
 
     @property
     def allowed(self) -> str:
-        without = f", without {listed([repr(one)[1:-1] for one in self.forbidden])}" if self.forbidden else ""
-        return f"{self.noun} of 1 to {_LONGEST_TEXT} characters on one line, without blanks at its ends{without}"
+        without = f", without {listed(list(self.forbidden))}" if self.forbidden else ""
+        return f"{self.noun}: text on one line, no blanks at its ends{without}"
 
     def read(self, given: object, *, from_file: bool) -> str:
         del from_file
@@ -289,8 +292,18 @@ def listed(items: Sequence[str], last: str = "or") -> str:
     return items[0] if len(items) == 1 else f"{', '.join(items[:-1])} {last} {items[-1]}" if items else "none"
 
 
+def meant_by(name: str, known: Iterable[str]) -> str | None:
+    """The known name that a misspelled one comes near to."""
+    near = difflib.get_close_matches(name, list(known), n=1, cutoff=0.6)
+    return near[0] if near else None
+
+
 def close_match(name: str, known: Iterable[str]) -> str:
     """`; did you mean "gap"?` where one of the known names is near, else what is known."""
     names = list(known)
-    near = difflib.get_close_matches(name, names, n=1, cutoff=0.6)
-    return f'; did you mean "{near[0]}"?' if near else f"; known are {listed(names, 'and')}" if names else ""
+    meant = meant_by(name, names)
+    if meant is not None:
+        return f'; did you mean "{meant}"?'
+    if len(names) > _MOST_LISTED:
+        names = [*names[:_MOST_LISTED], f"{len(names) - _MOST_LISTED} more"]
+    return f"; known are {listed(names, 'and')}" if names else ""

@@ -110,8 +110,10 @@ def _carrier(line: Draft[Line], key: str, layers: Sequence[Draft[Layer]]) -> Ite
     if name is None:
         return
     layer = _named(layers, name)
-    if layer is None:
+    if layer is None and _all_named(layers):
         yield line.entry.finding(key, f"must be the name of a layer{close_match(name, _copper(layers, 'signal'))}")
+    elif layer is None:
+        return
     elif _known_not(layer, "kind", COPPER):
         yield line.entry.finding(key, f"must be a copper layer; this one is {layer.text('kind')}")
     elif _known_not(layer, "use", "signal"):
@@ -124,10 +126,10 @@ def _references(line: Draft[Line], layers: Sequence[Draft[Layer]]) -> Iterator[F
         return
     for name in names:
         layer = _named(layers, name)
-        if layer is None:
+        if layer is None and _all_named(layers):
             yield line.entry.finding(
                 "references", f'no layer is called "{name}"{close_match(name, _copper(layers, "plane"))}')
-        elif _known_not(layer, "kind", COPPER) or _known_not(layer, "use", "plane"):
+        elif layer is not None and (_known_not(layer, "kind", COPPER) or _known_not(layer, "use", "plane")):
             yield line.entry.finding("references", f'must name planes; "{name}" is not copper with use = "plane"')
 
 
@@ -165,12 +167,17 @@ def _crest(line: Draft[Line], layers: Sequence[Outline]) -> Iterator[Finding]:
                          f'{write_quantity(copper.copper_thickness, "length")} copper on "{layer.name}"')
 
 
+def _all_named(layers: Sequence[Draft[Layer]]) -> bool:
+    """Whether every layer's name reads; if not, a name that no layer has may be the one that does not."""
+    return all(layer.text("name") is not None for layer in layers)
+
+
 def _named(layers: Sequence[Draft[Layer]], name: str) -> Draft[Layer] | None:
-    return next((layer for layer in layers if layer.entry.label == name), None)
+    return next((layer for layer in layers if layer.text("name") == name), None)
 
 
 def _copper(layers: Sequence[Draft[Layer]], use: str) -> list[str]:
-    return [layer.entry.label for layer in layers if layer.text("use") == use and layer.entry.label]
+    return [name for layer in layers if layer.text("use") == use and (name := layer.text("name")) is not None]
 
 
 def _known_not(draft: Draft[Layer], key: str, wanted: str) -> bool:

@@ -10,6 +10,7 @@ import numpy as np
 from tolerance.scenario.amounts import Amount, AmountOf, EndOf, LevelShares
 from tolerance.scenario.documents import Entry, Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
+from tolerance.scenario.entry_rules import LAYER_KEYS
 from tolerance.scenario.keys import RefusedError, close_match, listed
 from tolerance.scenario.properties import MEASURE, VARYING, Property, matches, properties_of
 from tolerance.scenario.tables import Layer, Offer, Variation
@@ -25,6 +26,7 @@ class Named:
 
     draft: Draft[Variation] | Draft[Offer]
     members: tuple[Property, ...]
+    complete: bool  # whether all of `of` reads and is found
 
 
 def variation_findings(drafts: Drafts) -> Iterator[Finding]:
@@ -46,43 +48,53 @@ def _named(
 ) -> Named:
     """The properties that `of` names; names and patterns that hit nothing are told."""
     if not draft.given("of"):
-        return Named(draft, ())
+        return Named(draft, (), complete=False)
     known = [item for layer in layers if layer.model is not None and not layer.bad and layer.text("kind")
              for item in properties_of(layer.model)]
     value = draft.entry.values["of"]
     texts: list[str] = [value] if isinstance(value, str) else value
     found: dict[str, Property] = {}
+    complete = True
     for text in texts:
         hits = [item for item in known if matches(text, item.name)]
         found |= {item.name: item for item in hits}
+        complete = complete and bool(hits)
         reason = "" if hits else _why_nothing(text, layers, known)
         if reason:
             findings.append(draft.entry.finding("of", reason if len(texts) == 1 else f'"{text}": {reason}'))
-    return Named(draft, tuple(item for item in known if item.name in found))
+    return Named(draft, tuple(item for item in known if item.name in found), complete)
 
 
 def _why_nothing(text: str, layers: Sequence[Draft[Layer]], known: Sequence[Property]) -> str:
     """Why a name or pattern hits no property; "" where a layer that does not read may be what is meant."""
-    broken = [layer for layer in layers if layer.model is None]
+    broken = [layer for layer in layers if _incomplete(layer)]
     if "*" in text:
-        may_be = any(matches(text, f"{layer.entry.label}.{name}") for layer in broken for names in VARYING.values()
-                     for name in names)
+        may_be = any(layer.text("name") is None or matches(text, f"{layer.text('name')}.{name}")
+                     for layer in broken for names in VARYING.values() for name in names)
         return "" if may_be else "must match at least one property that varies, such as " + _examples(known)
     layer_name, dot, name = text.rpartition(".")
     if not dot:
         return "must be LAYER.PROPERTY, such as " + _examples(known)
-    names = [layer.entry.label for layer in layers if layer.entry.label]
-    layer = next((one for one in layers if one.entry.label == layer_name), None)
-    if layer is None:
-        return f'no layer is called "{layer_name}"{close_match(layer_name, names)}'
+    layer_of = {one.text("name"): one for one in layers}
+    layer = layer_of.get(layer_name)
+    if layer is None:  # a layer whose own name does not read may be what is meant
+        names = [known_name for known_name in layer_of if known_name is not None]
+        return "" if None in layer_of else f'no layer is called "{layer_name}"{close_match(layer_name, names)}'
     kind = layer.text("kind")
     if kind is None:
         return ""
     if name not in VARYING[kind]:
         return f"{kind} varies in {listed(VARYING[kind], 'and')}{_only_suggestion(name, VARYING[kind])}"
-    if layer.model is None:
+    if _incomplete(layer):
         return ""
     return f'"{layer_name}" gives no {name} that could vary'
+
+
+def _incomplete(layer: Draft[Layer]) -> bool:
+    """Whether the layer has a problem of its own, told already, that may hide a property."""
+    kind = layer.text("kind")
+    needed = LAYER_KEYS[kind].needed if kind is not None else ()
+    return layer.model is None or any(key not in layer.entry.values for key in needed)
 
 
 def _only_suggestion(name: str, known: Sequence[str]) -> str:
@@ -211,7 +223,7 @@ class VariableOutline:
 def correlation_findings(drafts: Drafts, named: Sequence[Named]) -> Iterator[Finding]:
     """Variables that are there, no pair twice, equal level shares, and a positive definite matrix."""
     variables = _variables(named)
-    complete = all(variation.draft.given("of") for variation in named)
+    complete = all(variation.complete for variation in named)
     pairs: dict[frozenset[str], float] = {}
     entries: dict[frozenset[str], Entry] = {}
     for draft in drafts.correlations:
@@ -254,7 +266,7 @@ def _variables(named: Sequence[Named]) -> dict[str, VariableOutline]:
 
 def _may_be_broken(name: str, drafts: Drafts) -> bool:
     """Whether the name may be that of a layer which does not read."""
-    return any(layer.model is None and name.startswith(layer.entry.label) for layer in drafts.layers)
+    return any(layer.model is None and name.startswith(layer.text("name") or "") for layer in drafts.layers)
 
 
 def _no_variable(name: str, variables: Mapping[str, VariableOutline]) -> str:
