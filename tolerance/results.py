@@ -71,8 +71,8 @@ class LineResult:
     below: Interval
     above: Interval
     inside: Interval  # the yield of the line
-    cp: Interval
-    cpk: Interval
+    cp: Interval | None  # None where the line does not vary
+    cpk: Interval | None
     impossible: int  # coupons whose section cannot exist; they fail
     drivers: tuple[Driver, ...]  # ranked, largest first; only variables that reach the line
     spread: Spread

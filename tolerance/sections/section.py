@@ -7,7 +7,7 @@ The first ply of the crest side also fills the height of the trace. Beyond an op
 
 from __future__ import annotations
 
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -22,6 +22,10 @@ class Ply:
     dk: FloatArray
     name: str = ""
     kind: str = ""
+
+    def rows(self, index: IntArray | BoolArray | slice) -> Ply:
+        """The ply of the sections picked by `index`."""
+        return Ply(self.thickness[index], self.dk[index], self.name, self.kind)
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,13 +78,11 @@ class Section:
 
     def rows(self, index: IntArray | BoolArray | slice) -> Section:
         """The sections picked by `index`."""
-        def pick(value: object) -> object:
-            if isinstance(value, np.ndarray):
-                return value[index]
-            if isinstance(value, tuple):
-                return tuple(pick(item) for item in value)
-            if isinstance(value, Ply | Mask):
-                return replace(value, **{part.name: pick(getattr(value, part.name)) for part in fields(value)})
-            return value
-
-        return replace(self, **{part.name: pick(getattr(self, part.name)) for part in fields(self)})
+        mask = self.mask
+        return Section(
+            self.foot_width[index], self.crest_width[index], self.thickness[index],
+            None if self.gap is None else self.gap[index],
+            tuple(ply.rows(index) for ply in self.foot_side), self.foot_plane,
+            tuple(ply.rows(index) for ply in self.crest_side), self.crest_plane,
+            None if mask is None else Mask(mask.on_laminate[index], mask.over_copper[index], mask.dk[index], mask.name),
+        )

@@ -55,7 +55,7 @@ def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: S
     nodes = tuple(place_nodes(edge, unknowns=unknowns, fine=fine)
                   for edge, (unknowns, fine) in zip(edges, counts, strict=True))
     across, height = (np.concatenate(parts, axis=1) for parts in zip(*((n.across, n.height) for n in nodes), strict=True))
-    copper = sum(n.across.shape[1] for n in nodes if n.edge.role == "copper")
+    copper = sum(n.across.shape[1] for n in nodes if n.edge.conducts)
     normals = tuple(np.concatenate([np.broadcast_to(n.normal[axis][:, None], n.across.shape) for n in nodes], axis=1)
                     for axis in (0, 1))
     own, mirrored = [], []

@@ -6,7 +6,9 @@ the body (see kernels). Every array of an edge has shape (sections,).
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
 from typing import Literal
 
 import numpy as np
@@ -15,9 +17,10 @@ from tolerance.arrays import FloatArray
 from tolerance.sections.section import Section
 from tolerance.solver.rules import Rule, graded_rule, refinement, self_potential, tail_rule
 
-Role = Literal["copper", "dielectric"]
-#: Sharper grading on copper, where the charge is singular, than on dielectric faces, where it is milder.
-GRADING: dict[Role, int] = {"copper": 3, "dielectric": 2}
+Role = Literal["copper", "strip", "dielectric"]
+#: Grading by how the charge grows towards the ends: like distance^(-1/3) at corners of copper, like distance^(-1/2)
+#: at the edges of a strip without thickness, more mildly on dielectric faces.
+GRADING: Mapping[Role, int] = MappingProxyType({"copper": 3, "strip": 2, "dielectric": 2})
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,6 +40,11 @@ class Edge:
     tail: bool = False
     left_dk: FloatArray | None = None
     right_dk: FloatArray | None = None
+
+    @property
+    def conducts(self) -> bool:
+        """Whether it is copper, with or without thickness."""
+        return self.role != "dielectric"
 
     @property
     def length(self) -> FloatArray:
@@ -78,7 +86,7 @@ def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
     refine = refinement(unknowns, fine)
     alone: FloatArray | None = None
     mirrored: FloatArray | None = None
-    if edge.role == "copper":
+    if edge.conducts:
         full = self_potential(unknowns, power) + np.log(0.5 * edge.length)[:, None, None]
         alone = full[:, keep, keep]
         mirrored = full[:, keep, : unknowns // 2][:, :, ::-1] if edge.folded else None
@@ -105,8 +113,10 @@ def _places(edge: Edge, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray
 
 
 def trace_edges(section: Section) -> list[Edge]:
-    """Faces of the right-hand trace, or of the right half of a single one."""
+    """Faces of the right-hand trace, or of the right half of a single one; one face where it has no thickness."""
     foot_height, crest_height = np.zeros(section.count), section.thickness
+    if not section.thickness[0]:
+        return _strip_edges(section)
     setback = 0.5 * (section.foot_width - section.crest_width)
     if section.gap is None:
         foot_end, crest_end = 0.5 * section.foot_width, 0.5 * section.crest_width
@@ -122,6 +132,13 @@ def trace_edges(section: Section) -> list[Edge]:
         Edge("crest", "copper", (inner + setback, crest_height), (outer - setback, crest_height)),
         Edge("inner side", "copper", (inner, foot_height), (inner + setback, crest_height)),
     ]
+
+
+def _strip_edges(section: Section) -> list[Edge]:
+    zero, outer = np.zeros(section.count), outer_foot_edge(section)
+    if section.gap is None:
+        return [Edge("foot", "strip", (-outer, zero), (outer, zero), folded=True)]
+    return [Edge("foot", "strip", (0.5 * section.gap, zero), (outer, zero))]
 
 
 def outer_foot_edge(section: Section) -> FloatArray:

@@ -75,5 +75,5 @@ def _solve_batch(section: Section, plan: Plan, modes: tuple[int, ...]) -> dict[i
 def _batch_size(section: Section, plan: Plan) -> int:
     """Sections at a time, so that a matrix of the batch stays in cache."""
     counts = [plan.count(edge) for edge in structure(section).edges]
-    unknowns, fine = (sum(column) for column in zip(*counts, strict=True))
+    unknowns, fine = sum(count[0] for count in counts), sum(count[1] for count in counts)
     return max(1, 60_000 // (unknowns * fine // 8 + 1))

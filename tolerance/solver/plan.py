@@ -59,7 +59,7 @@ def _counts(edge: Edge, ratio: float, settings: SolverSettings) -> tuple[int, in
     """Unknowns and quadrature places for an edge `ratio` times as long as the way to its next neighbour."""
     if edge.tail:
         return settings.tail_nodes, 2 * settings.tail_nodes
-    base = settings.copper_nodes if edge.role == "copper" else settings.dielectric_nodes
+    base = settings.copper_nodes if edge.conducts else settings.dielectric_nodes
     more = max(0.0, math.log2(ratio / 2.5)) if ratio > 0.0 else 0.0
     unknowns = _even(base + 4.0 * more)
     return unknowns, _even(max(2.0 * unknowns, 2.0 * ratio))
@@ -93,7 +93,7 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float]]:
     result = []
     for edge, points in outlines:
         length = float(edge.length[0])
-        ways = [2.0 * float(np.abs(points[:, 1] - level).min()) for level in levels]
+        ways = [float(np.abs(points[:, 1] - level).min()) for level in levels]
         ways += [_way(points, there, float(other.length[0])) for other, there in others
                  if other is not edge or there[0, 0] != points[0, 0]]
         result.append((edge, length / max(min(ways), 1e-3 * length)))

@@ -12,6 +12,7 @@ from tolerance.solver.assembly import Medium, NearImage
 from tolerance.solver.edges import Edge, mask_edges, trace_edges
 from tolerance.solver.kernels import FlatStack, far_images, plane_image, spectral_rest
 
+
 @dataclass(frozen=True, slots=True)
 class Structure:
     """Edges (copper first), near images, and the kernel's parts: `below` and `above` are counted from the body."""
@@ -26,13 +27,13 @@ class Structure:
 
 def topology(section: Section) -> IntArray:
     """A number for each section; sections with the same number have the same edges: shape (sections,)."""
-    result = np.zeros(section.count, dtype=np.int64)
+    result = 4 * (section.thickness == 0.0).astype(np.int64)
     if section.mask is not None:
         top = section.thickness + section.mask.over_copper
         result += section.mask.on_laminate >= top
         if section.gap is not None:
             result += 2 * (section.gap <= 2.0 * section.mask.on_laminate)
-    return result
+    return np.asarray(result, dtype=np.int64)
 
 
 def structure(section: Section) -> Structure:
@@ -70,13 +71,13 @@ def shortest_remaining_way(parts: Structure) -> FloatArray:
     """Shortest ray between flat plies that the near images leave out [m]: shape (sections,)."""
     assert parts.above is not None
     assert parts.body_thickness is not None
-    crest = next(edge for edge in parts.edges if edge.name == "crest").start[1]
+    crest = np.maximum.reduce([edge.start[1] for edge in parts.edges])
     ways = [2.0 * parts.body_thickness - crest]
     if parts.below.thicknesses:
         ways.append(2.0 * parts.below.thicknesses[0])
     if parts.above.thicknesses:
         ways.append(2.0 * (parts.body_thickness - crest + parts.above.thicknesses[0]))
-    return np.minimum.reduce(ways)
+    return np.asarray(np.minimum.reduce(ways), dtype=np.float64)
 
 
 def _open_above(section: Section, body_dk: FloatArray) -> Structure:
@@ -84,7 +85,7 @@ def _open_above(section: Section, body_dk: FloatArray) -> Structure:
     zero = np.zeros(section.count)
     edges = trace_edges(section)
     if section.mask is not None:
-        edges += mask_edges(section, merged=int(topology(section.rows(slice(0, 1)))[0]) >= 2)
+        edges += mask_edges(section, merged=bool(int(topology(section.rows(slice(0, 1)))[0]) & 2))
     return Structure(edges=tuple(edges), images=(NearImage(None), NearImage(zero, touching=("foot",))),
                      body_dk=body_dk, below=_stack(section.foot_side, plane=True), above=None, body_thickness=None)
 

@@ -1,4 +1,4 @@
-"""One line made ready to be solved: its surroundings, its nominal section, its solver plan, and what its impedance is."""
+"""One line made ready to be solved: surroundings, nominal section, solver plan, and what its impedance is."""
 
 from __future__ import annotations
 

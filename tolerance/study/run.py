@@ -93,10 +93,10 @@ def run(
     clock.lap("yield")
 
     results = []
-    for number, (line, verdict, chance) in enumerate(
+    for number, (known, verdict, chance) in enumerate(
             zip(predicted, judged.lines, driver_chance.spawn(count), strict=True)):
         tell("ranking drivers", number, count)
-        results.append(_line_result(line, verdict, rank_drivers(line.predictor, chance)))
+        results.append(_line_result(known, verdict, rank_drivers(known.predictor, chance)))
     tell("ranking drivers", count, count)
     clock.lap("drivers")
     return RunResult(

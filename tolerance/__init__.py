@@ -1,0 +1,29 @@
+"""Fabrication-tolerance Monte Carlo analyzer for controlled-impedance lines on printed circuits.
+
+    scenario = tolerance.load("board.toml")
+    tolerance.check(scenario)            # nominal impedance of each line
+    result = tolerance.run(scenario)     # yield and drivers
+    result.line_table                    # a pandas DataFrame
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from tolerance.scenario import load as load
+    from tolerance.study.check import check as check
+    from tolerance.study.run import run as run
+
+__all__ = ["check", "load", "run"]
+
+_HOMES = {"load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run"}
+
+
+def __getattr__(name: str) -> Any:
+    """Load a public function when it is first asked for, so that importing the package costs nothing."""
+    if name not in _HOMES:
+        raise AttributeError(f"module 'tolerance' has no attribute {name!r}")
+    from importlib import import_module
+
+    return getattr(import_module(_HOMES[name]), name)

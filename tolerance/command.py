@@ -1,0 +1,200 @@
+"""The command line: the only place that prints and exits.
+
+Each command imports what it needs when it runs, so that `--help` and `check` start at once.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+import time
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, NoReturn
+
+from tolerance.errors import InputError, ToleranceError
+
+if TYPE_CHECKING:
+    from rich.console import Console
+
+    from tolerance.results import RunResult
+    from tolerance.scenario import Scenario
+
+MISSED_TARGET = 1
+UNFINISHED = 3
+INTERRUPTED = 130
+SECONDS_BEFORE_PROGRESS = 1.0
+
+
+def main(arguments: Sequence[str] | None = None) -> NoReturn:
+    """Run one command and exit with its status."""
+    options = _parser().parse_args(arguments)
+    try:
+        status = options.command(options)
+        sys.stdout.flush()
+    except ToleranceError as problem:
+        print(problem, file=sys.stderr)
+        status = problem.exit_status
+    except BrokenPipeError:  # whoever read our output has stopped reading
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        status = 0
+    except OSError as problem:
+        print(f"could not be finished: {problem}", file=sys.stderr)
+        status = UNFINISHED
+    except KeyboardInterrupt:
+        print("interrupted", file=sys.stderr)
+        status = INTERRUPTED
+    sys.exit(status)
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="tolerance",
+        description="Will the coupons pass? Fabrication tolerances of controlled-impedance lines, through a field "
+                    "solver, to yield and what drives it.",
+    )
+    commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")
+    _add_run(commands.add_parser("run", help="the main job: yield and drivers of every line, workbook and figures"))
+    check = commands.add_parser("check", help="validate a scenario and solve each line at its nominals")
+    check.add_argument("file", type=Path, metavar="FILE", help="scenario (TOML)")
+    check.add_argument("--json", action="store_true", help="the result as one JSON object on standard output")
+    check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    check.set_defaults(command=_check)
+    new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
+    new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
+    new.add_argument("--quiet", action="store_true", help="do not say what was written")
+    new.set_defaults(command=_new)
+    schema = commands.add_parser("schema", help="print the JSON Schema of scenario files, for editors")
+    schema.set_defaults(command=_schema)
+    return parser
+
+
+def _add_run(run: argparse.ArgumentParser) -> None:
+    run.add_argument("file", type=Path, metavar="FILE", help="scenario (TOML)")
+    run.add_argument("--out", type=Path, metavar="DIR", help="folder for workbook and figures; default out/<file stem>")
+    run.add_argument("--json", action="store_true",
+                     help="the result as one JSON object on standard output; no files unless --out is given")
+    run.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
+    run.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
+    run.add_argument("--direct", type=int, default=0, metavar="N",
+                     help="also solve N coupons of the sample themselves and report the difference")
+    run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
+    run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    run.set_defaults(command=_run)
+
+
+def _check(options: argparse.Namespace) -> int:
+    from tolerance.report.json_text import check_json
+    from tolerance.scenario import load
+    from tolerance.study.check import check
+
+    scenario = load(options.file)
+    result = check(scenario)
+    if options.json:
+        print(check_json(result))
+    elif not options.quiet:
+        from tolerance.report.terminal import print_check
+
+        print_check(result, scenario.report.lengths, _console())
+    return 0
+
+
+def _run(options: argparse.Namespace) -> int:
+    from tolerance.scenario import load
+
+    scenario = load(options.file)
+    _check_numbers(options)
+    from tolerance.study.run import run
+
+    with _progress(quiet=options.quiet) as tell:
+        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
+        folder = options.out or (None if options.json else Path("out") / options.file.stem)
+        written = [] if folder is None else _write_files(result, scenario, folder, tell)
+    if options.json:
+        from tolerance.report.json_text import run_json
+
+        print(run_json(result))
+    elif not options.quiet:
+        from tolerance.report.terminal import print_run
+
+        console = _console()
+        print_run(result, console)
+        if written:
+            console.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+    return MISSED_TARGET if options.strict and result.misses_target else 0
+
+
+def _check_numbers(options: argparse.Namespace) -> None:
+    """The same ranges as in a scenario. Raises InputError."""
+    from tolerance.scenario.tables import LARGEST_COUPONS, SMALLEST_COUPONS
+
+    coupons, seed, direct = options.coupons, options.seed, options.direct
+    if coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
+        raise InputError(f"--coupons {coupons}: must be a power of two from {SMALLEST_COUPONS} to {LARGEST_COUPONS}")
+    if seed is not None and seed < 0:
+        raise InputError(f"--seed {seed}: must be 0 or more")
+    if direct < 0:
+        raise InputError(f"--direct {direct}: must be 0 or more")
+
+
+def _write_files(
+    result: RunResult, scenario: Scenario, folder: Path, tell: Callable[[str, int, int], None],
+) -> list[Path]:
+    from tolerance.report.figures import write_figures
+    from tolerance.report.workbook import write_workbook
+
+    folder.mkdir(parents=True, exist_ok=True)
+    tell("writing the workbook", 0, 1)
+    workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
+    tell("drawing figures", 0, 1)
+    return [workbook, *write_figures(result, folder, scenario.report.lengths)]
+
+
+def _new(options: argparse.Namespace) -> int:
+    from tolerance.scenario import write_starter
+
+    write_starter(options.file)
+    if not options.quiet:
+        print(f"Wrote {options.file}. Run it: tolerance run {options.file}")
+    return 0
+
+
+def _schema(_: argparse.Namespace) -> int:
+    import json
+
+    from tolerance.scenario import json_schema
+
+    print(json.dumps(json_schema(), indent=2))
+    return 0
+
+
+def _console() -> Console:
+    from rich.console import Console
+
+    return Console(width=None if sys.stdout.isatty() else 80)
+
+
+@contextmanager
+def _progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
+    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal."""
+    if quiet or not sys.stderr.isatty():
+        yield lambda _step, _done, _total: None
+        return
+    from rich.console import Console
+    from rich.progress import Progress
+
+    bar = Progress(console=Console(stderr=True), transient=True)
+    task = bar.add_task("starting")
+    start = time.monotonic()
+
+    def tell(step: str, done: int, total: int) -> None:
+        if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
+            bar.start()
+        bar.update(task, description=step, completed=done, total=total)
+
+    try:
+        yield tell
+    finally:
+        bar.stop()
