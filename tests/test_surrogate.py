@@ -81,6 +81,7 @@ def test_what_does_not_determine_the_polynomial_is_refused(where: FloatArray, va
 
 # --- the prediction of a line ---------------------------------------------------------------------------------------
 
+FREE_SPACE = 376.730313668  # [ohm] impedance of free space, CODATA
 SHAPES: tuple[Shape, ...] = ("normal", "truncated_normal", "uniform", "triangular", "lognormal")
 
 
@@ -102,7 +103,7 @@ def odd_impedance(*, width: FloatArray, gap: FloatArray, spacing: FloatArray, dk
     Techniques, volume 3, pages 29-38, October 1955.
     """
     modulus = np.tanh(0.5 * np.pi * width / spacing) / np.tanh(0.5 * np.pi * (width + gap) / spacing)
-    return np.asarray(30.0 * np.pi / np.sqrt(dk) * ellipkm1(modulus**2) / ellipk(modulus**2), dtype=np.float64)
+    return np.asarray(0.25 * FREE_SPACE / np.sqrt(dk) * ellipkm1(modulus**2) / ellipk(modulus**2), dtype=np.float64)
 
 
 def pair_impedance(draws: ProcessDraws) -> FloatArray:
