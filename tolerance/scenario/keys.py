@@ -10,7 +10,7 @@ from __future__ import annotations
 import difflib
 import math
 from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from types import MappingProxyType
 from typing import Any, TypeGuard
 
@@ -22,6 +22,7 @@ from tolerance.units import MEASURES, MeasureName, QuantityError, read_quantity,
 FROM_FILE: Mapping[str, bool] = MappingProxyType({"from_file": True})
 _LONGEST_TEXT = 500
 _MOST_LISTED = 20
+_LARGEST_EXAMPLE = 1e6
 _NUMBER_PATTERN = r"\s*[+-]?([0-9]+(\.[0-9]*)?|\.[0-9]+)([eE][+-]?[0-9]{1,3})?\s*"
 
 
@@ -108,7 +109,8 @@ class Quantity(Kind):
                 raise RefusedError(f"{self.allowed} ({reason})") from None
         if not from_file:
             return plain_number(given, self.allowed)
-        example = f', such as "{given:.6g} {unit_names(self.measure)[0]}"' if is_number(given) else ""
+        shown = is_number(given) and abs(given) < _LARGEST_EXAMPLE
+        example = f', such as "{given:.6g} {unit_names(self.measure)[0]}"' if shown else ""
         raise RefusedError(f"{self.allowed}, a text with its unit{example}")
 
     def json_schema(self) -> dict[str, Any]:
@@ -136,7 +138,8 @@ class Number(Kind):
         return value
 
     def json_schema(self) -> dict[str, Any]:
-        return {"type": "number", **schema_range(self.range)}
+        span = replace(self.range, high=math.inf) if self.infinite else self.range
+        return {"type": "number", **schema_range(span)}
 
 
 @dataclass(frozen=True, slots=True)

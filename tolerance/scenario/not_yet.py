@@ -15,7 +15,7 @@ def _given(_value: Any) -> bool:
 
 
 def _beyond_coupon(level: Any) -> bool:
-    return level != "coupon" and not (isinstance(level, dict) and set(level) == {"coupon"})
+    return any(level.get(name) for name in ("lot", "panel")) if isinstance(level, dict) else level != "coupon"
 
 
 class NotYet(NamedTuple):
