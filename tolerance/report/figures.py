@@ -3,10 +3,14 @@
 from __future__ import annotations
 
 import warnings
-from typing import TYPE_CHECKING
+from concurrent.futures import ThreadPoolExecutor
+from typing import TYPE_CHECKING, Any
 
+import numpy as np
+import numpy.typing as npt
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
+from matplotlib.image import imsave
 
 from tolerance.report.files import file_names, put_in_place
 from tolerance.report.looks import FAIL, FAINT_INK, INK, MEDIUM, PAGE, RESOLUTION, TITLE, our_looks
@@ -21,6 +25,8 @@ if TYPE_CHECKING:
 
     from tolerance.results import Interval, LineResult, RunResult
 
+Picture = npt.NDArray[np.uint8]
+
 OVERVIEW = "all-lines"
 NAME_LENGTH = 48
 ROW_OF_OVERVIEW = 0.5  # inches at least
@@ -34,13 +40,14 @@ def write_figures(result: RunResult, folder: Path, lengths: LengthUnit,
     Raises UnfinishedError where a file cannot be written.
     """
     names = file_names([line.name for line in result.lines], taken=(OVERVIEW,))
-    paths = [_write(overview_page(result), folder / f"{OVERVIEW}.png")]
-    for number, (name, line) in enumerate(zip(names, result.lines, strict=True), start=1):
-        page = line_page(line, target_yield=result.target_yield, lengths=lengths)
-        paths.append(_write(page, folder / f"{name}.png"))
-        if on_progress is not None:
-            on_progress("figures", number, len(names))
-    return paths
+    with ThreadPoolExecutor(max_workers=1) as writer:  # packs one picture while the next is drawn
+        jobs = [writer.submit(_write, _drawn(overview_page(result)), folder / f"{OVERVIEW}.png")]
+        for number, (name, line) in enumerate(zip(names, result.lines, strict=True), start=1):
+            page = line_page(line, target_yield=result.target_yield, lengths=lengths)
+            jobs.append(writer.submit(_write, _drawn(page), folder / f"{name}.png"))
+            if on_progress is not None:
+                on_progress("figures", number, len(names))
+        return [job.result() for job in jobs]
 
 
 def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> Figure:
@@ -68,9 +75,7 @@ def overview_page(result: RunResult) -> Figure:
 
 
 def _page(height: float) -> Figure:
-    page = Figure(figsize=(PAGE[0], height), dpi=RESOLUTION)
-    FigureCanvasAgg(page)
-    return page
+    return Figure(figsize=(PAGE[0], height), dpi=RESOLUTION)
 
 
 def _over(references: tuple[str, ...]) -> str:
@@ -94,11 +99,16 @@ def _head(page: Figure, title: str, subtitle: str, inside: Interval, target_yiel
               ha="right", color=color)
 
 
-def _write(page: Figure, path: Path) -> Path:
-    def save(beside: Path) -> None:
-        page.savefig(beside, format="png", dpi=RESOLUTION, metadata={"Software": None},
-                     pil_kwargs={"compress_level": PACKING})
-
+def _drawn(page: Figure) -> Picture:
+    """The page as points of red, green, blue and opacity, shape (rows, columns, 4)."""
+    canvas: Any = FigureCanvasAgg(page)  # its drawing is not typed
     with our_looks(), warnings.catch_warnings():
         warnings.filterwarnings("ignore", message="Glyph .* missing from font")  # drawn as an empty box
-        return put_in_place(path, save)
+        canvas.draw()
+    return np.array(canvas.buffer_rgba(), dtype=np.uint8)
+
+
+def _write(picture: Picture, path: Path) -> Path:
+    return put_in_place(path, lambda beside: imsave(
+        beside, picture, format="png", dpi=RESOLUTION, metadata={"Software": "tolerance"},
+        pil_kwargs={"compress_level": PACKING}))

@@ -54,7 +54,9 @@ def _flat(name: str, interval: Interval) -> dict[str, float]:
     return {name: float(interval.value), f"{name}_low": float(interval.low), f"{name}_high": float(interval.high)}
 
 
-def _capability(name: str, interval: Interval) -> dict[str, float | None]:
+def _capability(name: str, interval: Interval | None) -> dict[str, float | None]:
+    if interval is None:
+        return {name: None, f"{name}_low": None, f"{name}_high": None}
     return {key: value if math.isfinite(value) else None for key, value in _flat(name, interval).items()}
 
 

@@ -8,6 +8,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import matplotlib as mpl
+from matplotlib.ticker import MaxNLocator
 
 if TYPE_CHECKING:
     from contextlib import AbstractContextManager
@@ -30,6 +31,7 @@ AIR = "#ffffff"
 HATCH_FAIL = "////"
 PAGE = (13.333, 7.5)  # inches, a slide
 RESOLUTION = 120  # dots an inch
+MOST_STEPS = 6  # between the ticks of an axis
 SMALL, MEDIUM, LARGE, TITLE = 10.5, 12.0, 15.0, 22.0  # points
 
 
@@ -41,7 +43,8 @@ def our_looks() -> AbstractContextManager[None]:
         "figure.facecolor": PAPER, "savefig.facecolor": PAPER, "axes.facecolor": PAPER, "savefig.bbox": None,
         "axes.edgecolor": FAINT_INK, "axes.labelcolor": INK, "axes.linewidth": 0.8, "axes.spines.top": False,
         "axes.spines.right": False, "axes.grid": False, "axes.labelsize": MEDIUM, "axes.titlesize": LARGE,
-        "axes.titlelocation": "left", "axes.titlepad": 10.0, "axes.titlecolor": INK, "text.color": INK,
+        "axes.titlelocation": "left", "axes.titlepad": 10.0, "axes.titley": 1.0, "axes.titlecolor": INK,
+        "text.color": INK,
         "xtick.color": FAINT_INK, "ytick.color": FAINT_INK, "xtick.labelcolor": INK, "ytick.labelcolor": INK,
         "xtick.labelsize": SMALL, "ytick.labelsize": SMALL, "hatch.linewidth": 0.9, "lines.linewidth": 1.6,
         "axes.formatter.use_locale": False,
@@ -49,7 +52,8 @@ def our_looks() -> AbstractContextManager[None]:
 
 
 def quiet_axes(axes: Axes, *, grid: str) -> None:
-    """Take away what does not inform: hair-thin grid lines across one axis only, behind everything."""
+    """Take away what does not inform: few ticks, and hair-thin grid lines across one axis only, behind everything."""
+    axes.xaxis.set_major_locator(MaxNLocator(MOST_STEPS, steps=[1, 2, 5, 10]))
     axes.set_axisbelow(True)
     if grid == "x":
         axes.xaxis.grid(visible=True, color=HAIRLINE, linewidth=0.8)

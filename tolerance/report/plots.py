@@ -6,6 +6,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from matplotlib.patches import Rectangle
+from matplotlib.ticker import MaxNLocator
 
 from tolerance.report.looks import (
     BODY,
@@ -64,6 +65,7 @@ def draw_spread(axes: Axes, line: LineResult, *, target_yield: float) -> Axes:
               markeredgewidth=1.4, clip_on=False, zorder=6)
     _spread_words(axes, line, words)
     axes.set(title="spread", xlabel="impedance [ohm]", ylabel="coupons in each bin")
+    axes.yaxis.set_major_locator(MaxNLocator(4, integer=True))
     _remark(axes, f"mean {words.mean}, deviation {words.deviation} ohm; triangle: nominal {words.nominal} ohm")
     quiet_axes(axes, grid="y")
     return axes

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from matplotlib.patches import Polygon
+from matplotlib.ticker import MaxNLocator
 
 from tolerance.report.looks import (
     AIR,
@@ -20,6 +21,7 @@ from tolerance.report.looks import (
     FAINT_INK,
     INK,
     MATERIAL,
+    MOST_STEPS,
     PAPER,
     SMALL,
 )
@@ -74,7 +76,8 @@ def draw_section(axes: Axes, line: LineResult, *, lengths: LengthUnit) -> Axes:
     axes.set_ylim(view.bottom / unit, view.top / unit)
     axes.set_aspect("equal", adjustable="box")
     axes.set(xlabel=f"sideways [{lengths}]", ylabel=f"height [{lengths}]")
-    axes.locator_params(axis="y", nbins=5)
+    axes.xaxis.set_major_locator(MaxNLocator(MOST_STEPS, steps=[1, 2, 5, 10]))
+    axes.yaxis.set_major_locator(MaxNLocator(4, steps=[1, 2, 5, 10]))
     axes.set_title("cross-section at the nominals, to scale")
     _name_materials(axes, drawing, view, lengths)
     words_begin = _mark_widths(axes, drawing, view, lengths)
@@ -140,7 +143,7 @@ def _range_at(outline: FloatArray, x: float) -> tuple[float, float] | None:
     return float(ys.min()), float(ys.max())
 
 
-def _apart(positions: Sequence[float], spacing: float) -> list[float]:
+def stand_apart(positions: Sequence[float], spacing: float) -> list[float]:
     """Rising positions moved as little as needed to stand at least `spacing` apart."""
     groups: list[tuple[float, int]] = []  # sum and count of neighbours that stand as close as they may
     for place, position in enumerate(positions):
@@ -166,13 +169,12 @@ def _name_materials(axes: Axes, drawing: Drawing, view: View, lengths: LengthUni
         if seen is not None:
             labels.append((0.5 * sum(seen), f"{shorten(conductor.name, LABEL_WIDTH - 9)}, {conductor.role}"))
     labels.sort()
-    places = _apart([height for height, _ in labels], view.metres(ROW_HEIGHT * SMALL))
+    places = stand_apart([height for height, _ in labels], view.metres(ROW_HEIGHT * SMALL))
     for (height, label), place in zip(labels, places, strict=True):
-        axes.annotate(label, (view.right / unit, height / unit), textcoords="data",
-                      xytext=((view.right + view.metres(22.0)) / unit, place / unit), fontsize=SMALL, va="center",
-                      ha="left", annotation_clip=False,
-                      arrowprops={"arrowstyle": "-", "color": FAINT_INK, "linewidth": 0.8, "shrinkA": 1.0,
-                                  "shrinkB": 0.0})
+        beside = (view.right + view.metres(20.0)) / unit
+        axes.plot([view.right / unit, beside], [height / unit, place / unit], color=FAINT_INK, linewidth=0.8,
+                  clip_on=False)
+        axes.text(beside + view.metres(3.0) / unit, place / unit, label, fontsize=SMALL, va="center", ha="left")
 
 
 def _mark_widths(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit) -> float:
@@ -219,7 +221,7 @@ def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit,
              if not any(seen[0] <= 0.5 * (low + high) <= seen[1] for seen in planes)]
     left = float(_sides(trace)[0])
     place = min(left - view.metres(34.0), right)
-    texts = _apart([0.5 * (low + high) for low, high in steps], view.metres(ROW_HEIGHT * SMALL))
+    texts = stand_apart([0.5 * (low + high) for low, high in steps], view.metres(ROW_HEIGHT * SMALL))
     for level in {end for step in steps for end in step}:
         axes.plot([place / METRES_IN[lengths], left / METRES_IN[lengths]], [level / METRES_IN[lengths]] * 2,
                   color=FAINT_INK, linewidth=0.7, linestyle=(0, (1, 2)))

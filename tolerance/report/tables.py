@@ -87,7 +87,7 @@ def line_words(line: LineResult, target_yield: float) -> LineWords:
         inside_range=share_range_text(line.inside),
         below=share_text(line.below),
         above=share_text(line.above),
-        cpk=fixed(line.cpk.value, 2),
+        cpk=fixed(None if line.cpk is None else line.cpk.value, 2),
         verdict=verdict(line.inside.value, target_yield),
     )
 
@@ -193,6 +193,8 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
     }
 
 
-def _ends(name: str, interval: Interval) -> Mapping[str, Cell]:
+def _ends(name: str, interval: Interval | None) -> Mapping[str, Cell]:
+    if interval is None:
+        return {name: None, f"{name}_low": None, f"{name}_high": None}
     values = {name: interval.value, f"{name}_low": interval.low, f"{name}_high": interval.high}
     return {key: float(value) if math.isfinite(value) else None for key, value in values.items()}

@@ -1,0 +1,175 @@
+"""The figures: written whole, one family of looks, true to scale, and without touching anybody's plotting state."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+from collections.abc import Callable
+from dataclasses import replace
+from pathlib import Path
+
+import matplotlib as mpl
+import numpy as np
+import pytest
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.image import imread
+
+from tests.report_examples import (
+    made_up_line,
+    made_up_result,
+    many_lines,
+    microstrip_drawing,
+    some_drivers,
+    stripline_drawing,
+)
+from tolerance.arrays import read_only
+from tolerance.errors import UnfinishedError
+from tolerance.report.figures import line_page, overview_page, write_figures
+from tolerance.report.looks import BODY, FAIL_FILL, MATERIAL
+from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
+from tolerance.report.section_plot import draw_section, stand_apart
+from tolerance.results import LineResult, Spread
+
+NOTHING_VARIES = replace(made_up_line("constant", drivers=()), spread=Spread(
+    edges=read_only([50.2 - 1e-9, 50.2 + 1e-9]), counts=np.array([65536])))
+EXTREMES = [
+    made_up_line("none passes", mean=80.0), made_up_line("all pass", deviation=0.05), NOTHING_VARIES,
+    made_up_line("many drivers", drivers=some_drivers(11, shapley=True)),
+    made_up_line("$dollars^2 and _signs \u7dda", limit=0.01),
+    made_up_line("wide", drawing=microstrip_drawing(width=3e-3, height=1.5e-3)),
+    made_up_line("flat", drawing=microstrip_drawing(width=900e-6, gap=800e-6, height=60e-6)),
+    made_up_line("narrow pair between planes", drawing=stripline_drawing(width=60e-6, gap=50e-6)),
+]
+
+
+def words_on(axes: Axes) -> str:
+    return " | ".join([*(text.get_text() for text in axes.texts), axes.get_title(loc="left"), axes.get_xlabel(),
+                       axes.get_ylabel()])
+
+
+def test_one_picture_for_each_line_and_one_of_all(tmp_path: Path) -> None:
+    seen = []
+    paths = write_figures(made_up_result(many_lines(3)), tmp_path / "figures", "um",
+                          lambda step, done, total: seen.append((step, done, total)))
+    assert [path.name for path in paths] == ["all-lines.png", "radio-feed-1.png", "display-pair-2.png",
+                                             "memory-clock-3.png"]
+    assert sorted(path.name for path in (tmp_path / "figures").iterdir()) == sorted(path.name for path in paths)
+    for path in paths:
+        picture = imread(path)
+        assert picture.shape[1] >= 1590
+        assert picture.shape[0] >= 890
+        assert np.ptp(picture[:, :, :3]) > 0.8  # ink on paper
+    assert seen[-1] == ("figures", 3, 3)
+
+
+@pytest.mark.parametrize("line", EXTREMES, ids=lambda line: str(line.name))
+def test_extremes_are_drawn_without_a_warning(line: LineResult, tmp_path: Path) -> None:
+    paths = write_figures(made_up_result((line,)), tmp_path, "mil")
+    assert all(path.stat().st_size > 10_000 for path in paths)
+
+
+def test_the_same_result_gives_the_same_files(tmp_path: Path) -> None:
+    one, other = (write_figures(made_up_result(), tmp_path / name, "um") for name in ("one", "other"))
+    assert [path.read_bytes() for path in one] == [path.read_bytes() for path in other]
+
+
+def test_nobodys_plotting_state_is_touched(tmp_path: Path) -> None:
+    before = dict(mpl.rcParams)
+    write_figures(made_up_result(), tmp_path, "um")
+    assert dict(mpl.rcParams) == before
+    code = "import sys, tolerance.report.figures; print('matplotlib.pyplot' in sys.modules)"
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert done.stdout.strip() == "False"
+
+
+def test_every_plot_returns_the_axes_it_was_given_and_has_units() -> None:
+    line, result = made_up_line(), made_up_result()
+    plots: list[tuple[Callable[[Axes], Axes], tuple[str, ...]]] = [
+        (lambda axes: draw_spread(axes, line, target_yield=0.99), ("impedance [ohm]", "coupons in each bin")),
+        (lambda axes: draw_drivers(axes, line), ("share of the variance [%]",)),
+        (lambda axes: draw_section(axes, line, lengths="um"), ("sideways [um]", "height [um]")),
+        (lambda axes: draw_overview(axes, result, result.lines), ("[%]",)),
+    ]
+    for draw, units in plots:
+        axes = Figure().add_subplot()
+        assert draw(axes) is axes
+        for unit in units:
+            assert unit in words_on(axes)
+
+
+def test_the_spread_counts_what_fails_on_either_side() -> None:
+    axes = draw_spread(Figure().add_subplot(), made_up_line(), target_yield=0.99)
+    words = words_on(axes)
+    for part in ("1.01 %\nbelow", "1.90 %\nabove", "limit 46.5", "limit 53.5", "target 50", "mean 50.20"):
+        assert part in words
+
+
+def test_the_drivers_are_named_in_rank_and_the_rest_is_counted() -> None:
+    axes = draw_drivers(Figure().add_subplot(), made_up_line(drivers=some_drivers(9)))
+    words = words_on(axes)
+    assert words.index("P1.thickness") < words.index("L1.etch") < words.index("P1.dk")
+    assert "and 3 more, each at most" in words
+
+
+@pytest.mark.parametrize("line", EXTREMES[5:], ids=lambda line: str(line.name))
+def test_the_section_is_to_scale_and_shows_all_of_its_height(line: LineResult) -> None:
+    page = line_page(line, target_yield=0.99, lengths="um")
+    axes = page.axes[2]
+    box = axes.get_window_extent()
+    (left, right), (bottom, top) = axes.get_xlim(), axes.get_ylim()
+    assert box.width / (right - left) == pytest.approx(box.height / (top - bottom), rel=1e-3)
+    corners = np.vstack([region.outline for region in line.drawing.regions]) * 1e6
+    assert bottom <= corners[:, 1].min()
+    assert corners[:, 1].max() <= top
+    for conductor in line.drawing.conductors:
+        if conductor.role == "trace":
+            assert left < 1e6 * conductor.outline[:, 0].min()
+            assert 1e6 * conductor.outline[:, 0].max() < right
+
+
+def test_the_section_names_its_materials_and_main_dimensions() -> None:
+    pair = made_up_line(drawing=microstrip_drawing(width=120e-6, gap=150e-6))
+    words = words_on(line_page(pair, target_yield=0.99, lengths="um").axes[2])
+    for part in ("top mask, Dk 3.50", "P1, prepreg, Dk 4.00", "L2, plane", "width 120 um", "gap 150 um", "100 um",
+                 "43 um", "15 um"):
+        assert part in words
+    in_mil = words_on(line_page(pair, target_yield=0.99, lengths="mil").axes[2])
+    assert "width 4.72 mil" in in_mil  # 120 / 25.4
+    assert "gap 5.91 mil" in in_mil  # 150 / 25.4
+
+
+def test_the_heading_says_yield_interval_and_verdict() -> None:
+    words = " ".join(text.get_text() for text in line_page(made_up_line(), target_yield=0.99, lengths="um").texts)
+    for part in ("radio feed", "yield 97.08 %", "[97.00, 97.16] %", "MISSES the target of 99 %"):
+        assert part in words
+    assert "seed 1" in " ".join(text.get_text() for text in overview_page(made_up_result()).texts)
+
+
+def test_a_spread_outside_the_picture_is_told_of() -> None:
+    lines = (made_up_line(), made_up_line("none passes", mean=90.0))
+    axes = draw_overview(Figure().add_subplot(), made_up_result(lines), lines)
+    assert "all beyond: mean +80 %" in words_on(axes)  # 90 against a target of 50
+
+
+def test_what_must_be_told_apart_differs_in_grey() -> None:
+    """Luma by ITU-R BT.601 (0.299, 0.587, 0.114), the weights that grey printing of sRGB commonly uses."""
+    def luma(colour: str) -> float:
+        red, green, blue = (int(colour[start:start + 2], 16) / 255.0 for start in (1, 3, 5))
+        return 0.299 * red + 0.587 * green + 0.114 * blue
+
+    assert abs(luma(BODY) - luma(FAIL_FILL)) > 0.1
+    assert abs(luma(MATERIAL["mask"]) - luma(MATERIAL["prepreg"])) > 0.1
+
+
+def test_labels_stand_apart_and_keep_their_order() -> None:
+    places = stand_apart([0.0, 0.1, 0.2, 5.0], 1.0)
+    assert np.all(np.diff(places) >= 1.0 - 1e-12)
+    assert places[3] == 5.0
+    assert np.mean(places[:3]) == pytest.approx(0.1)  # moved about their own middle: least squares
+
+
+def test_figures_that_cannot_be_written_say_why(tmp_path: Path) -> None:
+    (tmp_path / "figures").touch()  # a file stands where the folder should go
+    with pytest.raises(UnfinishedError, match="figures"):
+        write_figures(made_up_result(), tmp_path / "figures", "um")

@@ -1,0 +1,161 @@
+"""The workbook read back: the same numbers as the JSON, text that stays text, heads, filters and marks."""
+
+from __future__ import annotations
+
+import json
+from dataclasses import replace
+from pathlib import Path
+
+import pandas as pd
+import pytest
+from openpyxl import load_workbook
+
+from tests.report_examples import (
+    SCENARIO_TEXT,
+    made_up_line,
+    made_up_result,
+    made_up_scenario,
+    many_lines,
+    some_drivers,
+)
+from tolerance.errors import UnfinishedError
+from tolerance.report.json_text import run_json
+from tolerance.report.tables import LINE_COLUMNS
+from tolerance.report.workbook import write_workbook
+from tolerance.results import Interval, RunResult
+
+SHEETS = ["Summary", "Lines", "Drivers", "Stackup", "Drawn lines", "Variations", "Run record"]
+FORMULA_LIKE = ("=1+1", "+feed", "-feed", "@feed", "=cmd|' /C calc'!A0", "#N/A")
+
+
+def written(folder: Path, result: RunResult, lengths: str = "um") -> Path:
+    return write_workbook(result, made_up_scenario(lengths), folder / "out" / "run.xlsx")
+
+
+def stored(value: float) -> float:
+    """A number as a workbook file holds it: 16 significant digits."""
+    return float(f"{value:.16g}")
+
+
+def test_lines_and_drivers_equal_the_json(tmp_path: Path) -> None:
+    lines = (*many_lines(10), made_up_line("correlated", drivers=some_drivers(4, shapley=True)))
+    result = made_up_result(lines)
+    answer = json.loads(run_json(result))
+    path = written(tmp_path, result)
+    sheet = pd.read_excel(path, sheet_name="Lines")
+    heads = {column.key: column.head for column in LINE_COLUMNS}
+    for row, line in zip(sheet.to_dict("records"), answer["lines"], strict=True):
+        assert row["line"] == line["name"]
+        assert row["yield"] == stored(line["yield"]["value"])
+        assert row["yield, low end"] == stored(line["yield"]["low"])
+        for key, value in line.items():
+            if key in heads and isinstance(value, float):
+                assert row[heads[key]] == stored(value), key
+    drivers = pd.read_excel(path, sheet_name="Drivers")
+    flat = [(line["name"], driver) for line in answer["lines"] for driver in line["drivers"]]
+    assert len(drivers) == len(flat)
+    for row, (name, driver) in zip(drivers.to_dict("records"), flat, strict=True):
+        assert (row["line"], row["variable"]) == (name, driver["variable"])
+        assert row["total effect"] == stored(driver["total"])
+        assert row["first-order, high end"] == stored(driver["first_high"])
+        assert pd.isna(row["Shapley effect"]) if "shapley" not in driver \
+            else row["Shapley effect"] == stored(driver["shapley"])
+
+
+def test_the_summary_says_the_answer_in_words_and_marks_what_misses(tmp_path: Path) -> None:
+    result = made_up_result(many_lines(4), impossible=3)
+    sheet = load_workbook(written(tmp_path, result))["Summary"]
+    words = [str(sheet.cell(row=row, column=1).value) for row in range(1, 6)]
+    assert words[0] == "Orchard gateway, 6 layers"
+    assert words[1].startswith("95.89 % of the coupons pass on every line (95 % interval [95.81, 95.97] %")
+    assert words[2] == "1 of 4 lines MISSES the target yield of 99 %."
+    assert "3 coupons cannot exist" in words[3]
+    verdicts = [sheet.cell(row=row, column=10).value for row in range(8, 12)]
+    assert verdicts == ["meets", "meets", "meets", "MISSES"]
+    assert any("0.99" in rule.formula[0] for rules in sheet.conditional_formatting for rule in rules.rules)
+
+
+def test_every_table_has_frozen_heads_a_filter_units_and_number_formats(tmp_path: Path) -> None:
+    book = load_workbook(written(tmp_path, made_up_result()))
+    assert book.sheetnames == SHEETS
+    for sheet in book.worksheets:
+        assert sheet.freeze_panes is not None, sheet.title
+        assert sheet.auto_filter.ref is not None, sheet.title
+    lines = book["Lines"]
+    heads = {cell.value: number for number, cell in enumerate(lines[1], start=1)}
+    assert lines.cell(2, heads["yield"]).number_format == "0.00%"
+    assert lines.cell(2, heads["mean [ohm]"]).number_format == "0.00"
+    assert heads.keys() >= {"deviation [ohm]", "held-out error [ohm]", "Cpk"}
+    assert all(dimension.width >= 9 for dimension in lines.column_dimensions.values())
+
+
+def test_text_that_begins_like_a_formula_stays_text(tmp_path: Path) -> None:
+    result = made_up_result(tuple(made_up_line(name) for name in FORMULA_LIKE), title="=HYPERLINK(\"x\")")
+    book = load_workbook(written(tmp_path, result))
+    assert book["Summary"]["A1"].data_type == "s"
+    for row, name in enumerate(FORMULA_LIKE, start=2):
+        cell = book["Lines"].cell(row, 1)
+        assert (cell.value, cell.data_type) == (name, "s")
+        assert cell.quotePrefix or not name.startswith(("=", "+", "-", "@"))
+
+
+def test_control_characters_do_not_stop_the_workbook(tmp_path: Path) -> None:
+    book = load_workbook(written(tmp_path, made_up_result((made_up_line("bell\x07"),))))
+    assert book["Lines"].cell(2, 1).value == "bell\N{REPLACEMENT CHARACTER}"
+
+
+def test_a_value_that_is_not_finite_is_an_empty_cell(tmp_path: Path) -> None:
+    endless = Interval(float("inf"), float("inf"), float("inf"))
+    line = replace(made_up_line(), cp=None, cpk=endless)
+    sheet = pd.read_excel(written(tmp_path, made_up_result((line,))), sheet_name="Lines")
+    assert pd.isna(sheet["Cp"][0])
+    assert pd.isna(sheet["Cpk"][0])
+
+
+def test_the_stackup_and_the_variations_stand_as_understood(tmp_path: Path) -> None:
+    path = written(tmp_path, made_up_result())
+    stackup = pd.read_excel(path, sheet_name="Stackup")
+    assert list(stackup["layer"]) == ["top mask", "L1", "P1", "L2", "C1", "L3"]
+    assert list(stackup["thickness [um]"]) == [25.0, 43.0, 100.0, 17.0, 800.0, 17.0]  # 43 = foil 18 + plating 25
+    assert stackup["foot points"][1] == "down"
+    drawn = pd.read_excel(path, sheet_name="Drawn lines")
+    assert list(drawn["plane below"]) == ["L2", "L2"]
+    assert list(drawn["limit, half-width"]) == [0.07, 0.10]
+    varying = pd.read_excel(path, sheet_name="Variations").set_index("property")
+    assert list(varying.index) == ["L1.etch", "P1.thickness", "top mask.dk", "P1.dk", "C1.dk", "top mask.thickness",
+                                   "top mask.over_copper"]
+    assert varying["half-width in"]["L1.etch"] == "% of each line's width"
+    assert varying["the half-width is"]["L1.etch"] == "3 deviations"
+    assert varying["the half-width is"]["P1.thickness"] == "held with Cpk 1.33"
+    assert varying["shift"]["P1.thickness"] == 2.0
+    assert varying["the half-width is"]["P1.dk"] == "the ends"
+    assert varying["variable"]["top mask.thickness"] == "top mask.thickness + top mask.over_copper"
+    assert varying["nominal"]["top mask.over_copper"] == 15.0
+
+
+def test_lengths_stand_in_the_unit_of_the_report(tmp_path: Path) -> None:
+    path = written(tmp_path, made_up_result(), "mil")
+    stackup = pd.read_excel(path, sheet_name="Stackup")
+    assert stackup["thickness [mil]"][2] == pytest.approx(100.0 / 25.4, rel=1e-9)  # 1 mil is 25.4 um exactly
+    varying = pd.read_excel(path, sheet_name="Variations").set_index("property")
+    assert varying["half-width"]["P1.thickness"] == pytest.approx(8.0 / 25.4, rel=1e-9)
+    assert varying["unit"]["P1.thickness"] == "mil"
+
+
+def test_the_run_record_keeps_what_remakes_the_run(tmp_path: Path) -> None:
+    result = made_up_result()
+    record = pd.read_excel(written(tmp_path, result), sheet_name="Run record", dtype=object, keep_default_na=False)
+    text = "\n".join(str(value) for value in record.loc[record["item"] == "scenario text", "value"])
+    assert text.rstrip() == SCENARIO_TEXT.rstrip()
+    values = dict(zip(record["item"], record["value"], strict=True))
+    assert values["seed"] == 1
+    assert values["field solver runs"] == 96
+    assert values["version: numpy"] == "2.4.0"
+
+
+def test_a_workbook_that_cannot_be_written_leaves_nothing_and_says_why(tmp_path: Path) -> None:
+    (tmp_path / "run.xlsx").mkdir()  # a folder stands where the file should go
+    (tmp_path / "run.xlsx" / "kept").touch()
+    with pytest.raises(UnfinishedError, match=r"run\.xlsx"):
+        write_workbook(made_up_result(), made_up_scenario(), tmp_path / "run.xlsx")
+    assert [path.name for path in tmp_path.iterdir()] == ["run.xlsx"]
