@@ -20,7 +20,7 @@ from tests.report_examples import (
 )
 from tolerance.nominal import CheckResult
 from tolerance.report.terminal import print_check, print_run
-from tolerance.results import RunResult
+from tolerance.results import Interval, RunResult
 
 ESCAPE = "\x1b"
 
@@ -67,6 +67,13 @@ def test_a_run_names_yields_with_their_intervals_drivers_errors_and_cautions() -
     assert "A predicted yield is an estimate" in " ".join(text.split())
     assert "measured coupons decide" in " ".join(text.split())
     assert "mpossible" not in text
+
+
+def test_what_fails_shows_no_more_digits_than_what_passes() -> None:
+    line = replace(made_up_line(), above=Interval(0.000497, 0.00048, 0.00051))
+    text = run_text(made_up_result((line,)))
+    assert "0.05 " in text
+    assert "0.050" not in text
 
 
 def test_a_run_that_meets_its_target_says_so() -> None:

@@ -115,7 +115,7 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     rest = line.drivers[DRIVERS_SHOWN:]
     if rest:
         most = percent(max(ranking(driver).value for driver in rest), 1)
-        axes.annotate(f"and {len(rest)} more, each at most {most}", (1.0, 0.0), xycoords="axes fraction",
+        axes.annotate(f"and {len(rest)} more, {'each ' if len(rest) > 1 else ''}at most {most}", (1.0, 0.0), xycoords="axes fraction",
                       xytext=(0, 6), textcoords="offset points", ha="right", va="bottom", fontsize=SMALL,
                       color=FAINT_INK)
     return axes
@@ -146,7 +146,7 @@ def draw_overview(axes: Axes, result: RunResult, lines: Sequence[LineResult]) ->
     widest = max(max(abs(edge / line.target - 1.0) for edge in line.spread.edges[[0, -1]]) for line in lines)
     reach = 100.0 * min(max(1.06 * widest, 1.15 * reach), 2.0 * reach)
     axes.set_xlim(-reach, reach)
-    axes.set_ylim(len(lines) - 0.45, -0.95)
+    axes.set_ylim(len(lines) - 0.85, -0.95)
     for row, line in enumerate(lines):
         _draw_overview_row(axes, row, line, reach=reach, target_yield=result.target_yield)
     axes.axvline(0.0, color=INK, linewidth=0.9, zorder=0.5)

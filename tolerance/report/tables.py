@@ -9,7 +9,7 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from tolerance.report.wording import fixed, percent, share_range_text, share_text, trimmed
+from tolerance.report.wording import fixed, percent, percent_digits, share_range_text, share_text, trimmed
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -76,7 +76,9 @@ def verdict(inside: float, target_yield: float) -> str:
 
 
 def line_words(line: LineResult, target_yield: float) -> LineWords:
-    """What is said of a line wherever it is said."""
+    """What is said of a line wherever it is said. What fails gets no more digits than what passes, or two."""
+    most = max(percent_digits(line.inside), 2)
+    below, above = (percent(share.value, min(percent_digits(share), most)) for share in (line.below, line.above))
     return LineWords(
         target=trimmed(line.target, 2),
         limits=f"{trimmed(line.low_limit, 2)} to {trimmed(line.high_limit, 2)}",
@@ -85,8 +87,8 @@ def line_words(line: LineResult, target_yield: float) -> LineWords:
         deviation=fixed(line.deviation.value, 2),
         inside=share_text(line.inside),
         inside_range=share_range_text(line.inside),
-        below=share_text(line.below),
-        above=share_text(line.above),
+        below=below,
+        above=above,
         cpk=fixed(None if line.cpk is None else line.cpk.value, 2),
         verdict=verdict(line.inside.value, target_yield),
     )
