@@ -157,6 +157,7 @@ def mask_edges(section: Section, *, merged: bool) -> list[Edge]:
     if mask is None:
         return []
     air, flat = np.ones(section.count), mask.on_laminate
+    depth = np.asarray(sum(ply.thickness for ply in section.foot_side))
     top = section.thickness + mask.over_copper
     outer = outer_foot_edge(section) + flat
     zero = np.zeros(section.count)
@@ -164,7 +165,7 @@ def mask_edges(section: Section, *, merged: bool) -> list[Edge]:
     edges = [
         Edge("mesa top", "dielectric", (inner, top), (outer, top), left_dk=air, right_dk=mask.dk),
         Edge("mesa outer wall", "dielectric", (outer, top), (outer, flat), left_dk=air, right_dk=mask.dk),
-        _tail("flat tail", outer, flat, 3.0 * flat, left=air, right=mask.dk),
+        _tail("flat tail", outer, flat, 2.0 * flat + 0.3 * depth, left=air, right=mask.dk),
     ]
     if section.gap is not None and not merged:
         edges.append(Edge("mesa inner wall", "dielectric", (inner, flat), (inner, top), left_dk=air, right_dk=mask.dk))

@@ -58,7 +58,7 @@ def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
 def _counts(edge: Edge, ratio: float, settings: SolverSettings) -> tuple[int, int]:
     """Unknowns and quadrature places for an edge `ratio` times as long as the way to its next neighbour."""
     if edge.tail:
-        return settings.tail_nodes, 2 * settings.tail_nodes
+        return settings.tail_nodes, 3 * settings.tail_nodes
     base = settings.copper_nodes if edge.conducts else settings.dielectric_nodes
     more = max(0.0, math.log2(ratio / 2.5)) if ratio > 0.0 else 0.0
     unknowns = _even(base + 4.0 * more)
