@@ -48,7 +48,8 @@ KEYS = st.sampled_from([
     "frequency", "limit", "coupons", "seed", "resin_content", "extends", "thicknes", "a\nb", "", "test",
     "layers", "report",
 ])
-VALUES = st.one_of(TELLING, TELLING, st.floats(), st.integers(), st.text(max_size=12), st.datetimes()).map(copy.deepcopy)
+VALUES = st.one_of(TELLING, TELLING, st.floats(), st.integers(), st.text(max_size=12), st.datetimes()).map(
+    copy.deepcopy)
 
 
 def paths(value: Any, path: tuple[Any, ...] = ()) -> Iterator[tuple[Any, ...]]:
