@@ -107,8 +107,8 @@ def _traces(one: Section) -> list[FloatArray]:
     shape = np.array([(-0.5 * foot, 0.0), (0.5 * foot, 0.0), (0.5 * crest, thickness), (-0.5 * crest, thickness)])
     if one.gap is None:
         return [shape]
-    shift = 0.5 * (float(one.gap[0]) + foot)
-    return [shape - [shift, 0.0], shape + [shift, 0.0]]
+    shift = np.array([0.5 * (float(one.gap[0]) + foot), 0.0])
+    return [shape - shift, shape + shift]
 
 
 def _box(reach: float, low: float, high: float) -> FloatArray:

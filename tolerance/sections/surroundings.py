@@ -80,11 +80,11 @@ def _side(scenario: Scenario, layers: tuple[Layer, ...], plane: str | None) -> t
         beyond = reach[number + 1] if number + 1 < len(reach) else None
         if beyond is None or beyond.kind == MASK:
             continue  # outermost copper: absent altogether
-        fills[_pressing(scenario, layer.name, nearer=reach[number - 1].name, beyond=beyond.name)].append(layer.name)
+        fills[_pressing(scenario, layer.name, nearer=reach[number - 1].name)].append(layer.name)
     return tuple(PlyPlan(layer.name, layer.kind, tuple(fills[layer.name])) for layer in reach if layer.kind != COPPER)
 
 
-def _pressing(scenario: Scenario, copper: str, *, nearer: str, beyond: str) -> str:
+def _pressing(scenario: Scenario, copper: str, *, nearer: str) -> str:
     """Which of its two neighbours presses into the height of absent copper: the one on its crest side."""
     try:
         up = foot_side(scenario, copper) == "up"

@@ -54,7 +54,8 @@ def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: S
     """Place the nodes (copper edges first) and set up the matrices of the near images."""
     nodes = tuple(place_nodes(edge, unknowns=unknowns, fine=fine)
                   for edge, (unknowns, fine) in zip(edges, counts, strict=True))
-    across, height = (np.concatenate(parts, axis=1) for parts in zip(*((n.across, n.height) for n in nodes), strict=True))
+    across = np.concatenate([n.across for n in nodes], axis=1)
+    height = np.concatenate([n.height for n in nodes], axis=1)
     copper = sum(n.across.shape[1] for n in nodes if n.edge.conducts)
     normals = tuple(np.concatenate([np.broadcast_to(n.normal[axis][:, None], n.across.shape) for n in nodes], axis=1)
                     for axis in (0, 1))
