@@ -124,7 +124,9 @@ class RunResult:
                              for rank, driver in enumerate(line.drivers, start=1)])
 
 
-def _interval_columns(name: str, interval: Interval) -> dict[str, float]:
+def _interval_columns(name: str, interval: Interval | None) -> dict[str, float | None]:
+    if interval is None:
+        return dict.fromkeys((name, f"{name}_low", f"{name}_high"))
     return {name: interval.value, f"{name}_low": interval.low, f"{name}_high": interval.high}
 
 
