@@ -30,6 +30,7 @@ ROWS: list[list[str]] = [
     ["study"],
     ["report"],
     ["command"],
+    ["__main__"],
 ]
 ROW_OF = {room: number for number, row in enumerate(ROWS) for room in row}
 
