@@ -37,6 +37,8 @@ CASES: list[tuple[str, Law, Any]] = [
      stats.truncnorm(-3.5, 2.5, 102e-6, 2e-6)),
     ("truncated normal whose mean lies outside its ends",
      Law("truncated_normal", NOMINAL, low=104e-6, high=116e-6), stats.truncnorm(2, 8, 100e-6, 2e-6)),
+    ("truncated normal whose mean lies seven deviations outside",
+     Law("truncated_normal", NOMINAL, low=114e-6, high=126e-6), stats.truncnorm(7, 13, 100e-6, 2e-6)),
     ("uniform", Law("uniform", NOMINAL, TEN_PERCENT, SHIFT), stats.uniform(92e-6, 20e-6)),
     ("uniform by its ends", Law("uniform", NOMINAL, low=97e-6, high=112e-6), stats.uniform(97e-6, 15e-6)),
     ("triangular", Law("triangular", NOMINAL, TEN_PERCENT), stats.triang(0.5, 90e-6, 20e-6)),

@@ -189,4 +189,7 @@ def test_drivers_of_a_line_with_correlated_variables_rank_by_their_effects() -> 
     assert [driver.variable for driver in drivers] == [names[place] for place in np.argsort(-exact)]
     for driver in drivers:
         assert driver.shapley is not None
-        assert driver.shapley.value == pytest.approx(exact[names.index(driver.variable)], abs=0.004)
+        place = names.index(driver.variable)
+        alone = exact_share(powers * np.log1p(tolerances) / 3.0, correlation, (place,))
+        assert driver.shapley.value == pytest.approx(exact[place], abs=0.004)
+        assert driver.first.value == pytest.approx(alone, abs=0.004)

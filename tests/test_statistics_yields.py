@@ -11,7 +11,7 @@ from tests.process_examples import process, variable
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
 from tolerance.process.draws import REPLICATES, draw_process
-from tolerance.statistics.estimates import Interval
+from tolerance.statistics.estimates import Interval, interval_of
 from tolerance.statistics.yields import Limits, binomial_interval, histogram, judge, judge_line, share_interval
 
 # A product of lognormal inputs: Z = 50 ohm x (width/nominal)^-0.5 (thickness/nominal)^0.6 (dk/nominal)^-0.4. Its
@@ -39,6 +39,17 @@ def everywhere(impedance: FloatArray) -> np.ndarray[tuple[int, ...], np.dtype[np
 
 def holds(interval: Interval, exact: float) -> bool:
     return interval.low <= exact <= interval.high
+
+
+def test_interval_from_replicates_is_students() -> None:
+    """scipy's own (general library)."""
+    estimates = np.array([4.0, 1.0, 7.0, 2.5, 3.0, 8.0, 6.0, 5.5])
+    expected = stats.t.interval(0.95, 7, loc=estimates.mean(), scale=stats.sem(estimates))
+    interval = interval_of(estimates)
+    assert (interval.low, interval.high) == pytest.approx(expected, rel=1e-12)
+    moved = interval_of(estimates, value=1.0)
+    assert moved.value == 1.0
+    assert moved.high - moved.low == pytest.approx(expected[1] - expected[0], rel=1e-12)
 
 
 @pytest.mark.parametrize(("below", "above"), [(1.5, 1.8), (2.5, 3.0)])
@@ -149,7 +160,11 @@ def test_the_coupon_as_a_whole_keeps_the_correlation_of_its_lines() -> None:
     both = np.mean((np.abs(one - 50.0) <= 1.0) & (np.abs(other - 50.0) <= 1.0))
     assert mixed.inside.value == pytest.approx(both, abs=1e-12)
     possible = np.stack([np.arange(4096) != 0, np.arange(4096) != 9])
-    assert judge(np.stack([one, one]), possible, limits, replicates=REPLICATES).impossible == 2
+    broken = judge(np.stack([one, one]), possible, limits, replicates=REPLICATES)
+    assert broken.impossible == 2
+    passes = np.abs(one - 50.0) <= 1.0
+    assert passes[[0, 9]].any()
+    assert broken.inside.value == (np.count_nonzero(passes) - np.count_nonzero(passes[[0, 9]])) / 4096
 
 
 def test_the_error_of_the_impedance_moves_the_ends_out() -> None:
