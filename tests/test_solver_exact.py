@@ -49,9 +49,9 @@ def test_centred_strip(width_over_spacing: float, printed: float | None) -> None
     assert impedance(section) == pytest.approx(exact, rel=CLOSE), "Cohn 1954, exact"
 
 
-@pytest.mark.parametrize("width_over_spacing", [5.0, 6.0, 7.0, 8.0])
+@pytest.mark.parametrize("width_over_spacing", [5.0, 6.0, 7.0])
 def test_wide_centred_strip(width_over_spacing: float) -> None:
-    """Ten times wider than any line of 50 ohm: still within what the solver promises."""
+    """Far wider than any line of 50 ohm (about 0.4 on Dk 4): still within what the solver promises."""
     exact = exact_impedance(centred_strip_capacitance(width=width_over_spacing, plane_spacing=1.0))
     section = stripline(foot=width_over_spacing, crest=width_over_spacing, thickness=0.0, core=(0.5, 1.0),
                         prepreg=(0.5, 1.0))
