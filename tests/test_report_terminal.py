@@ -96,14 +96,19 @@ def test_shapley_effects_rank_under_their_name() -> None:
 
 def test_colour_only_on_a_terminal_and_not_against_the_readers_will(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.delenv("NO_COLOR", raising=False)
-    assert f"{ESCAPE}[1;31m" in run_text(made_up_result(), terminal=True)
+    coloured = [row for row in run_text(made_up_result(), terminal=True).splitlines() if f"{ESCAPE}[1;31m" in row]
+    assert any("97.08" in row for row in coloured)
+    assert any("MISSES" in row for row in coloured)
     assert ESCAPE not in run_text(made_up_result(), terminal=False)
     monkeypatch.setenv("NO_COLOR", "1")
     assert "31m" not in run_text(made_up_result(), terminal=True)
 
 
 def test_names_are_shown_as_they_are_not_as_markup() -> None:
-    assert "[red]feed" in run_text(made_up_result((made_up_line("[red]feed"),)))
+    text = run_text(made_up_result((made_up_line("[red]feed", deviation=0.5),)))
+    assert text.count("[red]feed") == 2  # in the table of yields and in that of drivers
+    check = made_up_check(1)
+    assert "[red]feed" in check_text(replace(check, lines=(replace(check.lines[0], name="[red]feed"),)), "um")
 
 
 @pytest.mark.parametrize("long_names", [False, True])

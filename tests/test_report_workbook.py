@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 from dataclasses import replace
 from pathlib import Path
 
@@ -20,7 +21,7 @@ from tests.report_examples import (
 )
 from tolerance.errors import UnfinishedError
 from tolerance.report.json_text import run_json
-from tolerance.report.tables import LINE_COLUMNS
+from tolerance.report.tables import LINE_COLUMNS, line_table
 from tolerance.report.workbook import write_workbook
 from tolerance.results import Interval, RunResult
 
@@ -105,8 +106,9 @@ def test_control_characters_do_not_stop_the_workbook(tmp_path: Path) -> None:
 
 
 def test_a_value_that_is_not_finite_is_an_empty_cell(tmp_path: Path) -> None:
-    endless = Interval(float("inf"), float("inf"), float("inf"))
+    endless = Interval(math.inf, math.inf, math.inf)
     line = replace(made_up_line(), cp=None, cpk=endless)
+    assert math.inf not in line_table(made_up_result((line,))).rows[0]
     sheet = pd.read_excel(written(tmp_path, made_up_result((line,))), sheet_name="Lines")
     assert pd.isna(sheet["Cp"][0])
     assert pd.isna(sheet["Cpk"][0])
@@ -124,6 +126,7 @@ def test_the_stackup_and_the_variations_stand_as_understood(tmp_path: Path) -> N
     varying = pd.read_excel(path, sheet_name="Variations").set_index("property")
     assert list(varying.index) == ["L1.etch", "P1.thickness", "top mask.dk", "P1.dk", "C1.dk", "top mask.thickness",
                                    "top mask.over_copper"]
+    assert varying["half-width"]["L1.etch"] == 10.0
     assert varying["half-width in"]["L1.etch"] == "% of each line's width"
     assert varying["the half-width is"]["L1.etch"] == "3 deviations"
     assert varying["the half-width is"]["P1.thickness"] == "held with Cpk 1.33"

@@ -115,9 +115,9 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     rest = line.drivers[DRIVERS_SHOWN:]
     if rest:
         most = percent(max(ranking(driver).value for driver in rest), 1)
-        axes.annotate(f"and {len(rest)} more, {'each ' if len(rest) > 1 else ''}at most {most}", (1.0, 0.0), xycoords="axes fraction",
-                      xytext=(0, 6), textcoords="offset points", ha="right", va="bottom", fontsize=SMALL,
-                      color=FAINT_INK)
+        axes.annotate(f"and {len(rest)} more, {'each ' if len(rest) > 1 else ''}at most {most}", (1.0, 0.0),
+                      xycoords="axes fraction", xytext=(0, 6), textcoords="offset points", ha="right", va="bottom",
+                      fontsize=SMALL, color=FAINT_INK)
     return axes
 
 
