@@ -94,13 +94,14 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
         cell.font = _font(bold=True)
         cell.fill = PatternFill("solid", start_color=HEAD_FILL)
         cell.border = Border(bottom=Side(style="thin", color=HAIRLINE))
-        cell.alignment = _alignment(table, column - 1, wrap=True)
+        cell.alignment = _alignment(table, column - 1, heading=True)
         sheet.column_dimensions[get_column_letter(column)].width = _width(table, column - 1)
     sheet.row_dimensions[top].height = ROW * max(_head_rows(table, column) for column in range(len(table.columns)))
+    alignments = [_alignment(table, column) for column in range(len(table.columns))]
     for row, cells in enumerate(table.rows, start=top + 1):
         for column, (heading, value) in enumerate(zip(table.columns, cells, strict=True), start=1):
             cell = _put(sheet, row, column, value)
-            cell.alignment = _alignment(table, column - 1)
+            cell.alignment = alignments[column - 1]
             if isinstance(value, int | float):
                 cell.number_format = number_format(heading)
     last = get_column_letter(len(table.columns))
@@ -112,12 +113,15 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     sheet.print_title_rows = f"{top}:{top}"
 
 
-def _alignment(table: Table, column: int, *, wrap: bool = False) -> Alignment:
-    """Columns of numbers stand on the right, heading included; text on the left, away from the numbers before it."""
+def _alignment(table: Table, column: int, *, heading: bool = False) -> Alignment:
+    """Columns of numbers stand on the right, heading included; text on the left, away from the numbers before it.
+
+    Headings, and texts too long for the widest column, go on in further rows of their cell.
+    """
     numbers = any(isinstance(row[column], int | float) for row in table.rows)
     numbers = numbers and not any(isinstance(row[column], str) for row in table.rows)
     return Alignment(vertical="top", horizontal="right" if numbers else "left", indent=0 if numbers else 1,
-                     wrap_text=wrap)
+                     wrap_text=heading or _width(table, column) >= WIDEST)
 
 
 def number_format(column: Column) -> str:
