@@ -49,13 +49,13 @@ def test_centred_strip(width_over_spacing: float, printed: float | None) -> None
     assert impedance(section) == pytest.approx(exact, rel=CLOSE), "Cohn 1954, exact"
 
 
-@pytest.mark.parametrize("width_over_spacing", [5.0, 6.0, 7.0])
+@pytest.mark.parametrize("width_over_spacing", [6.0, 8.0, 10.0, 20.0, 40.0])
 def test_wide_centred_strip(width_over_spacing: float) -> None:
     """Far wider than any line of 50 ohm (about 0.4 on Dk 4): still within what the solver promises."""
     exact = exact_impedance(centred_strip_capacitance(width=width_over_spacing, plane_spacing=1.0))
     section = stripline(foot=width_over_spacing, crest=width_over_spacing, thickness=0.0, core=(0.5, 1.0),
                         prepreg=(0.5, 1.0))
-    assert impedance(section) == pytest.approx(exact, rel=2e-4), "Cohn 1954, exact"
+    assert impedance(section) == pytest.approx(exact, rel=1e-4), "Cohn 1954, exact"
 
 
 @pytest.mark.parametrize(("width", "gap"), COUPLED)

@@ -17,6 +17,9 @@ from tolerance.solver.edges import Edge
 from tolerance.solver.kernels import LAST_EXPONENT, image_multiples
 from tolerance.solver.structure import Structure, shortest_remaining_way, structure
 
+#: Unknowns per unit of length over distance: keeps centred strips within 2e-5 of Cohn 1954 at any width.
+NODES_ALONG_BROAD_FACE = 1.6
+
 
 @dataclass(frozen=True, slots=True)
 class SolverSettings:
@@ -49,19 +52,23 @@ def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
     settings = settings or SolverSettings()
     nominal = section.rows(slice(0, 1))
     parts = structure(nominal)
-    counts = {edge.name: _counts(edge, ratio, settings) for edge, ratio in _crowding(parts)}
+    counts = {edge.name: _counts(edge, ratio, settings, breadth=breadth) for edge, ratio, breadth in _crowding(parts)}
     return Plan(
         counts=counts, multiples=_multiples(parts), wavenumbers=_wavenumbers(parts), settings=settings,
     )
 
 
-def _counts(edge: Edge, ratio: float, settings: SolverSettings) -> tuple[int, int]:
-    """Unknowns and quadrature places for an edge `ratio` times as long as the way to its next neighbour."""
+def _counts(edge: Edge, ratio: float, settings: SolverSettings, *, breadth: float = 0.0) -> tuple[int, int]:
+    """Unknowns and quadrature places for an edge `ratio` times as long as the way to its next neighbour.
+
+    breadth : length over the way to the next flat face. Along a broad face the charge is level but for its ends,
+    each as long as that way, and the polynomial needs nodes in proportion (seen against exact wide strips).
+    """
     if edge.tail:
         return settings.tail_nodes, 3 * settings.tail_nodes
     base = settings.copper_nodes if edge.conducts else settings.dielectric_nodes
     more = max(0.0, math.log2(ratio / 2.5)) if ratio > 0.0 else 0.0
-    unknowns = _even(base + 4.0 * more)
+    unknowns = _even(max(base + 4.0 * more, NODES_ALONG_BROAD_FACE * breadth))
     return unknowns, _even(max(2.0 * unknowns, 2.0 * ratio))
 
 
@@ -79,9 +86,10 @@ def _wavenumbers(parts: Structure) -> int:
     return math.ceil(16.0 + 0.5 * LAST_EXPONENT * 2.0 * across / shortest + 4.0 * math.sqrt(depth / shortest))
 
 
-def _crowding(parts: Structure) -> list[tuple[Edge, float]]:
-    """Every edge with its length over the way to the nearest edge, image or plane that it does not touch.
+def _crowding(parts: Structure) -> list[tuple[Edge, float, float]]:
+    """Every edge with its length over the way to the nearest edge, image or flat face that it does not touch.
 
+    The second number is its length over the way to the nearest flat face alone.
     A touching edge counts with its length: it sets the scale on which the charge next to the corner varies.
     """
     outlines = [(edge, _points(edge)) for edge in parts.edges]
@@ -94,9 +102,10 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float]]:
     for edge, points in outlines:
         length = float(edge.length[0])
         ways = [float(np.abs(points[:, 1] - level).min()) for level in levels]
+        flat = min(ways, default=np.inf)
         ways += [_way(points, there, float(other.length[0])) for other, there in others
                  if other is not edge or there[0, 0] != points[0, 0]]
-        result.append((edge, length / max(min(ways), 1e-3 * length)))
+        result.append((edge, length / max(min(ways), 1e-3 * length), length / max(flat, 1e-3 * length)))
     return result
 
 
