@@ -6,14 +6,18 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
+import os
 import platform
 import secrets
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from importlib.metadata import version
+from typing import TypeVar
 
 import numpy as np
+from threadpoolctl import threadpool_limits
 
 from tolerance.arrays import BoolArray, FloatArray, IntArray
 from tolerance.errors import UnfinishedError
@@ -26,7 +30,7 @@ from tolerance.process.draws import (
     process_of,
 )
 from tolerance.results import DirectCheck, LineResult, Prediction, Record, RunResult, Spread
-from tolerance.scenario.tables import Scenario
+from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
@@ -40,6 +44,8 @@ from tolerance.surrogate.polynomial import HIGHEST_DEGREE, count_runs
 from tolerance.surrogate.prediction import HELD_OUT_RUNS, Predictor, fit_predictor, largest_error_wanted
 
 Progress = Callable[[str, int, int], None]
+Task = TypeVar("Task")
+Done = TypeVar("Done")
 PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
@@ -77,12 +83,12 @@ def run(
     clock.lap("draws")
 
     settings = SolverSettings()
-    count = len(scenario.lines)
-    predicted = []
-    for number, (line, chance) in enumerate(zip(scenario.lines, training_chance.spawn(count), strict=True)):
-        tell("solving lines", number, count)
-        predicted.append(predict_line(prepare(scenario, line, settings), draws, chance=chance, direct=direct))
-    tell("solving lines", count, count)
+
+    def predict(task: tuple[Line, np.random.Generator]) -> PredictedLine:
+        return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1], direct=direct)
+
+    tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
+    predicted = _on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
     judged = judge(
@@ -92,12 +98,9 @@ def run(
     )
     clock.lap("yield")
 
-    results = []
-    for number, (known, verdict, chance) in enumerate(
-            zip(predicted, judged.lines, driver_chance.spawn(count), strict=True)):
-        tell("ranking drivers", number, count)
-        results.append(_line_result(known, verdict, rank_drivers(known.predictor, chance)))
-    tell("ranking drivers", count, count)
+    ranking = list(zip((line.predictor for line in predicted), driver_chance.spawn(len(predicted)), strict=True))
+    drivers = _on_all_cores(lambda task: rank_drivers(*task), ranking, "ranking drivers", tell)
+    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, strict=True)]
     clock.lap("drivers")
     return RunResult(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
@@ -191,6 +194,27 @@ def _solve_directly(
         verdicts_that_differ=int(np.count_nonzero(inside != predicted)),
         share_inside_solved=float(inside.mean()), share_inside_predicted=float(predicted.mean()),
     )
+
+
+def _on_all_cores(
+    work: Callable[[Task], Done], tasks: Sequence[Task], step: str, tell: Progress,
+) -> list[Done]:
+    """`work` done on every task, in threads, results in the order of the tasks.
+
+    Linear algebra is kept to one thread each: its matrices are small, and threads that wait for each other in it
+    cost many times what they save.
+    """
+    results = []
+    with threadpool_limits(limits=1, user_api="blas"), ThreadPoolExecutor(os.cpu_count()) as pool:
+        tell(step, 0, len(tasks))
+        try:
+            for done, result in enumerate(pool.map(work, tasks), start=1):
+                results.append(result)
+                tell(step, done, len(tasks))
+        except BaseException:
+            pool.shutdown(cancel_futures=True)
+            raise
+    return results
 
 
 def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...]) -> LineResult:
