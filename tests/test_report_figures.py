@@ -28,7 +28,7 @@ from tolerance.report.figures import line_page, overview_page, write_figures
 from tolerance.report.looks import BODY, FAIL_FILL, MATERIAL
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section, stand_apart
-from tolerance.results import LineResult, Spread
+from tolerance.results import Drawing, LineResult, Spread
 
 NOTHING_VARIES = replace(made_up_line("constant", drivers=()), spread=Spread(
     edges=read_only([50.2 - 1e-9, 50.2 + 1e-9]), counts=np.array([65536])))
@@ -144,6 +144,17 @@ def test_the_section_names_its_materials_and_main_dimensions() -> None:
     in_mil = words_on(line_page(pair, target_yield=0.99, lengths="mil").axes[2])
     assert "width 4.72 mil" in in_mil  # 120 / 25.4
     assert "gap 5.91 mil" in in_mil  # 150 / 25.4
+
+
+def test_a_section_on_the_bottom_shows_the_same_heights_as_on_the_top() -> None:
+    top = microstrip_drawing()
+    bottom = Drawing(
+        tuple(replace(region, outline=read_only(region.outline * [1.0, -1.0])) for region in top.regions),
+        tuple(replace(part, outline=read_only(part.outline * [1.0, -1.0])) for part in top.conductors))
+    for drawing in (top, bottom):
+        words = words_on(line_page(made_up_line(drawing=drawing), target_yield=0.99, lengths="um").axes[2])
+        for part in ("| 15 um", "| 43 um", "| 100 um", "width 180 um"):
+            assert part in words
 
 
 def test_the_heading_says_yield_interval_and_verdict() -> None:

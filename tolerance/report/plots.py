@@ -114,8 +114,9 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     quiet_axes(axes, grid="x")
     rest = line.drivers[DRIVERS_SHOWN:]
     if rest:
-        most = percent(max(ranking(driver).value for driver in rest), 1)
-        axes.annotate(f"and {len(rest)} more, {'each ' if len(rest) > 1 else ''}at most {most}", (1.0, 0.0),
+        most = max(ranking(driver).value for driver in rest)
+        bound = f"at most {percent(most, 1)}" if most >= 0.0005 else "under 0.1 %"
+        axes.annotate(f"and {len(rest)} more, {'each ' if len(rest) > 1 else ''}{bound}", (1.0, 0.0),
                       xycoords="axes fraction", xytext=(0, 6), textcoords="offset points", ha="right", va="bottom",
                       fontsize=SMALL, color=FAINT_INK)
     return axes
@@ -180,7 +181,7 @@ def _draw_overview_row(axes: Axes, row: int, line: LineResult, *, reach: float, 
                   textcoords="offset points", va="center", fontsize=LARGE, weight="bold",
                   color=FAIL if missed else INK)
     axes.annotate(f"{words.inside_range}\n{words.verdict}", (1.0, row - 0.40), xycoords=("axes fraction", "data"),
-                  xytext=(108, 0), textcoords="offset points", va="center", fontsize=SMALL,
+                  xytext=(122, 0), textcoords="offset points", va="center", fontsize=SMALL,
                   color=FAIL if missed else FAINT_INK)
 
 

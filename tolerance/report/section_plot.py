@@ -212,9 +212,9 @@ def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit,
     middle = float(_sides(trace).mean())
     copper = [seen for item in drawing.conductors
               if (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
-    covers = [seen[1] for item in drawing.regions
+    layers = [seen for item in drawing.regions
               if (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
-    levels = sorted({round(level, 12) for level in (*(end for seen in copper for end in seen), *covers)})
+    levels = sorted({round(end, 10) for seen in (*copper, *layers) for end in seen})
     planes = [seen for item in drawing.conductors if item.role == "plane"
               and (seen := _range_at(_reaching(item.outline, drawing, view), middle)) is not None]
     steps = [(low, high) for low, high in pairwise(levels)
