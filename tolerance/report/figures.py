@@ -69,7 +69,7 @@ def overview_page(result: RunResult) -> Figure:
         page = _page(height)
         _head(page, shorten(result.title, NAME_LENGTH), f"all lines, {result.coupons:,} coupons, seed {result.seed}",
               result.inside, result.target_yield, judged=False)
-        axes = page.add_axes((0.225, 0.65 / height, 0.535, 1.0 - 1.95 / height))
+        axes = page.add_axes((0.225, 0.65 / height, 0.52, 1.0 - 1.95 / height))
         draw_overview(axes, result, result.lines)
     return page
 
