@@ -145,11 +145,9 @@ def _write_files(
     from tolerance.report.figures import write_figures
     from tolerance.report.workbook import write_workbook
 
-    folder.mkdir(parents=True, exist_ok=True)
     tell("writing the workbook", 0, 1)
     workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    tell("drawing figures", 0, 1)
-    return [workbook, *write_figures(result, folder, scenario.report.lengths)]
+    return [workbook, *write_figures(result, folder, scenario.report.lengths, on_progress=tell)]
 
 
 def _new(options: argparse.Namespace) -> int:
