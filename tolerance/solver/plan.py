@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -50,12 +50,29 @@ class Plan:
 def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
     """The plan for a line whose nominal section is the first of `section`."""
     settings = settings or SolverSettings()
-    nominal = section.rows(slice(0, 1))
-    parts = structure(nominal)
-    counts = {edge.name: _counts(edge, ratio, settings, breadth=breadth) for edge, ratio, breadth in _crowding(parts)}
-    return Plan(
-        counts=counts, multiples=_multiples(parts), wavenumbers=_wavenumbers(parts), settings=settings,
-    )
+    counts: dict[str, tuple[int, int]] = {}
+    multiples: tuple[float, ...] = ()
+    wavenumbers = 0
+    for section_as in _as_drawn_and_across(section.rows(slice(0, 1))):
+        parts = structure(section_as)
+        for edge, ratio, breadth in _crowding(parts):
+            counts.setdefault(edge.name, _counts(edge, ratio, settings, breadth=breadth))
+        multiples = multiples or _multiples(parts)
+        wavenumbers = wavenumbers or _wavenumbers(parts)
+    return Plan(counts=counts, multiples=multiples, wavenumbers=wavenumbers, settings=settings)
+
+
+def _as_drawn_and_across(nominal: Section) -> list[Section]:
+    """The nominal section and, with a mask, the same where the flat mask stands as high as the mesa, or lower.
+
+    Draws may lie on the other side of that limit, where the kernel is another one: a plan serves both.
+    """
+    mask = nominal.mask
+    if mask is None:
+        return [nominal]
+    top = nominal.thickness + mask.over_copper
+    level = np.where(mask.on_laminate >= top, 0.5 * (nominal.thickness + top), top)
+    return [nominal, replace(nominal, mask=replace(mask, on_laminate=level))]
 
 
 def _counts(edge: Edge, ratio: float, settings: SolverSettings, *, breadth: float = 0.0) -> tuple[int, int]:
