@@ -127,6 +127,16 @@ def test_equal_replicates_do_not_make_a_zero_width() -> None:
     assert interval.low < interval.value < interval.high
 
 
+def test_intervals_hold_plain_numbers() -> None:
+    impedance = product_impedance(1024, 1)
+    result = judge(impedance[None], everywhere(impedance[None]), (Limits(48.0, 52.0),), replicates=REPLICATES,
+                   impedance_error=np.array([0.05]))
+    line = result.lines[0]
+    for interval in (result.inside, line.inside, line.below, line.above, line.mean, line.deviation, line.cp, line.cpk):
+        assert interval is not None
+        assert {type(end) for end in (interval.value, interval.low, interval.high)} == {float}
+
+
 def test_limits_themselves_pass() -> None:
     impedance = np.tile([45.0, 55.0, np.nextafter(45.0, 0.0), np.nextafter(55.0, 99.0)], 64)
     result = judge_line(impedance, everywhere(impedance), Limits(45.0, 55.0), replicates=REPLICATES)

@@ -29,7 +29,7 @@ class Interval:
 
     def widened(self, below: float, above: float) -> Interval:
         """The same estimate with its ends moved out by `below` and `above`, both at least 0."""
-        return Interval(self.value, self.low - below, self.high + above)
+        return Interval(self.value, float(self.low - below), float(self.high + above))
 
     def within(self, lowest: float, highest: float) -> Interval:
         """The same estimate with its ends inside what is possible; the estimate itself is never moved."""
