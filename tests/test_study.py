@@ -103,7 +103,8 @@ def test_solving_directly_reports_the_difference() -> None:
 
 
 def test_modes_of_a_pair_hang_together() -> None:
-    common = changed(BOARD, ('gap = "150 um"\ntarget = "100 ohm"', 'gap = "150 um"\ntarget = "25 ohm"\nmode = "common"'))
+    both_tied = 'gap = "150 um"\ntarget = "25 ohm"\nmode = "common"'
+    common = changed(BOARD, ('gap = "150 um"\ntarget = "100 ohm"', both_tied))
     differential, even = check(parse(BOARD)).lines[1], check(parse(common)).lines[1]
     assert differential.common_mode == pytest.approx(even.impedance, rel=1e-12)
     assert even.effective_dk == pytest.approx(differential.even_effective_dk, rel=1e-12)
