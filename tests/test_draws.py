@@ -13,11 +13,11 @@ from tolerance.process.draws import (
     columns_moving,
     correlated_groups,
     draw_process,
-    nominal_draw,
     process_of,
     sobol_uniforms,
 )
 from tolerance.process.laws import Shape
+from tolerance.process.values import NominalValues
 from tolerance.scenario import parse
 from tolerance.scenario.amounts import Amount
 
@@ -80,8 +80,7 @@ def test_etch_is_one_draw_for_the_layer_in_the_share_of_each_width() -> None:
 
 
 def test_nominals_know_nothing_of_a_shift() -> None:
-    nominal = nominal_draw(six_layers())
-    assert nominal.coupons == 1
+    nominal = NominalValues(six_layers().nominals)
     assert nominal.etch("L1", width=180e-6)[0] == 0.0
     assert nominal.value("P1.thickness")[0] == 100e-6
 

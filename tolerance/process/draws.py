@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections.abc import Collection, Mapping
 from dataclasses import dataclass
-from types import MappingProxyType
 
 import numpy as np
 from scipy.special import ndtri
@@ -16,8 +15,9 @@ from scipy.stats import qmc
 
 from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.process.laws import Law, quantile
-from tolerance.scenario.properties import Property, members, properties
-from tolerance.scenario.tables import COPPER, Scenario, Variation
+from tolerance.process.values import nominals_of
+from tolerance.scenario.properties import Property, members
+from tolerance.scenario.tables import Scenario, Variation
 
 REPLICATES = 8  # independent scrambles of a sample; with 16 intervals of the yield are no narrower, of the mean wider
 SOBOL_BITS = 30  # of a coordinate; points are moved to the middle of their cell, so that 0 never occurs
@@ -99,11 +99,7 @@ class ProcessDraws:
 def process_of(scenario: Scenario) -> Process:
     """The variables of a scenario in its order, and their correlation."""
     variables = tuple(variable for variation in scenario.variations for variable in _variables(scenario, variation))
-    nominals = {each.name: each.nominal for each in properties(scenario)}
-    for layer in scenario.layers:
-        if layer.kind == COPPER:  # also where they are 0 or infinite, and so cannot vary
-            nominals |= {f"{layer.name}.plating": layer.plating, f"{layer.name}.etch_factor": layer.etch_factor}
-    return Process(variables, MappingProxyType(nominals), correlation_of(scenario, variables))
+    return Process(variables, nominals_of(scenario), correlation_of(scenario, variables))
 
 
 def correlation_of(scenario: Scenario, variables: tuple[Variable, ...]) -> FloatArray:
@@ -158,12 +154,6 @@ def draw_process(
         for row, column in enumerate(group):
             germ[:, column] = sum(root[row, other] * free[:, other] for other in range(row + 1))
     return ProcessDraws(process, read_only(germ), replicates)
-
-
-def nominal_draw(process: Process) -> ProcessDraws:
-    """One coupon with every property at its nominal (not at its mean: shifts do not count)."""
-    still = Process((), process.nominals, read_only(np.zeros((0, 0))))
-    return ProcessDraws(still, read_only(np.zeros((1, 0))))
 
 
 def sobol_normals(dimensions: int, points: int, chance: np.random.Generator) -> FloatArray:

@@ -34,9 +34,8 @@ from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
-from tolerance.statistics.dependent import dependent_indices
-from tolerance.statistics.drivers import Model, ranked, sobol_indices
 from tolerance.statistics.estimates import Driver
+from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.yields import Limits, LineYield, histogram, judge
 from tolerance.study.lines import PreparedLine, nominal_impedance, prepare
 from tolerance.surrogate.coordinates import Coordinates
@@ -98,8 +97,12 @@ def run(
     )
     clock.lap("yield")
 
-    ranking = list(zip((line.predictor for line in predicted), driver_chance.spawn(len(predicted)), strict=True))
-    drivers = _on_all_cores(lambda task: rank_drivers(*task), ranking, "ranking drivers", tell)
+
+    def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
+        return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
+
+    ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
+    drivers = _on_all_cores(rank, ranking, "ranking drivers", tell)
     results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, strict=True)]
     clock.lap("drivers")
     return RunResult(
@@ -129,19 +132,6 @@ def predict_line(
         leave_one_out_error=predictor.leave_one_out_error, held_out_error=root_mean_square, held_out_largest=largest,
     )
     return PredictedLine(prepared, predictor, prediction, impedance, possible, checked)
-
-
-def rank_drivers(predictor: Predictor, chance: np.random.Generator) -> tuple[Driver, ...]:
-    """Drivers of one line: Sobol' indices, and Shapley effects where its inputs are correlated."""
-    coordinates = predictor.coordinates
-    model = Model(coordinates.names, coordinates.of_one, predictor.impedance_at, coordinates.correlation)
-    if not coordinates.names:
-        return ()
-    if np.any(model.correlation != np.eye(model.dimensions)):
-        dependent = dependent_indices(model, chance=chance)
-        return ranked(model, dependent.first, dependent.total, dependent.shapley)
-    indices = sobol_indices(model, chance=chance)
-    return ranked(model, indices.first, indices.total)
 
 
 def _fit_line(
