@@ -85,6 +85,7 @@ STACK = "signal prepreg plane core signal prepreg signal core plane prepreg plan
     (STACK, line("7", partner="5"), ("3", "9")),
     ("prepreg signal core plane", line("2"), (None, "4")),
     ("plane core signal", line("3"), ("1", None)),
+    ("plane prepreg plane core signal prepreg plane core plane", line("5"), ("3", "7")),
 ])
 def test_reference_planes(words: str, item: Line, expected: tuple[str | None, str | None]) -> None:
     assert reference_planes(stack(words), item) == expected

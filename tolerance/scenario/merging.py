@@ -96,7 +96,7 @@ def _merge_entry(base: Entry | None, extension: Entry | None) -> Entry:
         assert entry is not None  # the caller has at least one of the two
         return entry
     dropped = _giving_way(extension)
-    kept = {key: value for key, value in base.values.items() if key not in dropped or key in extension.values}
+    kept = {key: value for key, value in base.values.items() if key not in dropped}
     places = {key: base.places[key] for key in kept} | dict(extension.places)
     return Entry(table=base.table, values=kept | dict(extension.values), place=extension.place, places=places)
 
