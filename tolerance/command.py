@@ -60,6 +60,8 @@ def _parser() -> argparse.ArgumentParser:
     check = commands.add_parser("check", help="validate a scenario and solve each line at its nominals")
     check.add_argument("file", type=Path, metavar="FILE", help="scenario (TOML)")
     check.add_argument("--json", action="store_true", help="the result as one JSON object on standard output")
+    check.add_argument("--formulas", action="store_true",
+                       help="set published formulas beside the field solver, as a second opinion")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
@@ -91,7 +93,7 @@ def _check(options: argparse.Namespace) -> int:
     from tolerance.study.check import check
 
     scenario = load(options.file)
-    result = check(scenario)
+    result = check(scenario, formulas=options.formulas)
     if options.json:
         print(check_json(result))
     elif not options.quiet:

@@ -9,6 +9,28 @@ from dataclasses import dataclass
 
 
 @dataclass(frozen=True, slots=True)
+class FormulaOpinion:
+    """What a published formula says of a line, beside the field solver: `impedance` [ohm], None with its reason.
+
+    claimed : accuracy its authors claim, as a share; None where no claim is known for such a line.
+    """
+
+    formula: str
+    source: str
+    impedance: float | None
+    claimed: float | None
+    remark: str
+
+
+@dataclass(frozen=True, slots=True)
+class FormulaOpinions:
+    """All that published formulas say of a line; `why_none` tells why there is none for its kind."""
+
+    opinions: tuple[FormulaOpinion, ...]
+    why_none: str
+
+
+@dataclass(frozen=True, slots=True)
 class NominalLine:
     """One line at the nominals of its layers.
 
@@ -27,6 +49,7 @@ class NominalLine:
     common_mode: float | None = None
     even_effective_dk: float | None = None
     dimensions: tuple[tuple[str, float], ...] = ()  # ("width", 180e-6), ("gap", 150e-6): as they are to be shown
+    formulas: FormulaOpinions | None = None  # None: not asked for
 
 
 @dataclass(frozen=True, slots=True)

@@ -10,7 +10,7 @@ import json
 import math
 from typing import TYPE_CHECKING
 
-from tolerance.nominal import CheckResult, NominalLine
+from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
 
 if TYPE_CHECKING:
     from tolerance.results import DirectCheck, Driver, Interval, LineResult, RunResult
@@ -102,7 +102,7 @@ def _direct(direct: DirectCheck) -> dict[str, object]:
 
 
 def _nominal_line(line: NominalLine) -> dict[str, object]:
-    return {
+    values: dict[str, object] = {
         "name": line.name, "kind": line.kind, "layer": line.layer, "references": list(line.references),
         "impedance_ohm": float(line.impedance),
         "target_ohm": float(line.target),
@@ -110,4 +110,19 @@ def _nominal_line(line: NominalLine) -> dict[str, object]:
         "delay_ps_per_mm": float(line.delay) * PICOSECONDS_PER_MILLIMETRE,
         "common_mode_ohm": None if line.common_mode is None else float(line.common_mode),
         "even_effective_dk": None if line.even_effective_dk is None else float(line.even_effective_dk),
+    }
+    if line.formulas is not None:
+        values["formulas"] = [_opinion(opinion, line.impedance) for opinion in line.formulas.opinions]
+        values["formulas_none_because"] = line.formulas.why_none or None
+    return values
+
+
+def _opinion(opinion: FormulaOpinion, solved: float) -> dict[str, object]:
+    said = opinion.impedance
+    return {
+        "formula": opinion.formula, "source": opinion.source,
+        "impedance_ohm": None if said is None else float(said),
+        "difference_percent": None if said is None else 100.0 * (float(said) / float(solved) - 1.0),
+        "claimed_percent": None if opinion.claimed is None else 100.0 * opinion.claimed,
+        "remark": opinion.remark,
     }

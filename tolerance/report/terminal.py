@@ -54,6 +54,10 @@ def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> N
     if any(line.common_mode is not None for line in result.lines):
         _say(console, "Pairs: differential impedance with the odd mode's effective Dk and delay, unless the kind says "
                       "common mode.")
+    if any(line.formulas is not None for line in result.lines):
+        _print_table(console, _formula_table(result, _name_width(console)))
+        _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
+                      "by their authors.")
 
 
 def print_run(result: RunResult, console: Console) -> None:
@@ -157,6 +161,26 @@ def _say_direct(result: RunResult, console: Console) -> None:
                           f'"{shorten(line.name, LONGEST_DRIVER)}": predictions off by at most '
                           f"{fixed(line.direct.largest, 4)} ohm, verdicts that differ: "
                           f"{line.direct.verdicts_that_differ}.")
+
+
+def _formula_table(result: CheckResult, name_width: int) -> RichTable:
+    table = _table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
+                   ("claimed\n[%]", False))
+    for line in result.lines:
+        name = two_rows(line.name, name_width)
+        if line.formulas is None or not line.formulas.opinions:
+            why = "" if line.formulas is None else f": {line.formulas.why_none}"
+            table.add_row(Text(name), Text(f"none for such a line{why}"), "", "", "")
+            continue
+        for opinion in line.formulas.opinions:
+            words = f"{opinion.formula}\n{opinion.remark}".rstrip()
+            claimed = "unknown" if opinion.claimed is None else trimmed(100.0 * opinion.claimed, 2)
+            said = opinion.impedance
+            table.add_row(Text(name), Text(words), "" if said is None else fixed(said, 2),
+                          "" if said is None else fixed(100.0 * (said / line.impedance - 1.0), 2),
+                          "" if said is None else claimed)
+            name = ""
+    return table
 
 
 def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:
