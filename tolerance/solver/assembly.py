@@ -47,7 +47,8 @@ class System:
     across: FloatArray
     height: FloatArray
     normals: tuple[FloatArray, FloatArray]
-    copper: int  # how many of the unknowns lie on copper; they come first
+    trace: int  # how many of the unknowns lie on the trace; they come first
+    copper: int  # how many on any copper; they come before those on dielectric
 
 
 def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]]) -> System:
@@ -57,6 +58,7 @@ def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: S
     across = np.concatenate([n.across for n in nodes], axis=1)
     height = np.concatenate([n.height for n in nodes], axis=1)
     copper = sum(n.across.shape[1] for n in nodes if n.edge.conducts)
+    trace = sum(n.across.shape[1] for n in nodes if n.edge.conducts and n.edge.role != "ground")
     normals = tuple(np.concatenate([np.broadcast_to(n.normal[axis][:, None], n.across.shape) for n in nodes], axis=1)
                     for axis in (0, 1))
     own, mirrored = [], []
@@ -64,7 +66,7 @@ def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: S
         pair = _image_matrices(nodes, across, height, image, normals, copper)
         own.append(pair[0])
         mirrored.append(pair[1])
-    return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), copper)
+    return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), trace, copper)
 
 
 def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, air: bool = False) -> FloatArray:
@@ -84,8 +86,8 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
     if not air:
         _turn_into_interface_conditions(matrix, system)
     wanted = np.zeros((matrix.shape[0], size, 1))
-    wanted[:, : system.copper, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.copper, 0].sum(axis=1))
+    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
 
 
 def _image_matrices(
