@@ -51,8 +51,13 @@ class System:
     copper: int  # how many on any copper; they come before those on dielectric
 
 
-def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]]) -> System:
-    """Place the nodes (copper edges first) and set up the matrices of the near images."""
+def near_system(
+    edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]], mirror: bool = True,
+) -> System:
+    """Place the nodes (copper edges first) and set up the matrices of the near images.
+
+    mirror : the edges are the right half of a section that is mirrored at x = 0.
+    """
     nodes = tuple(place_nodes(edge, unknowns=unknowns, fine=fine)
                   for edge, (unknowns, fine) in zip(edges, counts, strict=True))
     across = np.concatenate([n.across for n in nodes], axis=1)
@@ -63,7 +68,7 @@ def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: S
                     for axis in (0, 1))
     own, mirrored = [], []
     for image in images:
-        pair = _image_matrices(nodes, across, height, image, normals, copper)
+        pair = _image_matrices(nodes, across, height, image, normals, copper, mirror=mirror)
         own.append(pair[0])
         mirrored.append(pair[1])
     return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), trace, copper)
@@ -82,7 +87,7 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
     if medium.far is not None:
         _add_far_images(matrix, system, medium.far, sign, size)
     if medium.rest is not None:
-        _add_rest(matrix, system, medium.rest, sign, size)
+        matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
     if not air:
         _turn_into_interface_conditions(matrix, system)
     wanted = np.zeros((matrix.shape[0], size, 1))
@@ -92,9 +97,9 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
 
 def _image_matrices(
     nodes: Sequence[Nodes], across: FloatArray, height: FloatArray, image: NearImage, normals: Sequence[FloatArray],
-    copper: int,
+    copper: int, *, mirror: bool,
 ) -> tuple[FloatArray, FloatArray]:
-    """Matrices of the image and of its mirror image in x = 0."""
+    """Matrices of the image and of its mirror image in x = 0 (nought where there is no mirror)."""
     own_parts, mirrored_parts = [], []
     start = 0
     for source in nodes:
@@ -102,7 +107,7 @@ def _image_matrices(
         level_height = source.fine_height if image.level is None else 2.0 * image.level[:, None] - source.fine_height
         rise = height[:, :, None] - level_height[:, None, :]
         parts = []
-        for fine_across in (source.fine_across, -source.fine_across):
+        for fine_across in (source.fine_across, -source.fine_across)[: 2 if mirror else 1]:
             kernel = _kernel(across[:, :, None] - fine_across[:, None, :], rise, normals, copper)
             parts.append(kernel @ source.refine)
         itself = image.level is None or source.edge.name in image.touching
@@ -113,7 +118,7 @@ def _image_matrices(
         elif itself:
             parts[0][:, start:stop] = 0.0  # a straight edge has no normal field on itself
         own_parts.append(parts[0])
-        mirrored_parts.append(parts[1])
+        mirrored_parts.append(parts[1] if mirror else np.zeros_like(parts[0]))
         start = stop
     return np.concatenate(own_parts, axis=2), np.concatenate(mirrored_parts, axis=2)
 
@@ -152,16 +157,6 @@ def _add_far_images(matrix: FloatArray, system: System, far: FarImages, sign: in
                 block += kernel
         matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
         start = stop
-
-
-def _add_rest(matrix: FloatArray, system: System, rest: SpectralRest, sign: int, size: int) -> None:
-    across, height = system.across[:, :size], system.height[:, :size]
-    matrix += rest.matrix(across, height, sign)
-    if np.any(rest.compensation):
-        square = (rest.distance**2)[:, None, None]
-        own = np.log((across[:, :, None] - across[:, None, :]) ** 2 + square)
-        mirrored = np.log((across[:, :, None] + across[:, None, :]) ** 2 + square)
-        matrix -= 0.5 * rest.compensation[:, None, None] * (own + sign * mirrored)
 
 
 def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:
