@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 import pytest
 
 from tests.scenario_texts import BOARD, HEAD, LINES, SIX_LAYERS, VARIATIONS, changed, messages
@@ -257,7 +259,54 @@ def test_a_wrong_layer_does_not_bring_messages_about_what_names_it() -> None:
     assert 'thickness = "0 um"' in told[0]
 
 
+def test_a_layer_without_a_name_does_not_bring_messages_about_what_names_it() -> None:
+    told = messages(changed(BOARD, ('name = "L3"\n', "")))
+    assert len(told) == 1
+    assert "[[layers]] number 6: name: missing" in told[0]
+
+
+def test_a_variation_of_nothing_does_not_bring_messages_about_correlations() -> None:
+    text = BOARD + '[[correlations]]\nbetween = ["P1.thickness", "P1.dk"]\ncoefficient = -0.5\n'
+    told = messages(changed(text, ('of = "P1.thickness"', 'of = "P1.thicknes"')))
+    assert len(told) == 1
+    assert "[[variations]]" in told[0]
+
+
+def test_a_misspelled_table_beside_the_right_one() -> None:
+    told = messages(BOARD + '[[line]]\nname = "third"\n')
+    assert told == ['orchard.toml: line: unknown table; did you mean "lines"?']
+
+
+def test_a_frequency_needs_the_loss_of_each_dielectric() -> None:
+    told = messages(changed(BOARD, ("seed = 1", 'frequency = "1 GHz"')))
+    assert [one.split(": ")[1] for one in told if "df: missing" in one] == [
+        '[[layers]] "top mask"', '[[layers]] "P1"', '[[layers]] "C1"', '[[layers]] "P2"']
+
+
+@pytest.mark.parametrize(("part", "keys"), [
+    ("file: missing", 'column = "P1 um"'),
+    ("column: missing", 'file = "press.csv"'),
+    ('file = "absent.csv": must be the path of a file, from the folder of orchard.toml: there is none',
+     'file = "absent.csv"\ncolumn = "P1 um"'),
+    ('file = "press.txt": must be the path of a CSV or XLSX file', 'file = "press.txt"\ncolumn = "P1 um"'),
+    ('sheet = "Press": only with an XLSX file', 'file = "press.csv"\ncolumn = "P1 um"\nsheet = "Press"'),
+    ("sigmas = 3: not with shape", 'file = "press.csv"\ncolumn = "P1 um"\nsigmas = 3'),
+])
+def test_measured_variations_are_checked_though_not_acted_on(tmp_path: Path, part: str, keys: str) -> None:
+    (tmp_path / "press.csv").write_text("P1 um\n99.5\n", encoding="utf-8")
+    text = changed(BOARD, ('tolerance = "10 %"', f'shape = "measured"\n{keys}'))
+    with pytest.raises(ScenarioError) as told:
+        parse(text, name="orchard.toml", folder=tmp_path)
+    lines = str(told.value).split("\n")
+    assert len(lines) == 2, lines
+    assert any(part in one for one in lines)
+    assert any('shape = "measured": this value is part of the format but not yet acted on' in one for one in lines)
+
+
 def test_foreign_text_stays_on_one_line() -> None:
+    told = messages(changed(BOARD, ("dk = 4.0", 'dk = 4.0\n"a\\nb" = 1')))
+    assert len(told) == 1
+    assert "a\\nb = 1: unknown key" in told[0]
     told = messages(changed(BOARD, ('name = "P1"', 'name = "P\\n1"')))
     assert len(told) == 1
     assert '"P\\n1"' in told[0]
