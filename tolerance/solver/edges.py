@@ -210,11 +210,12 @@ def mask_edges(section: Section, *, merged: bool, ground_merged: bool) -> list[E
         edges.append(face("mesa inner wall", (inner, flat), (inner, top)))
         edges.append(face("flat between", (zero, flat), (inner, flat)))
     if section.ground_gap is None:
-        return [*edges, face("mesa top", (inner, top), (outer, top)), face("mesa outer wall", (outer, top), (outer, flat)),
-                tail("flat tail", outer, flat)]
+        return [*edges, face("mesa top", (inner, top), (outer, top)),
+                face("mesa outer wall", (outer, top), (outer, flat)), tail("flat tail", outer, flat)]
     ground = outer - flat + section.ground_gap - flat
     if ground_merged:
-        return [*edges, face("mesa top", (inner, top), (ground + flat, top)), tail("ground mesa top", ground + flat, top)]
+        end = ground + flat
+        return [*edges, face("mesa top", (inner, top), (end, top)), tail("ground mesa top", end, top)]
     return [*edges, face("mesa top", (inner, top), (outer, top)), face("mesa outer wall", (outer, top), (outer, flat)),
             face("flat beside", (outer, flat), (ground, flat)), face("ground mesa wall", (ground, flat), (ground, top)),
             tail("ground mesa top", ground, top)]

@@ -110,7 +110,7 @@ def edge_counts(
 
     levels : heights of the planes [m].
     """
-    outlines = [(edge, _points(edge) + [0.0, bases[edge.name]]) for edge in edges]
+    outlines = [(edge, _points(edge) + np.array([0.0, bases[edge.name]])) for edge in edges]
     counts = {}
     for edge, points in outlines:
         length = float(edge.length[0])

@@ -117,7 +117,7 @@ def _between_flat_plies(section: Section, crest_side: tuple[Ply, ...]) -> Struct
 
 
 def _ground_reach(section: Section, crest_side: tuple[Ply, ...]) -> FloatArray:
-    """So far out nothing is left of the field between grounded copper and the planes, which falls like e^(-pi x / h)."""
+    """So far out nothing is left of the field between grounded copper and planes, which falls like e^(-pi x / h)."""
     plies = sum(ply.thickness for ply in (*section.foot_side, *crest_side))
     return np.asarray(3.0 * (plies + section.thickness))
 
