@@ -51,6 +51,7 @@ class Section:
     crest_side: tuple[Ply, ...]
     crest_plane: bool
     mask: Mask | None = None  # only over an open crest side without plies
+    ground_gap: FloatArray | None = None  # coplanar: from the outer foot edges to grounded copper of the same layer
 
     @property
     def count(self) -> int:
@@ -61,7 +62,7 @@ class Section:
     def possible(self) -> BoolArray:
         """Which sections can exist: every length above nought, finite, and every Dk at least 1."""
         lengths = [self.foot_width, self.crest_width, self.thickness]
-        lengths += [] if self.gap is None else [self.gap]
+        lengths += [space for space in (self.gap, self.ground_gap) if space is not None]
         dks = []
         for ply in (*self.foot_side, *self.crest_side):
             lengths.append(ply.thickness)
@@ -85,4 +86,5 @@ class Section:
             tuple(ply.rows(index) for ply in self.foot_side), self.foot_plane,
             tuple(ply.rows(index) for ply in self.crest_side), self.crest_plane,
             None if mask is None else Mask(mask.on_laminate[index], mask.over_copper[index], mask.dk[index], mask.name),
+            None if self.ground_gap is None else self.ground_gap[index],
         )

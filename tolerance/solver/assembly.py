@@ -47,24 +47,31 @@ class System:
     across: FloatArray
     height: FloatArray
     normals: tuple[FloatArray, FloatArray]
-    copper: int  # how many of the unknowns lie on copper; they come first
+    trace: int  # how many of the unknowns lie on the trace; they come first
+    copper: int  # how many on any copper; they come before those on dielectric
 
 
-def near_system(edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]]) -> System:
-    """Place the nodes (copper edges first) and set up the matrices of the near images."""
+def near_system(
+    edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]], mirror: bool = True,
+) -> System:
+    """Place the nodes (copper edges first) and set up the matrices of the near images.
+
+    mirror : the edges are the right half of a section that is mirrored at x = 0.
+    """
     nodes = tuple(place_nodes(edge, unknowns=unknowns, fine=fine)
                   for edge, (unknowns, fine) in zip(edges, counts, strict=True))
     across = np.concatenate([n.across for n in nodes], axis=1)
     height = np.concatenate([n.height for n in nodes], axis=1)
     copper = sum(n.across.shape[1] for n in nodes if n.edge.conducts)
+    trace = sum(n.across.shape[1] for n in nodes if n.edge.conducts and n.edge.role != "ground")
     normals = tuple(np.concatenate([np.broadcast_to(n.normal[axis][:, None], n.across.shape) for n in nodes], axis=1)
                     for axis in (0, 1))
     own, mirrored = [], []
     for image in images:
-        pair = _image_matrices(nodes, across, height, image, normals, copper)
+        pair = _image_matrices(nodes, across, height, image, normals, copper, mirror=mirror)
         own.append(pair[0])
         mirrored.append(pair[1])
-    return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), copper)
+    return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), trace, copper)
 
 
 def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, air: bool = False) -> FloatArray:
@@ -80,19 +87,19 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
     if medium.far is not None:
         _add_far_images(matrix, system, medium.far, sign, size)
     if medium.rest is not None:
-        _add_rest(matrix, system, medium.rest, sign, size)
+        matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
     if not air:
         _turn_into_interface_conditions(matrix, system)
     wanted = np.zeros((matrix.shape[0], size, 1))
-    wanted[:, : system.copper, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.copper, 0].sum(axis=1))
+    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
 
 
 def _image_matrices(
     nodes: Sequence[Nodes], across: FloatArray, height: FloatArray, image: NearImage, normals: Sequence[FloatArray],
-    copper: int,
+    copper: int, *, mirror: bool,
 ) -> tuple[FloatArray, FloatArray]:
-    """Matrices of the image and of its mirror image in x = 0."""
+    """Matrices of the image and of its mirror image in x = 0 (nought where there is no mirror)."""
     own_parts, mirrored_parts = [], []
     start = 0
     for source in nodes:
@@ -100,7 +107,7 @@ def _image_matrices(
         level_height = source.fine_height if image.level is None else 2.0 * image.level[:, None] - source.fine_height
         rise = height[:, :, None] - level_height[:, None, :]
         parts = []
-        for fine_across in (source.fine_across, -source.fine_across):
+        for fine_across in (source.fine_across, -source.fine_across)[: 2 if mirror else 1]:
             kernel = _kernel(across[:, :, None] - fine_across[:, None, :], rise, normals, copper)
             parts.append(kernel @ source.refine)
         itself = image.level is None or source.edge.name in image.touching
@@ -111,7 +118,7 @@ def _image_matrices(
         elif itself:
             parts[0][:, start:stop] = 0.0  # a straight edge has no normal field on itself
         own_parts.append(parts[0])
-        mirrored_parts.append(parts[1])
+        mirrored_parts.append(parts[1] if mirror else np.zeros_like(parts[0]))
         start = stop
     return np.concatenate(own_parts, axis=2), np.concatenate(mirrored_parts, axis=2)
 
@@ -150,16 +157,6 @@ def _add_far_images(matrix: FloatArray, system: System, far: FarImages, sign: in
                 block += kernel
         matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
         start = stop
-
-
-def _add_rest(matrix: FloatArray, system: System, rest: SpectralRest, sign: int, size: int) -> None:
-    across, height = system.across[:, :size], system.height[:, :size]
-    matrix += rest.matrix(across, height, sign)
-    if np.any(rest.compensation):
-        square = (rest.distance**2)[:, None, None]
-        own = np.log((across[:, :, None] - across[:, None, :]) ** 2 + square)
-        mirrored = np.log((across[:, :, None] + across[:, None, :]) ** 2 + square)
-        matrix -= 0.5 * rest.compensation[:, None, None] * (own + sign * mirrored)
 
 
 def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:

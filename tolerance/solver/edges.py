@@ -7,7 +7,7 @@ the body (see kernels). Every array of an edge has shape (sections,).
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from types import MappingProxyType
 from typing import Literal
 
@@ -15,12 +15,20 @@ import numpy as np
 
 from tolerance.arrays import FloatArray
 from tolerance.sections.section import Section
-from tolerance.solver.rules import Rule, graded_rule, refinement, self_potential, tail_rule
+from tolerance.solver.rules import (
+    Rule,
+    graded_rule,
+    ground_rule,
+    ground_self_potential,
+    refinement,
+    self_potential,
+    tail_rule,
+)
 
-Role = Literal["copper", "strip", "dielectric"]
+Role = Literal["copper", "strip", "ground", "dielectric"]
 #: Grading by how the charge grows towards the ends: like distance^(-1/3) at corners of copper, like distance^(-1/2)
 #: at the edges of a strip without thickness, more mildly on dielectric faces.
-GRADING: Mapping[Role, int] = MappingProxyType({"copper": 3, "strip": 2, "dielectric": 2})
+GRADING: Mapping[Role, int] = MappingProxyType({"copper": 3, "strip": 2, "ground": 3, "dielectric": 2})
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,15 +86,16 @@ class Nodes:
 def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
     """Nodes of `edge`; a folded edge gets half of `unknowns` and `fine`, which must be even."""
     power = GRADING[edge.role]
-    rule = tail_rule(unknowns) if edge.tail else graded_rule(unknowns, power)
-    fine_rule = tail_rule(fine) if edge.tail else graded_rule(fine, power)
+    rule, fine_rule = (_rule(edge, count) for count in (unknowns, fine))
     keep, keep_fine = (slice(unknowns // 2, None), slice(fine // 2, None)) if edge.folded else (slice(None),) * 2
     across, height = _places(edge, rule, keep)
     fine_across, fine_height = _places(edge, fine_rule, keep_fine)
     refine = refinement(unknowns, fine)
     alone: FloatArray | None = None
     mirrored: FloatArray | None = None
-    if edge.conducts:
+    if edge.conducts and edge.tail:
+        alone = ground_self_potential(unknowns) + np.log(edge.length)[:, None, None]
+    elif edge.conducts:
         full = self_potential(unknowns, power) + np.log(0.5 * edge.length)[:, None, None]
         alone = full[:, keep, keep]
         mirrored = full[:, keep, : unknowns // 2][:, :, ::-1] if edge.folded else None
@@ -99,6 +108,12 @@ def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
         alone=alone, mirrored=mirrored, jacobian=stretch[:, None] * (rule.weights * rule.slope)[keep],
         normal=(-direction[1], direction[0]),
     )
+
+
+def _rule(edge: Edge, count: int) -> Rule:
+    if not edge.tail:
+        return graded_rule(count, GRADING[edge.role])
+    return ground_rule(count) if edge.conducts else tail_rule(count)
 
 
 def _places(edge: Edge, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray]:
@@ -134,6 +149,26 @@ def trace_edges(section: Section) -> list[Edge]:
     ]
 
 
+def ground_edges(section: Section, *, reach: FloatArray | None = None) -> list[Edge]:
+    """Faces of the grounded copper right of a coplanar line: the trace's slope mirrored, reaching far out.
+
+    reach : how far beyond the gap the copper goes [m], where planes on both sides leave it nothing to do further
+        out; absent: tails of 50 times gap and height.
+    """
+    if section.ground_gap is None:
+        return []
+    zero, thickness = np.zeros(section.count), section.thickness
+    foot = outer_foot_edge(section) + section.ground_gap
+    crest = foot + 0.5 * (section.foot_width - section.crest_width)
+    tail = reach is None
+    way = section.ground_gap + section.foot_side[0].thickness if reach is None else reach
+    return [
+        Edge("ground side", "ground", (foot, zero), (crest, thickness)),
+        Edge("ground foot", "ground", (foot, zero), (foot + way, zero), tail=tail),
+        Edge("ground crest", "ground", (crest, thickness), (crest + way, thickness), tail=tail),
+    ]
+
+
 def _strip_edges(section: Section) -> list[Edge]:
     zero, outer = np.zeros(section.count), outer_foot_edge(section)
     if section.gap is None:
@@ -148,32 +183,39 @@ def outer_foot_edge(section: Section) -> FloatArray:
     return 0.5 * section.gap + section.foot_width
 
 
-def mask_edges(section: Section, *, merged: bool) -> list[Edge]:
-    """Face of a mask that follows the trace: mesa top, its walls, and the flat beyond (height from the foot).
+def mask_edges(section: Section, *, merged: bool, ground_merged: bool) -> list[Edge]:
+    """Face of a mask that follows the copper: mesa top, its walls, and the flat beyond (height from the foot).
 
     merged : the mesas of a pair overlap into one. Single lines have one mesa in any case.
+    ground_merged : the mesa of the trace and that of the grounded copper beside it overlap, or the flat mask stands
+        higher than both.
     """
     mask = section.mask
     if mask is None:
         return []
-    air, flat = np.ones(section.count), mask.on_laminate
-    depth = np.asarray(sum(ply.thickness for ply in section.foot_side))
-    top = section.thickness + mask.over_copper
+    flat, top = mask.on_laminate, np.maximum(mask.on_laminate, section.thickness + mask.over_copper)
     outer = outer_foot_edge(section) + flat
     zero = np.zeros(section.count)
     inner = zero if section.gap is None or merged else 0.5 * section.gap - flat
-    edges = [
-        Edge("mesa top", "dielectric", (inner, top), (outer, top), left_dk=air, right_dk=mask.dk),
-        Edge("mesa outer wall", "dielectric", (outer, top), (outer, flat), left_dk=air, right_dk=mask.dk),
-        _tail("flat tail", outer, flat, 2.0 * flat + 0.3 * depth, left=air, right=mask.dk),
-    ]
+
+    def face(name: str, start: tuple[FloatArray, FloatArray], stop: tuple[FloatArray, FloatArray]) -> Edge:
+        return Edge(name, "dielectric", start, stop, left_dk=np.ones(section.count), right_dk=mask.dk)
+
+    def tail(name: str, start: FloatArray, height: FloatArray) -> Edge:
+        scale = 2.0 * flat + 0.3 * np.asarray(sum(ply.thickness for ply in section.foot_side))
+        return replace(face(name, (start, height), (start + scale, height)), tail=True)
+
+    edges = []
     if section.gap is not None and not merged:
-        edges.append(Edge("mesa inner wall", "dielectric", (inner, flat), (inner, top), left_dk=air, right_dk=mask.dk))
-        edges.append(Edge("flat between", "dielectric", (zero, flat), (inner, flat), left_dk=air, right_dk=mask.dk))
-    return edges
-
-
-def _tail(
-    name: str, start: FloatArray, height: FloatArray, scale: FloatArray, *, left: FloatArray, right: FloatArray,
-) -> Edge:
-    return Edge(name, "dielectric", (start, height), (start + scale, height), tail=True, left_dk=left, right_dk=right)
+        edges.append(face("mesa inner wall", (inner, flat), (inner, top)))
+        edges.append(face("flat between", (zero, flat), (inner, flat)))
+    if section.ground_gap is None:
+        return [*edges, face("mesa top", (inner, top), (outer, top)),
+                face("mesa outer wall", (outer, top), (outer, flat)), tail("flat tail", outer, flat)]
+    ground = outer - flat + section.ground_gap - flat
+    if ground_merged:
+        end = ground + flat
+        return [*edges, face("mesa top", (inner, top), (end, top)), tail("ground mesa top", end, top)]
+    return [*edges, face("mesa top", (inner, top), (outer, top)), face("mesa outer wall", (outer, top), (outer, flat)),
+            face("flat beside", (outer, flat), (ground, flat)), face("ground mesa wall", (ground, flat), (ground, top)),
+            tail("ground mesa top", ground, top)]

@@ -98,7 +98,17 @@ class SpectralRest:
         lower, upper, cross = (factor[:, None, :] for factor in (self.lower, self.upper, self.cross))
         left = np.concatenate([down * lower + up * cross, up * upper + down * cross, wave * self.level[:, None, :]], 2)
         right = np.concatenate([down, up, wave], axis=2)
-        return np.asarray(-2.0 * (left @ right.transpose(0, 2, 1)))
+        result = -2.0 * (left @ right.transpose(0, 2, 1))
+        if np.any(self.compensation):
+            square = (self.distance**2)[:, None, None]
+            own = np.log((across[:, :, None] - across[:, None, :]) ** 2 + square)
+            mirrored = np.log((across[:, :, None] + across[:, None, :]) ** 2 + square)
+            result -= 0.5 * self.compensation[:, None, None] * (own + sign * mirrored)
+        return np.asarray(result)
+
+    def whole_matrix(self, across: FloatArray, height: FloatArray) -> FloatArray:
+        """Rest between all nodes of a section that is not mirrored: half the sum of even and odd."""
+        return 0.5 * (self.matrix(across, height, 1) + self.matrix(across, height, -1))
 
 
 def image_multiples(stack: FlatStack, body_dk: FloatArray) -> tuple[float, ...]:

@@ -6,7 +6,7 @@ Keeping the counts fixed keeps the impedance a smooth function of every dimensio
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -82,7 +82,7 @@ def _counts(edge: Edge, ratio: float, settings: SolverSettings, *, breadth: floa
     each as long as that way, and the polynomial needs nodes in proportion (seen against exact wide strips).
     """
     if edge.tail:
-        return settings.tail_nodes, 3 * settings.tail_nodes
+        return settings.tail_nodes, (6 if edge.conducts else 3) * settings.tail_nodes
     base = settings.copper_nodes if edge.conducts else settings.dielectric_nodes
     more = max(0.0, math.log2(ratio / 2.5)) if ratio > 0.0 else 0.0
     unknowns = _even(max(base + 4.0 * more, NODES_ALONG_BROAD_FACE * breadth))
@@ -101,6 +101,23 @@ def _wavenumbers(parts: Structure) -> int:
     across = max(float(np.abs(end[0]).max()) for edge in parts.edges for end in (edge.start, edge.stop))
     depth = float(np.max([parts.below.depth + parts.above.depth]))
     return math.ceil(16.0 + 0.5 * LAST_EXPONENT * 2.0 * across / shortest + 4.0 * math.sqrt(depth / shortest))
+
+
+def edge_counts(
+    edges: Sequence[Edge], settings: SolverSettings, *, levels: Sequence[float], bases: Mapping[str, float],
+) -> dict[str, tuple[int, int]]:
+    """Node counts of edges without mirror: their heights are counted from `bases` [m] by name.
+
+    levels : heights of the planes [m].
+    """
+    outlines = [(edge, _points(edge) + np.array([0.0, bases[edge.name]])) for edge in edges]
+    counts = {}
+    for edge, points in outlines:
+        length = float(edge.length[0])
+        flat = min((float(np.abs(points[:, 1] - level).min()) for level in levels), default=np.inf)
+        ways = [flat] + [_way(points, there, float(other.length[0])) for other, there in outlines if other is not edge]
+        counts[edge.name] = _counts(edge, length / max(min(ways), 1e-3 * length), settings, breadth=length / flat)
+    return counts
 
 
 def _crowding(parts: Structure) -> list[tuple[Edge, float, float]]:

@@ -9,6 +9,7 @@ Numerische Mathematik 58 (1990), pages 145-161.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -49,6 +50,13 @@ def tail_rule(count: int) -> Rule:
 
 
 @lru_cache(maxsize=256)
+def ground_rule(count: int) -> Rule:
+    """The rule for copper that reaches far out from a corner: x = scale * position, up to 50 scales."""
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    return Rule(*(read_only(values) for values in (nodes, weights, *_ground_map(nodes))))
+
+
+@lru_cache(maxsize=256)
 def refinement(count: int, fine_count: int) -> FloatArray:
     """Charges at `fine_count` nodes from charges at `count` nodes: shape (fine_count, count).
 
@@ -66,13 +74,23 @@ def self_potential(count: int, power: int) -> FloatArray:
     For an edge of half length `a` the logarithm of `a` is to be added to every entry. Integrated on panels that
     halve towards the singularity; good to about 1e-13.
     """
-    rule = graded_rule(count, power)
+    return _self_potential(graded_rule(count, power), lambda places: _graded_map(places, power)[0])
+
+
+@lru_cache(maxsize=16)
+def ground_self_potential(count: int) -> FloatArray:
+    """The same for copper that reaches far out; the logarithm of its scale is to be added to every entry."""
+    return _self_potential(ground_rule(count), lambda places: _ground_map(places)[0])
+
+
+def _self_potential(rule: Rule, position: Callable[[FloatArray], FloatArray]) -> FloatArray:
+    count = rule.nodes.size
     panel_nodes, panel_weights = np.polynomial.legendre.leggauss(20)
     matrix = np.empty((count, count))
     for row, node in enumerate(rule.nodes):
         distance, sign, weight = _halving_panels(float(node), panel_nodes, panel_weights)
         place = node + sign * distance
-        across = np.abs(_graded_map(place, power)[0] - rule.position[row])
+        across = np.abs(position(place) - rule.position[row])
         across = np.where(distance < 1e-6, rule.slope[row] * distance, across)
         matrix[row] = (weight * np.log(across)) @ _interpolation(rule.nodes, place)
     return read_only(matrix / rule.weights)
@@ -98,6 +116,13 @@ def _graded_map(nodes: FloatArray, power: int) -> tuple[FloatArray, FloatArray]:
     integral = polynomial.polyint(derivative)
     reach = polynomial.polyval(1.0, integral)
     return polynomial.polyval(nodes, integral) / reach, polynomial.polyval(nodes, derivative) / reach
+
+
+def _ground_map(nodes: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """u^3 / (1.02 - u) and its derivative in s, u = (1 + s) / 2: graded at the corner, 50 at the far end."""
+    near = 0.5 * (1.0 + nodes)
+    far = 1.02 - near
+    return near**3 / far, 0.5 * (3.0 * near**2 / far + near**3 / far**2)
 
 
 def _interpolation(nodes: FloatArray, places: FloatArray) -> FloatArray:

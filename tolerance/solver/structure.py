@@ -9,7 +9,7 @@ import numpy as np
 from tolerance.arrays import FloatArray, IntArray
 from tolerance.sections.section import Ply, Section
 from tolerance.solver.assembly import Medium, NearImage
-from tolerance.solver.edges import Edge, mask_edges, trace_edges
+from tolerance.solver.edges import Edge, ground_edges, mask_edges, trace_edges
 from tolerance.solver.kernels import FlatStack, far_images, plane_image, spectral_rest
 
 
@@ -25,14 +25,20 @@ class Structure:
     body_thickness: FloatArray | None
 
 
+#: What changes the edges of a section: bits of its topology.
+FLAT_ABOVE, MERGED, GROUND_MERGED, STRIP = 1, 2, 4, 8
+
+
 def topology(section: Section) -> IntArray:
     """A number for each section; sections with the same number have the same edges: shape (sections,)."""
-    result = 4 * (section.thickness == 0.0).astype(np.int64)
+    result = STRIP * (section.thickness == 0.0).astype(np.int64)
     if section.mask is not None:
         top = section.thickness + section.mask.over_copper
-        result += section.mask.on_laminate >= top
+        result += FLAT_ABOVE * (section.mask.on_laminate >= top)
         if section.gap is not None:
-            result += 2 * (section.gap <= 2.0 * section.mask.on_laminate)
+            result += MERGED * (section.gap <= 2.0 * section.mask.on_laminate)
+        if section.ground_gap is not None:
+            result += GROUND_MERGED * (section.ground_gap <= 2.0 * section.mask.on_laminate)
     return np.asarray(result, dtype=np.int64)
 
 
@@ -40,7 +46,7 @@ def structure(section: Section) -> Structure:
     """Edges and kernel of a batch of sections of one topology."""
     if section.mask is not None:
         mask = section.mask
-        if int(topology(section.rows(slice(0, 1)))[0]) % 2:  # the flat mask stands higher than the mesa
+        if _is(section, FLAT_ABOVE) and section.ground_gap is None:  # the flat mask stands higher than the mesa
             cover = Ply(mask.on_laminate - section.thickness, mask.dk)
             return _between_flat_plies(section, (cover,))
         return _open_above(section, mask.dk)
@@ -80,13 +86,20 @@ def shortest_remaining_way(parts: Structure) -> FloatArray:
     return np.asarray(np.minimum.reduce(ways), dtype=np.float64)
 
 
+def _is(section: Section, bit: int) -> bool:
+    """Whether a batch of one topology has this bit."""
+    return bool(int(topology(section.rows(slice(0, 1)))[0]) & bit)
+
+
 def _open_above(section: Section, body_dk: FloatArray) -> Structure:
     """The plane on the foot side; over the trace air, or a mask whose face carries unknowns."""
     zero = np.zeros(section.count)
-    edges = trace_edges(section)
+    edges = trace_edges(section) + ground_edges(section)
     if section.mask is not None:
-        edges += mask_edges(section, merged=bool(int(topology(section.rows(slice(0, 1)))[0]) & 2))
-    return Structure(edges=tuple(edges), images=(NearImage(None), NearImage(zero, touching=("foot",))),
+        flat = _is(section, FLAT_ABOVE)
+        edges += mask_edges(section, merged=flat or _is(section, MERGED),
+                            ground_merged=flat or _is(section, GROUND_MERGED))
+    return Structure(edges=tuple(edges), images=(NearImage(None), NearImage(zero, touching=("foot", "ground foot"))),
                      body_dk=body_dk, below=_stack(section.foot_side, plane=True), above=None, body_thickness=None)
 
 
@@ -96,11 +109,17 @@ def _between_flat_plies(section: Section, crest_side: tuple[Ply, ...]) -> Struct
     body_dk = crest_side[0].dk
     thickness = section.thickness + crest_side[0].thickness
     return Structure(
-        edges=tuple(trace_edges(section)),
-        images=(NearImage(None), NearImage(zero, touching=("foot",)), NearImage(thickness)),
+        edges=tuple(trace_edges(section) + ground_edges(section, reach=_ground_reach(section, crest_side))),
+        images=(NearImage(None), NearImage(zero, touching=("foot", "ground foot")), NearImage(thickness)),
         body_dk=body_dk, below=_stack(section.foot_side, plane=section.foot_plane),
         above=_stack(crest_side[1:], plane=section.crest_plane), body_thickness=thickness,
     )
+
+
+def _ground_reach(section: Section, crest_side: tuple[Ply, ...]) -> FloatArray:
+    """So far out nothing is left of the field between grounded copper and planes, which falls like e^(-pi x / h)."""
+    plies = sum(ply.thickness for ply in (*section.foot_side, *crest_side))
+    return np.asarray(3.0 * (plies + section.thickness))
 
 
 def _stack(plies: tuple[Ply, ...], *, plane: bool) -> FlatStack:

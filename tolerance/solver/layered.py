@@ -1,0 +1,234 @@
+"""Several traces anywhere between flat plies, without mirror symmetry: broadside pairs, shifted or not.
+
+Each trace lies in one layer of the stack, its foot on that layer's lower or upper face. Traces of one layer see each
+other by near images and a spectral rest, as in structure; traces of different layers by the spectral kernel alone,
+for whatever lies between them makes it smooth.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from tolerance.arrays import FloatArray
+from tolerance.solver.assembly import NearImage, near_system
+from tolerance.solver.edges import Edge
+from tolerance.solver.kernels import LAST_EXPONENT, FlatStack, spectral_rest
+from tolerance.solver.plan import SolverSettings, edge_counts
+
+
+@dataclass(frozen=True, slots=True)
+class PlacedTrace:
+    """A trace in layer number `layer` (from the bottom), its foot on that layer's upper face if `foot_up`.
+
+    foot_width, crest_width, thickness, centre : (sections,) [m]; `centre` is where its middle lies sideways.
+    """
+
+    layer: int
+    foot_up: bool
+    foot_width: FloatArray
+    crest_width: FloatArray
+    thickness: FloatArray
+    centre: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class LayeredSection:
+    """Flat layers from the bottom up, thicknesses [m] and Dk (sections,), ended by planes or by air, and traces."""
+
+    thicknesses: tuple[FloatArray, ...]
+    dks: tuple[FloatArray, ...]
+    bottom_plane: bool
+    top_plane: bool
+    traces: tuple[PlacedTrace, ...]
+
+    @property
+    def count(self) -> int:
+        """How many sections the batch holds."""
+        return int(self.traces[0].centre.shape[0])
+
+    def in_air(self) -> LayeredSection:
+        """The same copper with every Dk 1."""
+        return LayeredSection(self.thicknesses, tuple(np.ones_like(dk) for dk in self.dks), self.bottom_plane,
+                              self.top_plane, self.traces)
+
+    def below(self, layer: int) -> FlatStack:
+        """What lies below a layer, outwards."""
+        return FlatStack(self.thicknesses[:layer][::-1], self.dks[:layer][::-1], self.bottom_plane)
+
+    def above(self, layer: int) -> FlatStack:
+        """What lies above a layer, outwards."""
+        return FlatStack(self.thicknesses[layer + 1 :], self.dks[layer + 1 :], self.top_plane)
+
+
+@dataclass(frozen=True, slots=True)
+class LayeredPlan:
+    """Node counts by edge name, and nodes over the wavenumber for each pair of layers."""
+
+    counts: Mapping[str, tuple[int, int]]
+    wavenumbers: Mapping[tuple[int, int], int]
+
+
+def plan_layered(section: LayeredSection, settings: SolverSettings) -> LayeredPlan:
+    """The plan for sections like the first one."""
+    edges = [edge for trace in range(len(section.traces)) for edge in _edges(section, trace)]
+    heights = [section.thicknesses[0] * 0.0]
+    for thickness in section.thicknesses:
+        heights.append(heights[-1] + thickness)
+    bases = {name: float(heights[trace.layer][0]) for number, trace in enumerate(section.traces)
+             for name in (edge.name for edge in _edges(section, number))}
+    planes = [float(heights[0][0])] * section.bottom_plane + [float(heights[-1][0])] * section.top_plane
+    counts = edge_counts(edges, settings, levels=planes, bases=bases)
+    reach = max(float(np.abs(edge.start[0]).max()) for edge in edges) + max(
+        float(np.abs(edge.stop[0]).max()) for edge in edges)
+    layers = sorted({trace.layer for trace in section.traces})
+    depth = float(heights[-1][0])
+    wavenumbers = {}
+    for number, low in enumerate(layers):
+        for high in layers[number:]:
+            way = float((_way_left(section, low) if low == high else _way_between(section, low, high))[0])
+            wavenumbers[low, high] = math.ceil(16.0 + 0.5 * LAST_EXPONENT * reach / way + 4.0 * math.sqrt(depth / way))
+    return LayeredPlan(counts, wavenumbers)
+
+
+def capacitance_matrix(section: LayeredSection, plan: LayeredPlan) -> FloatArray:
+    """Capacitance matrix over vacuum permittivity: (sections, traces, traces), a row the charges for 1 V on a trace."""
+    layers = sorted({trace.layer for trace in section.traces})
+    order = [number for layer in layers for number, trace in enumerate(section.traces) if trace.layer == layer]
+    blocks = {layer: _Block.of(section, plan, layer) for layer in layers}
+    rows = []
+    for row in layers:
+        cells = []
+        for column in layers:
+            if row == column:
+                cells.append(blocks[row].matrix)
+            elif row < column:
+                cells.append(_between(section, plan, blocks[row], blocks[column]))
+            else:
+                cells.append(_between(section, plan, blocks[column], blocks[row]).transpose(0, 2, 1))
+        rows.append(np.concatenate(cells, axis=2))
+    matrix = np.concatenate(rows, axis=1)
+    sizes = [size for layer in layers for size in blocks[layer].sizes]
+    belongs = np.repeat(np.eye(len(order)), sizes, axis=1)  # (traces in order, unknowns)
+    wanted = np.broadcast_to(-2.0 * np.pi * belongs.T, (section.count, *belongs.T.shape))
+    charges = np.linalg.solve(matrix, wanted)
+    result = np.empty((section.count, len(order), len(order)))
+    result[:, np.array(order)[:, None], np.array(order)[None, :]] = belongs @ charges
+    return result
+
+
+@dataclass(frozen=True, slots=True)
+class _Block:
+    """The traces of one layer: M over Dk among themselves, and their nodes; heights from the layer's lower face."""
+
+    layer: int
+    matrix: FloatArray
+    across: FloatArray
+    height: FloatArray
+    sizes: tuple[int, ...]
+
+    @staticmethod
+    def of(section: LayeredSection, plan: LayeredPlan, layer: int) -> _Block:
+        numbers = [number for number, trace in enumerate(section.traces) if trace.layer == layer]
+        groups = [_edges(section, number) for number in numbers]
+        edges = [edge for group in groups for edge in group]
+        dk, thickness = section.dks[layer], section.thicknesses[layer]
+        below, above = section.below(layer), section.above(layer)
+        feet = {up: tuple(f"{number} foot" for number in numbers if section.traces[number].foot_up == up)
+                for up in (False, True)}
+        images = (NearImage(None), NearImage(np.zeros(section.count), touching=feet[False]),
+                  NearImage(thickness, touching=feet[True]))
+        system = near_system(edges, images, counts=[plan.counts[edge.name] for edge in edges], mirror=False)
+        factors = (np.ones(section.count), below.first_reflection(dk), above.first_reflection(dk))
+        matrix = sum((factor[:, None, None] * own for factor, own in zip(factors, system.own, strict=True)),
+                     start=np.zeros((section.count, 1, 1)))
+        rest = spectral_rest(below=below, above=above, body_dk=dk, body_thickness=thickness,
+                             distance=_way_left(section, layer), count=plan.wavenumbers[layer, layer])
+        matrix = matrix + rest.whole_matrix(system.across, system.height)
+        sizes = tuple(sum(plan.counts[edge.name][0] for edge in group) for group in groups)
+        return _Block(layer, matrix / dk[:, None, None], system.across, system.height, sizes)
+
+
+def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Block) -> FloatArray:
+    """M over Dk of points in the lower and charges in the upper layer: (sections, lower nodes, upper nodes).
+
+    The wave of a charge in the upper layer goes down through every layer between, each with what comes back from
+    further below, and is taken up in the lower one.
+    """
+    nodes, weights = np.polynomial.legendre.leggauss(plan.wavenumbers[low.layer, high.layer])
+    last = LAST_EXPONENT / _way_between(section, low.layer, high.layer)
+    wavenumber = last[:, None] * (0.5 * (1.0 + nodes)) ** 2
+    weight = weights * 2.0 / (1.0 + nodes)
+
+    def through(layer: int) -> FloatArray:
+        return np.exp(-wavenumber * section.thicknesses[layer][:, None])
+
+    down = section.below(high.layer).reflection(wavenumber, section.dks[high.layer])
+    up = section.above(high.layer).reflection(wavenumber, section.dks[high.layer])
+    factor = (1.0 + down) / (1.0 - down * up * through(high.layer) ** 2)
+    for layer in range(high.layer - 1, low.layer, -1):
+        back = section.below(layer).reflection(wavenumber, section.dks[layer])
+        factor = factor * through(layer) * (1.0 + back) / (1.0 + back * through(layer) ** 2)
+    back = section.below(low.layer).reflection(wavenumber, section.dks[low.layer])
+    factor = factor / (1.0 + back * through(low.layer) ** 2)
+    low_thickness, high_thickness = section.thicknesses[low.layer], section.thicknesses[high.layer]
+    k = wavenumber[:, None, :]
+    taken = np.exp(-k * (low_thickness[:, None] - low.height)[:, :, None]) + (back * through(low.layer))[
+        :, None, :] * np.exp(-k * low.height[:, :, None])
+    sent = np.exp(-k * high.height[:, :, None]) + (up * through(high.layer))[:, None, :] * np.exp(
+        -k * (high_thickness[:, None] - high.height)[:, :, None])
+    taken = taken * (weight * factor / section.dks[high.layer][:, None])[:, None, :]
+    phase_low, phase_high = k * low.across[:, :, None], k * high.across[:, :, None]
+    left = np.concatenate([taken * np.cos(phase_low), taken * np.sin(phase_low)], axis=2)
+    right = np.concatenate([sent * np.cos(phase_high), sent * np.sin(phase_high)], axis=2)
+    return np.asarray(-(left @ right.transpose(0, 2, 1)))
+
+
+def _edges(section: LayeredSection, number: int) -> list[Edge]:
+    """Faces of one trace, heights from the lower face of its layer."""
+    trace = section.traces[number]
+    thickness = section.thicknesses[trace.layer]
+    foot = thickness if trace.foot_up else np.zeros(section.count)
+    crest = foot - trace.thickness if trace.foot_up else trace.thickness
+    half_foot, half_crest = 0.5 * trace.foot_width, 0.5 * trace.crest_width
+    left, right = trace.centre - half_foot, trace.centre + half_foot
+    inner, outer = trace.centre - half_crest, trace.centre + half_crest
+    return [
+        Edge(f"{number} foot", "copper", (left, foot), (right, foot)),
+        Edge(f"{number} right side", "copper", (right, foot), (outer, crest)),
+        Edge(f"{number} crest", "copper", (inner, crest), (outer, crest)),
+        Edge(f"{number} left side", "copper", (left, foot), (inner, crest)),
+    ]
+
+
+def _extent(section: LayeredSection, layer: int) -> tuple[FloatArray, FloatArray]:
+    """Lowest and highest copper in a layer, from its lower face [m]."""
+    lows, highs = [], []
+    for trace in section.traces:
+        if trace.layer == layer:
+            thickness = section.thicknesses[layer]
+            lows.append(thickness - trace.thickness if trace.foot_up else 0.0 * thickness)
+            highs.append(thickness if trace.foot_up else trace.thickness)
+    return np.minimum.reduce(lows), np.maximum.reduce(highs)
+
+
+def _way_left(section: LayeredSection, layer: int) -> FloatArray:
+    """Shortest ray within one layer that its near images leave out [m]."""
+    low, high = _extent(section, layer)
+    thickness = section.thicknesses[layer]
+    ways = [2.0 * thickness - (high - low)]
+    if layer > 0:
+        ways.append(2.0 * (low + section.thicknesses[layer - 1]))
+    if layer + 1 < len(section.thicknesses):
+        ways.append(2.0 * (thickness - high + section.thicknesses[layer + 1]))
+    return np.asarray(np.minimum.reduce(ways))
+
+
+def _way_between(section: LayeredSection, low: int, high: int) -> FloatArray:
+    """Shortest upright way from the copper of one layer to that of another [m]."""
+    between: Sequence[FloatArray] = section.thicknesses[low + 1 : high]
+    top = section.thicknesses[low] - _extent(section, low)[1]
+    return np.asarray(sum(between, start=top + _extent(section, high)[0]))
