@@ -22,8 +22,9 @@ TEXT = README.read_text(encoding="utf-8")
 
 #: key or table that may be refused as not acted on yet -> the README's words for it
 REFUSAL_WORDS = {
-    "frequency": "`frequency`", "resin_content": "resin and glass", "partner": "`partner`", "ground_gap": "`ground_gap`",
-    "level": "`level`", "shape": "measured shapes", "offers": "`[[offers]]`", "test": "`[test]`",
+    "frequency": "`frequency`", "resin_content": "resin and glass", "partner": "`partner`",
+    "ground_gap": "`ground_gap`", "level": "`level`", "shape": "measured shapes",
+    "offers": "`[[offers]]`", "test": "`[test]`",
 }
 RESIN_KEYS = {"resin_dk", "glass_dk", "glass_areal_weight"}  # told with resin_content
 
