@@ -1,0 +1,1 @@
+"""Measurements of speed, run by hand; none of them is a test."""
