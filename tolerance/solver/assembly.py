@@ -79,6 +79,14 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
 
     air : copper alone, every Dk 1.
     """
+    matrix = full_matrix(system, medium, sign=sign, air=air)
+    wanted = np.zeros((*matrix.shape[:2], 1))
+    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
+
+
+def full_matrix(system: System, medium: Medium, *, sign: int, air: bool) -> FloatArray:
+    """The matrix of all conditions, even (`sign` 1) or odd (-1): (sections, unknowns, unknowns)."""
     size = system.copper if air else system.across.shape[1]
     matrix = np.zeros((system.across.shape[0], size, size))
     for factor, own, mirrored in zip(medium.factors, system.own, system.mirrored, strict=True):
@@ -90,9 +98,7 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
         matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
     if not air:
         _turn_into_interface_conditions(matrix, system)
-    wanted = np.zeros((matrix.shape[0], size, 1))
-    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
+    return matrix
 
 
 def _image_matrices(
