@@ -28,7 +28,7 @@ def _check_line(prepared: PreparedLine, *, formulas: bool) -> NominalLine:
         effective_dk=float(shown.effective_dk[0]), delay=float(shown.delay[0]),
         common_mode=0.5 * float(modes[EVEN].impedance[0]) if pair else None,
         even_effective_dk=float(modes[EVEN].effective_dk[0]) if pair else None,
-        dimensions=tuple(dimensions), formulas=_opinions(prepared) if formulas else None,
+        dimensions=tuple(dimensions), formulas=_opinions(prepared) if formulas else None, mode=prepared.mode,
     )
 
 
