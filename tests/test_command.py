@@ -75,6 +75,9 @@ def test_run_writes_workbook_and_figures(board: Path, capsys: pytest.CaptureFixt
 def test_a_line_that_is_renamed_leaves_no_old_figure_behind_and_what_is_not_ours_stays(board: Path) -> None:
     folder = board.parent / "result"
     assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0
+    names = {path.name for path in folder.iterdir()}
+    assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0  # figures the same, byte for byte
+    assert {path.name for path in folder.iterdir()} == names
     (folder / "notes.png").write_bytes(b"mine")
     (folder / "clock-pair.png").write_bytes(b"changed by hand")
     board.write_text(changed(BOARD, ("radio feed", "antenna feed"), ("clock pair", "clock")), encoding="utf-8")

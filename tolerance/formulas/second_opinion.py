@@ -58,6 +58,8 @@ def second_opinions(section: Section, mode: int) -> list[SecondOpinion]:
 def why_none(section: Section) -> str:
     """Why no formula here speaks about the first row of `section`; empty where some do."""
     one = section.rows(slice(0, 1))
+    if one.ground_gap is not None:
+        return "grounded copper beside it"
     if one.mask is not None:
         return "solder mask covers it"
     if not one.foot_plane:
