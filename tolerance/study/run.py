@@ -34,6 +34,7 @@ from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
+from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.yields import Limits, LineYield, histogram, judge
@@ -90,24 +91,31 @@ def run(
     predicted = _on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
-    judged = judge(
-        np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
-        tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
-        replicates=draws.replicates, impedance_error=np.array([line.prediction.held_out_error for line in predicted]),
+    sample = LimitSample(
+        impedance=np.stack([line.impedance for line in predicted]),
+        possible=np.stack([line.possible for line in predicted]),
+        target=np.array([line.prepared.line.target for line in predicted]),
+        error=np.array([line.prediction.held_out_error for line in predicted]), replicates=draws.replicates,
     )
+    judged = judge(
+        sample.impedance, sample.possible,
+        tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
+        replicates=draws.replicates, impedance_error=sample.error,
+    )
+    by_limit, together = yields_by_limit(sample, limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
+                                         target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
-
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
         return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
     drivers = _on_all_cores(rank, ranking, "ranking drivers", tell)
-    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, strict=True)]
+    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, by_limit, strict=True)]
     clock.lap("drivers")
     return RunResult(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
-        inside=judged.inside, impossible=judged.impossible, lines=tuple(results),
+        inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock),
     )
 
@@ -207,7 +215,9 @@ def _on_all_cores(
     return results
 
 
-def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...]) -> LineResult:
+def _line_result(
+    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit,
+) -> LineResult:
     prepared = line.prepared
     edges, counts = histogram(line.impedance[line.possible])
     return LineResult(
@@ -216,7 +226,8 @@ def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver,
         low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=nominal_impedance(prepared),
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
-        spread=Spread(edges, counts), prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
+        spread=Spread(edges, counts), by_limit=by_limit,
+        prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
         drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
     )
 
