@@ -23,6 +23,7 @@ from tolerance.results import LineResult, Record, RunResult, Spread
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.solver.plan import SolverSettings
+from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.yields import Limits, LineYield, histogram, judge
@@ -65,12 +66,20 @@ def run(
     predicted = _on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
+    sample = LimitSample(
+        impedance=np.stack([line.impedance for line in predicted]),
+        possible=np.stack([line.possible for line in predicted]),
+        target=np.array([line.prepared.line.target for line in predicted]),
+        error=np.array([line.prediction.held_out_error for line in predicted]), replicates=draws.replicates,
+    )
     judged = judge(
-        np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
+        sample.impedance, sample.possible,
         tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
-        replicates=draws.replicates, impedance_error=np.array([line.prediction.held_out_error for line in predicted]),
+        replicates=draws.replicates, impedance_error=sample.error,
         verdict_error=np.array([line.verdict_error for line in predicted]),
     )
+    by_limit, together = yields_by_limit(sample, limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
+                                         target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
@@ -78,11 +87,11 @@ def run(
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
     drivers = _on_all_cores(rank, ranking, "ranking drivers", tell)
-    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, strict=True)]
+    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, by_limit, strict=True)]
     clock.lap("drivers")
     return RunResult(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
-        inside=judged.inside, impossible=judged.impossible, lines=tuple(results),
+        inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock),
     )
 
@@ -108,7 +117,9 @@ def _on_all_cores(
     return results
 
 
-def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...]) -> LineResult:
+def _line_result(
+    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit,
+) -> LineResult:
     prepared = line.prepared
     edges, counts = histogram(line.impedance[line.possible])
     return LineResult(
@@ -117,7 +128,7 @@ def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver,
         low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=line.nominal,
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
-        spread=Spread(edges, counts), prediction=line.prediction, certificate=line.certificate,
+        spread=Spread(edges, counts), by_limit=by_limit, prediction=line.prediction, certificate=line.certificate,
         drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
     )
 
