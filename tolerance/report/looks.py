@@ -24,7 +24,7 @@ BODY_EDGE = "#4a5f86"
 FAIL = "#a3184b"  # coupons that fail, and the word that says so
 FAIL_FILL = "#e9b8c8"
 COPPER = {"trace": "#1d2433", "ground": "#4b5267", "plane": "#4b5267"}
-MATERIAL = {"mask": "#cbbde4", "prepreg": "#f6f1e4", "core": "#dbe3ec"}
+MATERIAL = {"mask": "#cbbde4", "prepreg": "#f6f1e4", "core": "#dbe3ec", "resin": "#ecdcb0"}
 CORE_GRAIN = "#aebccc"
 AIR = "#ffffff"
 
