@@ -11,6 +11,7 @@ import math
 from typing import TYPE_CHECKING
 
 from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
+from tolerance.report.measured import measured_object
 
 if TYPE_CHECKING:
     from tolerance.results import DirectCheck, Driver, Interval, LineResult, RunResult
@@ -30,6 +31,7 @@ def check_json(result: CheckResult) -> str:
 
 def run_object(result: RunResult) -> dict[str, object]:
     """The same as plain Python values."""
+    measured = {"measured": [measured_object(one) for one in result.measured]} if result.measured else {}
     return {
         "title": result.title,
         "seed": int(result.seed),
@@ -38,6 +40,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),
         "solver_runs": int(result.record.solver_runs),
+        **measured,
         "lines": [_line(line) for line in result.lines],
     }
 

@@ -15,6 +15,7 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.files import put_in_place
+from tolerance.report.measured import intervals_of, measured_table
 from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
 from tolerance.report.understood import board_thickness, drawn_table, stackup_table, variation_table
 from tolerance.report.wording import CAUTION, length_text, share_range_text, share_text, trimmed
@@ -51,6 +52,7 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     for name, table in (
         ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
         ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
+        *([("Measured data", measured_table(result, scenario.report.lengths))] if result.measured else []),
     ):
         sheet = book.create_sheet(name)
         _write_table(sheet, table, top=1)
@@ -74,7 +76,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
          _font(12, bold=bool(missing), color=FAIL if missing else INK)),
         (f"{len(scenario.layers)} layers, {length_text(board_thickness(scenario), scenario.report.lengths)} thick"
          + (f"; {result.impossible:,} coupons cannot exist and count as failing" if result.impossible else "")
-         + ". Yield: share of coupons inside the limits; its ends: 95 % interval of the computation alone.",
+         + f". Yield: share of coupons inside the limits; its ends: 95 % interval of {intervals_of(result)}.",
          _font()),
         (CAUTION, _font(italic=True)),
     ]

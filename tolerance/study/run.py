@@ -36,8 +36,10 @@ from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
-from tolerance.statistics.yields import Limits, LineYield, histogram, judge
+from tolerance.statistics.sampling import Figures, widened_by_sampling
+from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
 from tolerance.study.lines import PreparedLine, nominal_impedance, prepare
+from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.surrogate.coordinates import Coordinates
 from tolerance.surrogate.polynomial import HIGHEST_DEGREE, count_runs
 from tolerance.surrogate.prediction import HELD_OUT_RUNS, Predictor, fit_predictor, largest_error_wanted
@@ -59,6 +61,10 @@ class PredictedLine:
     possible: BoolArray
     direct: DirectCheck | None
 
+    def again(self, draws: ProcessDraws) -> tuple[BoolArray, FloatArray]:
+        """Which sections of other draws can exist, and their predicted impedances [ohm]."""
+        return self.prepared.section(draws).possible, self.predictor.impedance(draws.germ)
+
 
 def run(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, direct: int = 0,
@@ -74,7 +80,7 @@ def run(
     coupons = scenario.evaluation.coupons if coupons is None else coupons
     seed = scenario.evaluation.seed if seed is None else seed
     seed = secrets.randbelow(2**31) if seed is None else seed
-    process_chance, training_chance, driver_chance = np.random.default_rng(seed).spawn(3)
+    process_chance, training_chance, driver_chance, sampling_chance = np.random.default_rng(seed).spawn(4)
     clock = _Clock()
 
     process = process_of(scenario)
@@ -96,7 +102,8 @@ def run(
         replicates=draws.replicates, impedance_error=np.array([line.prediction.held_out_error for line in predicted]),
     )
     clock.lap("yield")
-
+    judged = _with_doubt_of_readings(judged, predicted, draws, sampling_chance, tell)
+    clock.lap("doubt of readings")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
         return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
@@ -109,7 +116,25 @@ def run(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside, impossible=judged.impossible, lines=tuple(results),
         record=_record(scenario, settings, results, draws.replicates, clock),
+        measured=measured_inputs(scenario, process),
     )
+
+
+def _with_doubt_of_readings(
+    judged: Judgement, predicted: Sequence[PredictedLine], draws: ProcessDraws, chance: np.random.Generator,
+    tell: Progress,
+) -> Judgement:
+    """The judgement with what the number of readings of measured data leaves open in its intervals."""
+    if not has_measured(draws.process):
+        return judged
+    limits = [Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted]
+    lines = [line.again for line in predicted]
+
+    def judge_again(chance_of_law: np.random.Generator) -> Figures:
+        return judged_again(lines, limits, draws, chance_of_law)
+
+    others = _on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
+    return widened_by_sampling(judged, judged_again(lines, limits, draws, None), others)
 
 
 def predict_line(

@@ -76,7 +76,10 @@ class Coordinates:
         for position, column in enumerate(self.columns):
             law = self.process.variables[column].members[0][1]
             share = uniforms[:, position]
-            germ[:, column] = ndtri(share) if law.shape == "uniform" else TRAINING_REACH * (2.0 * share - 1.0)
+            if law.measured is not None:
+                germ[:, column] = law.measured.spread_germs(share, reach=TRAINING_REACH)
+            else:
+                germ[:, column] = ndtri(share) if law.shape == "uniform" else TRAINING_REACH * (2.0 * share - 1.0)
         return germ
 
 
@@ -85,6 +88,8 @@ def _coordinate(variable: Variable, germ: FloatArray, width: float) -> FloatArra
     each, law = variable.members[0]
     reference = width if each.property == ETCH else law.nominal
     reach = np.inf if law.shape == "uniform" else TRAINING_REACH
+    if law.measured is not None:
+        reach = TRAINING_REACH * law.measured.widest
     if law.shape == "lognormal":
         return germ / reach
     low, high = quantile(law, np.array([-reach, reach]), reference=reference)
