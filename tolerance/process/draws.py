@@ -16,7 +16,7 @@ from scipy.stats import qmc
 from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.process.laws import Law, quantile
 from tolerance.process.measured import measured_law
-from tolerance.process.resin import RESIN_MAKES, Resin, resins_of, with_causes
+from tolerance.process.resin import Resin, resins_of, through_resin, with_causes
 from tolerance.process.values import nominals_of
 from tolerance.scenario.properties import Property, members
 from tolerance.scenario.tables import Scenario, Variation
@@ -73,10 +73,7 @@ class ProcessDraws:
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name` ("P1.thickness"), shape (coupons,). KeyError where there is none."""
-        layer, _, item = name.rpartition(".")
-        resin = self.process.resins.get(layer) if item in RESIN_MAKES else None
-        drawn = self._drawn(name)
-        return drawn if resin is None else resin.applied(item, drawn, self._drawn)
+        return through_resin(name, self._drawn, self.process.resins)
 
     def _drawn(self, name: str) -> FloatArray:
         """Values of the property by its own law alone, (coupons,)."""

@@ -77,14 +77,6 @@ class MeasuredLaw:
         place = np.asarray(np.log(value), dtype=np.float64) if self.method == "lognormal" else value
         return _lines(place, self.values, self.germs)
 
-    def spread_germs(self, share: FloatArray, *, reach: float) -> FloatArray:
-        """Germs whose values lie evenly between those at -reach and reach times `widest`; share in [0, 1]."""
-        ends = reach * self.widest * np.array([-1.0, 1.0])
-        if self.deviation == 0.0:
-            return np.asarray(ends[0] + share * (ends[1] - ends[0]), dtype=np.float64)
-        low, high = _lines(ends, self.germs, self.values)
-        return _lines(low + share * (high - low), self.values, self.germs)
-
     def resampled(self, germ: FloatArray, chance: np.random.Generator) -> FloatArray:
         """Germs (coupons,) whose values in this law are those of `germ` in a law that another sample would give."""
         if self.deviation == 0.0:
