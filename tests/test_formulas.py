@@ -7,6 +7,7 @@ keeps its authors' claim. Claims and ranges are quoted from memory of the papers
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
+from dataclasses import replace
 from itertools import product
 
 import numpy as np
@@ -216,6 +217,8 @@ def test_second_opinions_on_pairs_tell_why_one_does_not_apply() -> None:
     (microstrip(foot=2.0, crest=2.0, thickness=0.2, height=1.0, dk=4.0, lower_ply=(0.5, 3.5)), "different Dk"),
     (stripline(foot=1.0, crest=1.0, thickness=0.1, core=(1.0, 4.0), prepreg=(1.0, 3.0)), "different Dk"),
     (stripline(foot=1.0, crest=1.0, thickness=0.1, core=(1.0, 4.0), prepreg=(1.5, 4.0)), "midway"),
+    (replace(microstrip(foot=2.0, crest=2.0, thickness=0.2, height=1.0, dk=4.0), ground_gap=np.ones(1)), "grounded"),
+    (replace(microstrip(foot=2.0, crest=2.0, thickness=0.2, height=1.0, dk=4.0), foot_plane=False), "no plane"),
 ])
 def test_no_opinion_where_no_formula_holds(section: Section, reason: str) -> None:
     assert second_opinions(section, EVEN) == []

@@ -326,12 +326,6 @@ def test_tables_that_are_not_acted_on_are_refused(part: str, addition: str) -> N
 @pytest.mark.parametrize(("part", "changes"), [
     ('frequency = "1 GHz": is part of the format but not yet',
      [("seed = 1", 'frequency = "1 GHz"'), *[(f"dk = {dk}", f"DK {dk}\ndf = 0.02") for dk in (3.5, "4.0", 4.2, 3.9)]]),
-    ('partner = "L5"', [
-        ('gap = "150 um"', 'partner = "L5"'),
-        ('[[layers]]\nname = "L4"',
-         '[[layers]]\nname = "L5"\nkind = "copper"\nuse = "signal"\nfoil = "1 oz"\nfoot = "up"\n'
-         '[[layers]]\nname = "P3"\nkind = "prepreg"\nthickness = "90 um"\ndk = 4.1\n[[layers]]\nname = "L4"')]),
-    ('ground_gap = "200 um"', [('gap = "150 um"', 'gap = "150 um"\nground_gap = "200 um"')]),
     ('level = "lot"', [("together = true", 'level = "lot"')]),
 ])
 def test_keys_that_are_not_acted_on_are_refused(part: str, changes: list[tuple[str, str]]) -> None:

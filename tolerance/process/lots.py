@@ -17,11 +17,12 @@ from __future__ import annotations
 
 import numpy as np
 
-from tolerance.arrays import FloatArray, read_only
+from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.errors import InputError
 from tolerance.process.draws import REPLICATES, LotSize, Process, ProcessDraws, correlate, sobol_normals
 
 LARGEST_SAMPLE = 2**24  # coupons, as the format has it for samples without lots
+FEWEST_LOTS = 256  # of each replicate, where coupons that were not drawn as lots are put together to some
 
 
 def count_lots(coupons: int, size: LotSize, *, replicates: int = REPLICATES) -> int:
@@ -66,6 +67,24 @@ def _lots(process: Process, size: LotSize, lots: int, chance: np.random.Generato
     moved = np.flatnonzero(shares[2])
     germ[..., moved] += np.sqrt(shares[2, moved]) * coupon_chance.standard_normal((*germ.shape[:3], moved.size))
     return germ.reshape(-1, len(process.variables))
+
+
+def rows_as_lots(draws: ProcessDraws, size: LotSize, chance: np.random.Generator) -> IntArray:
+    """Rows of the sample as lots (lots, coupons of a lot), replicate by replicate.
+
+    Lots that were drawn as such stay; else every lot is coupons of one replicate at random, independent of each other
+    (neighbours in a Sobol' sequence are not). Raises InputError where such lots are too large.
+    """
+    if draws.lots is not None:
+        return np.arange(draws.coupons).reshape(-1, draws.lots.coupons)
+    block = draws.coupons // draws.replicates
+    most = LARGEST_SAMPLE // (size.coupons * draws.replicates)
+    if most == 0:
+        raise InputError(f"a lot of {size.coupons} coupons (panels_per_lot x coupons_per_panel) is too large: "
+                         f"{draws.replicates} of them are above the {LARGEST_SAMPLE} coupons of a sample")
+    lots = max(block // size.coupons, min(FEWEST_LOTS, most))
+    rows = chance.integers(0, block, size=(draws.replicates, lots, size.coupons))
+    return (rows + block * np.arange(draws.replicates)[:, None, None]).reshape(-1, size.coupons)
 
 
 def level_shares(process: Process) -> FloatArray:

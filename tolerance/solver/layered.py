@@ -14,54 +14,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from tolerance.arrays import FloatArray
+from tolerance.sections.layered import LayeredSection
 from tolerance.solver.assembly import NearImage, near_system
 from tolerance.solver.edges import Edge
 from tolerance.solver.kernels import LAST_EXPONENT, FlatStack, spectral_rest
 from tolerance.solver.plan import SolverSettings, edge_counts
-
-
-@dataclass(frozen=True, slots=True)
-class PlacedTrace:
-    """A trace in layer number `layer` (from the bottom), its foot on that layer's upper face if `foot_up`.
-
-    foot_width, crest_width, thickness, centre : (sections,) [m]; `centre` is where its middle lies sideways.
-    """
-
-    layer: int
-    foot_up: bool
-    foot_width: FloatArray
-    crest_width: FloatArray
-    thickness: FloatArray
-    centre: FloatArray
-
-
-@dataclass(frozen=True, slots=True)
-class LayeredSection:
-    """Flat layers from the bottom up, thicknesses [m] and Dk (sections,), ended by planes or by air, and traces."""
-
-    thicknesses: tuple[FloatArray, ...]
-    dks: tuple[FloatArray, ...]
-    bottom_plane: bool
-    top_plane: bool
-    traces: tuple[PlacedTrace, ...]
-
-    @property
-    def count(self) -> int:
-        """How many sections the batch holds."""
-        return int(self.traces[0].centre.shape[0])
-
-    def in_air(self) -> LayeredSection:
-        """The same copper with every Dk 1."""
-        return LayeredSection(self.thicknesses, tuple(np.ones_like(dk) for dk in self.dks), self.bottom_plane,
-                              self.top_plane, self.traces)
-
-    def below(self, layer: int) -> FlatStack:
-        """What lies below a layer, outwards."""
-        return FlatStack(self.thicknesses[:layer][::-1], self.dks[:layer][::-1], self.bottom_plane)
-
-    def above(self, layer: int) -> FlatStack:
-        """What lies above a layer, outwards."""
-        return FlatStack(self.thicknesses[layer + 1 :], self.dks[layer + 1 :], self.top_plane)
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,7 +93,7 @@ class _Block:
         groups = [_edges(section, number) for number in numbers]
         edges = [edge for group in groups for edge in group]
         dk, thickness = section.dks[layer], section.thicknesses[layer]
-        below, above = section.below(layer), section.above(layer)
+        below, above = _below(section, layer), _above(section, layer)
         feet = {up: tuple(f"{number} foot" for number in numbers if section.traces[number].foot_up == up)
                 for up in (False, True)}
         images = (NearImage(None), NearImage(np.zeros(section.count), touching=feet[False]),
@@ -166,13 +123,13 @@ def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Blo
     def through(layer: int) -> FloatArray:
         return np.exp(-wavenumber * section.thicknesses[layer][:, None])
 
-    down = section.below(high.layer).reflection(wavenumber, section.dks[high.layer])
-    up = section.above(high.layer).reflection(wavenumber, section.dks[high.layer])
+    down = _below(section, high.layer).reflection(wavenumber, section.dks[high.layer])
+    up = _above(section, high.layer).reflection(wavenumber, section.dks[high.layer])
     factor = (1.0 + down) / (1.0 - down * up * through(high.layer) ** 2)
     for layer in range(high.layer - 1, low.layer, -1):
-        back = section.below(layer).reflection(wavenumber, section.dks[layer])
+        back = _below(section, layer).reflection(wavenumber, section.dks[layer])
         factor = factor * through(layer) * (1.0 + back) / (1.0 + back * through(layer) ** 2)
-    back = section.below(low.layer).reflection(wavenumber, section.dks[low.layer])
+    back = _below(section, low.layer).reflection(wavenumber, section.dks[low.layer])
     factor = factor / (1.0 + back * through(low.layer) ** 2)
     low_thickness, high_thickness = section.thicknesses[low.layer], section.thicknesses[high.layer]
     k = wavenumber[:, None, :]
@@ -185,6 +142,16 @@ def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Blo
     left = np.concatenate([taken * np.cos(phase_low), taken * np.sin(phase_low)], axis=2)
     right = np.concatenate([sent * np.cos(phase_high), sent * np.sin(phase_high)], axis=2)
     return np.asarray(-(left @ right.transpose(0, 2, 1)))
+
+
+def _below(section: LayeredSection, layer: int) -> FlatStack:
+    """What lies below a layer, outwards."""
+    return FlatStack(section.thicknesses[:layer][::-1], section.dks[:layer][::-1], section.bottom_plane)
+
+
+def _above(section: LayeredSection, layer: int) -> FlatStack:
+    """What lies above a layer, outwards."""
+    return FlatStack(section.thicknesses[layer + 1 :], section.dks[layer + 1 :], section.top_plane)
 
 
 def _edges(section: LayeredSection, number: int) -> list[Edge]:

@@ -7,9 +7,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from tolerance.arrays import FloatArray
+from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
 from tolerance.solver.assembly import charge, near_system
-from tolerance.solver.plan import Plan
+from tolerance.solver.layered import LayeredPlan, capacitance_matrix, plan_layered
+from tolerance.solver.plan import Plan, SolverSettings, plan_for
 from tolerance.solver.structure import media, structure, topology
 
 SPEED_OF_LIGHT = 299792458.0  # [m/s], exact by definition of the metre
@@ -43,11 +45,27 @@ class ModeSolution:
         return np.asarray(np.sqrt(self.effective_dk) / SPEED_OF_LIGHT)
 
 
-def solve_modes(section: Section, plan: Plan, *, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
+AnySection = Section | LayeredSection
+AnyPlan = Plan | LayeredPlan
+
+
+def plan_line(section: AnySection, settings: SolverSettings) -> AnyPlan:
+    """The plan for a line whose nominal section is the first of `section`."""
+    return plan_layered(section, settings) if isinstance(section, LayeredSection) else plan_for(section, settings)
+
+
+def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
     """Solve for even (1) and odd (-1) excitation; a single line has mode 1 only.
 
+    Of a broadside pair, whose traces may be unequal, odd stands for equal and opposite charges (twice the capacitance
+    1 / (q' C^-1 q), q = (1, -1)), even for both traces tied (half of their capacitance), so that the differential
+    impedance is twice the odd mode's and the common one half the even mode's, as for any pair.
     Every section must be possible (see Section.possible). The result does not depend on how sections are batched.
     """
+    if isinstance(section, LayeredSection):
+        assert isinstance(plan, LayeredPlan)
+        return _solve_layered(section, plan, modes)
+    assert isinstance(plan, Plan)
     count = section.count
     filled = {mode: np.empty(count) for mode in modes}
     air = {mode: np.empty(count) for mode in modes}
@@ -60,6 +78,26 @@ def solve_modes(section: Section, plan: Plan, *, modes: tuple[int, ...]) -> dict
             for mode, (in_medium, in_air) in _solve_batch(section.rows(part), plan, modes).items():
                 filled[mode][part], air[mode][part] = in_medium, in_air
     return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
+
+
+def _solve_layered(section: LayeredSection, plan: LayeredPlan, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
+    unknowns = sum(count[0] for count in plan.counts.values())
+    size = max(1, 200_000 // unknowns**2)
+    parts: dict[int, list[tuple[FloatArray, FloatArray]]] = {mode: [] for mode in modes}
+    for start in range(0, section.count, size):
+        batch = section.rows(slice(start, start + size))
+        matrices = capacitance_matrix(batch, plan), capacitance_matrix(batch.in_air(), plan)
+        for mode in modes:
+            parts[mode].append((_mode_capacitance(matrices[0], mode), _mode_capacitance(matrices[1], mode)))
+    return {mode: ModeSolution(*(np.concatenate(column) for column in zip(*parts[mode], strict=True)))
+            for mode in modes}
+
+
+def _mode_capacitance(matrix: FloatArray, mode: int) -> FloatArray:
+    if mode > 0:
+        return np.asarray(0.5 * matrix.sum(axis=(1, 2)))
+    inverse = np.linalg.inv(matrix)
+    return np.asarray(2.0 / (inverse[:, 0, 0] + inverse[:, 1, 1] - inverse[:, 0, 1] - inverse[:, 1, 0]))
 
 
 def _solve_batch(section: Section, plan: Plan, modes: tuple[int, ...]) -> dict[int, tuple[FloatArray, FloatArray]]:

@@ -13,13 +13,11 @@ import numpy as np
 from scipy.stats import binom, hypergeom
 
 from tolerance.arrays import BoolArray, FloatArray, IntArray
-from tolerance.process.draws import LotSize, ProcessDraws
+from tolerance.process.draws import LotSize
 from tolerance.statistics.estimates import Interval, interval_of
 from tolerance.statistics.yields import RARE, binomial_interval, crowding_of_rare, share_interval
 
 CLASSES = (0.0, 0.01, 0.02, 0.05, 0.10, 0.20, 0.50, 1.0)  # highest share of failing coupons of each class of lots
-LOTS = 256  # of each replicate at least, where coupons were not drawn as lots
-MOST_COUPONS = 2**21  # of each replicate, in such lots
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,19 +54,6 @@ class LotAcceptance:
     if_independent: float  # the same by the binomial formula, as if coupons of a lot were independent
     quality: Interval | None  # share of passing coupons in accepted lots; None where none is ever accepted
     curve: tuple[OperatingPoint, ...]
-
-
-def rows_as_lots(draws: ProcessDraws, size: LotSize, chance: np.random.Generator) -> IntArray:
-    """Rows of the sample as lots (lots, coupons of a lot), replicate by replicate.
-
-    Lots that were drawn as such stay; else every lot is coupons of one replicate at random, independent of each other.
-    """
-    if draws.lots is not None:
-        return np.arange(draws.coupons).reshape(-1, draws.lots.coupons)
-    block = draws.coupons // draws.replicates
-    lots = max(block // size.coupons, min(LOTS, MOST_COUPONS // size.coupons), 1)
-    rows = chance.integers(0, block, size=(draws.replicates, lots, size.coupons))
-    return (rows + block * np.arange(draws.replicates)[:, None, None]).reshape(-1, size.coupons)
 
 
 def judge_lot_acceptance(

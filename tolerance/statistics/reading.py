@@ -201,4 +201,5 @@ def _allowing_for_rare(interval: Interval, cases: BoolArray, highest: float, cou
     if crowding_of_rare(cases, coupons.cluster) is None:
         return interval
     counted = share_interval(cases, replicates=coupons.replicates, cluster=coupons.cluster)
-    return Interval(interval.value, min(interval.low, counted.low * highest), max(interval.high, counted.high * highest))
+    return Interval(interval.value, low=min(interval.low, counted.low * highest),
+                    high=max(interval.high, counted.high * highest))

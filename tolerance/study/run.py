@@ -26,18 +26,19 @@ from tolerance.process.draws import (
     Process,
     ProcessDraws,
     columns_moving,
-    draw_process,
     process_of,
 )
-from tolerance.results import DirectCheck, LineResult, Prediction, Record, RunResult, Spread
+from tolerance.results import DirectCheck, LineResult, Prediction, Record, RunResult, Spread, VarianceShares
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
+from tolerance.statistics.reading import Coupons
 from tolerance.statistics.yields import Limits, LineYield, histogram, judge
 from tolerance.study.lines import PreparedLine, nominal_impedance, prepare
+from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
 from tolerance.surrogate.coordinates import Coordinates
 from tolerance.surrogate.polynomial import HIGHEST_DEGREE, count_runs
 from tolerance.surrogate.prediction import HELD_OUT_RUNS, Predictor, fit_predictor, largest_error_wanted
@@ -74,11 +75,11 @@ def run(
     coupons = scenario.evaluation.coupons if coupons is None else coupons
     seed = scenario.evaluation.seed if seed is None else seed
     seed = secrets.randbelow(2**31) if seed is None else seed
-    process_chance, training_chance, driver_chance = np.random.default_rng(seed).spawn(3)
+    process_chance, training_chance, driver_chance, level_chance, test_chance = np.random.default_rng(seed).spawn(5)
     clock = _Clock()
 
     process = process_of(scenario)
-    draws = draw_process(process, coupons=coupons, chance=process_chance)
+    draws = draw(scenario, process, coupons=coupons, chance=process_chance)
     clock.lap("draws")
 
     settings = SolverSettings()
@@ -90,25 +91,41 @@ def run(
     predicted = _on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
-    judged = judge(
+    sample = Coupons(
         np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
         tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
-        replicates=draws.replicates, impedance_error=np.array([line.prediction.held_out_error for line in predicted]),
+        np.array([line.prediction.held_out_error for line in predicted]), draws.replicates,
+        cluster=1 if draws.lots is None else draws.lots.coupons,
     )
+    judged = judge(sample.impedance, sample.possible, sample.limits, replicates=sample.replicates,
+                   impedance_error=sample.error, cluster=sample.cluster)
+    nested = judge_nesting(sample, draws.lots)
+    tested = judge_test(scenario, draws, sample, test_chance)
     clock.lap("yield")
-
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
         return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
     drivers = _on_all_cores(rank, ranking, "ranking drivers", tell)
-    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, strict=True)]
+
+    def share_out(task: tuple[PredictedLine, np.random.Generator]) -> VarianceShares | None:
+        coordinates = task[0].predictor.coordinates
+        return variance_by_level(process, model_of(task[0].predictor), coordinates.columns, task[1])
+
+    variances = _on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
+                              "variance by level", tell) if draws.lots else [None] * len(predicted)
+    results = [
+        replace(_line_result(line, verdict, ranked), nested=of_lots, variance=variance, reading=reading)
+        for line, verdict, ranked, of_lots, variance, reading in zip(
+            predicted, judged.lines, drivers, nested.lines, variances, tested.lines, strict=True)
+    ]
     clock.lap("drivers")
     return RunResult(
-        title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
+        title=scenario.title, seed=seed, coupons=draws.coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside, impossible=judged.impossible, lines=tuple(results),
         record=_record(scenario, settings, results, draws.replicates, clock),
+        lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
     )
 
 
