@@ -19,7 +19,7 @@ from scipy.special import ndtr
 
 from tolerance.arrays import BoolArray, FloatArray
 from tolerance.statistics.estimates import Interval, interval_of
-from tolerance.statistics.yields import Limits, crowding_of_rare, passes, share_interval
+from tolerance.statistics.yields import RARE, Limits, passes, share_interval
 
 FALSE_ACCEPTS_WANTED = (0.01, 0.001, 0.0001)  # shares of all coupons, for which guard bands are told
 SMALLEST_STEP = 1e-6  # ohm, how finely a guard band is found
@@ -56,7 +56,6 @@ class GuardBand:
 class ReadingRisks:
     """What readings make of the coupons. Shares of all coupons [-]."""
 
-    true: Interval  # inside the limits in truth
     as_read: Interval  # read inside the limits, no guard band
     accepted: Interval  # read inside the limits less the guard band
     false_accepts: Interval  # outside in truth, accepted: the consumer's risk
@@ -129,14 +128,15 @@ def judge_readings(coupons: Coupons, reading: Reading) -> ReadingRisks:
     conforming, accepted = coupons.conforming(), estimates[0]["accepted"] > LIKELY
     at_limits = max(float(acceptance(np.array([limit.low, limit.high]), limit, reading).max())
                     for limit in coupons.limits)
-    cases = {  # the verdicts behind each share, and the most that each of them can add to it
+    cases = {  # the coupons behind each share, and the most that each of them can add to it
         "as_read": (estimates[0]["as_read"] > LIKELY, 1.0), "accepted": (accepted, 1.0),
         "false_accepts": (~conforming, at_limits), "false_rejects": (conforming & ~accepted, 1.0),
     }
-    intervals = {name: _allowing_for_rare(_interval(name, estimates, coupons.replicates), *cases[name], coupons)
-                 for name in cases}
+    intervals = {name: _interval(name, estimates, coupons.replicates) for name in cases}
+    for name, (behind, highest) in cases.items():
+        if _rests_on_few(estimates[0][name], coupons.cluster):
+            intervals[name] = _allowing_for_more(intervals[name], behind, highest, coupons)
     return ReadingRisks(
-        true=share_interval(conforming, replicates=coupons.replicates, cluster=coupons.cluster),
         as_read=intervals["as_read"], accepted=intervals["accepted"],
         false_accepts=intervals["false_accepts"], false_rejects=intervals["false_rejects"],
         guard_bands=tuple(guard_band_for(wanted, coupons, reading) for wanted in FALSE_ACCEPTS_WANTED),
@@ -193,13 +193,18 @@ def _interval(name: str, estimates: list[dict[str, FloatArray]], replicates: int
     return interval.widened(max([0.0, *(-shift for shift in shifts)]), max([0.0, *shifts])).within(0.0, 1.0)
 
 
-def _allowing_for_rare(interval: Interval, cases: BoolArray, highest: float, coupons: Coupons) -> Interval:
-    """Where few `cases`, or few others, were seen, their share may be that of the most or fewest there can be.
+def _rests_on_few(values: FloatArray, cluster: int) -> bool:
+    """Whether the mean of probabilities (coupons,), or what it lacks to 1, comes from few lots (or coupons).
 
-    highest : what one case can add to the share.
+    Source of the effective number: L. Kish, "Survey sampling", 1965.
     """
-    if crowding_of_rare(cases, coupons.cluster) is None:
-        return interval
+    rarer = values if 2.0 * np.sum(values) <= len(values) else 1.0 - values
+    of_cluster = np.sum(rarer.reshape(-1, cluster), axis=1)
+    return bool(np.sum(of_cluster) ** 2 <= min(RARE, 0.5 * len(of_cluster)) * np.sum(of_cluster**2))
+
+
+def _allowing_for_more(interval: Interval, cases: BoolArray, highest: float, coupons: Coupons) -> Interval:
+    """The interval reaching to the most and the fewest `cases` that there can be; highest: what one of them can add."""
     counted = share_interval(cases, replicates=coupons.replicates, cluster=coupons.cluster)
     return Interval(interval.value, low=min(interval.low, counted.low * highest),
                     high=max(interval.high, counted.high * highest))
