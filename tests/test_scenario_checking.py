@@ -335,17 +335,6 @@ def test_keys_that_are_not_acted_on_are_refused(part: str, changes: list[tuple[s
     assert "is part of the format but not yet acted on by this version" in told[0]
 
 
-def test_resin_content_is_checked_whole_and_then_refused() -> None:
-    resin = 'resin_dk = 3.2\nglass_dk = 6.1\nresin_content = "64 %"\nglass_areal_weight = "47 g/m^2"'
-    text = changed(BOARD, ('thickness = "300 um"\ndk = 3.9', resin))
-    told = messages(text)
-    assert len(told) == 1
-    assert 'resin_content = "64 %": is part of the format but not yet acted on' in told[0]
-    assert any("resin_dk: missing" in one for one in messages(changed(text, ("resin_dk = 3.2\n", ""))))
-    both = changed(BOARD, ("dk = 3.9", f"dk = 3.9\n{resin}"))
-    assert any("dk = 3.9: not together with resin_dk" in one for one in messages(both))
-
-
 @pytest.mark.parametrize(("part", "table"), [
     ("accept_number: missing; sample_size and accept_number stand together", "sample_size = 8"),
     ("sample_size: missing", "accept_number = 0"),

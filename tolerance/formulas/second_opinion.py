@@ -62,8 +62,6 @@ def why_none(section: Section) -> str:
         return "grounded copper beside it"
     if one.mask is not None:
         return "solder mask covers it"
-    if one.ground_gap is not None:
-        return "grounded copper beside it"
     if not one.foot_plane:
         return "no plane on the side of its foot"
     if one.crest_side and not one.crest_plane:

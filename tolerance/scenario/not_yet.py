@@ -27,7 +27,6 @@ class NotYet(NamedTuple):
 
 NOT_YET = (
     NotYet("evaluation", ("frequency",)),
-    NotYet("layers", ("resin_content", "resin_dk", "glass_dk", "glass_areal_weight")),
     NotYet("variations", ("shape",), lambda shape: shape == "measured"),
     NotYet("offers"),
 )
