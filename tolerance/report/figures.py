@@ -14,6 +14,7 @@ from matplotlib.image import imsave
 
 from tolerance.report.files import file_names, put_in_place
 from tolerance.report.looks import FAIL, FAINT_INK, INK, MEDIUM, PAGE, RESOLUTION, TITLE, our_looks
+from tolerance.report.lots_plot import draw_acceptance, draw_levels, draw_lots
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section
 from tolerance.report.tables import MISSES, verdict
@@ -23,13 +24,15 @@ if TYPE_CHECKING:
     from collections.abc import Callable
     from pathlib import Path
 
-    from tolerance.results import Interval, LineResult, RunResult
+    from tolerance.results import Interval, LineResult, NestedYield, RunResult
 
 Picture = npt.NDArray[np.uint8]
 
 OVERVIEW = "all-lines"
+LOTS = "lots"
 NAME_LENGTH = 48
 ROW_OF_OVERVIEW = 0.5  # inches at least
+ROW_OF_LEVELS = 0.8
 PACKING = 1  # of the PNG files: quick, a few per cent larger
 
 
@@ -39,9 +42,11 @@ def write_figures(result: RunResult, folder: Path, lengths: LengthUnit,
 
     Raises UnfinishedError where a file cannot be written.
     """
-    names = file_names([line.name for line in result.lines], taken=(OVERVIEW,))
+    names = file_names([line.name for line in result.lines], taken=(OVERVIEW, LOTS))
     with ThreadPoolExecutor(max_workers=1) as writer:  # packs one picture while the next is drawn
         jobs = [writer.submit(_write, _drawn(overview_page(result)), folder / f"{OVERVIEW}.png")]
+        if result.nested is not None:
+            jobs.append(writer.submit(_write, _drawn(lots_page(result, result.nested)), folder / f"{LOTS}.png"))
         for number, (name, line) in enumerate(zip(names, result.lines, strict=True), start=1):
             page = line_page(line, target_yield=result.target_yield, lengths=lengths)
             jobs.append(writer.submit(_write, _drawn(page), folder / f"{name}.png"))
@@ -71,6 +76,26 @@ def overview_page(result: RunResult) -> Figure:
               result.inside, result.target_yield, judged=False)
         axes = page.add_axes((0.225, 0.65 / height, 0.52, 1.0 - 1.95 / height))
         draw_overview(axes, result, result.lines)
+    return page
+
+
+def lots_page(result: RunResult, nested: NestedYield) -> Figure:
+    """Levels and lots on a page: variance by level, lots by their failing coupons, and their acceptance by sample."""
+    height = max(PAGE[1], 2.0 + ROW_OF_LEVELS * len(result.lines))
+    lots = result.lots
+    drawn = "" if lots is None else (f"{lots.lots:,} lots of {lots.panels_per_lot} panels with "
+                                     f"{lots.coupons_per_panel} coupons, seed {result.seed}")
+    with our_looks():
+        page = _page(height)
+        _head(page, shorten(result.title, NAME_LENGTH), drawn, result.inside, result.target_yield, judged=False)
+        low, reach = 0.65 / height, 1.0 - 2.05 / height
+        draw_levels(page.add_axes((0.03, low, 0.42, reach)), result.lines)
+        if result.acceptance is None:
+            draw_lots(page.add_axes((0.53, low, 0.445, reach)), nested)
+        else:
+            each = 0.5 * (reach - 1.35 / height)
+            draw_lots(page.add_axes((0.53, low + reach - each, 0.445, each)), nested)
+            draw_acceptance(page.add_axes((0.53, low, 0.445, each)), result.acceptance)
     return page
 
 
