@@ -50,6 +50,7 @@ class NominalLine:
     even_effective_dk: float | None = None
     dimensions: tuple[tuple[str, float], ...] = ()  # ("width", 180e-6), ("gap", 150e-6): as they are to be shown
     formulas: FormulaOpinions | None = None  # None: not asked for
+    mode: str = "single"  # single | differential | common
 
 
 @dataclass(frozen=True, slots=True)

@@ -16,6 +16,7 @@ from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
 from tolerance.statistics.acceptance import LotAcceptance as LotAcceptance
 from tolerance.statistics.acceptance import OperatingPoint as OperatingPoint
+from tolerance.statistics.against_limit import YieldByLimit as YieldByLimit
 from tolerance.statistics.estimates import Driver as Driver
 from tolerance.statistics.estimates import Interval as Interval
 from tolerance.statistics.levels import LevelDriver as LevelDriver
@@ -83,12 +84,18 @@ class LineResult:
     impossible: int  # coupons whose section cannot exist; they fail
     drivers: tuple[Driver, ...]  # ranked, largest first; only variables that reach the line
     spread: Spread
+    by_limit: YieldByLimit  # the yield were the limits wider or closer
     prediction: Prediction
     drawing: Drawing
     direct: DirectCheck | None = None
     nested: NestedYield | None = None  # panels and lots; with levels only
     variance: VarianceShares | None = None  # by level; with levels only
     reading: ReadingRisks | None = None  # with a [test] of readings only
+
+    @property
+    def limit(self) -> float:
+        """Half-width of the limits, a share of the target."""
+        return self.high_limit / self.target - 1.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -124,6 +131,7 @@ class RunResult:
     inside: Interval  # share of coupons on which every line passes
     impossible: int  # coupons on which some line cannot exist
     lines: tuple[LineResult, ...]
+    by_limit: YieldByLimit  # of all lines together, were all held to the same limit
     record: Record
     lots: Lots | None = None  # with levels only
     nested: NestedYield | None = None  # of all lines together
@@ -145,6 +153,12 @@ class RunResult:
         """One row for each line and driver, ranked within the line."""
         return pd.DataFrame([_driver_row(line, rank, driver) for line in self.lines
                              for rank, driver in enumerate(line.drivers, start=1)])
+
+    @property
+    def limit_table(self) -> pd.DataFrame:
+        """Yield against the limit (a share of the target): one row a limit, one column a line, and all together."""
+        named = {line.name: line.by_limit.value for line in self.lines}
+        return pd.DataFrame({"limit": self.by_limit.limit, "all lines together": self.by_limit.value, **named})
 
 
 def _interval_columns(name: str, interval: Interval | None) -> dict[str, float | None]:

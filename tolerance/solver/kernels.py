@@ -23,6 +23,8 @@ from tolerance.arrays import FloatArray, read_only
 
 #: Where exp(-k * distance) counts as nought in the spectral rest.
 LAST_EXPONENT = 17.0
+#: Wavenumbers at which far images are fitted.
+FIT_PLACES = 80
 #: Largest error of a reflection (of 1) by far images.
 IMAGE_ERROR = 5e-6
 
@@ -189,7 +191,7 @@ def spectral_rest(
 @lru_cache(maxsize=64)
 def _image_fit(multiples: tuple[float, ...]) -> tuple[FloatArray, FloatArray]:
     """Wavenumbers (in units of 1 / scale) and the least-squares map from the reflection there to image factors."""
-    wavenumber = np.logspace(-3.0, 1.3, 240) / max(1.0, multiples[-1] / 60.0)
+    wavenumber = np.logspace(-3.0, 1.3, FIT_PLACES) / max(1.0, multiples[-1] / 60.0)
     images = np.exp(-np.outer(wavenumber, multiples))
     free = images[:, :-1] - images[:, -1:]
     return read_only(wavenumber), read_only(np.linalg.pinv(free, rcond=1e-13).T)

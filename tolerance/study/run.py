@@ -33,6 +33,7 @@ from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
+from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.reading import Coupons
@@ -101,6 +102,11 @@ def run(
                    impedance_error=sample.error, cluster=sample.cluster)
     nested = judge_nesting(sample, draws.lots)
     tested = judge_test(scenario, draws, sample, test_chance)
+    by_limit, together = yields_by_limit(
+        LimitSample(sample.impedance, sample.possible, np.array([line.prepared.line.target for line in predicted]),
+                    sample.error, sample.replicates, sample.cluster),
+        limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
+        target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
@@ -116,14 +122,14 @@ def run(
     variances = _on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
                               "variance by level", tell) if draws.lots else [None] * len(predicted)
     results = [
-        replace(_line_result(line, verdict, ranked), nested=of_lots, variance=variance, reading=reading)
-        for line, verdict, ranked, of_lots, variance, reading in zip(
-            predicted, judged.lines, drivers, nested.lines, variances, tested.lines, strict=True)
+        replace(_line_result(line, verdict, ranked, curve), nested=of_lots, variance=variance, reading=reading)
+        for line, verdict, ranked, curve, of_lots, variance, reading in zip(
+            predicted, judged.lines, drivers, by_limit, nested.lines, variances, tested.lines, strict=True)
     ]
     clock.lap("drivers")
     return RunResult(
         title=scenario.title, seed=seed, coupons=draws.coupons, target_yield=scenario.evaluation.target_yield,
-        inside=judged.inside, impossible=judged.impossible, lines=tuple(results),
+        inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock),
         lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
     )
@@ -224,7 +230,9 @@ def _on_all_cores(
     return results
 
 
-def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...]) -> LineResult:
+def _line_result(
+    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit,
+) -> LineResult:
     prepared = line.prepared
     edges, counts = histogram(line.impedance[line.possible])
     return LineResult(
@@ -233,7 +241,8 @@ def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver,
         low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=nominal_impedance(prepared),
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
-        spread=Spread(edges, counts), prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
+        spread=Spread(edges, counts), by_limit=by_limit,
+        prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
         drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
     )
 
