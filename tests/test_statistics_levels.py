@@ -113,10 +113,10 @@ def test_lots_are_counted_by_their_failing_coupons() -> None:
     assert dict(line.quantiles) == {0.01: 0.8, 0.05: 0.8, 0.10: 1.0, 0.25: 1.0, 0.50: 1.0}  # 6.25 % of lots have 12/15
 
 
-def test_the_error_of_the_impedance_moves_the_ends_out() -> None:
+def test_an_error_of_the_verdicts_moves_the_ends_out() -> None:
     impedance = sample(3000, 1)
     values, there = impedance[None], np.ones((1, impedance.size), dtype=np.bool_)
-    plain, wide = (judge_lots(values, there, (LIMIT,), SIZE, replicates=REPLICATES, impedance_error=np.array([error]))
+    plain, wide = (judge_lots(values, there, (LIMIT,), SIZE, replicates=REPLICATES, verdict_error=np.array([error]))
                    for error in (0.0, 0.05))
     for name in ("panel", "lot"):
         before, after = getattr(plain.every, name), getattr(wide.every, name)

@@ -75,13 +75,13 @@ class VarianceShares:
 
 def judge_lots(
     impedance: FloatArray, possible: BoolArray, limits: tuple[Limits, ...], size: LotSize, *,
-    replicates: int, impedance_error: FloatArray | None = None,
+    replicates: int, verdict_error: FloatArray | None = None,
 ) -> NestedYields:
     """Yields of panels and lots from impedance [ohm] and possible (lines, coupons), drawn as whole lots.
 
-    impedance_error : (lines,) [ohm], as in `yields.judge`.
+    verdict_error : (lines,) [ohm], as in `yields.judge`.
     """
-    errors = np.zeros(len(limits)) if impedance_error is None else impedance_error
+    errors = np.zeros(len(limits)) if verdict_error is None else verdict_error
     margins = np.stack([np.zeros_like(errors), -errors, errors])  # as predicted, surely, perhaps
     verdicts = np.stack([
         [passes(values, exists, limit, margin=float(margin)) for margin in of_line]

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from tolerance.arrays import FloatArray
 from tolerance.process.draws import LotSize, Process, ProcessDraws, draw_process
 from tolerance.process.lots import draw_lots, level_shares, rows_as_lots
 from tolerance.results import LotAcceptance, Lots, NestedYield, ReadingRisks, VarianceShares
@@ -47,12 +48,12 @@ def lot_size(scenario: Scenario) -> LotSize:
     return LotSize(test.panels_per_lot, test.coupons_per_panel)
 
 
-def judge_nesting(coupons: Coupons, size: LotSize | None) -> JudgedLots:
-    """Yields of panels and lots of coupons that were drawn as lots of this size."""
+def judge_nesting(coupons: Coupons, size: LotSize | None, verdict_error: FloatArray) -> JudgedLots:
+    """Yields of panels and lots of coupons that were drawn as lots of this size; verdict_error: (lines,) [ohm]."""
     if size is None:
         return JudgedLots(None, (None,) * len(coupons.limits), None)
     nested = judge_lots(coupons.impedance, coupons.possible, coupons.limits, size,
-                        replicates=coupons.replicates, impedance_error=coupons.error)
+                        replicates=coupons.replicates, verdict_error=verdict_error)
     return JudgedLots(Lots(nested.lots, size.panels, size.coupons_per_panel), nested.lines, nested.every)
 
 
@@ -76,10 +77,9 @@ def judge_test(scenario: Scenario, draws: ProcessDraws, coupons: Coupons, chance
     return JudgedTest(lines, every, acceptance)
 
 
-def variance_by_level(
-    process: Process, model: Model, columns: tuple[int, ...], chance: np.random.Generator
-) -> VarianceShares | None:
-    """Shares of a line's variance by level; None without levels. columns: of the model's variables in the process."""
+def variance_by_level(process: Process, model: Model, chance: np.random.Generator) -> VarianceShares | None:
+    """Shares of a line's variance by level; None without levels. The model's variables are some of the process's."""
     if not process.has_levels:
         return None
-    return variance_shares(model, level_shares(process)[:, list(columns)], chance=chance)
+    columns = [column for column, variable in enumerate(process.variables) if variable.name in model.names]
+    return variance_shares(model, level_shares(process)[:, columns], chance=chance)
