@@ -65,6 +65,7 @@ def _parser() -> argparse.ArgumentParser:
                        help="set published formulas beside the field solver, as a second opinion")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
+    _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -87,6 +88,31 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     run.set_defaults(command=_run)
+
+
+def _add_fit(fit: argparse.ArgumentParser) -> None:
+    fit.add_argument("file", type=Path, metavar="FILE", help="table of readings (CSV or XLSX)")
+    fit.add_argument("--column", metavar="NAME", help="heading of the column; every column of readings if left out")
+    fit.add_argument("--sheet", metavar="NAME", help="sheet of an XLSX that has several")
+    fit.add_argument("--lower", metavar="LIMIT", help="lower limit of the readings, for Cp and Cpk")
+    fit.add_argument("--upper", metavar="LIMIT", help="upper limit of the readings")
+    fit.add_argument("--json", action="store_true", help="the result as one JSON object on standard output")
+    fit.set_defaults(command=_fit)
+
+
+def _fit(options: argparse.Namespace) -> int:
+    from tolerance.study.fit import fit
+
+    result = fit(options.file, column=options.column, sheet=options.sheet, lower=options.lower, upper=options.upper)
+    if options.json:
+        from tolerance.report.fit_text import fit_json
+
+        print(fit_json(result))
+    else:
+        from tolerance.report.fit_text import print_fit
+
+        print_fit(result, _console())
+    return 0
 
 
 def _check(options: argparse.Namespace) -> int:
