@@ -70,6 +70,10 @@ def _parser() -> argparse.ArgumentParser:
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
     new.set_defaults(command=_new)
+    presets = commands.add_parser("presets", help="list the presets of tolerances, each value with its status")
+    presets.add_argument("name", nargs="?", metavar="NAME", help="one of them only")
+    presets.add_argument("--json", action="store_true", help="the same as one JSON object on standard output")
+    presets.set_defaults(command=_presets)
     schema = commands.add_parser("schema", help="print the JSON Schema of scenario files, for editors")
     schema.set_defaults(command=_schema)
     return parser
@@ -193,6 +197,21 @@ def _new(options: argparse.Namespace) -> int:
     write_starter(options.file)
     if not options.quiet:
         print(f"Wrote {options.file}. Run it: tolerance run {options.file}")
+    return 0
+
+
+def _presets(options: argparse.Namespace) -> int:
+    from tolerance.report.preset_text import presets_json, print_presets
+    from tolerance.scenario.presets import preset_names, read_preset
+
+    names = preset_names()
+    if options.name is not None and options.name not in names:
+        raise InputError(f"{options.name}: is no preset; there are {', '.join(names)}")
+    presets = [read_preset(name) for name in names if options.name in (None, name)]
+    if options.json:
+        print(presets_json(presets))
+    else:
+        print_presets(presets, _console())
     return 0
 
 
