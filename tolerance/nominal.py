@@ -51,6 +51,7 @@ class NominalLine:
     dimensions: tuple[tuple[str, float], ...] = ()  # ("width", 180e-6), ("gap", 150e-6): as they are to be shown
     formulas: FormulaOpinions | None = None  # None: not asked for
     mode: str = "single"  # single | differential | common
+    partner: str | None = None  # the other layer of a broadside pair
 
 
 @dataclass(frozen=True, slots=True)

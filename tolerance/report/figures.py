@@ -77,7 +77,9 @@ def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> 
     """One line on a page: spread and drivers above, the cross-section below."""
     with our_looks():
         page = _page(PAGE[1])
-        _head(page, line.name, f"{line.kind}; {place_words(line.layer, line.references)}", line.inside, target_yield)
+        layers = dict.fromkeys(part.name for part in line.drawing.conductors if part.role == "trace")
+        where = place_words(" and ".join(layers), line.references)
+        _head(page, line.name, f"{line.kind}; {where}", line.inside, target_yield)
         draw_spread(page.add_axes((0.065, 0.505, 0.43, 0.31)), line, target_yield=target_yield)
         draw_drivers(page.add_axes((0.56, 0.505, 0.40, 0.31)), line)
         draw_section(page.add_axes((0.065, 0.085, 0.69, 0.29)), line, lengths=lengths)

@@ -31,8 +31,10 @@ from tolerance.process.draws import (
 )
 from tolerance.results import DirectCheck, LineResult, Prediction, Record, RunResult, Spread
 from tolerance.scenario.tables import Line, Scenario
-from tolerance.sections.drawing import drawing_of
+from tolerance.sections.bands import bands_of
+from tolerance.sections.drawing import Drawing, drawing_of, with_fills
 from tolerance.sections.surroundings import properties_that_reach
+from tolerance.solver.line import AnySection
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
@@ -46,6 +48,7 @@ from tolerance.surrogate.prediction import HELD_OUT_RUNS, Predictor, fit_predict
 Progress = Callable[[str, int, int], None]
 Task = TypeVar("Task")
 Done = TypeVar("Done")
+DEVIATIONS_DRAWN = 3.0  # either way, of what moves in a drawing
 PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
@@ -228,8 +231,25 @@ def _line_result(
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
         spread=Spread(edges, counts), by_limit=by_limit,
         prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
-        drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
+        drawing=_drawing(line), direct=line.direct,
     )
+
+
+def _drawing(line: PredictedLine) -> Drawing:
+    """The nominal section to scale, and where each tolerance alone, three deviations either way, moves its edges."""
+    prepared, coordinates = line.prepared, line.predictor.coordinates
+    process = coordinates.process
+    germ = np.zeros((2 * coordinates.dimensions, len(process.variables)))
+    for number, column in enumerate(coordinates.columns):
+        germ[2 * number : 2 * number + 2, column] = -DEVIATIONS_DRAWN, DEVIATIONS_DRAWN
+    moved = prepared.section(ProcessDraws(process, germ))
+
+    def drawn(section: AnySection) -> Drawing:
+        return drawing_of(section, prepared.surroundings, prepared.line.layer)
+
+    nominal = with_fills(drawn(prepared.nominal), prepared.surroundings, process.nominals)
+    bands = bands_of(nominal, [drawn(moved.rows(slice(row, row + 1))) for row in np.flatnonzero(moved.possible)])
+    return replace(nominal, bands=bands)
 
 
 def _record(
