@@ -11,6 +11,7 @@ import math
 from typing import TYPE_CHECKING
 
 from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
+from tolerance.report.lots_json import line_keys, run_keys
 
 if TYPE_CHECKING:
     from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
@@ -38,6 +39,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),
         "solver_runs": int(result.record.solver_runs),
+        **run_keys(result),
         "lines": [_line(line) for line in result.lines],
     }
 
@@ -80,7 +82,7 @@ def _line(line: LineResult) -> dict[str, object]:
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
-    return values
+    return values | line_keys(line)
 
 
 def _certificate(certificate: Certificate) -> dict[str, object]:

@@ -15,6 +15,13 @@ from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.charts import Placed, draw_charts
 from tolerance.report.files import put_in_place
+from tolerance.report.lots_tables import (
+    acceptance_sentence,
+    acceptance_table,
+    level_driver_table,
+    level_table,
+    reading_table,
+)
 from tolerance.report.sheet_text import clean_text
 from tolerance.report.tables import (
     MISSES,
@@ -63,6 +70,7 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
         placed[name] = Placed(book.create_sheet(name), table, 1)
         _write_table(placed[name].sheet, table, top=1)
         placed[name].sheet.freeze_panes = "B2"
+    _acceptance_sheet(book, result)
     _mark_misses(placed["Lines"], target_yield=result.target_yield)
     draw_charts(charts, summary=placed["Summary"], drivers=placed["Drivers"], by_limit=placed["Yield by limit"],
                 target=f"{trimmed(100.0 * result.target_yield, 3)} %")
@@ -72,14 +80,25 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
 
 def _tables(result: RunResult, scenario: Scenario) -> list[tuple[str, Table]]:
     """The tables that have a sheet of their own, by its name, in their order."""
-    tables = [
-        ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Yield by limit", limit_table(result)),
-        ("Stackup", stackup_table(scenario)), ("Drawn lines", drawn_table(scenario)),
-        ("Variations", variation_table(scenario)),
-    ]
+    tables = [("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Yield by limit", limit_table(result))]
+    if result.nested is not None:
+        tables += [("Levels", level_table(result)), ("Levels by variable", level_driver_table(result))]
+    if result.reading is not None:
+        tables.append(("Test", reading_table(result)))
+    tables += [("Stackup", stackup_table(scenario)), ("Drawn lines", drawn_table(scenario)),
+               ("Variations", variation_table(scenario))]
     if scenario.correlations:
         tables.append(("Correlations", correlation_table(scenario)))
     return tables
+
+
+def _acceptance_sheet(book: Workbook, result: RunResult) -> None:
+    """What the sampling plan does to lots, where there is one; it stands after the test."""
+    if result.acceptance is not None:
+        sheet = book.create_sheet("Lot acceptance", book.sheetnames.index("Stackup"))
+        _put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
+        _write_table(sheet, acceptance_table(result.acceptance), top=3)
+        sheet.freeze_panes = "A4"
 
 
 def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> Placed:
