@@ -155,6 +155,11 @@ def test_a_title_is_made_smaller_before_it_is_cut_and_never_runs_into_the_yield(
 def test_the_yield_against_the_limit_is_drawn_for_every_line(lines: int) -> None:
     page = limits_page(made_up_result(many_lines(lines, long_names=True)))
     assert len(page.axes) == (1 if lines == 1 else lines + 1)  # and one of all together
+    canvas: Any = FigureCanvasAgg(page)
+    canvas.draw()
+    for axes in page.axes:  # a name never runs into the next panel
+        extent = axes.title.get_window_extent() if axes.get_title() else axes._left_title.get_window_extent()  # type: ignore[attr-defined]
+        assert extent.x1 <= axes.get_window_extent().x1 + 1.0
     first = page.axes[-lines]
     needed = first.texts[0].get_text()
     assert re.fullmatch(r"99 % would pass at \d+\.\d+ %", needed)

@@ -33,6 +33,7 @@ CELL_HEIGHT = 0.53  # centimetres
 DRIVERS_SHOWN = 6
 NAME_LENGTH = 44
 HIGHEST_START = 0.9  # of the scale of yields
+LEAST_REACH = 1e-3  # of a scale
 TITLE_POINTS, LABEL_POINTS = 12, 9
 
 
@@ -79,6 +80,9 @@ def _bars(title: str, placed: Placed, keys: Sequence[str], colours: Sequence[str
     for key, colour in zip(keys, colours, strict=True):
         _add_series(chart, placed.cells(key), placed.table.columns[placed.column(key) - 1].heading, colour)
     chart.set_categories(placed.cells("name"))
+    columns = [placed.column(key) - 1 for key in keys]
+    totals = [sum(float(row[column] or 0.0) for column in columns) for row in placed.table.rows]
+    chart.y_axis.majorUnit = _step(max(totals, default=1.0))
     if len(keys) > 1:
         chart.grouping, chart.overlap = "stacked", 100
         chart.legend.position = "b"
@@ -87,6 +91,7 @@ def _bars(title: str, placed: Placed, keys: Sequence[str], colours: Sequence[str
         lowest = min((float(row[placed.column(keys[0]) - 1] or 0.0) for row in placed.table.rows), default=0.0)
         chart.y_axis.scaling.min = min(math.floor(10.0 * lowest) / 10.0, HIGHEST_START)
         chart.y_axis.scaling.max = 1.0
+        chart.y_axis.majorUnit = _step(1.0 - chart.y_axis.scaling.min)
     return chart
 
 
@@ -101,6 +106,7 @@ def _driver_charts(placed: Placed) -> Iterator[Any]:
         chart = _bar_chart(f"{shorten(names[first], NAME_LENGTH)}: {measure}", count, "0%")
         _add_series(chart, placed.cells(key, first=first, count=count), measure, BODY)
         chart.set_categories(placed.cells("variable", first=first, count=count))
+        chart.y_axis.majorUnit = _step(float(placed.table.rows[first][keys.index(key)] or 0.0))
         chart.legend = None
         yield chart
 
@@ -122,6 +128,13 @@ def _limit_chart(placed: Placed) -> Any:
     chart.x_axis.scaling.min, chart.y_axis.scaling.min, chart.y_axis.scaling.max = 0.0, 0.0, 1.0
     chart.legend.position = "r"
     return chart
+
+
+def _step(reach: float) -> float:
+    """A round step of a scale that goes about so far: it takes three to seven of them."""
+    wanted = max(reach, LEAST_REACH) / 5.0
+    power = 10.0 ** math.floor(math.log10(wanted))
+    return next(factor * power for factor in (1.0, 2.0, 5.0, 10.0) if factor * power >= 0.7 * wanted)
 
 
 def _bar_chart(title: str, bars: int, form: str) -> Any:

@@ -14,6 +14,8 @@ from tolerance.report.wording import shorten
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
 
+    from matplotlib.axes import Axes
+
 FAMILY = "DejaVu Sans"
 
 
@@ -31,6 +33,13 @@ def width_of(text: str, size: float, *, bold: bool = False) -> float:
     with missing_glyphs_allowed():
         width, _, _ = text_to_path.get_text_width_height_descent(text, letters, ismath=False)
     return float(width)
+
+
+def width_in_points(axes: Axes) -> float:
+    """How wide the axes are on their page [points]."""
+    figure = axes.get_figure(root=True)
+    assert figure is not None
+    return float(72.0 * axes.get_position().width * figure.get_figwidth())
 
 
 def fitted(text: str, room: float, sizes: Sequence[float], *, bold: bool = False) -> tuple[str, float]:

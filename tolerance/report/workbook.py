@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import textwrap
 from typing import TYPE_CHECKING
 
@@ -48,6 +49,7 @@ INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3E
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
+PAGE = 240.0  # letters across a printed page at most; a wider table goes on on further ones
 ROW = 15.0  # points, one row of letters of the usual size
 
 
@@ -153,6 +155,8 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     sheet.sheet_view.showGridLines = False
     sheet.page_setup.orientation = "landscape"
     sheet.page_setup.fitToHeight = 0
+    sheet.page_setup.fitToWidth = math.ceil(sum(_width(table, column) for column in range(len(table.columns))) / PAGE)
+    sheet.print_title_cols = "A:A"
     sheet.sheet_properties.pageSetUpPr = PageSetupProperties(fitToPage=True)
     sheet.print_title_rows = f"{top}:{top}"
 
