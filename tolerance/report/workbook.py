@@ -23,6 +23,7 @@ from tolerance.report.lots_tables import (
     level_table,
     reading_table,
 )
+from tolerance.report.measured import intervals_of, measured_table
 from tolerance.report.sheet_text import clean_text
 from tolerance.report.tables import (
     MISSES,
@@ -89,6 +90,8 @@ def _tables(result: RunResult, scenario: Scenario) -> list[tuple[str, Table]]:
         tables.append(("Test", reading_table(result)))
     tables += [("Stackup", stackup_table(scenario)), ("Drawn lines", drawn_table(scenario)),
                ("Variations", variation_table(scenario))]
+    if result.measured:
+        tables.append(("Measured data", measured_table(result, scenario.report.lengths)))
     if scenario.correlations:
         tables.append(("Correlations", correlation_table(scenario)))
     return tables
@@ -116,7 +119,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> P
          _font(12, bold=bool(missing), color=FAIL if missing else INK)),
         (f"{len(scenario.layers)} layers, {length_text(board_thickness(scenario), scenario.report.lengths)} thick"
          + (f"; {result.impossible:,} coupons cannot exist and count as failing" if result.impossible else "")
-         + ". Yield: share of coupons inside the limits; its ends: 95 % interval of the computation alone.",
+         + f". Yield: share of coupons inside the limits; its ends: 95 % interval of {intervals_of(result)}.",
          _font()),
         (CAUTION, _font(italic=True)),
     ]
