@@ -15,7 +15,7 @@ def _from(node: float, side: float, position: Callable[[float], float], density:
     """Integral from the node to one end, with s = node + side u^2, which takes the logarithm's edge off."""
     def integrand(u: float) -> float:
         s = node + side * u * u
-        return 2.0 * u * np.log(abs(position(s) - position(node)) or 1.0) * s**density
+        return float(2.0 * u * np.log(abs(position(s) - position(node)) or 1.0) * s**density)
 
     return float(quad(integrand, 0.0, np.sqrt(1.0 - side * node), limit=400, epsabs=1e-11)[0])
 

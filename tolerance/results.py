@@ -11,12 +11,20 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from tolerance.arrays import FloatArray, IntArray
+from tolerance.hypertext import hypertext
 from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
+from tolerance.statistics.acceptance import LotAcceptance as LotAcceptance
+from tolerance.statistics.acceptance import OperatingPoint as OperatingPoint
 from tolerance.statistics.against_limit import YieldByLimit as YieldByLimit
 from tolerance.statistics.estimates import Driver as Driver
 from tolerance.statistics.estimates import Interval as Interval
+from tolerance.statistics.levels import LevelDriver as LevelDriver
+from tolerance.statistics.levels import NestedYield as NestedYield
+from tolerance.statistics.levels import VarianceShares as VarianceShares
+from tolerance.statistics.reading import GuardBand as GuardBand
+from tolerance.statistics.reading import ReadingRisks as ReadingRisks
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -99,11 +107,46 @@ class LineResult:
     certificate: Certificate
     drawing: Drawing
     direct: DirectCheck | None = None
+    nested: NestedYield | None = None  # panels and lots; with levels only
+    variance: VarianceShares | None = None  # by level; with levels only
+    reading: ReadingRisks | None = None  # with a [test] of readings only
 
     @property
     def limit(self) -> float:
         """Half-width of the limits, a share of the target."""
         return self.high_limit / self.target - 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class MeasuredInput:
+    """What was taken from a table of readings for one property; lengths in metres, shares as fractions.
+
+    method : "smoothed" quantiles, or the fitted shape "normal" or "lognormal".  p_normal, p_lognormal : of the tests
+    of fit (Shapiro and Wilk); None where there is none.
+    """
+
+    of: str
+    file: str
+    sheet: str | None
+    column: str
+    readings: int
+    method: str
+    mean: float
+    deviation: float
+    lowest: float
+    highest: float
+    measure: str  # length | copper length | share | number
+    p_normal: float | None
+    p_lognormal: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class Lots:
+    """How coupons were drawn as whole lots."""
+
+    lots: int
+    panels_per_lot: int
+    coupons_per_panel: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -132,6 +175,21 @@ class RunResult:
     lines: tuple[LineResult, ...]
     by_limit: YieldByLimit  # of all lines together, were all held to the same limit
     record: Record
+    lots: Lots | None = None  # with levels only
+    nested: NestedYield | None = None  # of all lines together
+    reading: ReadingRisks | None = None  # of all lines together
+    acceptance: LotAcceptance | None = None  # with sample_size only
+    measured: tuple[MeasuredInput, ...] = ()
+
+    def _repr_html_(self) -> str:
+        """What a notebook shows: the yields with their intervals, and what drives each line."""
+        sentence = (f"All lines together: {_percent(self.inside)} of {self.coupons:,} coupons pass (seed {self.seed}). "
+                    f"Target of each line: {100.0 * self.target_yield:g} %. In brackets: 95 % intervals of the "
+                    "computation alone.")
+        headings = ("line", "target [ohm]", "limits [ohm]", "nominal [ohm]", "mean [ohm]", "deviation [ohm]", "yield",
+                    "below", "above", "Cpk", "verdict", "largest drivers, share of the variance")
+        rows = [_notebook_row(line, self.target_yield) for line in self.lines]
+        return hypertext(self.title, [sentence], headings, rows)
 
     @property
     def misses_target(self) -> bool:
@@ -156,6 +214,25 @@ class RunResult:
         return pd.DataFrame({"limit": self.by_limit.limit, "all lines together": self.by_limit.value, **named})
 
 
+DRIVERS_TOLD = 3  # of each line, in a notebook
+
+
+def _percent(share: Interval) -> str:
+    """The share with its interval, "98.43 % [98.38, 98.48]"."""
+    return f"{100.0 * share.value:.2f} % [{100.0 * share.low:.2f}, {100.0 * share.high:.2f}]"
+
+
+def _notebook_row(line: LineResult, target_yield: float) -> tuple[str, ...]:
+    drivers = [(driver.variable, driver.shapley or driver.total) for driver in line.drivers[:DRIVERS_TOLD]]
+    return (
+        line.name, f"{line.target:g}", f"{line.low_limit:g} to {line.high_limit:g}", f"{line.nominal:.2f}",
+        f"{line.mean.value:.2f}", f"{line.deviation.value:.2f}", _percent(line.inside),
+        f"{100.0 * line.below.value:.2f} %", f"{100.0 * line.above.value:.2f} %",
+        "-" if line.cpk is None else f"{line.cpk.value:.2f}", "MISSES" if line.inside.value < target_yield else "meets",
+        ", ".join(f"{name} {100.0 * share.value:.0f} %" for name, share in drivers) or "none",
+    )
+
+
 def _interval_columns(name: str, interval: Interval | None) -> dict[str, float | None]:
     if interval is None:
         return dict.fromkeys((name, f"{name}_low", f"{name}_high"))
@@ -170,7 +247,8 @@ def _line_row(line: LineResult) -> dict[str, object]:
         **_interval_columns("mean_ohm", line.mean), **_interval_columns("std_ohm", line.deviation),
         **_interval_columns("yield", line.inside), **_interval_columns("below", line.below),
         **_interval_columns("above", line.above), **_interval_columns("cp", line.cp),
-        **_interval_columns("cpk", line.cpk), "impossible": line.impossible,
+        **_interval_columns("cpk", line.cpk), **_interval_columns("needed_limit", line.by_limit.needed),
+        "impossible": line.impossible,
         "certified": line.certificate.certified, "coupons_solved": line.certificate.solved,
         "solver_runs": line.prediction.solver_runs, "held_out_error_ohm": line.prediction.held_out_error,
     }

@@ -19,6 +19,7 @@ from tolerance.report.files import file_names, put_in_place
 from tolerance.report.letters import fitted, missing_glyphs_allowed, width_of
 from tolerance.report.limit_plot import draw_yield_by_limit
 from tolerance.report.looks import FAIL, FAINT_INK, INK, LARGE, MEDIUM, PAGE, RESOLUTION, SMALL, TITLE, our_looks
+from tolerance.report.lots_plot import draw_acceptance, draw_levels, draw_lots
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section
 from tolerance.report.tables import MISSES, verdict
@@ -28,12 +29,13 @@ if TYPE_CHECKING:
     from collections.abc import Callable
     from pathlib import Path
 
-    from tolerance.results import Interval, LineResult, RunResult
+    from tolerance.results import Interval, LineResult, NestedYield, RunResult
 
 FigureFormat = Literal["png", "svg", "pdf"]
 
-OVERVIEW, AGAINST_LIMIT = "all-lines", "yield-against-limit"
+OVERVIEW, AGAINST_LIMIT, LOTS = "all-lines", "yield-against-limit", "lots"
 ROW_OF_OVERVIEW = 0.5  # inches at least
+ROW_OF_LEVELS = 0.8
 PANELS_ABREAST = 4  # of the page of yields against the limit
 ROW_OF_PANELS = 2.45  # inches
 LIMITS_REMARK = ("Yield were the limits wider or closer, with its 95 % interval. Dashed, dot: limit and yield as they "
@@ -68,8 +70,10 @@ def _pages(result: RunResult, lengths: LengthUnit) -> list[tuple[str, Callable[[
     def page_of(line: LineResult) -> Callable[[], Figure]:
         return lambda: line_page(line, target_yield=result.target_yield, lengths=lengths)
 
-    names = file_names([line.name for line in result.lines], taken=(OVERVIEW, AGAINST_LIMIT))
-    return [(OVERVIEW, lambda: overview_page(result)), (AGAINST_LIMIT, lambda: limits_page(result)),
+    names = file_names([line.name for line in result.lines], taken=(OVERVIEW, AGAINST_LIMIT, LOTS))
+    nested = result.nested
+    of_lots = [] if nested is None else [(LOTS, lambda: lots_page(result, nested))]
+    return [(OVERVIEW, lambda: overview_page(result)), (AGAINST_LIMIT, lambda: limits_page(result)), *of_lots,
             *((name, page_of(line)) for name, line in zip(names, result.lines, strict=True))]
 
 
@@ -77,7 +81,9 @@ def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> 
     """One line on a page: spread and drivers above, the cross-section below."""
     with our_looks():
         page = _page(PAGE[1])
-        _head(page, line.name, f"{line.kind}; {place_words(line.layer, line.references)}", line.inside, target_yield)
+        layers = dict.fromkeys(part.name for part in line.drawing.conductors if part.role == "trace")
+        where = place_words(" and ".join(layers), line.references)
+        _head(page, line.name, f"{line.kind}; {where}", line.inside, target_yield)
         draw_spread(page.add_axes((0.065, 0.505, 0.43, 0.31)), line, target_yield=target_yield)
         draw_drivers(page.add_axes((0.56, 0.505, 0.40, 0.31)), line)
         draw_section(page.add_axes((0.065, 0.085, 0.69, 0.29)), line, lengths=lengths)
@@ -96,9 +102,11 @@ def overview_page(result: RunResult) -> Figure:
 
 
 def limits_page(result: RunResult) -> Figure:
-    """Yield against the limit: all lines together, and a panel for each line."""
-    panels = len(result.lines) + 1
-    abreast = min(PANELS_ABREAST, max(panels, 2))
+    """Yield against the limit: a panel for each line, and where there are several one for all together."""
+    together = [] if len(result.lines) == 1 else [("all lines held to one limit", result.by_limit, None, None)]
+    curves = [*together, *((line.name, line.by_limit, line.limit, line.inside) for line in result.lines)]
+    panels = len(curves)
+    abreast = min(PANELS_ABREAST, panels)
     rows = -(-panels // abreast)
     height = max(PAGE[1], 1.4 + ROW_OF_PANELS * rows)
     with our_looks():
@@ -107,16 +115,33 @@ def limits_page(result: RunResult) -> Figure:
         page.text(MARGIN, 1.0 - 1.12 / height, LIMITS_REMARK, fontsize=SMALL, color=FAINT_INK, va="center")
         grid = page.add_gridspec(rows, abreast, left=0.065, right=0.975, top=1.0 - 1.9 / height, bottom=0.65 / height,
                                  wspace=0.28, hspace=0.85 if rows > 1 else 0.0)
-        draw_yield_by_limit(page.add_subplot(grid[0, 0]), result.by_limit, name="all lines held to one limit",
-                            target_yield=result.target_yield)
-        for number, line in enumerate(result.lines, start=1):
+        for number, (name, curve, limit, inside) in enumerate(curves):
             axes = page.add_subplot(grid[number // abreast, number % abreast])
-            draw_yield_by_limit(axes, line.by_limit, name=line.name, target_yield=result.target_yield,
-                                limit=line.limit, inside=line.inside)
+            draw_yield_by_limit(axes, curve, name=name, target_yield=result.target_yield, limit=limit, inside=inside)
             if number % abreast:
                 axes.set_ylabel("")
             if number + abreast < panels:
                 axes.set_xlabel("")
+    return page
+
+
+def lots_page(result: RunResult, nested: NestedYield) -> Figure:
+    """Levels and lots on a page: variance by level, lots by their failing coupons, and their acceptance by sample."""
+    height = max(PAGE[1], 2.0 + ROW_OF_LEVELS * len(result.lines))
+    lots = result.lots
+    drawn = "" if lots is None else (f"{lots.lots:,} lots of {lots.panels_per_lot} panels with "
+                                     f"{lots.coupons_per_panel} coupons, seed {result.seed}")
+    with our_looks():
+        page = _page(height)
+        _head(page, result.title, drawn, result.inside, result.target_yield, judged=False)
+        low, reach = 0.65 / height, 1.0 - 2.05 / height
+        draw_levels(page.add_axes((0.03, low, 0.42, reach)), result.lines)
+        if result.acceptance is None:
+            draw_lots(page.add_axes((0.53, low, 0.445, reach)), nested)
+        else:
+            each = 0.5 * (reach - 1.35 / height)
+            draw_lots(page.add_axes((0.53, low + reach - each, 0.445, each)), nested)
+            draw_acceptance(page.add_axes((0.53, low, 0.445, each)), result.acceptance)
     return page
 
 

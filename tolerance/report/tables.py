@@ -9,6 +9,8 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from tolerance.report.wording import (
     fixed,
     headline_text,
@@ -138,6 +140,9 @@ LINE_COLUMNS = (
     Column("above_high", "above, high end", "share", 2),
     Column("cp", "Cp", "", 2), Column("cp_low", "Cp, low end", "", 3), Column("cp_high", "Cp, high end", "", 3),
     Column("cpk", "Cpk", "", 2), Column("cpk_low", "Cpk, low end", "", 3), Column("cpk_high", "Cpk, high end", "", 3),
+    Column("needed_limit", "limit that meets the target yield", "share", 2),
+    Column("needed_limit_low", "that limit, low end", "share", 2),
+    Column("needed_limit_high", "that limit, high end", "share", 2),
     Column("impossible", "impossible coupons", "", 0),
     Column("kind", "kind"), Column("layer", "layer"), Column("references", "reference planes"),
     Column("solver_runs", "field solver runs", "", 0), Column("degree", "polynomial degree", "", 0),
@@ -188,10 +193,19 @@ def driver_table(result: RunResult) -> Table:
     for line in result.lines:
         for rank, driver in enumerate(line.drivers, start=1):
             shapley = {column.key: None for column in SHAPLEY_COLUMNS} if driver.shapley is None \
-                else _ends("shapley", driver.shapley)
+                else ends("shapley", driver.shapley)
             rows.append({"line": line.name, "rank": rank, "variable": driver.variable,
-                         **_ends("total", driver.total), **_ends("first", driver.first), **shapley})
+                         **ends("total", driver.total), **ends("first", driver.first), **shapley})
     return Table.of(DRIVER_COLUMNS + (SHAPLEY_COLUMNS if with_shapley else ()), rows)
+
+
+def limit_table(result: RunResult) -> Table:
+    """One row for each limit: the yield of all lines together were all held to it, and of each line."""
+    curves = [("all lines together", result.by_limit), *((line.name, line.by_limit) for line in result.lines)]
+    columns = (Column("limit", "limit, half-width", "share", 1),
+               *(Column(f"yield {number}", name, "share", 2) for number, (name, _) in enumerate(curves)))
+    values = np.stack([result.by_limit.limit, *(curve.value for _, curve in curves)], axis=1)
+    return Table(columns, tuple(tuple(row) for row in values.tolist()))
 
 
 def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
@@ -200,8 +214,9 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
         "layer": line.layer, "references": ", ".join(line.references),
         "target_ohm": float(line.target), "low_limit_ohm": float(line.low_limit),
         "high_limit_ohm": float(line.high_limit), "nominal_ohm": float(line.nominal),
-        **_ends("mean_ohm", line.mean), **_ends("std_ohm", line.deviation), **_ends("yield", line.inside),
-        **_ends("below", line.below), **_ends("above", line.above), **_ends("cp", line.cp), **_ends("cpk", line.cpk),
+        **ends("mean_ohm", line.mean), **ends("std_ohm", line.deviation), **ends("yield", line.inside),
+        **ends("below", line.below), **ends("above", line.above), **ends("cp", line.cp), **ends("cpk", line.cpk),
+        **ends("needed_limit", line.by_limit.needed),
         "impossible": int(line.impossible), "solver_runs": int(line.prediction.solver_runs),
         "certified": "the solver's" if line.certificate.certified else "predicted",
         "coupons_solved": int(line.certificate.solved),
@@ -210,7 +225,8 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
     }
 
 
-def _ends(name: str, interval: Interval | None) -> Mapping[str, Cell]:
+def ends(name: str, interval: Interval | None) -> Mapping[str, Cell]:
+    """Cells of an estimate and the ends of its interval, empty where there is none or one is not finite."""
     if interval is None:
         return {name: None, f"{name}_low": None, f"{name}_high": None}
     values = {name: interval.value, f"{name}_low": interval.low, f"{name}_high": interval.high}
