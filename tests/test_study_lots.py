@@ -132,6 +132,14 @@ def test_the_test_judges_readings_and_lots(nested: RunResult) -> None:
     assert nested.acceptance.quality.value > nested.inside.value, "refused lots are the worse ones"
 
 
+def test_the_table_of_lines_has_what_levels_and_readings_add(nested: RunResult) -> None:
+    table = nested.line_table
+    for name in ("panel_yield_low", "lot_yield", "variance_lot", "variance_panel", "variance_coupon", "as_read",
+                 "false_accepts_high"):
+        assert table[name].notna().all(), name
+    assert "lot_yield" not in run(parse(BOARD), coupons=256).line_table
+
+
 def test_a_test_without_levels_has_lots_of_independent_coupons() -> None:
     """Exact: the binomial formula. True impedance and yield are those of the run without a test."""
     text = without_levels(NESTED)
