@@ -27,6 +27,7 @@ def test_levels_have_the_keys_of_the_contract() -> None:
     answer = json.loads(run_json(made_up_lots()))
     for place in (answer, *answer["lines"]):
         assert set(place["panel_yield"]) == set(place["lot_yield"]) == ENDS
+        assert (place["panel_yield"]["value"], place["lot_yield"]["value"]) == (0.9213, 0.551)
     for line in answer["lines"]:
         assert line["variance_shares"] == {"lot": 0.262, "panel": 0.281, "coupon": 0.457}
         assert {driver["variable"] for driver in line["level_drivers"]} <= {
