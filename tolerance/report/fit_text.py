@@ -75,9 +75,12 @@ def _levels(column: FittedColumn, unit: str, digits: int) -> list[str]:
         for one, (_, share) in zip(column.components, column.shares, strict=True))
     negative = [one.level for one in column.components if one.variance < 0.0]
     none = f" The estimate for {' and '.join(negative)} came out below nought and counts as none." if negative else ""
-    few = min(one.groups for one in column.components)
-    return [f"Deviation by level: {parts}.{none} With {few} {column.components[0].level}s the share of the outermost "
-            "level is rough, and the intervals above, which take readings for independent, are too narrow."]
+    outer = column.components[0]
+    told = [f"Deviation by level: {parts}.{none} With {outer.groups} {outer.level}s the share of that level is rough."]
+    if any(share > 0.0 for name, share in column.shares if name != "coupon"):
+        told.append("The intervals above take readings for independent, and are too narrow for readings that share a "
+                    "lot or a panel.")
+    return told
 
 
 def _limits(limits: ColumnLimits, unit: str) -> list[str]:
