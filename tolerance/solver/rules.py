@@ -71,6 +71,33 @@ def refinement(count: int, fine_count: int) -> FloatArray:
 
 
 @lru_cache(maxsize=64)
+def piece_charges(count: int, pieces: int) -> FloatArray:
+    """Charges on pieces of equal length in s from charges at `count` nodes: shape (pieces, count)."""
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    places, shares = np.polynomial.legendre.leggauss(4 + count // 2)
+    middle = (2.0 * np.arange(pieces) + 1.0) / pieces - 1.0
+    values = _interpolation(nodes, (middle[:, None] + places / pieces).ravel())
+    return read_only(shares @ values.reshape(pieces, places.size, count) / pieces / weights)
+
+
+def graded_positions(pieces: int, power: int) -> FloatArray:
+    """Where the pieces of an edge with a corner at both ends begin and end: (pieces + 1,), see graded_rule."""
+    return _graded_map(np.linspace(-1.0, 1.0, pieces + 1), power)[0]
+
+
+def ground_positions(pieces: int) -> FloatArray:
+    """The same of copper that reaches far out, see ground_rule."""
+    return _ground_map(np.linspace(-1.0, 1.0, pieces + 1))[0]
+
+
+def tail_positions(pieces: int) -> FloatArray:
+    """The same of an edge to infinity, see tail_rule; the last piece ends where nearly nothing is left."""
+    near = np.linspace(0.0, 1.0, pieces + 1)
+    near[-1] = 0.5 * (1.0 + near[-2])
+    return np.asarray(near**2 / (1.0 - near))
+
+
+@lru_cache(maxsize=64)
 def self_potential(count: int, power: int) -> FloatArray:
     """Integral of ln |position(s_i) - position(s')| over the edge for unit charge at node j: shape (count, count).
 
