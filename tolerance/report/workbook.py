@@ -50,6 +50,7 @@ INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3E
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
+RECORD_WIDTH = 120  # letters, of the values of the run record: whole lines of a scenario
 PAGE = 240.0  # letters across a printed page at most; a wider table goes on on further ones
 ROW = 15.0  # points, one row of letters of the usual size
 
@@ -233,7 +234,9 @@ def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
         *(("scenario text", text) for line in record.scenario_text.splitlines() for text in _pieces(line)),
     ]
     _write_table(sheet, Table((Column("item", "item"), Column("value", "value")), tuple(rows)), top=1)
-    sheet.column_dimensions["B"].width = 110
+    sheet.column_dimensions["B"].width = RECORD_WIDTH
+    for number, (_, value) in enumerate(rows, start=2):
+        sheet.row_dimensions[number].height = ROW * max(len(textwrap.wrap(str(value), RECORD_WIDTH)), 1)
     sheet.freeze_panes = "B2"
 
 
