@@ -12,6 +12,7 @@ import secrets
 import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
 from importlib.metadata import version
 from typing import TypeVar
 
@@ -24,11 +25,10 @@ from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
-from tolerance.statistics.estimates import Driver
-from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.yields import Limits, LineYield, histogram, judge
 from tolerance.study.lines import prepare
 from tolerance.study.predicting import PredictedLine, predict_line
+from tolerance.study.weighing import Weights, weigh
 
 Progress = Callable[[str, int, int], None]
 Task = TypeVar("Task")
@@ -82,16 +82,17 @@ def run(
                                          target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
 
-    def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
-        return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
+    def rank(task: tuple[PredictedLine, np.random.Generator]) -> Weights:
+        return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
-    drivers = _on_all_cores(rank, ranking, "ranking drivers", tell)
-    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, by_limit, strict=True)]
+    weights = _on_all_cores(rank, ranking, "ranking drivers", tell)
+    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, weights, by_limit, strict=True)]
     clock.lap("drivers")
     return RunResult(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
-        inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
+        inside=judged.inside.at_most(min(line.inside.value for line in results)), impossible=judged.impossible,
+        lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock),
     )
 
@@ -118,17 +119,21 @@ def _on_all_cores(
 
 
 def _line_result(
-    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit,
+    line: PredictedLine, verdict: LineYield, weights: Weights, by_limit: YieldByLimit,
 ) -> LineResult:
-    prepared = line.prepared
+    prepared, tail = line.prepared, weights.tail
+    verdict = verdict if tail is None else verdict.from_tails(tail.below, tail.above, tail.failing)
+    runs = line.prediction.solver_runs + (0 if tail is None else tail.solver_runs)
     edges, counts = histogram(line.impedance[line.possible])
     return LineResult(
         name=prepared.line.name, kind=prepared.kind, layer=prepared.line.layer, mode=prepared.mode,
         references=prepared.surroundings.references, target=prepared.line.target,
         low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=line.nominal,
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
-        inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
-        spread=Spread(edges, counts), by_limit=by_limit, prediction=line.prediction, certificate=line.certificate,
+        inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible,
+        drivers=weights.drivers, groups=weights.groups, levers=weights.levers, tail=tail,
+        spread=Spread(edges, counts), by_limit=by_limit, prediction=replace(line.prediction, solver_runs=runs),
+        certificate=line.certificate,
         drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
     )
 
