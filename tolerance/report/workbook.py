@@ -17,6 +17,7 @@ from openpyxl.worksheet.properties import PageSetupProperties
 from tolerance.report.files import put_in_place
 from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
+from tolerance.report.weights import group_table, lever_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
 
 if TYPE_CHECKING:
@@ -49,7 +50,9 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     book.remove(first)
     _summary_sheet(book.create_sheet("Summary"), result, scenario)
     for name, table in (
-        ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
+        ("Lines", line_table(result)), ("Drivers", driver_table(result)),
+        ("Yield levers", lever_table(result)), ("Groups of drivers", group_table(result)),
+        ("Stackup", stackup_table(scenario)),
         ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
         *([("Correlations", correlation_table(scenario))] if scenario.correlations else []),
     ):
