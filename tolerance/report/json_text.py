@@ -11,6 +11,7 @@ import math
 from typing import TYPE_CHECKING
 
 from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
+from tolerance.report.lots_json import line_keys, run_keys
 from tolerance.report.weights import in_ppm
 
 if TYPE_CHECKING:
@@ -49,6 +50,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),
         "solver_runs": int(result.record.solver_runs),
+        **run_keys(result),
         "lines": [_line(line) for line in result.lines],
     }
 
@@ -93,7 +95,7 @@ def _line(line: LineResult) -> dict[str, object]:
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
-    return values
+    return values | line_keys(line)
 
 
 def _certificate(certificate: Certificate) -> dict[str, object]:

@@ -211,7 +211,7 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
 
 
 def ends(name: str, interval: Interval | None) -> Mapping[str, Cell]:
-    """An estimate and its ends under the keys of a table."""
+    """Cells of an estimate and the ends of its interval, empty where there is none or one is not finite."""
     if interval is None:
         return {name: None, f"{name}_low": None, f"{name}_high": None}
     values = {name: interval.value, f"{name}_low": interval.low, f"{name}_high": interval.high}

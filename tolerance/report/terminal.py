@@ -13,6 +13,7 @@ from rich.padding import Padding
 from rich.table import Table as RichTable
 from rich.text import Text
 
+from tolerance.report.lots_tables import Heading, sentences, text_tables
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
 from tolerance.report.weights import lever_words, ppm_words
 from tolerance.report.wording import (
@@ -68,6 +69,8 @@ def print_run(result: RunResult, console: Console) -> None:
     _say(console, result.title, style="bold")
     _print_table(console, _yield_table(result, _name_width(console)))
     _print_table(console, _driver_table(result, _name_width(console), console.width))
+    for columns, rows in text_tables(result, _name_width(console)):
+        _print_table(console, _filled_table(columns, rows))
     _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
                   f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
@@ -75,6 +78,8 @@ def print_run(result: RunResult, console: Console) -> None:
     _say_certificate(result, console)
     _say_rare(result, console)
     _say_direct(result, console)
+    for sentence in sentences(result):
+        _say(console, sentence)
     _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
 
 
@@ -87,6 +92,13 @@ def _table(*columns: tuple[str, bool]) -> RichTable:
     table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
     for heading, is_text in columns:
         table.add_column(Text(heading), justify="left" if is_text else "right", no_wrap=not is_text, overflow="fold")
+    return table
+
+
+def _filled_table(columns: tuple[Heading, ...], rows: list[tuple[str, ...]]) -> RichTable:
+    table = _table(*columns)
+    for cells in rows:
+        table.add_row(*(Text(cell) for cell in cells))
     return table
 
 

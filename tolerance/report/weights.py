@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from tolerance.report.tables import Cell, Column, Table, ends
 from tolerance.report.wording import fixed, shorten, variable_words
-from tolerance.results import Interval
 
 if TYPE_CHECKING:
-    from tolerance.results import Lever, LineResult, RunResult, Tail
+    from tolerance.results import Interval, Lever, LineResult, RunResult, Tail
 
 LEAST_SHOWN = 5e-5  # gain of yield below which nobody would pay for it
 LONGEST_NAME = 34
@@ -80,7 +80,7 @@ def lever_words(line: LineResult, count: int) -> list[str]:
 
 def in_ppm(interval: Interval) -> Interval:
     """A share in parts per million."""
-    return Interval(*(MILLION * value for value in (interval.value, interval.low, interval.high)))
+    return replace(interval, value=MILLION * interval.value, low=MILLION * interval.low, high=MILLION * interval.high)
 
 
 def ppm_words(tail: Tail) -> str:
