@@ -14,6 +14,7 @@ from rich.table import Table as RichTable
 from rich.text import Text
 
 from tolerance.report.lots_tables import Heading, sentences, text_tables
+from tolerance.report.measured import intervals_of, measured_sentences
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
 from tolerance.report.weights import lever_words, ppm_words
 from tolerance.report.wording import (
@@ -80,7 +81,9 @@ def print_run(result: RunResult, console: Console) -> None:
     _say_direct(result, console)
     for sentence in sentences(result):
         _say(console, sentence)
-    _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
+    for sentence in measured_sentences(result):
+        _say(console, sentence)
+    _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
 def _name_width(console: Console) -> int:

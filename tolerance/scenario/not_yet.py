@@ -27,7 +27,6 @@ class NotYet(NamedTuple):
 
 NOT_YET = (
     NotYet("evaluation", ("frequency",)),
-    NotYet("variations", ("shape",), lambda shape: shape == "measured"),
     NotYet("offers"),
 )
 
