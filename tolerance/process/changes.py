@@ -13,9 +13,9 @@ import numpy as np
 from scipy.special import ndtri
 
 from tolerance.arrays import FloatArray
-from tolerance.process.draws import ETCH, Process
+from tolerance.process.draws import ETCH, Process, ProcessDraws
 from tolerance.process.laws import Law, quantile
-from tolerance.process.values import ProcessValues
+from tolerance.process.resin import through_resin
 
 QUANTILES = 4096  # of a law, for its mean and deviation
 
@@ -51,18 +51,18 @@ class Change:
 
 @dataclass(frozen=True, slots=True)
 class ChangedValues:
-    """Process values with one variable changed: see ProcessValues."""
+    """Draws of the process with one variable changed: see ProcessValues."""
 
-    values: ProcessValues
+    draws: ProcessDraws
     change: Change
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name`."""
-        return self.change.of(name, self.values.value(name))
+        return through_resin(name, lambda own: self.change.of(own, self.draws.own(own)), self.draws.process.resins)
 
     def etch(self, layer: str, *, width: float) -> FloatArray:
         """Finished foot width minus drawn width [m] of a line `width` [m] wide on `layer`."""
-        return self.change.of(f"{layer}.{ETCH}", self.values.etch(layer, width=width))
+        return self.change.of(f"{layer}.{ETCH}", self.draws.etch(layer, width=width))
 
 
 def moments_of(process: Process, column: int, *, width: float) -> dict[str, Moments]:
