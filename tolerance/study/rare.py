@@ -30,11 +30,16 @@ class _Checked:
 
 
 def is_rare(line: PredictedLine) -> bool:
-    """Whether so few coupons fail that their count says little."""
+    """Whether so few coupons fail that their count says little, and the tails of the laws are known beyond them.
+
+    Not with measured laws: what readings say of parts per million is nothing.
+    """
     limits = line.prepared
     inside = (line.impedance >= limits.low_limit) & (line.impedance <= limits.high_limit)
-    exists = bool(np.all(line.possible))
-    return exists and len(line.predictor.names) > 0 and float(np.mean(~inside)) < RARE
+    seen = line.predictor.seen
+    laws = [law for column in seen.columns for _, law in seen.process.variables[column].members]
+    known = bool(laws) and all(law.measured is None for law in laws)
+    return known and bool(np.all(line.possible)) and float(np.mean(~inside)) < RARE
 
 
 def tail_of(line: PredictedLine, *, chance: np.random.Generator) -> Tail:
