@@ -36,6 +36,7 @@ from tolerance.report.tables import (
     summary_table,
 )
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
+from tolerance.report.weights import group_table, lever_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
 
 if TYPE_CHECKING:
@@ -85,6 +86,8 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
 def _tables(result: RunResult, scenario: Scenario) -> list[tuple[str, Table]]:
     """The tables that have a sheet of their own, by its name, in their order."""
     tables = [("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Yield by limit", limit_table(result))]
+    tables += [(name, table) for name, table in (("Yield levers", lever_table(result)),
+                                                 ("Groups of drivers", group_table(result))) if table.rows]
     if result.nested is not None:
         tables += [("Levels", level_table(result)), ("Levels by variable", level_driver_table(result))]
     if result.reading is not None:
