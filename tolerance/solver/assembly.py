@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, NumberArray
 from tolerance.solver.edges import Edge, Nodes, place_nodes
 from tolerance.solver.kernels import FarImages, SpectralRest
 
@@ -32,7 +32,7 @@ class NearImage:
 class Medium:
     """What the dielectrics make of the images: a factor (sections,) for each near image, and the rest."""
 
-    factors: tuple[FloatArray, ...]
+    factors: tuple[NumberArray, ...]
     far: FarImages | None = None
     rest: SpectralRest | None = None
 
@@ -74,13 +74,23 @@ def near_system(
     return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), trace, copper)
 
 
-def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, air: bool = False) -> FloatArray:
+def charge(
+    system: System, medium: Medium, *, body_dk: NumberArray, sign: int, air: bool = False,
+) -> NumberArray:
     """Charge on the right-hand trace (or right half) at potential 1, even or odd: (sections,), capacitance / eps0.
 
     air : copper alone, every Dk 1.
     """
+    solved = node_charges(system, medium, body_dk=body_dk, sign=sign, air=air)
+    return np.asarray(solved[:, : system.trace].sum(axis=1))
+
+
+def node_charges(
+    system: System, medium: Medium, *, body_dk: NumberArray, sign: int, air: bool = False,
+) -> NumberArray:
+    """Charge at every node, the traces at potential 1: (sections, unknowns); complex where a Dk is."""
     size = system.copper if air else system.across.shape[1]
-    matrix = np.zeros((system.across.shape[0], size, size))
+    matrix = np.zeros((system.across.shape[0], size, size), dtype=np.result_type(body_dk, *medium.factors))
     for factor, own, mirrored in zip(medium.factors, system.own, system.mirrored, strict=True):
         if np.any(factor):
             matrix += factor[:, None, None] * (own[:, :size, :size] + sign * mirrored[:, :size, :size])
@@ -90,9 +100,9 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
         matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
     if not air:
         _turn_into_interface_conditions(matrix, system)
-    wanted = np.zeros((matrix.shape[0], size, 1))
+    wanted = np.zeros((matrix.shape[0], size, 1), dtype=matrix.dtype)
     wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, :, 0])
 
 
 def _image_matrices(
@@ -136,7 +146,7 @@ def _kernel(run: FloatArray, rise: FloatArray, normals: Sequence[FloatArray], co
     return square
 
 
-def _add_far_images(matrix: FloatArray, system: System, far: FarImages, sign: int, size: int) -> None:
+def _add_far_images(matrix: NumberArray, system: System, far: FarImages, sign: int, size: int) -> None:
     across, height = system.across[:, :size], system.height[:, :size]
     normals = tuple(values[:, :size] for values in system.normals)
     start = 0
@@ -148,18 +158,17 @@ def _add_far_images(matrix: FloatArray, system: System, far: FarImages, sign: in
         source_across, source_height = ((source.fine_across, source.fine_height) if source.edge.tail
                                         else (source.across, source.height))
         total = height[:, :, None] + source_height[:, None, :]
-        block = np.zeros_like(total)
+        block = np.zeros(total.shape, dtype=matrix.dtype)
         for way, side in ((1.0, 1.0), (float(sign), -1.0)):
             run = across[:, :, None] - side * source_across[:, None, :]
             for number in range(far.shifts.shape[1]):
                 kernel = _kernel(run, total + far.shifts[:, number, None, None], normals, system.copper)
-                kernel *= (way * far.factors[:, number])[:, None, None]
-                block += kernel
+                block += kernel * (way * far.factors[:, number])[:, None, None]
         matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
         start = stop
 
 
-def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:
+def _turn_into_interface_conditions(matrix: NumberArray, system: System) -> None:
     """Rows of dielectric: (left - right) / (2 pi) * field + (left + right) / 2 * density = 0."""
     start = 0
     for nodes in system.nodes:

@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, IntArray
 from tolerance.sections.section import Section
 from tolerance.solver.assembly import charge, near_system
 from tolerance.solver.plan import Plan
 from tolerance.solver.structure import media, structure, topology
+from tolerance.solver.transmission import SPEED_OF_LIGHT
 
-SPEED_OF_LIGHT = 299792458.0  # [m/s], exact by definition of the metre
 #: Impedance of free space [ohm], CODATA 2018.
 FREE_SPACE_IMPEDANCE = 376.730313668
 
@@ -51,15 +52,20 @@ def solve_modes(section: Section, plan: Plan, *, modes: tuple[int, ...]) -> dict
     count = section.count
     filled = {mode: np.empty(count) for mode in modes}
     air = {mode: np.empty(count) for mode in modes}
+    for part in batches(section, plan):
+        for mode, (in_medium, in_air) in _solve_batch(section.rows(part), plan, modes).items():
+            filled[mode][part], air[mode][part] = in_medium, in_air
+    return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
+
+
+def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
+    """Rows of the section in batches of one topology that fit the cache."""
     kinds = topology(section)
     for kind in np.unique(kinds):
         rows = np.flatnonzero(kinds == kind)
         size = _batch_size(section.rows(rows[:1]), plan)
         for start in range(0, rows.size, size):
-            part = rows[start : start + size]
-            for mode, (in_medium, in_air) in _solve_batch(section.rows(part), plan, modes).items():
-                filled[mode][part], air[mode][part] = in_medium, in_air
-    return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
+            yield rows[start : start + size]
 
 
 def _solve_batch(section: Section, plan: Plan, modes: tuple[int, ...]) -> dict[int, tuple[FloatArray, FloatArray]]:
