@@ -22,11 +22,10 @@ TEXT = README.read_text(encoding="utf-8")
 
 #: key or table that may be refused as not acted on yet -> the README's words for it
 REFUSAL_WORDS = {
-    "frequency": "`frequency`", "resin_content": "resin and glass", "partner": "`partner`",
+    "frequency": "`frequency`", "partner": "`partner`",
     "ground_gap": "`ground_gap`", "level": "`level`", "shape": "measured shapes",
     "offers": "`[[offers]]`", "test": "`[test]`",
 }
-RESIN_KEYS = {"resin_dk", "glass_dk", "glass_areal_weight"}  # told with resin_content
 
 
 @pytest.fixture(scope="module")
@@ -67,11 +66,11 @@ def test_every_property_shape_and_refusal_is_told() -> None:
     shapes = json_schema()["$defs"]["variations"]["properties"]["shape"]["enum"]
     assert {shape for shape in shapes if f"| `{shape}`" not in TEXT} == {"measured"}
     for names in VARYING.values():
-        assert all(f"`{name}`" in TEXT for name in names if name not in ("df", "registration", "resin_content"))
+        assert all(f"`{name}`" in TEXT for name in names if name not in ("df",))
     refused = TEXT.split("**Not acted on yet.**")[1].split("\n\n")[0]
     refusals = {key for item in NOT_YET for key in item.keys or (item.table,)}
     assert {key for key, words in REFUSAL_WORDS.items() if words in refused} == refusals & set(REFUSAL_WORDS)
-    assert refusals <= {*REFUSAL_WORDS, *RESIN_KEYS}
+    assert refusals <= set(REFUSAL_WORDS)
 
 
 def test_every_scenario_is_in_the_table() -> None:

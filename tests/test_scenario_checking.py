@@ -326,12 +326,6 @@ def test_tables_that_are_not_acted_on_are_refused(part: str, addition: str) -> N
 @pytest.mark.parametrize(("part", "changes"), [
     ('frequency = "1 GHz": is part of the format but not yet',
      [("seed = 1", 'frequency = "1 GHz"'), *[(f"dk = {dk}", f"DK {dk}\ndf = 0.02") for dk in (3.5, "4.0", 4.2, 3.9)]]),
-    ('partner = "L5"', [
-        ('gap = "150 um"', 'partner = "L5"'),
-        ('[[layers]]\nname = "L4"',
-         '[[layers]]\nname = "L5"\nkind = "copper"\nuse = "signal"\nfoil = "1 oz"\nfoot = "up"\n'
-         '[[layers]]\nname = "P3"\nkind = "prepreg"\nthickness = "90 um"\ndk = 4.1\n[[layers]]\nname = "L4"')]),
-    ('ground_gap = "200 um"', [('gap = "150 um"', 'gap = "150 um"\nground_gap = "200 um"')]),
     ('level = "lot"', [("together = true", 'level = "lot"')]),
 ])
 def test_keys_that_are_not_acted_on_are_refused(part: str, changes: list[tuple[str, str]]) -> None:
@@ -339,17 +333,6 @@ def test_keys_that_are_not_acted_on_are_refused(part: str, changes: list[tuple[s
     assert len(told) == 1, told
     assert part in told[0]
     assert "is part of the format but not yet acted on by this version" in told[0]
-
-
-def test_resin_content_is_checked_whole_and_then_refused() -> None:
-    resin = 'resin_dk = 3.2\nglass_dk = 6.1\nresin_content = "64 %"\nglass_areal_weight = "47 g/m^2"'
-    text = changed(BOARD, ('thickness = "300 um"\ndk = 3.9', resin))
-    told = messages(text)
-    assert len(told) == 1
-    assert 'resin_content = "64 %": is part of the format but not yet acted on' in told[0]
-    assert any("resin_dk: missing" in one for one in messages(changed(text, ("resin_dk = 3.2\n", ""))))
-    both = changed(BOARD, ("dk = 3.9", f"dk = 3.9\n{resin}"))
-    assert any("dk = 3.9: not together with resin_dk" in one for one in messages(both))
 
 
 @pytest.mark.parametrize(("part", "table"), [

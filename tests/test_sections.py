@@ -12,12 +12,14 @@ import pytest
 
 from tests.scenario_texts import HEAD, SIX_LAYERS
 from tolerance.arrays import FloatArray
+from tolerance.errors import ScenarioError
 from tolerance.process.values import NominalValues, nominals_of
 from tolerance.scenario import Scenario, parse
 from tolerance.sections.as_built import as_built
 from tolerance.sections.drawing import drawing_of
+from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
-from tolerance.sections.surroundings import properties_that_reach, surroundings_of
+from tolerance.sections.surroundings import broadside_surroundings_of, properties_that_reach, surroundings_of
 
 UM = 1e-6
 FEED = '[[lines]]\nname = "feed"\nlayer = "L1"\nwidth = "180 um"\ntarget = "50 ohm"\n'
@@ -87,7 +89,9 @@ class Draws:
 
 def section_of(scenario: Scenario, second: dict[str, float] | None = None, **etched: float) -> Section:
     line = scenario.lines[0]
-    return as_built(line, surroundings_of(scenario, line), Draws(scenario, second or {}, etched))
+    section = as_built(line, surroundings_of(scenario, line), Draws(scenario, second or {}, etched))
+    assert isinstance(section, Section)
+    return section
 
 
 def test_foot_and_crest_follow_etch_copper_and_etch_factor() -> None:
@@ -178,6 +182,7 @@ def test_the_drawing_shows_the_section_to_scale(line: str) -> None:
     scenario = parse(HEAD + SIX_LAYERS + line)
     around = surroundings_of(scenario, scenario.lines[0])
     section = as_built(scenario.lines[0], around, NominalValues(nominals_of(scenario)))
+    assert isinstance(section, Section)
     drawing = drawing_of(section, around, scenario.lines[0].layer)
     traces = [part.outline for part in drawing.conductors if part.role == "trace"]
     assert len(traces) == (2 if "gap" in line else 1)
@@ -188,3 +193,96 @@ def test_the_drawing_shows_the_section_to_scale(line: str) -> None:
         widths = [np.ptp(outline[outline[:, 1] == height, 0]) for height in np.unique(outline[:, 1])]
         assert max(widths) == pytest.approx(np.ptp(outline[outline[:, 1] == foot_at, 0])), "the foot is the wider face"
     assert {part.name for part in drawing.conductors if part.role == "plane"} == set(around.references)
+
+
+def test_grounded_copper_keeps_its_distance_from_the_middle_of_the_line() -> None:
+    section = section_of(parse(HEAD + SIX_LAYERS + FEED + 'ground_gap = "200 um"\n'), L1=6 * UM)
+    assert section.ground_gap is not None
+    middle_to_ground = 0.5 * section.foot_width + section.ground_gap
+    assert section.ground_gap[1] == pytest.approx((200 - 6) * UM), "held by the artwork, as the pitch of a pair is"
+    assert np.diff(middle_to_ground)[0] == pytest.approx((3 - 6) * UM)
+
+
+BROADSIDE = """
+[[layers]]
+name = "L1"
+kind = "copper"
+use = "plane"
+foil = "30 um"
+
+[[layers]]
+name = "P1"
+kind = "prepreg"
+thickness = "150 um"
+dk = 3.8
+
+[[layers]]
+name = "L2"
+kind = "copper"
+use = "signal"
+foil = "15 um"
+etch_factor = 3.0
+
+[[layers]]
+name = "C1"
+kind = "core"
+thickness = "100 um"
+dk = 4.2
+
+[[layers]]
+name = "L3"
+kind = "copper"
+use = "signal"
+foil = "17 um"
+
+[[layers]]
+name = "P2"
+kind = "prepreg"
+thickness = "180 um"
+dk = 3.6
+
+[[layers]]
+name = "L4"
+kind = "copper"
+use = "plane"
+foil = "30 um"
+
+[[lines]]
+name = "broadside"
+layer = "L2"
+partner = "L3"
+offset = "20 um"
+width = "100 um"
+target = "75 ohm"
+"""
+
+
+def test_a_broadside_pair_lies_in_the_prepregs_that_press_into_it() -> None:
+    scenario = parse(HEAD + BROADSIDE)
+    line = scenario.lines[0]
+    around = broadside_surroundings_of(scenario, line)
+    assert around.references == ("L1", "L4")
+    section = as_built(line, around, Draws(scenario, {"L3.registration": 12 * UM, "L2.registration": -5 * UM,
+                                                      "L2.foil": 18 * UM}))
+    assert isinstance(section, LayeredSection)
+    assert section.names == ("P2", "C1", "P1")
+    assert section.thicknesses[0] == pytest.approx([197 * UM, 197 * UM])
+    assert section.thicknesses[1] == pytest.approx([100 * UM, 100 * UM])
+    assert section.thicknesses[2] == pytest.approx([165 * UM, 168 * UM])
+    upper, lower = section.traces
+    assert (upper.layer, upper.foot_up, lower.layer, lower.foot_up) == (2, False, 0, True)
+    assert lower.centre - upper.centre == pytest.approx([20 * UM, 37 * UM])
+    assert upper.crest_width == pytest.approx([(100 - 2 * 15 / 3) * UM, (100 - 2 * 18 / 3) * UM])
+    assert {"L2.registration", "L3.etch", "P2.dk", "C1.thickness"} <= properties_that_reach(around, line)
+
+
+def test_a_broadside_pair_under_mask_is_refused() -> None:
+    mask = '[[layers]]\nname = "top mask"\nkind = "mask"\nthickness = "25 um"\nover_copper = "15 um"\ndk = 3.5\n'
+    bare = BROADSIDE[BROADSIDE.index('[[layers]]\nname = "L2"'):]
+    scenario = parse(HEAD + bare)
+    line = scenario.lines[0]
+    section = as_built(line, broadside_surroundings_of(scenario, line), NominalValues(nominals_of(scenario)))
+    assert isinstance(section, LayeredSection)
+    assert section.kinds[-1] == "air", "a bare outer trace stands in air"
+    with pytest.raises(ScenarioError, match="under solder mask"):
+        parse(HEAD + mask + bare)

@@ -58,10 +58,10 @@ def second_opinions(section: Section, mode: int) -> list[SecondOpinion]:
 def why_none(section: Section) -> str:
     """Why no formula here speaks about the first row of `section`; empty where some do."""
     one = section.rows(slice(0, 1))
-    if one.mask is not None:
-        return "solder mask covers it"
     if one.ground_gap is not None:
         return "grounded copper beside it"
+    if one.mask is not None:
+        return "solder mask covers it"
     if not one.foot_plane:
         return "no plane on the side of its foot"
     if one.crest_side and not one.crest_plane:

@@ -7,7 +7,7 @@ A Gaussian copula makes correlations: the germs of correlated variables are join
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from scipy.special import ndtri
@@ -15,6 +15,7 @@ from scipy.stats import qmc
 
 from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.process.laws import Law, quantile
+from tolerance.process.resin import RESIN_MAKES, Resin, resins_of, with_causes
 from tolerance.process.values import nominals_of
 from tolerance.scenario.properties import Property, members
 from tolerance.scenario.tables import Scenario, Variation
@@ -41,11 +42,13 @@ class Process:
 
     nominals : by property name [SI]; a copper layer has its plating and etch factor there even where 0 or infinite.
     correlation : of the germs, (variables, variables).
+    resins : what resin content does to the thickness and Dk of a layer, by layer.
     """
 
     variables: tuple[Variable, ...]
     nominals: Mapping[str, float]
     correlation: FloatArray
+    resins: Mapping[str, Resin] = field(default_factory=dict)  # by layer
 
     @property
     def is_correlated(self) -> bool:
@@ -69,6 +72,13 @@ class ProcessDraws:
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name` ("P1.thickness"), shape (coupons,). KeyError where there is none."""
+        layer, _, item = name.rpartition(".")
+        resin = self.process.resins.get(layer) if item in RESIN_MAKES else None
+        drawn = self._drawn(name)
+        return drawn if resin is None else resin.applied(item, drawn, self._drawn)
+
+    def _drawn(self, name: str) -> FloatArray:
+        """Values of the property by its own law alone, (coupons,)."""
         nominal = self.process.nominals[name]
         found = self._law(name)
         if found is None:
@@ -99,7 +109,8 @@ class ProcessDraws:
 def process_of(scenario: Scenario) -> Process:
     """The variables of a scenario in its order, and their correlation."""
     variables = tuple(variable for variation in scenario.variations for variable in _variables(scenario, variation))
-    return Process(variables, nominals_of(scenario), correlation_of(scenario, variables))
+    nominals = nominals_of(scenario)
+    return Process(variables, nominals, correlation_of(scenario, variables), resins_of(scenario, nominals))
 
 
 def correlation_of(scenario: Scenario, variables: tuple[Variable, ...]) -> FloatArray:
@@ -129,7 +140,8 @@ def correlated_groups(correlation: FloatArray) -> list[list[int]]:
 
 
 def columns_moving(process: Process, names: Collection[str]) -> tuple[int, ...]:
-    """Columns of the variables that move any property in `names`."""
+    """Columns of the variables that move any property in `names`, directly or through the resin of a layer."""
+    names = with_causes(names, process.resins)
     return tuple(column for column, variable in enumerate(process.variables)
                  if any(member.name in names for member, _ in variable.members))
 

@@ -10,6 +10,7 @@ from tolerance.errors import ScenarioError
 from tolerance.scenario.documents import Document, Finding
 from tolerance.scenario.drafts import Draft, Drafts, Model, draft_tables
 from tolerance.scenario.entry_rules import entry_findings
+from tolerance.scenario.mixtures import with_mixtures
 from tolerance.scenario.not_yet import not_yet_findings
 from tolerance.scenario.reading import document_of, read_document
 from tolerance.scenario.stack_rules import stack_findings
@@ -36,7 +37,9 @@ def parse(text: str, *, name: str = "scenario.toml", folder: str | os.PathLike[s
 def _checked(document: Document, findings: Sequence[Finding], *, source: str) -> Scenario:
     """The document as a Scenario. Raises ScenarioError with all problems, sorted by place."""
     drafts, found = draft_tables(document)
-    problems = [*findings, *found, *entry_findings(drafts), *stack_findings(drafts), *variation_findings(drafts)]
+    drafts, unmixed = with_mixtures(drafts)
+    problems = [*findings, *found, *unmixed, *entry_findings(drafts)]
+    problems += [*stack_findings(drafts), *variation_findings(drafts)]
     problems = _one_for_each_key([*problems, *not_yet_findings(document)])
     if problems:
         raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])

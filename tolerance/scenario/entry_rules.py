@@ -9,6 +9,7 @@ from typing import NamedTuple
 from tolerance.scenario.documents import Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
 from tolerance.scenario.keys import Range, listed
+from tolerance.scenario.mixtures import RESIN_KEYS
 from tolerance.scenario.tables import (
     COPPER,
     CORE,
@@ -24,8 +25,6 @@ from tolerance.scenario.tables import (
     Variation,
 )
 
-RESIN_KEYS = ("resin_dk", "glass_dk", "resin_content", "glass_areal_weight")
-
 
 class LayerKeys(NamedTuple):
     """Keys that a kind of layer needs, and those it takes besides."""
@@ -37,8 +36,8 @@ class LayerKeys(NamedTuple):
 LAYER_KEYS: Mapping[str, LayerKeys] = MappingProxyType({
     MASK: LayerKeys(("thickness", "over_copper", "dk"), ("df", "dk_frequency")),
     COPPER: LayerKeys(("use", "foil"), ("plating", "etch_factor", "foot", "conductivity", "roughness_foot",
-                                        "roughness_crest")),
-    PREPREG: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS)),
+                                        "roughness_crest", "copper_share")),
+    PREPREG: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS, "outflow")),
     CORE: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS)),
 })
 
@@ -93,6 +92,8 @@ def _layer(draft: Draft[Layer], has_frequency: bool) -> Iterator[Finding]:
         needed = RESIN_KEYS
         if "dk" in entry.values:
             yield entry.finding("dk", f"not together with {listed(RESIN_KEYS, 'and')}: give one or the other")
+    elif "outflow" in entry.values and kind == PREPREG:
+        yield entry.finding("outflow", f"only with {listed(RESIN_KEYS, 'and')}")
     if has_frequency and kind != COPPER:
         needed = (*needed, "df")
     for key in needed:

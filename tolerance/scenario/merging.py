@@ -14,7 +14,7 @@ from typing import Any
 
 from tolerance.scenario.documents import ENTRY_TABLES, SINGLE_TABLES, Document, Entry
 
-_RESIN = frozenset({"resin_dk", "glass_dk", "resin_content", "glass_areal_weight"})
+_RESIN = frozenset({"resin_dk", "glass_dk", "resin_content", "glass_areal_weight", "outflow"})
 _ENDS = frozenset({"low", "high"})
 _MEASURED = frozenset({"file", "column", "sheet"})
 

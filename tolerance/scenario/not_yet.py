@@ -31,9 +31,6 @@ class NotYet(NamedTuple):
 
 NOT_YET = (
     NotYet("evaluation", ("frequency",)),
-    NotYet("layers", ("resin_content", "resin_dk", "glass_dk", "glass_areal_weight")),
-    NotYet("lines", ("partner",)),
-    NotYet("lines", ("ground_gap",)),
     NotYet("variations", ("level",), _beyond_coupon),
     NotYet("variations", ("shape",), lambda shape: shape == "measured"),
     NotYet("offers"),

@@ -101,6 +101,7 @@ def _line(line: Draft[Line], drafts: Drafts, outlines: Sequence[Outline] | None)
     if len({outline.name for outline in outlines}) < len(outlines):
         return
     yield from _planes(line, outlines, *span(outlines, layer, partner))
+    yield from _under_mask(line, outlines, partner)
     yield from _crest(line, [outline for outline in outlines if outline.name in (layer, partner)])
 
 
@@ -151,6 +152,17 @@ def _planes(line: Draft[Line], layers: Sequence[Outline], upper: int, lower: int
             if len(found) > 1:
                 yield line.entry.finding("references", f"must name at most one plane on each side; {side} the line "
                                                        f"are {len(found)}")
+
+
+def _under_mask(line: Draft[Line], layers: Sequence[Outline], partner: str | None) -> Iterator[Finding]:
+    """A mask that follows a trace of a broadside pair is not acted on yet."""
+    if partner is None:
+        return
+    for index in span(layers, line.text("layer") or "", partner):
+        if any(layers[at].kind == MASK for at in (index - 1, index + 1) if 0 <= at < len(layers)):
+            yield line.entry.finding("partner", "a broadside pair with a trace under solder mask "
+                                                f'("{layers[index].name}") is not yet acted on by this version; leave '
+                                                "the line out to run")
 
 
 def _crest(line: Draft[Line], layers: Sequence[Outline]) -> Iterator[Finding]:

@@ -101,7 +101,12 @@ class Layer(Table):
     resin_content: Annotated[float | None, Quantity("share", Range(0.0, 1.0, low_in=False, high_in=False))] = Field(
         default=None, description="Share of resin by weight; instead of dk")
     glass_areal_weight: Annotated[float | None, Quantity("areal weight", Range(0.0, 5.0, low_in=False))] = Field(
-        default=None, description="Weight of the glass cloth per area; instead of dk")
+        default=None, description="Weight of all glass cloth of the layer per area; instead of dk")
+    outflow: Annotated[float, Quantity("share", Range(0.0, 0.5))] = Field(
+        default=0.0, description='With resin_content: share of the resin that flows out in the press; default "0 %"')
+    copper_share: Annotated[float, Quantity("share", Range(0.0, 1.0, low_in=False))] = Field(
+        default=1.0, description='Copper: share of the area that stays copper; the prepreg that presses into it, where '
+                                 'given by resin_content, fills the rest; default "100 %"')
 
     @property
     def copper_thickness(self) -> float:

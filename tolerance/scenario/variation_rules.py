@@ -198,9 +198,11 @@ def _shape_problems(model: Variation, item: Property, reference: float) -> Itera
                                         f"nominal + shift = {write(mean)}")
     if model.cpk is not None and half <= abs(shift):
         yield "cpk", f"needs a half-width above the shift; they are {write(half)} and {write(abs(shift))}"
-    if MEASURE[item.property] == "number" and model.shape != "lognormal" and low <= 0.0:
-        key = "low" if model.low is not None else "tolerance"
+    key = "low" if model.low is not None else "tolerance"
+    if MEASURE[item.property] in ("number", "share") and model.shape != "lognormal" and low <= 0.0:
         yield key, f"must leave the lower end above 0; it is {write(low)}"
+    if MEASURE[item.property] == "share" and model.shape != "lognormal" and high >= 1.0:
+        yield key.replace("low", "high"), f"must leave the upper end below {write(1.0)}; it is {write(high)}"
 
 
 def _end_key(mean: float, low: float) -> str:

@@ -66,15 +66,25 @@ class PlaneMetal:
 
 
 @dataclass(frozen=True, slots=True)
-class Metals:
-    """What of the copper matters to losses: conductivity [S/m] of the traces, rms roughness [m] of their feet and of
-    their crests and sides, and the planes that end the two sides."""
+class TraceMetal:
+    """What of the copper of a trace matters to losses: conductivity [S/m], rms roughness [m] of the foot, and of the
+    crest and the sides."""
 
     conductivity: float
     roughness_foot: float = 0.0
     roughness_crest: float = 0.0
-    foot_plane: PlaneMetal | None = None
-    crest_plane: PlaneMetal | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Metals:
+    """All the copper of a line: of its traces in their order (a pair on one layer has one entry), and of the planes.
+
+    lower, upper : the plane on the foot side and on the crest side, or at the bottom and the top of a broadside pair.
+    """
+
+    traces: tuple[TraceMetal, ...]
+    lower: PlaneMetal | None = None
+    upper: PlaneMetal | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -55,19 +55,81 @@ def surroundings_of(scenario: Scenario, line: Line) -> Surroundings:
     return Surroundings(foot_up, foot, foot_plane, () if mask else crest, crest_plane, mask)
 
 
-def properties_that_reach(surroundings: Surroundings, line: Line) -> frozenset[str]:
+@dataclass(frozen=True, slots=True)
+class BroadsideTrace:
+    """One trace of a broadside pair: its copper layer, which way its foot points, and the ply its crest presses into.
+
+    body : number of that ply, from the bottom; None where the crest stands in air outside all plies.
+    """
+
+    layer: str
+    foot_up: bool
+    body: int | None
+
+
+@dataclass(frozen=True, slots=True)
+class BroadsideSurroundings:
+    """The plies round a broadside pair from the bottom up, what ends them, and the upper and the lower trace."""
+
+    plies: tuple[PlyPlan, ...]
+    bottom_plane: str | None
+    top_plane: str | None
+    upper: BroadsideTrace
+    lower: BroadsideTrace
+
+    @property
+    def references(self) -> tuple[str, ...]:
+        """Names of the reference planes, top to bottom."""
+        return tuple(end for end in (self.top_plane, self.bottom_plane) if end is not None)
+
+
+def broadside_surroundings_of(scenario: Scenario, line: Line) -> BroadsideSurroundings:
+    """The surroundings of a broadside pair in a checked scenario."""
+    assert line.partner is not None
+    layers = scenario.layers
+    high, low = sorted((position(layers, line.layer), position(layers, line.partner)))
+    planes = reference_planes(scenario, line)
+    above = _side(scenario, layers[:high][::-1], planes.above)
+    below = _side(scenario, layers[low + 1 :], planes.below)
+    between = _side(scenario, layers[high + 1 : low], None, closed=True)
+    plies = (*below[::-1], *between[::-1], *above)
+    upper_up, lower_up = (foot_side(scenario, layers[at].name) == "up" for at in (high, low))
+    first_above = len(below) + len(between)
+    return BroadsideSurroundings(
+        plies, planes.below, planes.above,
+        upper=BroadsideTrace(layers[high].name, upper_up,
+                             first_above - 1 if upper_up else first_above if above else None),
+        lower=BroadsideTrace(layers[low].name, lower_up,
+                             len(below) if not lower_up else len(below) - 1 if below else None),
+    )
+
+
+def properties_that_reach(surroundings: Surroundings | BroadsideSurroundings, line: Line) -> frozenset[str]:
     """Names of the properties ("P1.thickness") on which the section of `line` depends."""
-    names = {f"{line.layer}.{item}" for item in ("etch", "foil", "plating", "etch_factor")}
-    for ply in (*surroundings.foot_side, *surroundings.crest_side):
-        names |= {f"{ply.layer}.thickness", f"{ply.layer}.dk"}
-        names |= {f"{copper}.{item}" for copper in ply.fills for item in ("foil", "plating")}
+    copper = ("etch", "foil", "plating", "etch_factor")
+    if isinstance(surroundings, BroadsideSurroundings):
+        names = {f"{trace.layer}.{item}" for trace in (surroundings.upper, surroundings.lower)
+                 for item in (*copper, "registration")}
+        return frozenset(names | _of_plies(surroundings.plies))
+    names = {f"{line.layer}.{item}" for item in copper}
+    names |= _of_plies((*surroundings.foot_side, *surroundings.crest_side))
     if surroundings.mask is not None:
         names |= {f"{surroundings.mask}.{item}" for item in ("thickness", "over_copper", "dk")}
     return frozenset(names)
 
 
-def _side(scenario: Scenario, layers: tuple[Layer, ...], plane: str | None) -> tuple[PlyPlan, ...]:
-    """Dielectrics outwards from the line to `plane` or to the outside; copper between them is absent."""
+def _of_plies(plies: tuple[PlyPlan, ...]) -> set[str]:
+    names = {f"{ply.layer}.{item}" for ply in plies for item in ("thickness", "dk")}
+    return names | {f"{copper}.{item}" for ply in plies for copper in ply.fills for item in ("foil", "plating")}
+
+
+def _side(
+    scenario: Scenario, layers: tuple[Layer, ...], plane: str | None, *, closed: bool = False,
+) -> tuple[PlyPlan, ...]:
+    """Dielectrics outwards from the line to `plane` or to the outside; copper between them is absent.
+
+    closed : the last of the layers is not the outside of the board.
+    """
     reach: list[Layer] = []
     for layer in layers:
         if layer.name == plane:
@@ -78,8 +140,9 @@ def _side(scenario: Scenario, layers: tuple[Layer, ...], plane: str | None) -> t
         if layer.kind != COPPER:
             continue
         beyond = reach[number + 1] if number + 1 < len(reach) else None
-        if beyond is None or beyond.kind == MASK:
+        if not closed and (beyond is None or beyond.kind == MASK):
             continue  # outermost copper: absent altogether
+        assert beyond is not None
         fills[_pressing(scenario, layer.name, nearer=reach[number - 1].name)].append(layer.name)
     return tuple(PlyPlan(layer.name, layer.kind, tuple(fills[layer.name])) for layer in reach if layer.kind != COPPER)
 

@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 
 from tolerance.arrays import ComplexArray, FloatArray
+from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Mask, Ply, Section
 
 #: Ends of the band over which the loss tangent stays nearly level [Hz].
@@ -44,6 +45,16 @@ def at_frequency(section: Section, frequency: float) -> Section:
         section, foot_side=tuple(map(ply_at, section.foot_side)), crest_side=tuple(map(ply_at, section.crest_side)),
         mask=None if mask is None else replace(mask, dk=_carried(mask, frequency)),
     )
+
+
+def layered_at_frequency(section: LayeredSection, frequency: float) -> LayeredSection:
+    """The same for traces on several layers."""
+    if len(section.dfs) != len(section.dks):
+        raise ValueError("a section without df, which losses need")
+    anchors = section.dk_frequencies or (None,) * len(section.dks)
+    return replace(section, dks=tuple(
+        complex_dk(dk=dk, df=df, dk_frequency=anchor, frequency=frequency)
+        for dk, df, anchor in zip(section.dks, section.dfs, anchors, strict=True)))
 
 
 def _carried(part: Ply | Mask, frequency: float) -> ComplexArray:

@@ -7,10 +7,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray, IntArray
+from tolerance.arrays import FloatArray, IntArray, NumberArray
+from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
 from tolerance.solver.assembly import charge, near_system
-from tolerance.solver.plan import Plan
+from tolerance.solver.layered import LayeredPlan, capacitance_matrix, plan_layered
+from tolerance.solver.plan import Plan, SolverSettings, plan_for
 from tolerance.solver.structure import media, structure, topology
 from tolerance.solver.transmission import SPEED_OF_LIGHT
 
@@ -44,11 +46,27 @@ class ModeSolution:
         return np.asarray(np.sqrt(self.effective_dk) / SPEED_OF_LIGHT)
 
 
-def solve_modes(section: Section, plan: Plan, *, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
+AnySection = Section | LayeredSection
+AnyPlan = Plan | LayeredPlan
+
+
+def plan_line(section: AnySection, settings: SolverSettings) -> AnyPlan:
+    """The plan for a line whose nominal section is the first of `section`."""
+    return plan_layered(section, settings) if isinstance(section, LayeredSection) else plan_for(section, settings)
+
+
+def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
     """Solve for even (1) and odd (-1) excitation; a single line has mode 1 only.
 
+    Of a broadside pair, whose traces may be unequal, odd stands for equal and opposite charges (twice the capacitance
+    1 / (q' C^-1 q), q = (1, -1)), even for both traces tied (half of their capacitance), so that the differential
+    impedance is twice the odd mode's and the common one half the even mode's, as for any pair.
     Every section must be possible (see Section.possible). The result does not depend on how sections are batched.
     """
+    if isinstance(section, LayeredSection):
+        assert isinstance(plan, LayeredPlan)
+        return _solve_layered(section, plan, modes)
+    assert isinstance(plan, Plan)
     count = section.count
     filled = {mode: np.empty(count) for mode in modes}
     air = {mode: np.empty(count) for mode in modes}
@@ -66,6 +84,33 @@ def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
         size = _batch_size(section.rows(rows[:1]), plan)
         for start in range(0, rows.size, size):
             yield rows[start : start + size]
+
+
+def _solve_layered(section: LayeredSection, plan: LayeredPlan, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
+    parts: dict[int, list[tuple[FloatArray, FloatArray]]] = {mode: [] for mode in modes}
+    for rows in layered_batches(section, plan):
+        batch = section.rows(rows)
+        matrices = capacitance_matrix(batch, plan), capacitance_matrix(batch.in_air(), plan)
+        for mode in modes:
+            parts[mode].append((mode_capacitance(matrices[0], mode), mode_capacitance(matrices[1], mode)))
+    return {mode: ModeSolution(*(np.concatenate(column) for column in zip(*parts[mode], strict=True)))
+            for mode in modes}
+
+
+def layered_batches(section: LayeredSection, plan: LayeredPlan) -> Iterator[slice]:
+    """Rows of the section in batches that fit the cache."""
+    unknowns = sum(count[0] for count in plan.counts.values())
+    size = max(1, 200_000 // unknowns**2)
+    for start in range(0, section.count, size):
+        yield slice(start, start + size)
+
+
+def mode_capacitance(matrix: NumberArray, mode: int) -> NumberArray:
+    """Capacitance of a mode, see solve_modes, from the matrix of two traces (sections, 2, 2): (sections,)."""
+    if mode > 0:
+        return np.asarray(0.5 * matrix.sum(axis=(1, 2)))
+    inverse = np.linalg.inv(matrix)
+    return np.asarray(2.0 / (inverse[:, 0, 0] + inverse[:, 1, 1] - inverse[:, 0, 1] - inverse[:, 1, 0]))
 
 
 def _solve_batch(section: Section, plan: Plan, modes: tuple[int, ...]) -> dict[int, tuple[FloatArray, FloatArray]]:

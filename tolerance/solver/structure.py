@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from tolerance.arrays import FloatArray, IntArray, NumberArray
-from tolerance.sections.section import Ply, Section
+from tolerance.sections.section import Mask, Ply, Section
 from tolerance.solver.assembly import Medium, NearImage
 from tolerance.solver.edges import Edge, ground_edges, mask_edges, trace_edges
 from tolerance.solver.kernels import FlatStack, far_images, plane_image, spectral_rest
@@ -43,7 +43,15 @@ def topology(section: Section) -> IntArray:
 
 
 def structure(section: Section) -> Structure:
-    """Edges and kernel of a batch of sections of one topology."""
+    """Edges and kernel of a batch of sections of one topology.
+
+    A coplanar line under one flat cover is a line under a mask as high as the cover: its grounded copper reaches
+    further than a quadrature over the wavenumber could follow.
+    """
+    if section.ground_gap is not None and len(section.crest_side) == 1 and not section.crest_plane:
+        cover = section.crest_side[0]
+        mask = Mask(section.thickness + cover.thickness, cover.thickness, cover.dk)
+        return structure(replace(section, crest_side=(), mask=mask))
     if section.mask is not None:
         mask = section.mask
         if _is(section, FLAT_ABOVE) and section.ground_gap is None:  # the flat mask stands higher than the mesa

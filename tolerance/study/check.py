@@ -5,6 +5,7 @@ from __future__ import annotations
 from tolerance.formulas.second_opinion import second_opinions, why_none
 from tolerance.nominal import CheckResult, FormulaOpinion, FormulaOpinions, NominalLine
 from tolerance.scenario.tables import Scenario
+from tolerance.sections.section import Section
 from tolerance.solver.line import solve_modes
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
@@ -21,19 +22,22 @@ def _check_line(prepared: PreparedLine, *, formulas: bool) -> NominalLine:
     line, pair = prepared.line, prepared.line.is_pair
     modes = solve_modes(prepared.nominal, prepared.plan, modes=(EVEN, ODD) if pair else (EVEN,))
     shown = modes[ODD if prepared.mode == "differential" else EVEN]
-    dimensions = [("width", line.width)] + ([] if line.gap is None else [("gap", line.gap)])
+    drawn = (("width", line.width), ("gap", line.gap), ("ground gap", line.ground_gap), ("offset", line.offset or None))
     return NominalLine(
         name=line.name, kind=prepared.kind, layer=line.layer, references=prepared.surroundings.references,
         target=line.target, impedance=float(prepared.impedance_of(modes)[0]),
         effective_dk=float(shown.effective_dk[0]), delay=float(shown.delay[0]),
         common_mode=0.5 * float(modes[EVEN].impedance[0]) if pair else None,
         even_effective_dk=float(modes[EVEN].effective_dk[0]) if pair else None,
-        dimensions=tuple(dimensions), formulas=_opinions(prepared) if formulas else None,
+        dimensions=tuple((name, length) for name, length in drawn if length is not None),
+        formulas=_opinions(prepared) if formulas else None,
     )
 
 
 def _opinions(prepared: PreparedLine) -> FormulaOpinions:
     """What formulas say of the impedance that is shown: twice the odd mode's or half the even mode's for pairs."""
+    if not isinstance(prepared.nominal, Section):
+        return FormulaOpinions((), "traces on two layers")
     mode = ODD if prepared.mode == "differential" else EVEN
     factor = {"single": 1.0, "differential": 2.0, "common": 0.5}[prepared.mode]
     opinions = tuple(

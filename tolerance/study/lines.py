@@ -10,10 +10,14 @@ from tolerance.arrays import FloatArray
 from tolerance.process.values import NominalValues, ProcessValues, nominals_of
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.as_built import as_built
-from tolerance.sections.section import Section
-from tolerance.sections.surroundings import Surroundings, surroundings_of
-from tolerance.solver.line import ModeSolution, solve_modes
-from tolerance.solver.plan import Plan, SolverSettings, plan_for
+from tolerance.sections.surroundings import (
+    BroadsideSurroundings,
+    Surroundings,
+    broadside_surroundings_of,
+    surroundings_of,
+)
+from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, solve_modes
+from tolerance.solver.plan import SolverSettings
 
 EVEN, ODD = 1, -1
 
@@ -23,9 +27,9 @@ class PreparedLine:
     """A line with all that its solutions share."""
 
     line: Line
-    surroundings: Surroundings
-    nominal: Section
-    plan: Plan
+    surroundings: Surroundings | BroadsideSurroundings
+    nominal: AnySection
+    plan: AnyPlan
     low_limit: float
     high_limit: float
 
@@ -37,22 +41,26 @@ class PreparedLine:
     @property
     def kind(self) -> str:
         """The line in words."""
-        around = self.surroundings
-        if around.foot_plane and around.crest_plane:
-            word = "stripline"
-        elif around.mask is not None:
-            word = "mask-coated microstrip"
-        elif around.crest_side:
-            word = "embedded microstrip"
+        around, coplanar = self.surroundings, self.line.ground_gap is not None
+        words = []
+        if isinstance(around, BroadsideSurroundings):
+            words.append("broadside")
+        elif around.foot_plane and around.crest_plane:
+            words += ["coplanar stripline" if coplanar else "stripline"]
         else:
-            word = "bare microstrip"
-        return f"{word} pair" if self.line.is_pair else word
+            cover = "mask-coated" if around.mask is not None else "embedded" if around.crest_side else "bare"
+            words += [cover, "coplanar" if coplanar else "microstrip"]
+        if self.line.is_pair:
+            words.append("pair")
+        elif words[-1] == "coplanar":
+            words.append("line")
+        return " ".join(words) + (", common mode" if self.mode == "common" else "")
 
-    def section(self, values: ProcessValues) -> Section:
+    def section(self, values: ProcessValues) -> AnySection:
         """As-built sections of the line for process values."""
         return as_built(self.line, self.surroundings, values)
 
-    def impedance(self, section: Section) -> FloatArray:
+    def impedance(self, section: AnySection) -> FloatArray:
         """Solved impedance [ohm] of possible sections: of the line, or of the pair in its mode; shape (sections,)."""
         mode = ODD if self.mode == "differential" else EVEN
         return self.impedance_of(solve_modes(section, self.plan, modes=(mode,)))
@@ -66,10 +74,11 @@ class PreparedLine:
 
 def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> PreparedLine:
     """Make `line` of a checked scenario ready."""
-    surroundings = surroundings_of(scenario, line)
+    around = surroundings_of if line.partner is None else broadside_surroundings_of
+    surroundings = around(scenario, line)
     nominal = as_built(line, surroundings, NominalValues(nominals_of(scenario)))
     half = line.target * scenario.limit_of(line)
-    return PreparedLine(line, surroundings, nominal, plan_for(nominal, settings),
+    return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
                         low_limit=line.target - half, high_limit=line.target + half)
 
 
