@@ -14,6 +14,7 @@ from tolerance.arrays import FloatArray, IntArray
 from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
+from tolerance.sections.reading import ReadingRise as ReadingRise
 from tolerance.statistics.estimates import Driver as Driver
 from tolerance.statistics.estimates import Interval as Interval
 
@@ -79,6 +80,7 @@ class LineResult:
     prediction: Prediction
     drawing: Drawing
     direct: DirectCheck | None = None
+    reading: ReadingRise | None = None  # what series resistance adds to a reading; the judged impedance is without it
 
 
 @dataclass(frozen=True, slots=True)

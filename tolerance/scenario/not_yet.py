@@ -30,11 +30,11 @@ class NotYet(NamedTuple):
 
 
 NOT_YET = (
-    NotYet("evaluation", ("frequency",)),
     NotYet("variations", ("level",), _beyond_coupon),
     NotYet("variations", ("shape",), lambda shape: shape == "measured"),
     NotYet("offers"),
-    NotYet("test"),
+    *(NotYet("test", (key,)) for key in ("repeatability", "bias", "guard_band", "panels_per_lot", "coupons_per_panel",
+                                         "sample_size", "accept_number")),
 )
 
 _REMOVE: Mapping[bool, str] = MappingProxyType({

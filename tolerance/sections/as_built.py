@@ -30,19 +30,22 @@ def as_built(
     if isinstance(surroundings, BroadsideSurroundings):
         return _broadside(line, surroundings, values)
     foot, crest, thickness = _trace(line, line.layer, values)
+    lossy = surroundings.metals is not None
     mask = None
     if surroundings.mask is not None:
         name = surroundings.mask
         mask = Mask(on_laminate=values.value(f"{name}.thickness"), over_copper=values.value(f"{name}.over_copper"),
-                    dk=values.value(f"{name}.dk"), name=name)
+                    dk=values.value(f"{name}.dk"), name=name, dk_frequency=surroundings.mask_dk_frequency,
+                    df=None if surroundings.metals is None else values.value(f"{name}.df"))
     return Section(
         foot_width=foot, crest_width=crest, thickness=thickness,
         gap=None if line.gap is None else line.width + line.gap - foot,
-        foot_side=tuple(_ply(plan, values) for plan in surroundings.foot_side),
+        foot_side=tuple(_ply(plan, values, lossy=lossy) for plan in surroundings.foot_side),
         foot_plane=surroundings.foot_plane is not None,
-        crest_side=tuple(_ply(plan, values) for plan in surroundings.crest_side),
+        crest_side=tuple(_ply(plan, values, lossy=lossy) for plan in surroundings.crest_side),
         crest_plane=surroundings.crest_plane is not None,
         mask=mask, ground_gap=None if line.ground_gap is None else line.ground_gap - (foot - line.width),
+        metals=surroundings.metals,
     )
 
 
@@ -57,7 +60,8 @@ def _trace(line: Line, layer: str, values: ProcessValues) -> tuple[FloatArray, F
 
 def _broadside(line: Line, around: BroadsideSurroundings, values: ProcessValues) -> LayeredSection:
     """The partner is shifted by the offset and by what the registration of both layers adds."""
-    plies = [_ply(plan, values) for plan in around.plies]
+    lossy = around.metals is not None
+    plies = [_ply(plan, values, lossy=lossy) for plan in around.plies]
     shapes = [_trace(line, trace.layer, values) for trace in (around.upper, around.lower)]
     above, below = ([] if trace.body is not None else [_air(thickness)]
                     for trace, (_, _, thickness) in zip((around.upper, around.lower), shapes, strict=True))
@@ -73,15 +77,18 @@ def _broadside(line: Line, around: BroadsideSurroundings, values: ProcessValues)
         tuple(ply.thickness for ply in plies), tuple(ply.dk for ply in plies), around.bottom_plane is not None,
         around.top_plane is not None, tuple(replace(trace, centre=trace.centre - middle) for trace in traces),
         tuple(ply.name for ply in plies), tuple(ply.kind for ply in plies),
+        dfs=tuple(ply.df for ply in plies if ply.df is not None) if lossy else (),
+        dk_frequencies=tuple(ply.dk_frequency for ply in plies), metals=around.metals,
     )
 
 
 def _air(copper: FloatArray) -> Ply:
-    return Ply(AIR_OVER_COPPER * copper, np.ones_like(copper), "air", "air")
+    return Ply(AIR_OVER_COPPER * copper, np.ones_like(copper), "air", "air", df=np.zeros_like(copper))
 
 
-def _ply(plan: PlyPlan, values: ProcessValues) -> Ply:
+def _ply(plan: PlyPlan, values: ProcessValues, *, lossy: bool) -> Ply:
     thickness = values.value(f"{plan.layer}.thickness")
     for copper in plan.fills:
         thickness = thickness + values.value(f"{copper}.foil") + values.value(f"{copper}.plating")
-    return Ply(thickness, values.value(f"{plan.layer}.dk"), plan.layer, plan.kind)
+    return Ply(thickness, values.value(f"{plan.layer}.dk"), plan.layer, plan.kind,
+               values.value(f"{plan.layer}.df") if lossy else None, plan.dk_frequency)

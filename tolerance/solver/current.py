@@ -96,5 +96,5 @@ def trace_impedance(
 
 
 def direct_current_resistance(metal: TraceMetal, *, cross_section: FloatArray) -> FloatArray:
-    """Resistance [ohm/m] of a trace to direct current: resistivity over area [m^2]. Planes, being infinite, have none."""
+    """Resistance [ohm/m] of a trace to direct current: resistivity over area [m^2]. Planes have none."""
     return np.asarray(1.0 / (metal.conductivity * cross_section))

@@ -1,6 +1,8 @@
 """Potential of a line charge between flat dielectric layers and planes.
 
-A Dk may be complex (its loss in the imaginary part): every formula here is analytic in it. The charge and the point lie in one layer, the body: the dielectric round the trace, of Dk `body_dk`. Heights y are
+A Dk may be complex, its loss in the imaginary part: every formula here is analytic in it.
+
+The charge and the point lie in one layer, the body: the dielectric round the trace, of Dk `body_dk`. Heights y are
 counted from the lower face of that layer. Transformed along x with wavenumber k, the potential of a unit charge is
 1 / (2 k Dk) times a sum of exponentials in k y; each exponential with a constant factor is an image charge.
 (Standard theory of layered media; images in a slab: P. Silvester, Proc. IEE 115 (1968), pages 43-48.)

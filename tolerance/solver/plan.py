@@ -38,7 +38,7 @@ class SolverSettings:
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """Nodes (unknowns, quadrature places) by edge name, image places and nodes over wavenumber (for the field, for the planes' current)."""
+    """Nodes (unknowns, quadrature places) by edge name, image places, nodes over wavenumber for the field and for planes' currents."""
 
     counts: Mapping[str, tuple[int, int]]
     multiples: tuple[float, ...]

@@ -218,6 +218,7 @@ def _line_result(line: PredictedLine, verdict: LineYield, drivers: tuple[Driver,
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
         spread=Spread(edges, counts), prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
         drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
+        reading=prepared.reading,
     )
 
 
