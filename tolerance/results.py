@@ -108,6 +108,7 @@ class RunResult:
     impossible: int  # coupons on which some line cannot exist
     lines: tuple[LineResult, ...]
     record: Record
+    frequency: float | None = None  # [Hz] where the lines are evaluated; None: lossless and static
 
     @property
     def misses_target(self) -> bool:

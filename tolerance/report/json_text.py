@@ -34,6 +34,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "title": result.title,
         "seed": int(result.seed),
         "coupons": int(result.coupons),
+        **({} if result.frequency is None else {"frequency_hz": float(result.frequency)}),
         "target_yield": float(result.target_yield),
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),

@@ -59,8 +59,8 @@ def print_check(result: CheckResult, lengths: LengthUnit, console: Console, *, s
     if shares:
         _print_table(console, _share_table(result, _name_width(console)))
         _say(console, "Shares of a trace's charge and, at small skin depth, of its current by face; fringe: share of "
-                      "the capacitance beyond that of parallel plates. Coupling: inductive, capacitive, and the backward "
-                      "crosstalk coefficient.")
+                      "the capacitance beyond that of parallel plates. Coupling: inductive, capacitive, and the "
+                      "backward crosstalk coefficient.")
     if any(line.formulas is not None for line in result.lines):
         _print_table(console, _formula_table(result, _name_width(console)))
         _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
@@ -77,6 +77,9 @@ def print_run(result: RunResult, console: Console) -> None:
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_direct(result, console)
+    if result.frequency is not None:
+        _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
+    _say_readings(result, console)
     _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
 
 
@@ -193,7 +196,7 @@ def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> N
     _say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one.")
 
 
-def _say_readings(result: CheckResult, console: Console) -> None:
+def _say_readings(result: CheckResult | RunResult, console: Console) -> None:
     for line in result.lines:
         if line.reading is not None:
             _say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.reading.position:.6g} mm '

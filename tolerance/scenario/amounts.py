@@ -187,14 +187,21 @@ class ReadingAt(Kind):
 
     @property
     def allowed(self) -> str:
-        return f'{{ position = "75 mm" }}, the position being {self.position.allowed}'
+        return self._words(self.position.allowed)
+
+    @staticmethod
+    def _words(position: object) -> str:
+        return f'{{ position = "75 mm" }}, the position being {position}'
 
     def read(self, given: object, *, from_file: bool) -> Reading:
         if isinstance(given, Reading) and not from_file:
             return given
         if not isinstance(given, Mapping) or set(given) != {"position"}:
             raise RefusedError(self.allowed)
-        return Reading(self.position.read(given["position"], from_file=from_file))
+        try:
+            return Reading(self.position.read(given["position"], from_file=from_file))
+        except RefusedError as reason:
+            raise RefusedError(self._words(reason)) from None
 
     def json_schema(self) -> dict[str, Any]:
         return {"type": "object", "properties": {"position": self.position.json_schema()}, "required": ["position"],

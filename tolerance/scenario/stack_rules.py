@@ -99,8 +99,8 @@ def _rough_planes(layers: Sequence[Outline]) -> Iterator[Finding]:
             continue
         if (model.roughness_foot or 0.0) != (model.roughness_crest or 0.0) and decided_foot(layers, index) is None:
             yield layer.entry.finding(
-                "foot", 'missing; must be "up" or "down", because the plane\'s faces differ in roughness and the stackup '
-                        "does not decide which is the foot")
+                "foot", 'missing; must be "up" or "down", because its faces differ in roughness and the stackup does '
+                        "not decide which is the foot")
 
 
 def _line(line: Draft[Line], drafts: Drafts, outlines: Sequence[Outline] | None) -> Iterator[Finding]:

@@ -38,7 +38,10 @@ class SolverSettings:
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """Nodes (unknowns, quadrature places) by edge name, image places, nodes over wavenumber for the field and for planes' currents."""
+    """Nodes (unknowns, quadrature places) by edge name, image places, and nodes over the wavenumber.
+
+    plane_wavenumbers : those for the currents in the planes.
+    """
 
     counts: Mapping[str, tuple[int, int]]
     multiples: tuple[float, ...]

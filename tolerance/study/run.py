@@ -108,7 +108,7 @@ def run(
     return RunResult(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside, impossible=judged.impossible, lines=tuple(results),
-        record=_record(scenario, settings, results, draws.replicates, clock),
+        record=_record(scenario, settings, results, draws.replicates, clock), frequency=scenario.evaluation.frequency,
     )
 
 
