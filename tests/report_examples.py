@@ -7,6 +7,7 @@ import numpy as np
 from tolerance.arrays import FloatArray, read_only
 from tolerance.nominal import CheckResult, NominalLine
 from tolerance.results import (
+    Certificate,
     Conductor,
     DirectCheck,
     Drawing,
@@ -18,6 +19,7 @@ from tolerance.results import (
     Region,
     RunResult,
     Spread,
+    YieldByLimit,
 )
 from tolerance.scenario.checking import parse
 from tolerance.scenario.tables import Scenario
@@ -193,10 +195,20 @@ def made_up_line(name: str = "radio feed", *, target: float = 50.0, limit: float
         cp=around((high - low) / (6 * deviation), 0.005), cpk=around(cpk, 0.006), impossible=impossible,
         drivers=some_drivers() if drivers is None else drivers,
         spread=Spread(edges=read_only(edges), counts=counts.astype(np.int64)),
+        by_limit=some_curve(np.abs(impedance / target - 1.0)),
         prediction=Prediction(solver_runs=96, degree=2, terms=28, leave_one_out_error=0.004, held_out_error=0.0037,
                               held_out_largest=0.011),
+        certificate=Certificate(certified=True, solved=41, needed=41, cap=4096, multiple=6.0, error=0.005),
         drawing=microstrip_drawing() if drawing is None else drawing,
     )
+
+
+def some_curve(off_target: FloatArray) -> YieldByLimit:
+    """Yield against the limit of coupons that lie so far off their target."""
+    limits = 0.005 * np.arange(41)
+    value = np.array([np.mean(off_target <= limit) for limit in limits])
+    return YieldByLimit(read_only(limits), read_only(value), read_only(np.maximum(value - 0.002, 0.0)),
+                        read_only(np.minimum(value + 0.002, 1.0)), around(float(np.quantile(off_target, 0.99)), 0.001))
 
 
 def made_up_result(lines: tuple[LineResult, ...] | None = None, *, title: str = "Orchard gateway, 6 layers",
@@ -206,6 +218,7 @@ def made_up_result(lines: tuple[LineResult, ...] | None = None, *, title: str = 
     return RunResult(
         title=title, seed=1, coupons=65536, target_yield=0.99,
         inside=share(min(line.inside.value for line in lines)), impossible=impossible, lines=lines,
+        by_limit=min((line.by_limit for line in lines), key=lambda curve: float(curve.value.sum())),
         record=Record(scenario_text=SCENARIO_TEXT, scenario_path="orchard.toml",
                       versions={"tolerance": "0.1.0", "numpy": "2.4.0"}, replicates=8, solver_runs=96 * len(lines),
                       settings={"elements_per_edge": "24"}, seconds={"solver": 1.25, "drivers": 0.5}),

@@ -12,6 +12,7 @@ import pytest
 
 from tests.scenario_texts import BOARD, changed
 from tolerance.command import main
+from tolerance.report.files import NOTE
 
 FIVE_MISTAKES = (
     ('foil = "18 um"', 'foil = "18"'),
@@ -67,8 +68,38 @@ def test_run_writes_workbook_and_figures(board: Path, capsys: pytest.CaptureFixt
     folder = board.parent / "result"
     assert command("run", board, "--coupons", 256, "--out", folder) == 0
     names = {path.suffix for path in folder.iterdir()}
-    assert names == {".xlsx", ".png"}
+    assert names == {".xlsx", ".png", ".json"}  # the last: a note of what was written
     assert "estimate" in capsys.readouterr().out
+
+
+def test_a_line_that_is_renamed_leaves_no_old_figure_behind_and_what_is_not_ours_stays(board: Path) -> None:
+    folder = board.parent / "result"
+    assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0
+    names = {path.name for path in folder.iterdir()}
+    assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0  # figures the same, byte for byte
+    assert {path.name for path in folder.iterdir()} == names
+    (folder / "notes.png").write_bytes(b"mine")
+    (folder / "clock-pair.png").write_bytes(b"changed by hand")
+    board.write_text(changed(BOARD, ("radio feed", "antenna feed"), ("clock pair", "clock")), encoding="utf-8")
+    assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0
+    assert {path.name for path in folder.iterdir() if not path.name.startswith(".")} == {
+        "tolerance.xlsx", "all-lines.png", "yield-against-limit.png", "antenna-feed.png", "clock.png", "notes.png",
+        "clock-pair.png"}
+    assert command("run", board, "--coupons", 256, "--quiet", "--out", folder, "--figures", "svg") == 0
+    assert {path.name for path in folder.glob("*.png")} == {"notes.png", "clock-pair.png"}
+    assert {path.name for path in folder.glob("*.svg")} == {
+        "all-lines.svg", "yield-against-limit.svg", "antenna-feed.svg", "clock.svg"}
+
+
+@pytest.mark.parametrize("note", ["", "[1, 2]", '{"run": {"../board.toml": "x"}}', '{"run": 3}'])
+def test_a_note_that_is_not_ours_removes_nothing(board: Path, note: str) -> None:
+    folder = board.parent / "result"
+    folder.mkdir()
+    (folder / NOTE).write_text(note, encoding="utf-8")
+    (folder / "kept.png").touch()
+    assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0
+    assert board.exists()
+    assert (folder / "kept.png").exists()
 
 
 def test_quiet_says_nothing(board: Path, capsys: pytest.CaptureFixture[str]) -> None:

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+import re
 import subprocess
 import sys
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
 from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.image import imread
 
@@ -19,16 +22,17 @@ from tests.report_examples import (
     made_up_result,
     many_lines,
     microstrip_drawing,
+    share,
     some_drivers,
     stripline_drawing,
 )
 from tolerance.arrays import read_only
 from tolerance.errors import UnfinishedError
-from tolerance.report.figures import line_page, overview_page, write_figures
-from tolerance.report.looks import BODY, FAIL_FILL, MATERIAL
+from tolerance.report.figures import FigureFormat, limits_page, line_page, overview_page, write_figures
+from tolerance.report.looks import BODY, FAIL, FAIL_FILL, FAINT_INK, MATERIAL
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section, stand_apart
-from tolerance.results import Drawing, LineResult, Spread
+from tolerance.results import Drawing, Driver, LineResult, Spread
 
 NOTHING_VARIES = replace(made_up_line("constant", drivers=()), spread=Spread(
     edges=read_only([50.2 - 1e-9, 50.2 + 1e-9]), counts=np.array([65536])))
@@ -51,15 +55,15 @@ def test_one_picture_for_each_line_and_one_of_all(tmp_path: Path) -> None:
     seen = []
     paths = write_figures(made_up_result(many_lines(3)), tmp_path / "figures", "um",
                           lambda step, done, total: seen.append((step, done, total)))
-    assert [path.name for path in paths] == ["all-lines.png", "radio-feed-1.png", "display-pair-2.png",
-                                             "memory-clock-3.png"]
+    assert [path.stem for path in paths] == [
+        "all-lines", "yield-against-limit", "radio-feed-1", "display-pair-2", "memory-clock-3"]
     assert sorted(path.name for path in (tmp_path / "figures").iterdir()) == sorted(path.name for path in paths)
     for path in paths:
         picture = imread(path)
         assert picture.shape[1] >= 1590
         assert picture.shape[0] >= 890
         assert np.ptp(picture[:, :, :3]) > 0.8  # ink on paper
-    assert seen[-1] == ("figures", 3, 3)
+    assert seen[-1] == ("figures", 5, 5)
 
 
 @pytest.mark.parametrize("line", EXTREMES, ids=lambda line: str(line.name))
@@ -117,6 +121,58 @@ def test_the_drivers_are_named_in_rank_and_the_rest_is_counted() -> None:
     words = words_on(axes)
     assert words.index("P1.thickness") < words.index("L1.etch") < words.index("P1.dk")
     assert "and 3 more, each at most" in words
+    note = next(text for text in axes.texts if text.get_text().startswith("and 3 more"))
+    assert note.get_verticalalignment() == "top"  # below the axis, where no name can run into it
+    assert note.xyann[1] < 0.0  # type: ignore[attr-defined]
+    few = (*some_drivers(6), Driver("C9.dk", share(0.0), share(0.00001)))
+    assert "and 1 more, below 0.1 %" in words_on(draw_drivers(Figure().add_subplot(), made_up_line(drivers=few)))
+
+
+def test_what_never_fails_is_not_told_in_the_colour_of_failing() -> None:
+    for deviation, colour in ((0.05, FAINT_INK), (1.6, FAIL)):
+        axes = draw_spread(Figure().add_subplot(), made_up_line(deviation=deviation), target_yield=0.99)
+        tails = [text for text in axes.texts if text.get_text().endswith(("below", "above"))]
+        assert len(tails) == 2
+        assert {text.get_color() for text in tails} == {colour}
+
+
+@pytest.mark.parametrize(("title", "cut"), [
+    ("Weir", False), ("A board whose title has fifty-one letters, and no more", False), ("very " * 40 + "long", True)])
+def test_a_title_is_made_smaller_before_it_is_cut_and_never_runs_into_the_yield(title: str, cut: bool) -> None:
+    page = overview_page(made_up_result(title=title))
+    canvas: Any = FigureCanvasAgg(page)  # its drawing is not typed
+    words, answer = page.texts[2], page.texts[0]
+    assert answer.get_text().startswith("yield")
+    assert ("..." in words.get_text()) is cut
+    renderer = canvas.get_renderer()
+    assert words.get_window_extent(renderer).x1 < answer.get_window_extent(renderer).x0
+
+
+@pytest.mark.parametrize("lines", [1, 20])
+def test_the_yield_against_the_limit_is_drawn_for_every_line(lines: int) -> None:
+    page = limits_page(made_up_result(many_lines(lines, long_names=True)))
+    assert len(page.axes) == lines + 1
+    needed = page.axes[1].texts[0].get_text()
+    assert re.fullmatch(r"99 % would pass at \d+\.\d+ %", needed)
+    dots = [line for line in page.axes[1].lines if line.get_marker() == "o"]
+    assert [float(np.asarray(dot.get_xdata())[0]) for dot in dots] == pytest.approx([7.0])  # the limit of 7 %
+
+
+@pytest.mark.parametrize(("figure_format", "start", "mark"), [("svg", b"<?xml", b"<svg"), ("pdf", b"%PDF-", b"%%EOF")])
+def test_figures_as_curves_hold_no_date_and_are_the_same_each_time(
+    figure_format: FigureFormat, start: bytes, mark: bytes, tmp_path: Path,
+) -> None:
+    folders = [tmp_path / "one", tmp_path / "other"]
+    written = [write_figures(made_up_result(), folder, "um", figure_format=figure_format) for folder in folders]
+    assert [path.name for path in written[0]] == [
+        f"{name}.{figure_format}" for name in ("all-lines", "yield-against-limit", "radio-feed")]
+    contents = [[path.read_bytes() for path in paths] for paths in written]
+    assert contents[0] == contents[1]
+    for content in contents[0]:
+        assert content.startswith(start)
+        assert mark in content
+        assert b"date>" not in content
+        assert b"CreationDate" not in content
 
 
 @pytest.mark.parametrize("line", EXTREMES[5:], ids=lambda line: str(line.name))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import re
 import subprocess
 import sys
 from dataclasses import replace
@@ -15,12 +16,13 @@ from tests.report_examples import (
     made_up_line,
     made_up_result,
     many_lines,
+    share,
     some_drivers,
     with_direct_check,
 )
 from tolerance.nominal import CheckResult
 from tolerance.report.terminal import print_check, print_run
-from tolerance.results import Interval, RunResult
+from tolerance.results import Driver, Interval, RunResult
 
 ESCAPE = "\x1b"
 
@@ -86,12 +88,20 @@ def test_impossible_coupons_direct_checks_and_missing_drivers_are_told() -> None
     line = made_up_line(impossible=12, drivers=())
     text = run_text(made_up_result((replace(line, direct=with_direct_check(line)),), impossible=12))
     assert 'failing: 12 of 65,536; "radio feed" 12.' in " ".join(text.split())
-    assert "on 500 coupons" in text
+    assert "Coupons that the field solver solved itself" in " ".join(text.split())
+    assert re.search(r"^radio feed +500 +0\.0030 +0\.0120 +1 *$", text, re.MULTILINE)
     assert "nothing that varies reaches it" in text
 
 
 def test_shapley_effects_rank_under_their_name() -> None:
-    assert "by Shapley effect" in run_text(made_up_result((made_up_line(drivers=some_drivers(3, shapley=True)),)))
+    lines = (made_up_line("plain"), made_up_line(drivers=some_drivers(3, shapley=True)), made_up_line("x", drivers=()))
+    assert "largest drivers, by Shapley effect " in run_text(made_up_result(lines))
+    assert "largest drivers, by total effect " in run_text(made_up_result())
+
+
+def test_a_driver_of_one_layer_is_named_in_full() -> None:
+    together = Driver("bottom mask.thickness + bottom mask.over_copper", share(0.5), share(0.5))
+    assert "bottom mask.thickness + over_copper 50 %" in run_text(made_up_result((made_up_line(drivers=(together,)),)))
 
 
 def test_colour_only_on_a_terminal_and_not_against_the_readers_will(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -126,6 +136,20 @@ def test_a_check_shows_impedances_delays_and_dimensions_in_the_unit_asked_for() 
     # 180 um / 25.4 um per mil; 5.79 ps/mm * 25.4 mm per inch
     for words in ("width 7.09 mil", "147.1", "[ps/inch]"):
         assert words in check_text(made_up_check(2), "mil")
+
+
+def test_a_check_names_reference_planes_and_what_a_mode_means() -> None:
+    check = made_up_check(2)
+    single, pair = check.lines
+    text = check_text(replace(check, lines=(replace(single, references=("L2", "L5")), replace(pair, layer="L6"))), "um")
+    assert "L1, references L2, L5" in text
+    assert "L6, reference L2" in text
+    assert "both traces tied together" in " ".join(text.split())
+    common = replace(pair, kind="stripline pair, common mode", mode="common", impedance=31.4)
+    text = check_text(replace(check, lines=(single, common)), "um")
+    assert "common 31.40 ohm" not in text  # it is the impedance, and stands in its column
+    assert "differential" not in text
+    assert "both traces tied together" not in check_text(replace(check, lines=(single,)), "um")
 
 
 def test_text_and_json_need_no_plotting_no_spreadsheet_and_no_data_frames() -> None:

@@ -7,7 +7,16 @@ from hypothesis import given
 from hypothesis import strategies as some
 
 from tolerance.report.files import file_names
-from tolerance.report.wording import fixed, length_text, share_with_range, shorten, trimmed, two_rows
+from tolerance.report.wording import (
+    fixed,
+    headline_text,
+    length_text,
+    share_with_range,
+    shorten,
+    trimmed,
+    two_rows,
+    variable_words,
+)
 from tolerance.results import Interval
 
 
@@ -22,6 +31,28 @@ from tolerance.results import Interval
 ])
 def test_a_share_shows_the_digits_that_its_interval_allows(interval: Interval, expected: str) -> None:
     assert share_with_range(interval) == expected
+
+
+@pytest.mark.parametrize(("interval", "target", "expected"), [
+    (Interval(0.98432, 0.98384, 0.98480), None, "98.43 %"),
+    (Interval(1.0, 0.99994, 1.0), None, "above 99.99 %"),
+    (Interval(0.99998, 0.99991, 1.0), None, "above 99.99 %"),
+    (Interval(0.99998, 0.99991, 0.999999), None, "99.998 %"),
+    (Interval(1.0, 0.9857, 1.0), None, "above 98 %"),
+    (Interval(0.98828, 0.97, 1.0), 0.99, "98.8 %"),  # not "99 %", which would miss a target of 99 %
+    (Interval(0.5, 0.0, 1.0), None, "50 %"),
+])
+def test_a_headline_claims_no_more_than_its_interval(interval: Interval, target: float | None, expected: str) -> None:
+    assert headline_text(interval, target=target) == expected
+
+
+@pytest.mark.parametrize(("name", "words"), [
+    ("top mask.thickness + top mask.over_copper", "top mask.thickness + over_copper"),
+    ("C1.dk + C2.dk", "C1.dk + C2.dk"), ("P1.thickness", "P1.thickness"),
+    ("core 0.1 mm.dk + core 0.1 mm.thickness + L2.foil", "core 0.1 mm.dk + thickness + L2.foil"),
+])
+def test_a_driver_names_a_layer_once_where_its_members_share_it(name: str, words: str) -> None:
+    assert variable_words(name) == words
 
 
 def test_numbers_without_a_value_and_negative_zeros_are_not_shown_as_such() -> None:

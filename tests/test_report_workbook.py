@@ -24,6 +24,7 @@ from tolerance.report.json_text import run_json
 from tolerance.report.tables import LINE_COLUMNS, line_table
 from tolerance.report.workbook import write_workbook
 from tolerance.results import Interval, RunResult
+from tolerance.scenario.checking import parse
 
 SHEETS = ["Summary", "Lines", "Drivers", "Stackup", "Drawn lines", "Variations", "Run record"]
 FORMULA_LIKE = ("=1+1", "+feed", "-feed", "@feed", "=cmd|' /C calc'!A0", "#N/A")
@@ -134,6 +135,18 @@ def test_the_stackup_and_the_variations_stand_as_understood(tmp_path: Path) -> N
     assert varying["the half-width is"]["P1.dk"] == "the ends"
     assert varying["variable"]["top mask.thickness"] == "top mask.thickness + top mask.over_copper"
     assert varying["nominal"]["top mask.over_copper"] == 15.0
+
+
+def test_correlations_stand_on_a_sheet_of_their_own_where_there_are_any(tmp_path: Path) -> None:
+    text = SCENARIO_TEXT + """
+[[correlations]]
+between = ["P1.thickness", "P1.dk"]
+coefficient = -0.6
+"""
+    path = write_workbook(made_up_result(), parse(text), tmp_path / "run.xlsx")
+    sheet = pd.read_excel(path, sheet_name="Correlations")
+    assert sheet.to_numpy().tolist() == [["P1.thickness", "P1.dk", -0.6]]
+    assert "Correlations" not in load_workbook(written(tmp_path, made_up_result())).sheetnames
 
 
 def test_lengths_stand_in_the_unit_of_the_report(tmp_path: Path) -> None:

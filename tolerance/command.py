@@ -19,6 +19,7 @@ from tolerance.errors import InputError, ToleranceError
 if TYPE_CHECKING:
     from rich.console import Console
 
+    from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
 
@@ -80,6 +81,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--out", type=Path, metavar="DIR", help="folder for workbook and figures; default out/<file stem>")
     run.add_argument("--json", action="store_true",
                      help="the result as one JSON object on standard output; no files unless --out is given")
+    run.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the figures")
     run.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     run.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     run.add_argument("--direct", type=int, default=0, metavar="N",
@@ -115,7 +117,7 @@ def _run(options: argparse.Namespace) -> int:
     with _progress(quiet=options.quiet) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
-        written = [] if folder is None else _write_files(result, scenario, folder, tell)
+        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -144,14 +146,18 @@ def _check_numbers(options: argparse.Namespace) -> None:
 
 
 def _write_files(
-    result: RunResult, scenario: Scenario, folder: Path, tell: Callable[[str, int, int], None],
+    result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
+    tell: Callable[[str, int, int], None],
 ) -> list[Path]:
     from tolerance.report.figures import write_figures
+    from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
 
     tell("writing the workbook", 0, 1)
     workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    return [workbook, *write_figures(result, folder, scenario.report.lengths, on_progress=tell)]
+    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell, figure_format=figure_format)
+    remove_earlier(folder, written := [workbook, *figures], job="run")
+    return written
 
 
 def _new(options: argparse.Namespace) -> int:

@@ -91,6 +91,7 @@ class NominalLine:
     coupling: CouplingFigures | None = None  # of pairs
     shares: ShareFigures | None = None
     reading: ReadingRise | None = None  # where the scenario says where a coupon is read
+    mode: str = "single"  # single | differential | common
 
 
 @dataclass(frozen=True, slots=True)

@@ -15,6 +15,7 @@ from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
 from tolerance.sections.reading import ReadingRise as ReadingRise
+from tolerance.statistics.against_limit import YieldByLimit as YieldByLimit
 from tolerance.statistics.estimates import Driver as Driver
 from tolerance.statistics.estimates import Interval as Interval
 
@@ -40,6 +41,23 @@ class Prediction:
     leave_one_out_error: float
     held_out_error: float
     held_out_largest: float
+
+
+@dataclass(frozen=True, slots=True)
+class Certificate:
+    """Coupons near a limit are solved, not predicted, so that every verdict is the field solver's.
+
+    solved : coupons solved for it.  needed : how many lay within `multiple` standard errors of a limit, `solved`
+    included; above `cap` those are not solved, the line is not `certified`, and the interval of the yield is widened.
+    error : root mean square of the standard errors [ohm] of the prediction there.
+    """
+
+    certified: bool
+    solved: int
+    needed: int
+    cap: int
+    multiple: float
+    error: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,10 +95,17 @@ class LineResult:
     impossible: int  # coupons whose section cannot exist; they fail
     drivers: tuple[Driver, ...]  # ranked, largest first; only variables that reach the line
     spread: Spread
+    by_limit: YieldByLimit  # the yield were the limits wider or closer
     prediction: Prediction
+    certificate: Certificate
     drawing: Drawing
     direct: DirectCheck | None = None
     reading: ReadingRise | None = None  # what series resistance adds to a reading; the judged impedance is without it
+
+    @property
+    def limit(self) -> float:
+        """Half-width of the limits, a share of the target."""
+        return self.high_limit / self.target - 1.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -107,6 +132,7 @@ class RunResult:
     inside: Interval  # share of coupons on which every line passes
     impossible: int  # coupons on which some line cannot exist
     lines: tuple[LineResult, ...]
+    by_limit: YieldByLimit  # of all lines together, were all held to the same limit
     record: Record
     frequency: float | None = None  # [Hz] where the lines are evaluated; None: lossless and static
 
@@ -126,6 +152,12 @@ class RunResult:
         return pd.DataFrame([_driver_row(line, rank, driver) for line in self.lines
                              for rank, driver in enumerate(line.drivers, start=1)])
 
+    @property
+    def limit_table(self) -> pd.DataFrame:
+        """Yield against the limit (a share of the target): one row a limit, one column a line, and all together."""
+        named = {line.name: line.by_limit.value for line in self.lines}
+        return pd.DataFrame({"limit": self.by_limit.limit, "all lines together": self.by_limit.value, **named})
+
 
 def _interval_columns(name: str, interval: Interval | None) -> dict[str, float | None]:
     if interval is None:
@@ -142,6 +174,7 @@ def _line_row(line: LineResult) -> dict[str, object]:
         **_interval_columns("yield", line.inside), **_interval_columns("below", line.below),
         **_interval_columns("above", line.above), **_interval_columns("cp", line.cp),
         **_interval_columns("cpk", line.cpk), "impossible": line.impossible,
+        "certified": line.certificate.certified, "coupons_solved": line.certificate.solved,
         "solver_runs": line.prediction.solver_runs, "held_out_error_ohm": line.prediction.held_out_error,
     }
 

@@ -1,23 +1,28 @@
-"""The figures of a run as PNG files: a page of all lines, and a page for each line: spread, drivers, cross-section."""
+"""The figures of a run as files: all lines, yield against the limit, and a page for each line.
+
+PNG by default; SVG and PDF hold the same pages as curves and letters that a drawing program can take up.
+"""
 
 from __future__ import annotations
 
-import warnings
 from concurrent.futures import ThreadPoolExecutor
-from typing import TYPE_CHECKING, Any
+from io import BytesIO
+from typing import TYPE_CHECKING, Any, Literal
 
+import matplotlib as mpl
 import numpy as np
-import numpy.typing as npt
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.image import imsave
 
 from tolerance.report.files import file_names, put_in_place
-from tolerance.report.looks import FAIL, FAINT_INK, INK, MEDIUM, PAGE, RESOLUTION, TITLE, our_looks
+from tolerance.report.letters import fitted, missing_glyphs_allowed, width_of
+from tolerance.report.limit_plot import draw_yield_by_limit
+from tolerance.report.looks import FAIL, FAINT_INK, INK, LARGE, MEDIUM, PAGE, RESOLUTION, SMALL, TITLE, our_looks
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section
 from tolerance.report.tables import MISSES, verdict
-from tolerance.report.wording import LengthUnit, share_range_text, share_text, shorten, trimmed
+from tolerance.report.wording import LengthUnit, headline_text, place_words, share_range_text, trimmed
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -25,37 +30,54 @@ if TYPE_CHECKING:
 
     from tolerance.results import Interval, LineResult, RunResult
 
-Picture = npt.NDArray[np.uint8]
+FigureFormat = Literal["png", "svg", "pdf"]
 
-OVERVIEW = "all-lines"
-NAME_LENGTH = 48
+OVERVIEW, AGAINST_LIMIT = "all-lines", "yield-against-limit"
 ROW_OF_OVERVIEW = 0.5  # inches at least
+PANELS_ABREAST = 4  # of the page of yields against the limit
+ROW_OF_PANELS = 2.45  # inches
+LIMITS_REMARK = ("Yield were the limits wider or closer, with its 95 % interval. Dashed, dot: limit and yield as they "
+                 "are. Shaded: under the target yield.")
+MARGIN = 0.025  # of the page's width
 PACKING = 1  # of the PNG files: quick, a few per cent larger
+METADATA: dict[str, dict[str, str | None]] = {
+    "svg": {"Creator": "tolerance", "Date": None}, "pdf": {"Creator": "tolerance", "CreationDate": None},
+}
 
 
 def write_figures(result: RunResult, folder: Path, lengths: LengthUnit,
-                  on_progress: Callable[[str, int, int], None] | None = None) -> list[Path]:
+                  on_progress: Callable[[str, int, int], None] | None = None, *,
+                  figure_format: FigureFormat = "png") -> list[Path]:
     """Write all figures of a run into `folder` (made if missing) and return their paths.
 
     Raises UnfinishedError where a file cannot be written.
     """
-    names = file_names([line.name for line in result.lines], taken=(OVERVIEW,))
+    pages, jobs = _pages(result, lengths), []
     with ThreadPoolExecutor(max_workers=1) as writer:  # packs one picture while the next is drawn
-        jobs = [writer.submit(_write, _drawn(overview_page(result)), folder / f"{OVERVIEW}.png")]
-        for number, (name, line) in enumerate(zip(names, result.lines, strict=True), start=1):
-            page = line_page(line, target_yield=result.target_yield, lengths=lengths)
-            jobs.append(writer.submit(_write, _drawn(page), folder / f"{name}.png"))
+        for number, (name, draw) in enumerate(pages, start=1):
+            page = draw()
+            content = _picture(page) if figure_format == "png" else _curves(page, figure_format, name)
+            jobs.append(writer.submit(put_in_place, folder / f"{name}.{figure_format}", content))
             if on_progress is not None:
-                on_progress("figures", number, len(names))
+                on_progress("figures", number, len(pages))
         return [job.result() for job in jobs]
+
+
+def _pages(result: RunResult, lengths: LengthUnit) -> list[tuple[str, Callable[[], Figure]]]:
+    """File name and drawing of each page."""
+    def page_of(line: LineResult) -> Callable[[], Figure]:
+        return lambda: line_page(line, target_yield=result.target_yield, lengths=lengths)
+
+    names = file_names([line.name for line in result.lines], taken=(OVERVIEW, AGAINST_LIMIT))
+    return [(OVERVIEW, lambda: overview_page(result)), (AGAINST_LIMIT, lambda: limits_page(result)),
+            *((name, page_of(line)) for name, line in zip(names, result.lines, strict=True))]
 
 
 def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> Figure:
     """One line on a page: spread and drivers above, the cross-section below."""
     with our_looks():
         page = _page(PAGE[1])
-        _head(page, shorten(line.name, NAME_LENGTH), f"{line.kind} on {line.layer}{_over(line.references)}",
-              line.inside, target_yield)
+        _head(page, line.name, f"{line.kind}; {place_words(line.layer, line.references)}", line.inside, target_yield)
         draw_spread(page.add_axes((0.065, 0.505, 0.43, 0.31)), line, target_yield=target_yield)
         draw_drivers(page.add_axes((0.56, 0.505, 0.40, 0.31)), line)
         draw_section(page.add_axes((0.065, 0.085, 0.69, 0.29)), line, lengths=lengths)
@@ -67,10 +89,34 @@ def overview_page(result: RunResult) -> Figure:
     height = max(PAGE[1], 2.0 + ROW_OF_OVERVIEW * len(result.lines))
     with our_looks():
         page = _page(height)
-        _head(page, shorten(result.title, NAME_LENGTH), f"all lines, {result.coupons:,} coupons, seed {result.seed}",
-              result.inside, result.target_yield, judged=False)
-        axes = page.add_axes((0.225, 0.65 / height, 0.52, 1.0 - 1.95 / height))
+        _head_of_all(page, result)
+        axes = page.add_axes((0.225, 0.65 / height, 0.495, 1.0 - 1.95 / height))
         draw_overview(axes, result, result.lines)
+    return page
+
+
+def limits_page(result: RunResult) -> Figure:
+    """Yield against the limit: all lines together, and a panel for each line."""
+    panels = len(result.lines) + 1
+    abreast = min(PANELS_ABREAST, max(panels, 2))
+    rows = -(-panels // abreast)
+    height = max(PAGE[1], 1.4 + ROW_OF_PANELS * rows)
+    with our_looks():
+        page = _page(height)
+        _head_of_all(page, result)
+        page.text(MARGIN, 1.0 - 1.12 / height, LIMITS_REMARK, fontsize=SMALL, color=FAINT_INK, va="center")
+        grid = page.add_gridspec(rows, abreast, left=0.065, right=0.975, top=1.0 - 1.9 / height, bottom=0.65 / height,
+                                 wspace=0.28, hspace=0.85 if rows > 1 else 0.0)
+        draw_yield_by_limit(page.add_subplot(grid[0, 0]), result.by_limit, name="all lines held to one limit",
+                            target_yield=result.target_yield)
+        for number, line in enumerate(result.lines, start=1):
+            axes = page.add_subplot(grid[number // abreast, number % abreast])
+            draw_yield_by_limit(axes, line.by_limit, name=line.name, target_yield=result.target_yield,
+                                limit=line.limit, inside=line.inside)
+            if number % abreast:
+                axes.set_ylabel("")
+            if number + abreast < panels:
+                axes.set_xlabel("")
     return page
 
 
@@ -78,8 +124,9 @@ def _page(height: float) -> Figure:
     return Figure(figsize=(PAGE[0], height), dpi=RESOLUTION)
 
 
-def _over(references: tuple[str, ...]) -> str:
-    return f", reference {' and '.join(references)}" if references else ""
+def _head_of_all(page: Figure, result: RunResult) -> None:
+    _head(page, result.title, f"all lines, {result.coupons:,} coupons, seed {result.seed}", result.inside,
+          result.target_yield, judged=False)
 
 
 def _head(page: Figure, title: str, subtitle: str, inside: Interval, target_yield: float, *,
@@ -87,28 +134,38 @@ def _head(page: Figure, title: str, subtitle: str, inside: Interval, target_yiel
     """Title on the left, the yield with its interval and the verdict on the right."""
     height = page.get_figheight()
     first, second = 1.0 - 0.42 / height, 1.0 - 0.78 / height
-    page.text(0.025, first, title, fontsize=TITLE, weight="bold", va="center")
-    page.text(0.025, second, subtitle, fontsize=MEDIUM, color=FAINT_INK, va="center")
     word = verdict(inside.value, target_yield)
     color = FAIL if judged and word == MISSES else INK
     aim = f"{trimmed(100.0 * target_yield, 3)} %"
-    page.text(0.975, first, f"yield {share_text(inside)}", fontsize=TITLE, weight="bold", va="center", ha="right",
-              color=color)
+    judged_by = target_yield if judged else None
+    answer = f"yield {headline_text(inside, target=judged_by)}"
     remark = f"{word} the target of {aim}" if judged else f"all lines of a coupon pass; target of each line {aim}"
-    page.text(0.975, second, f"95 % interval {share_range_text(inside)} %; {remark}", fontsize=MEDIUM, va="center",
-              ha="right", color=color)
+    remark = f"95 % interval {share_range_text(inside, target=judged_by)} %; {remark}"
+    page.text(1.0 - MARGIN, first, answer, fontsize=TITLE, weight="bold", va="center", ha="right", color=color)
+    page.text(1.0 - MARGIN, second, remark, fontsize=MEDIUM, va="center", ha="right", color=color)
+    room = 72.0 * PAGE[0] * (1.0 - 2.0 * MARGIN) - 24.0
+    words, size = fitted(title, room - width_of(answer, TITLE, bold=True), (TITLE, 18.0, LARGE), bold=True)
+    page.text(MARGIN, first, words, fontsize=size, weight="bold", va="center")
+    words, size = fitted(subtitle, room - width_of(remark, MEDIUM), (MEDIUM, SMALL))
+    page.text(MARGIN, second, words, fontsize=size, color=FAINT_INK, va="center")
 
 
-def _drawn(page: Figure) -> Picture:
-    """The page as points of red, green, blue and opacity, shape (rows, columns, 4)."""
+def _picture(page: Figure) -> Callable[[Path], object]:
+    """The page drawn as points of red, green, blue and opacity; what writes them to a file."""
     canvas: Any = FigureCanvasAgg(page)  # its drawing is not typed
-    with our_looks(), warnings.catch_warnings():
-        warnings.filterwarnings("ignore", message="Glyph .* missing from font")  # drawn as an empty box
+    with our_looks(), missing_glyphs_allowed():
         canvas.draw()
-    return np.array(canvas.buffer_rgba(), dtype=np.uint8)
+    points = np.array(canvas.buffer_rgba(), dtype=np.uint8)
+    return lambda beside: imsave(beside, points, format="png", dpi=RESOLUTION, metadata={"Software": "tolerance"},
+                                 pil_kwargs={"compress_level": PACKING})
 
 
-def _write(picture: Picture, path: Path) -> Path:
-    return put_in_place(path, lambda beside: imsave(
-        beside, picture, format="png", dpi=RESOLUTION, metadata={"Software": "tolerance"},
-        pil_kwargs={"compress_level": PACKING}))
+def _curves(page: Figure, figure_format: FigureFormat, name: str) -> Callable[[Path], object]:
+    """The page as curves and letters; what writes them to a file.
+
+    The same page gives the same file: it holds no date, and its parts are named after `name`.
+    """
+    content = BytesIO()
+    with our_looks(), mpl.rc_context({"svg.hashsalt": name, "pdf.fonttype": 42}), missing_glyphs_allowed():
+        page.savefig(content, format=figure_format, metadata=METADATA[figure_format])
+    return lambda beside: beside.write_bytes(content.getvalue())

@@ -2,13 +2,17 @@
 
 from __future__ import annotations
 
+import hashlib
+import json
 import os
 from collections.abc import Callable, Sequence
+from contextlib import suppress
 from pathlib import Path
 
 from tolerance.errors import UnfinishedError
 
 LONGEST = 60
+NOTE = ".tolerance-files.json"  # beside the files: what was written there
 RESERVED = {"con", "prn", "aux", "nul", *(f"{port}{number}" for port in ("com", "lpt") for number in range(10))}
 
 
@@ -46,6 +50,37 @@ def put_in_place(path: Path, write: Callable[[Path], object]) -> Path:
     except OSError as problem:
         raise UnfinishedError(f"could not write {path}: {problem.strerror or problem}") from problem
     return path
+
+
+def remove_earlier(folder: Path, written: Sequence[Path], *, job: str) -> None:
+    """Note the files that `job` has just written to `folder`, and remove those that it wrote before and no longer does.
+
+    Only what stands in the note of an earlier time is touched, and only where its content is still what was written
+    then: a file that somebody made, changed or put in its place stays. Raises UnfinishedError.
+    """
+    note = folder / NOTE
+    notes = _notes_in(note)
+    now = {path.name: _digest(path) for path in written}
+    for name, digest in notes.get(job, {}).items():
+        path = folder / name
+        with suppress(OSError):  # open elsewhere, or no right: it stays
+            if name not in now and Path(name).name == name and path.is_file() and _digest(path) == digest:
+                path.unlink()
+    text = json.dumps({**notes, job: now}, indent=1)
+    put_in_place(note, lambda beside: beside.write_text(text, encoding="utf-8"))
+
+
+def _notes_in(note: Path) -> dict[str, dict[str, str]]:
+    """Digests of written files by job and name; none where there is no note or it is not ours."""
+    try:
+        found = json.loads(note.read_text(encoding="utf-8"))
+        return {str(job): {str(name): str(digest) for name, digest in files.items()} for job, files in found.items()}
+    except (OSError, ValueError, AttributeError):
+        return {}
+
+
+def _digest(path: Path) -> str:
+    return hashlib.sha256(path.read_bytes()).hexdigest()
 
 
 def _safe(name: str) -> str:

@@ -23,7 +23,7 @@ from tolerance.report.looks import (
     quiet_axes,
 )
 from tolerance.report.tables import MISSES, LineWords, line_words, ranking
-from tolerance.report.wording import percent, shorten, trimmed
+from tolerance.report.wording import percent, shorten, trimmed, variable_words
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -77,8 +77,11 @@ def _spread_words(axes: Axes, line: LineResult, words: LineWords) -> None:
     for limit, text, share, outwards in ((line.low_limit, low, f"{words.below}\nbelow", -1),
                                          (line.high_limit, high, f"{words.above}\nabove", 1)):
         side = "right" if outwards < 0 else "left"
-        for remark, height, size, weight, color in ((f"limit {text}", 0.97, SMALL, "normal", INK),
-                                                    (share, 0.88, MEDIUM, "bold", FAIL)):
+        fails = bool(float(share.split(" %")[0]))
+        for remark, height, size, weight, color in (
+            (f"limit {text}", 0.97, SMALL, "normal", INK),
+            (share, 0.88, MEDIUM, "bold" if fails else "normal", FAIL if fails else FAINT_INK),
+        ):
             axes.annotate(remark, (limit, height), xycoords=("data", "axes fraction"), xytext=(6 * outwards, 0),
                           textcoords="offset points", va="top", ha=side, fontsize=size, weight=weight, color=color)
     axes.annotate(f"target {words.target}", (line.target, 0.675), xycoords=("data", "axes fraction"), xytext=(0, 2),
@@ -107,7 +110,7 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
         _draw_driver(axes, row, driver)
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
-    axes.set_xlabel("share of the variance [%]")
+    axes.set_xlabel("share of the variance [%]", loc="left")
     with_shapley = any(driver.shapley is not None for driver in shown)
     _remark(axes, "bar: Shapley; diamond: first-order; cross: total" if with_shapley
             else "bar: total effect; diamond: first-order")
@@ -115,9 +118,9 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     rest = line.drivers[DRIVERS_SHOWN:]
     if rest:
         most = max(ranking(driver).value for driver in rest)
-        bound = f"at most {percent(most, 1)}" if most >= 0.0005 else "under 0.1 %"
+        bound = f"at most {percent(most, 1)}" if most >= 0.0005 else "below 0.1 %"
         axes.annotate(f"and {len(rest)} more, {'each ' if len(rest) > 1 else ''}{bound}", (1.0, 0.0),
-                      xycoords="axes fraction", xytext=(0, 6), textcoords="offset points", ha="right", va="bottom",
+                      xycoords="axes fraction", xytext=(0, -24), textcoords="offset points", ha="right", va="top",
                       fontsize=SMALL, color=FAINT_INK)
     return axes
 
@@ -125,8 +128,8 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
 def _draw_driver(axes: Axes, row: int, driver: Driver) -> None:
     ranked = ranking(driver)
     value, low, high = (100.0 * part for part in (ranked.value, ranked.low, ranked.high))
-    height = row + 0.22
-    axes.barh(height, max(value, 0.0), height=0.34, color=BODY, edgecolor=BODY_EDGE)
+    height = row + 0.25
+    axes.barh(height, max(value, 0.0), height=0.30, color=BODY, edgecolor=BODY_EDGE)
     axes.plot([low, high], [height, height], color=INK, linewidth=1.4, marker="|", markersize=8,
               solid_capstyle="butt")
     axes.plot([100.0 * driver.first.value], [height], marker="D", markersize=6, color=PAPER, markeredgecolor=INK,
@@ -134,11 +137,11 @@ def _draw_driver(axes: Axes, row: int, driver: Driver) -> None:
     if driver.shapley is not None:
         axes.plot([100.0 * driver.total.value], [height], marker="x", markersize=7.5, color=INK, markeredgewidth=1.8,
                   clip_on=False, zorder=5)
-    axes.text(0.0, row + 0.04, f" {shorten(driver.variable, LONGEST_DRIVER)}", ha="left", va="bottom", fontsize=SMALL,
-              zorder=6)
+    name = shorten(variable_words(driver.variable), LONGEST_DRIVER)
+    axes.text(0.0, row + 0.01, f" {name}", ha="left", va="bottom", fontsize=SMALL, zorder=6)
     end = max(high, 100.0 * driver.first.value, 100.0 * driver.total.value if driver.shapley else 0.0)
     axes.annotate(percent(ranked.value, 0 if value >= 0.95 else 1), (end, height), xytext=(9, 0),
-                  textcoords="offset points", ha="left", va="center", fontsize=MEDIUM, weight="bold")
+                  textcoords="offset points", ha="left", va="center", fontsize=SMALL, weight="bold")
 
 
 def draw_overview(axes: Axes, result: RunResult, lines: Sequence[LineResult]) -> Axes:
@@ -177,11 +180,11 @@ def _draw_overview_row(axes: Axes, row: int, line: LineResult, *, reach: float, 
     axes.plot([high, high], [row, row - 0.82], color=INK, linestyle=(0, (4, 2)), linewidth=1.3)
     axes.axhline(row, color=FAINT_INK, linewidth=0.7)
     missed = words.verdict == MISSES
-    axes.annotate(f"{words.inside}", (1.0, row - 0.40), xycoords=("axes fraction", "data"), xytext=(14, 0),
+    axes.annotate(words.headline, (1.0, row - 0.40), xycoords=("axes fraction", "data"), xytext=(14, 0),
                   textcoords="offset points", va="center", fontsize=LARGE, weight="bold",
                   color=FAIL if missed else INK)
     axes.annotate(f"{words.inside_range}\n{words.verdict}", (1.0, row - 0.40), xycoords=("axes fraction", "data"),
-                  xytext=(122, 0), textcoords="offset points", va="center", fontsize=SMALL,
+                  xytext=(150, 0), textcoords="offset points", va="center", fontsize=SMALL,
                   color=FAIL if missed else FAINT_INK)
 
 

@@ -9,10 +9,19 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from tolerance.report.wording import fixed, percent, percent_digits, share_range_text, share_text, trimmed
+from tolerance.report.wording import (
+    fixed,
+    headline_text,
+    percent,
+    percent_digits,
+    share_range_text,
+    share_text,
+    trimmed,
+    variable_words,
+)
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from tolerance.results import Driver, Interval, LineResult, RunResult
 
@@ -63,6 +72,7 @@ class LineWords:
     mean: str
     deviation: str
     inside: str
+    headline: str
     inside_range: str
     below: str
     above: str
@@ -77,7 +87,7 @@ def verdict(inside: float, target_yield: float) -> str:
 
 def line_words(line: LineResult, target_yield: float) -> LineWords:
     """What is said of a line wherever it is said. What fails gets no more digits than what passes, or two."""
-    most = max(percent_digits(line.inside), 2)
+    most = max(percent_digits(line.inside, target=target_yield), 2)
     below, above = (percent(share.value, min(percent_digits(share), most)) for share in (line.below, line.above))
     return LineWords(
         target=trimmed(line.target, 2),
@@ -85,8 +95,9 @@ def line_words(line: LineResult, target_yield: float) -> LineWords:
         nominal=fixed(line.nominal, 2),
         mean=fixed(line.mean.value, 2),
         deviation=fixed(line.deviation.value, 2),
-        inside=share_text(line.inside),
-        inside_range=share_range_text(line.inside),
+        inside=share_text(line.inside, target=target_yield),
+        headline=headline_text(line.inside, target=target_yield),
+        inside_range=share_range_text(line.inside, target=target_yield),
         below=below,
         above=above,
         cpk=fixed(None if line.cpk is None else line.cpk.value, 2),
@@ -99,15 +110,16 @@ def ranking(driver: Driver) -> Interval:
     return driver.total if driver.shapley is None else driver.shapley
 
 
-def ranking_name(line: LineResult) -> str:
-    """What the ranking measure of a line's drivers is called."""
-    return "Shapley effect" if any(driver.shapley is not None for driver in line.drivers) else "total effect"
+def ranking_name(lines: Sequence[LineResult]) -> str:
+    """What the measure that ranks drivers is called: one for all lines of a run."""
+    correlated = any(driver.shapley is not None for line in lines for driver in line.drivers)
+    return "Shapley effect" if correlated else "total effect"
 
 
 def driver_words(line: LineResult, count: int) -> str:
     """The largest drivers in a row: "P1.thickness 51 %, L1.etch 30 %"."""
-    largest = line.drivers[:count]
-    return ", ".join(f"{driver.variable} {percent(ranking(driver).value, 0)}" for driver in largest) or "none"
+    largest = [(variable_words(driver.variable), ranking(driver).value) for driver in line.drivers[:count]]
+    return ", ".join(f"{name} {percent(value, 0)}" for name, value in largest) or "none"
 
 
 LINE_COLUMNS = (
@@ -129,6 +141,7 @@ LINE_COLUMNS = (
     Column("impossible", "impossible coupons", "", 0),
     Column("kind", "kind"), Column("layer", "layer"), Column("references", "reference planes"),
     Column("solver_runs", "field solver runs", "", 0), Column("degree", "polynomial degree", "", 0),
+    Column("certified", "verdicts"), Column("coupons_solved", "coupons near limits solved", "", 0),
     Column("held_out_error_ohm", "held-out error", "ohm", 4),
     Column("held_out_largest_ohm", "largest held-out error", "ohm", 4),
 )
@@ -190,6 +203,8 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
         **_ends("mean_ohm", line.mean), **_ends("std_ohm", line.deviation), **_ends("yield", line.inside),
         **_ends("below", line.below), **_ends("above", line.above), **_ends("cp", line.cp), **_ends("cpk", line.cpk),
         "impossible": int(line.impossible), "solver_runs": int(line.prediction.solver_runs),
+        "certified": "the solver's" if line.certificate.certified else "predicted",
+        "coupons_solved": int(line.certificate.solved),
         "degree": int(line.prediction.degree), "held_out_error_ohm": float(line.prediction.held_out_error),
         "held_out_largest_ohm": float(line.prediction.held_out_largest),
     }

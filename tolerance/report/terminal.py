@@ -19,12 +19,15 @@ from tolerance.report.wording import (
     METRES_IN,
     LengthUnit,
     fixed,
+    headline_text,
     length_text,
     percent,
-    share_with_range,
+    place_words,
+    share_range_text,
     shorten,
     trimmed,
     two_rows,
+    variable_words,
 )
 
 if TYPE_CHECKING:
@@ -37,7 +40,7 @@ NARROWEST_NAME = 15
 WIDEST_NAME = 40
 OTHER_COLUMNS = 65  # what the widest table needs beside the names
 DRIVERS_SHOWN = 3
-LONGEST_DRIVER = 34
+LONGEST_DRIVER = 38
 NAMES_IN_VERDICT = 4
 
 
@@ -51,9 +54,7 @@ def print_check(result: CheckResult, lengths: LengthUnit, console: Console, *, s
         table.add_row(Text(two_rows(line.name, _name_width(console))), *_check_cells(line, lengths))
     _say(console, result.title, style="bold")
     _print_table(console, table)
-    if any(line.common_mode is not None for line in result.lines):
-        _say(console, "Pairs: differential impedance with the odd mode's effective Dk and delay, unless the kind says "
-                      "common mode.")
+    _say_modes(result, console)
     _say_losses(result, lengths, console)
     _say_readings(result, console)
     if shares:
@@ -72,10 +73,11 @@ def print_run(result: RunResult, console: Console) -> None:
     _say(console, result.title, style="bold")
     _print_table(console, _yield_table(result, _name_width(console)))
     _print_table(console, _driver_table(result, _name_width(console), console.width))
-    _say(console, f"All lines together: {share_with_range(result.inside)} of {result.coupons:,} coupons pass "
-                  f"(seed {result.seed}).", style="bold")
+    _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
+                  f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
+    _say_certificate(result, console)
     _say_direct(result, console)
     if result.frequency is not None:
         _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
@@ -122,8 +124,7 @@ def _yield_table(result: RunResult, name_width: int) -> RichTable:
 
 
 def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
-    measures = {ranking_name(line) for line in result.lines if line.drivers} or {"total effect"}
-    table = _table(("line", True), (f"largest drivers, by {' or '.join(sorted(measures))}", True),
+    table = _table(("line", True), (f"largest drivers, by {ranking_name(result.lines)}", True),
                    ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
         table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
@@ -135,7 +136,7 @@ def _drivers(line: LineResult, width: int) -> str:
     """The largest drivers, broken only between two of them."""
     rows = [""]
     for driver in line.drivers[:DRIVERS_SHOWN]:
-        words = f"{shorten(driver.variable, LONGEST_DRIVER)} {percent(ranking(driver).value, 0)}"
+        words = f"{shorten(variable_words(driver.variable), LONGEST_DRIVER)} {percent(ranking(driver).value, 0)}"
         joined = f"{rows[-1]}, {words}" if rows[-1] else words
         if len(joined) <= width:
             rows[-1] = joined
@@ -164,13 +165,33 @@ def _say_impossible(result: RunResult, console: Console) -> None:
                   f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
 
 
+def _say_certificate(result: RunResult, console: Console) -> None:
+    certain = [line.certificate for line in result.lines if line.certificate.certified]
+    if certain:
+        lines = "every line" if len(certain) == len(result.lines) else f"{len(certain)} lines"
+        _say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
+                      f"within {trimmed(certain[0].multiple, 1)} errors of a limit were solved themselves.")
+    for line in result.lines:
+        one = line.certificate
+        if not one.certified:
+            _say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
+                          f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
+                          f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
+
+
 def _say_direct(result: RunResult, console: Console) -> None:
+    """The solver's own answers beside the predictions: one row a line."""
+    table = _table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
+                   ("off, most\n[ohm]", False), ("verdicts\nthat differ", False))
     for line in result.lines:
         if line.direct is not None:
-            _say(console, f'Field solver itself on {line.direct.coupons:,} coupons of '
-                          f'"{shorten(line.name, LONGEST_DRIVER)}": predictions off by at most '
-                          f"{fixed(line.direct.largest, 4)} ohm, verdicts that differ: "
-                          f"{line.direct.verdicts_that_differ}.")
+            table.add_row(Text(two_rows(line.name, _name_width(console))), f"{line.direct.coupons:,}",
+                          fixed(line.direct.root_mean_square, 4), fixed(line.direct.largest, 4),
+                          str(line.direct.verdicts_that_differ))
+    if table.row_count:
+        _say(console, "")
+        _say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
+        _print_table(console, table)
 
 
 def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
@@ -181,7 +202,7 @@ def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> N
     per_length, unit = (1.0, "m") if lengths == "um" else (1000.0 * METRES_IN["mil"], "inch")
     table = _table(("line", True), ("complex\nimpedance\n[ohm]", False), (f"R\n\n[ohm/{unit}]", False),
                    (f"L\n\n[nH/{unit}]", False), (f"G\n\n[mS/{unit}]", False), (f"C\n\n[pF/{unit}]", False),
-                   ("loss: copper\n+ dielectric\n[dB/m]", False), ("whole\n\n[dB/inch]", False))
+                   ("loss\n\n[dB/m]", False), ("whole\n\n[dB/inch]", False))
     for line, losses in lossy:
         impedance = losses.complex_impedance
         table.add_row(
@@ -193,7 +214,8 @@ def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> N
             f"{fixed(losses.conductor_loss, 2)}\n+ {fixed(losses.dielectric_loss, 2)}",
             fixed((losses.conductor_loss + losses.dielectric_loss) * 1000.0 * METRES_IN["mil"], 3))
     _print_table(console, table)
-    _say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one.")
+    _say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one. "
+                  "Loss: by the copper, + by the dielectric.")
 
 
 def _say_readings(result: CheckResult | RunResult, console: Console) -> None:
@@ -242,11 +264,21 @@ def _formula_table(result: CheckResult, name_width: int) -> RichTable:
     return table
 
 
+def _say_modes(result: CheckResult, console: Console) -> None:
+    """What impedance, effective Dk and delay of a pair are."""
+    pairs = {line.mode for line in result.lines if line.common_mode is not None}
+    if pairs - {"common"}:
+        _say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
+                      "impedance of both traces tied together.")
+    if "common" in pairs:
+        _say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
+
+
 def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:
     per_length = 1e-3 if lengths == "um" else 1000.0 * METRES_IN["mil"]
-    details = [line.kind, f"{line.layer} over {', '.join(line.references)}" if line.references else line.layer,
+    details = [line.kind, place_words(line.layer, line.references, joint=", "),
                *(f"{name} {length_text(size, lengths)}" for name, size in line.dimensions)]
-    if line.common_mode is not None:
+    if line.common_mode is not None and line.mode != "common":
         details.append(f"common {fixed(line.common_mode, 2)} ohm")
     return (Text("\n".join(details)), trimmed(line.target, 2), fixed(line.impedance, 2),
             fixed(100.0 * (line.impedance / line.target - 1.0), 1), fixed(line.effective_dk, 3),

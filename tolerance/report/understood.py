@@ -76,6 +76,14 @@ def variation_table(scenario: Scenario) -> Table:
     return Table.of(filled, rows)
 
 
+def correlation_table(scenario: Scenario) -> Table:
+    """One row for each pair of correlated variables."""
+    columns = (Column("one", "variable"), Column("other", "correlated with"),
+               Column("coefficient", "coefficient, of the underlying normals", "", 2))
+    return Table.of(columns, [{"one": item.between[0], "other": item.between[1], "coefficient": item.coefficient}
+                              for item in scenario.correlations])
+
+
 def board_thickness(scenario: Scenario) -> float:
     """All layers together [m]."""
     return math.fsum(layer.copper_thickness if layer.kind == "copper" else layer.thickness or 0.0

@@ -7,6 +7,8 @@ import textwrap
 from typing import TYPE_CHECKING, Literal
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from tolerance.results import Interval
 
 LengthUnit = Literal["um", "mil"]
@@ -26,12 +28,18 @@ def fixed(value: float | None, digits: int) -> str:
     return text.removeprefix("-") if float(text) == 0.0 else text
 
 
-def percent_digits(interval: Interval) -> int:
-    """Digits after the point of a percentage that its interval allows: the last one moves by 2 to 20 inside it."""
+def percent_digits(interval: Interval, *, target: float | None = None) -> int:
+    """Digits after the point of a percentage that its interval allows: the last one moves by 2 to 20 inside it.
+
+    A share under its `target` gets as many more as it takes to show that: 98.83, not 99 % under a target of 99 %.
+    """
     half_width = 100.0 * max(interval.high - interval.value, interval.value - interval.low)
-    if not half_width > 0.0:
-        return MOST_PERCENT_DIGITS
-    return min(max(math.ceil(-math.log10(half_width / 2.0)), 0), MOST_PERCENT_DIGITS)
+    digits = math.ceil(-math.log10(half_width / 2.0)) if half_width > 0.0 else MOST_PERCENT_DIGITS
+    digits = min(max(digits, 0), MOST_PERCENT_DIGITS)
+    if target is not None and interval.value < target:
+        while digits < MOST_PERCENT_DIGITS and round(100.0 * interval.value, digits) >= 100.0 * target:
+            digits += 1
+    return digits
 
 
 def percent(share: float, digits: int) -> str:
@@ -39,15 +47,24 @@ def percent(share: float, digits: int) -> str:
     return f"{fixed(100.0 * share, digits)} %"
 
 
-def share_text(interval: Interval) -> str:
+def share_text(interval: Interval, *, target: float | None = None) -> str:
     """The share in percent, with the digits that its interval allows."""
-    return percent(interval.value, percent_digits(interval))
+    return percent(interval.value, percent_digits(interval, target=target))
 
 
-def share_range_text(interval: Interval) -> str:
+def share_range_text(interval: Interval, *, target: float | None = None) -> str:
     """The ends of a share's interval in percent: "[98.38, 98.48]"."""
-    digits = percent_digits(interval)
+    digits = percent_digits(interval, target=target)
     return f"[{fixed(100.0 * interval.low, digits)}, {fixed(100.0 * interval.high, digits)}]"
+
+
+def headline_text(interval: Interval, *, target: float | None = None) -> str:
+    """The share in percent for a headline: where its interval reaches 100 %, what it lies above, "above 99.99 %"."""
+    if interval.high < 1.0 or (target is not None and interval.value < target):
+        return share_text(interval, target=target)
+    digits = max(percent_digits(interval) - 1, 0)
+    surely = math.floor(100.0 * interval.low * 10**digits) / 10**digits
+    return f"above {fixed(surely, digits)} %" if surely > 0.0 else share_text(interval)
 
 
 def share_with_range(interval: Interval) -> str:
@@ -64,6 +81,21 @@ def trimmed(value: float, digits: int) -> str:
 def length_text(metres: float, lengths: LengthUnit) -> str:
     """180e-6 -> "180 um"; "7.09 mil"."""
     return f"{trimmed(metres / METRES_IN[lengths], LENGTH_DIGITS[lengths])} {lengths}"
+
+
+def variable_words(name: str) -> str:
+    """A driver's name with its layer once where members share it: "top mask.thickness + over_copper"."""
+    words, layer = [], None
+    for member in name.split(" + "):
+        own, _, item = member.rpartition(".")
+        words.append(item if own and own == layer else member)
+        layer = own
+    return " + ".join(words)
+
+
+def place_words(layer: str, references: Sequence[str], *, joint: str = " and ") -> str:
+    """Where a line lies: "L6, reference L5", "L3, references L2 and L4"; the layer alone where it has none."""
+    return f"{layer}, reference{'s' if len(references) > 1 else ''} {joint.join(references)}" if references else layer
 
 
 def shorten(text: str, width: int) -> str:

@@ -16,8 +16,8 @@ from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.files import put_in_place
 from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
-from tolerance.report.understood import board_thickness, drawn_table, stackup_table, variation_table
-from tolerance.report.wording import CAUTION, length_text, share_range_text, share_text, trimmed
+from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
+from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -51,6 +51,7 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     for name, table in (
         ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
         ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
+        *([("Correlations", correlation_table(scenario))] if scenario.correlations else []),
     ):
         sheet = book.create_sheet(name)
         _write_table(sheet, table, top=1)
@@ -67,7 +68,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
     ends = share_range_text(result.inside)
     sentences = [
         (result.title, _font(16, bold=True)),
-        (f"{share_text(result.inside)} of the coupons pass on every line (95 % interval {ends} %; "
+        (f"{headline_text(result.inside)} of the coupons pass on every line (95 % interval {ends} %; "
          f"{result.coupons:,} coupons, seed {result.seed}).", _font(13, bold=True)),
         (f"{len(missing)} of {len(result.lines)} lines {'MISS' if len(missing) != 1 else MISSES} the target yield "
          f"of {aim}." if missing else f"Every line meets the target yield of {aim}.",

@@ -89,20 +89,31 @@ def node_charges(
     system: System, medium: Medium, *, body_dk: NumberArray, sign: int, air: bool = False,
 ) -> NumberArray:
     """Charge at every node, the traces at potential 1: (sections, unknowns); complex where a Dk is."""
+    matrix = full_matrix(system, medium, sign=sign, air=air)
+    wanted = np.zeros((*matrix.shape[:2], 1), dtype=matrix.dtype)
+    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, :, 0])
+
+
+def full_matrix(
+    system: System, medium: Medium, *, sign: int, air: bool, kept: list[FloatArray] | None = None,
+) -> NumberArray:
+    """The matrix of all conditions, even (`sign` 1) or odd (-1): (sections, unknowns, unknowns).
+
+    kept : a list that takes the matrix of each far image, before its factor.
+    """
     size = system.copper if air else system.across.shape[1]
-    matrix = np.zeros((system.across.shape[0], size, size), dtype=np.result_type(body_dk, *medium.factors))
+    matrix = np.zeros((system.across.shape[0], size, size), dtype=np.result_type(*medium.factors))
     for factor, own, mirrored in zip(medium.factors, system.own, system.mirrored, strict=True):
         if np.any(factor):
             matrix += factor[:, None, None] * (own[:, :size, :size] + sign * mirrored[:, :size, :size])
     if medium.far is not None:
-        _add_far_images(matrix, system, medium.far, sign, size)
+        _add_far_images(matrix, system, medium.far, sign, size, kept)
     if medium.rest is not None:
         matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
     if not air:
         _turn_into_interface_conditions(matrix, system)
-    wanted = np.zeros((matrix.shape[0], size, 1), dtype=matrix.dtype)
-    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, :, 0])
+    return matrix
 
 
 def _image_matrices(
@@ -146,26 +157,40 @@ def _kernel(run: FloatArray, rise: FloatArray, normals: Sequence[FloatArray], co
     return square
 
 
-def _add_far_images(matrix: NumberArray, system: System, far: FarImages, sign: int, size: int) -> None:
+def _add_far_images(
+    matrix: NumberArray, system: System, far: FarImages, sign: int, size: int, kept: list[FloatArray] | None,
+) -> None:
     across, height = system.across[:, :size], system.height[:, :size]
     normals = tuple(values[:, :size] for values in system.normals)
+    if kept is not None:
+        kept += [np.empty_like(matrix) for _ in range(far.shifts.shape[1])]
     start = 0
     for source in system.nodes:
         stop = start + source.across.shape[1]
         if start >= size:
             break
-        # a tail's nodes lie further apart than the images lie below it: it needs its finer places
-        source_across, source_height = ((source.fine_across, source.fine_height) if source.edge.tail
-                                        else (source.across, source.height))
+        source_across, source_height = far_places(source)
         total = height[:, :, None] + source_height[:, None, :]
+        runs = [across[:, :, None] - source_across[:, None, :], across[:, :, None] + source_across[:, None, :]]
         block = np.zeros(total.shape, dtype=matrix.dtype)
-        for way, side in ((1.0, 1.0), (float(sign), -1.0)):
-            run = across[:, :, None] - side * source_across[:, None, :]
-            for number in range(far.shifts.shape[1]):
-                kernel = _kernel(run, total + far.shifts[:, number, None, None], normals, system.copper)
-                block += kernel * (way * far.factors[:, number])[:, None, None]
+        for number in range(far.shifts.shape[1]):
+            rise = total + far.shifts[:, number, None, None]
+            kernel = _kernel(runs[0], rise, normals, system.copper)
+            mirrored = _kernel(runs[1], rise, normals, system.copper)
+            kernel += mirrored if sign > 0 else -mirrored
+            if kept is not None:
+                kept[number][:, :, start:stop] = kernel @ source.refine if source.edge.tail else kernel
+            block += kernel * far.factors[:, number, None, None]
         matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
         start = stop
+
+
+def far_places(source: Nodes) -> tuple[FloatArray, FloatArray]:
+    """Where an edge's charge is seen from by far images: at its nodes.
+
+    A tail's nodes lie further apart than the images lie below it: it needs its finer places.
+    """
+    return (source.fine_across, source.fine_height) if source.edge.tail else (source.across, source.height)
 
 
 def _turn_into_interface_conditions(matrix: NumberArray, system: System) -> None:

@@ -67,9 +67,8 @@ def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -
         assert isinstance(plan, LayeredPlan)
         return _solve_layered(section, plan, modes)
     assert isinstance(plan, Plan)
-    count = section.count
-    filled = {mode: np.empty(count) for mode in modes}
-    air = {mode: np.empty(count) for mode in modes}
+    filled = {mode: np.empty(section.count) for mode in modes}
+    air = {mode: np.empty(section.count) for mode in modes}
     for part in batches(section, plan):
         for mode, (in_medium, in_air) in _solve_batch(section.rows(part), plan, modes).items():
             filled[mode][part], air[mode][part] = in_medium, in_air
@@ -77,7 +76,7 @@ def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -
 
 
 def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
-    """Rows of the section in batches of one topology that fit the cache."""
+    """Rows that are solved together: of one topology, and so few that a matrix of them stays in cache."""
     kinds = topology(section)
     for kind in np.unique(kinds):
         rows = np.flatnonzero(kinds == kind)

@@ -39,7 +39,7 @@ def _check_line(prepared: PreparedLine, *, formulas: bool) -> NominalLine:
         common_mode=0.5 * float(modes[EVEN].impedance[0]) if pair else None,
         even_effective_dk=float(modes[EVEN].effective_dk[0]) if pair else None,
         dimensions=tuple((name, length) for name, length in drawn if length is not None),
-        formulas=_opinions(prepared) if formulas else None,
+        formulas=_opinions(prepared) if formulas else None, mode=prepared.mode,
         losses=_losses(shown.scaled(prepared.mode_factor)) if isinstance(shown, LineParameters) else None,
         coupling=_coupling(prepared) if pair else None, shares=_shares(prepared), reading=prepared.reading,
     )
