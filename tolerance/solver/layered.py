@@ -74,8 +74,11 @@ class TraceCharges:
     @property
     def matrix(self) -> NumberArray:
         """Capacitance matrix over vacuum permittivity: (sections, traces, traces)."""
-        belongs = np.eye(self.charges.shape[2])[:, self.owner]
-        return np.asarray(belongs @ self.charges)
+        order = list(dict.fromkeys(self.owner.tolist()))  # from the bottom up, as the equations stand
+        belongs = (self.owner == np.array(order)[:, None]).astype(np.float64)
+        result = np.empty((len(self.charges), len(order), len(order)), dtype=self.charges.dtype)
+        result[:, np.array(order)[:, None], np.array(order)[None, :]] = belongs @ self.charges[:, :, order]
+        return result
 
 
 def capacitance_matrix(section: LayeredSection, plan: LayeredPlan) -> NumberArray:
@@ -102,8 +105,10 @@ def trace_charges(section: LayeredSection, plan: LayeredPlan) -> TraceCharges:
     edges = [nodes.edge.name for layer in layers for nodes in blocks[layer].nodes]
     sizes = [nodes.across.shape[1] for layer in layers for nodes in blocks[layer].nodes]
     owner = np.repeat([int(name.split()[0]) for name in edges], sizes)
-    wanted = -2.0 * np.pi * (owner[:, None] == np.arange(len(section.traces)))
-    charges = np.linalg.solve(matrix, np.broadcast_to(wanted, (section.count, *wanted.shape)))
+    order = np.array([number for layer in layers for number, trace in enumerate(section.traces)
+                      if trace.layer == layer])
+    wanted = -2.0 * np.pi * (owner[:, None] == order)
+    charges = np.linalg.solve(matrix, np.broadcast_to(wanted, (section.count, *wanted.shape)))[:, :, np.argsort(order)]
     bases = {layer: np.asarray(sum(section.thicknesses[:layer], start=np.zeros(section.count))) for layer in layers}
     return TraceCharges(
         charges=charges, across=np.concatenate([blocks[layer].across for layer in layers], axis=1),
