@@ -139,7 +139,7 @@ def test_run_judges_the_lossy_impedance() -> None:
     for line in json.loads(run_json(result))["lines"]:
         assert line["nominal_ohm"] == told[line["name"]]["impedance_ohm"]
         assert line["mean_ohm"] == pytest.approx(line["nominal_ohm"], rel=2e-3)
-        assert line["reading"] == told[line["name"]]["reading"]
+        assert line["reading_rise"] == told[line["name"]]["reading_rise"]
     text = io.StringIO()
     print_run(result, Console(file=text, width=80))
     words = " ".join(text.getvalue().split())
@@ -195,7 +195,7 @@ def test_a_plane_of_unlike_faces_must_say_which_is_its_foot() -> None:
 @pytest.mark.parametrize("frequency", ["", "1 GHz"])
 def test_series_resistance_raises_a_reading(line: str, rise: float, frequency: str) -> None:
     """Textbook: resistivity over area times the distance; 75 x 15 um copper has 15.3 ohm/m, at 75 mm 1.15 ohm."""
-    reading = check(strip(frequency=frequency, more=READ)).lines[["wire", "both", "both as one"].index(line)].reading
+    reading = check(strip(frequency=frequency, more=READ)).lines[["wire", "both", "both as one"].index(line)].rise
     assert reading is not None
     assert reading.rise == pytest.approx(rise, abs=0.006)
     assert reading.rise == pytest.approx(reading.resistance * reading.position, rel=1e-12)

@@ -90,7 +90,7 @@ class NominalLine:
     losses: LossFigures | None = None  # where the scenario has a frequency; then `impedance` is the magnitude of theirs
     coupling: CouplingFigures | None = None  # of pairs
     shares: ShareFigures | None = None
-    reading: ReadingRise | None = None  # where the scenario says where a coupon is read
+    rise: ReadingRise | None = None  # where the scenario says where a coupon is read
     mode: str = "single"  # single | differential | common
 
 

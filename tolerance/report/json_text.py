@@ -11,6 +11,7 @@ import math
 from typing import TYPE_CHECKING
 
 from tolerance.nominal import CheckResult, FormulaOpinion, LossFigures, NominalLine, ReadingRise, ShareFigures
+from tolerance.report.lots_json import line_keys, run_keys
 
 if TYPE_CHECKING:
     from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
@@ -39,6 +40,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),
         "solver_runs": int(result.record.solver_runs),
+        **run_keys(result),
         "lines": [_line(line) for line in result.lines],
     }
 
@@ -80,9 +82,9 @@ def _line(line: LineResult) -> dict[str, object]:
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
-    if line.reading is not None:
-        values["reading"] = _reading(line.reading)
-    return values
+    if line.rise is not None:
+        values["reading_rise"] = _rise(line.rise)
+    return values | line_keys(line)
 
 
 def _certificate(certificate: Certificate) -> dict[str, object]:
@@ -134,8 +136,8 @@ def _nominal_line(line: NominalLine) -> dict[str, object]:
                               "backward_crosstalk": float(line.coupling.backward)}
     if line.shares is not None:
         values |= _shares(line.shares)
-    if line.reading is not None:
-        values["reading"] = _reading(line.reading)
+    if line.rise is not None:
+        values["reading_rise"] = _rise(line.rise)
     if line.formulas is not None:
         values["formulas"] = [_opinion(opinion, line.impedance) for opinion in line.formulas.opinions]
         values["formulas_none_because"] = line.formulas.why_none or None
@@ -162,9 +164,9 @@ def _shares(shares: ShareFigures) -> dict[str, object]:
     }
 
 
-def _reading(reading: ReadingRise) -> dict[str, object]:
-    return {"position_mm": 1e3 * float(reading.position),
-            "direct_current_resistance_ohm_per_m": float(reading.resistance), "rise_ohm": float(reading.rise)}
+def _rise(rise: ReadingRise) -> dict[str, object]:
+    return {"position_mm": 1e3 * float(rise.position),
+            "direct_current_resistance_ohm_per_m": float(rise.resistance), "rise_ohm": float(rise.rise)}
 
 
 def _opinion(opinion: FormulaOpinion, solved: float) -> dict[str, object]:

@@ -13,6 +13,7 @@ from rich.padding import Padding
 from rich.table import Table as RichTable
 from rich.text import Text
 
+from tolerance.report.lots_tables import Heading, sentences, text_tables
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
 from tolerance.report.wording import (
     CAUTION,
@@ -56,7 +57,7 @@ def print_check(result: CheckResult, lengths: LengthUnit, console: Console, *, s
     _print_table(console, table)
     _say_modes(result, console)
     _say_losses(result, lengths, console)
-    _say_readings(result, console)
+    _say_rises(result, console)
     if shares:
         _print_table(console, _share_table(result, _name_width(console)))
         _say(console, "Shares of a trace's charge and, at small skin depth, of its current by face; fringe: share of "
@@ -73,15 +74,19 @@ def print_run(result: RunResult, console: Console) -> None:
     _say(console, result.title, style="bold")
     _print_table(console, _yield_table(result, _name_width(console)))
     _print_table(console, _driver_table(result, _name_width(console), console.width))
+    for columns, rows in text_tables(result, _name_width(console)):
+        _print_table(console, _filled_table(columns, rows))
     _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
                   f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
     _say_direct(result, console)
+    for sentence in sentences(result):
+        _say(console, sentence)
     if result.frequency is not None:
         _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
-    _say_readings(result, console)
+    _say_rises(result, console)
     _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
 
 
@@ -94,6 +99,13 @@ def _table(*columns: tuple[str, bool]) -> RichTable:
     table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
     for heading, is_text in columns:
         table.add_column(Text(heading), justify="left" if is_text else "right", no_wrap=not is_text, overflow="fold")
+    return table
+
+
+def _filled_table(columns: tuple[Heading, ...], rows: list[tuple[str, ...]]) -> RichTable:
+    table = _table(*columns)
+    for cells in rows:
+        table.add_row(*(Text(cell) for cell in cells))
     return table
 
 
@@ -218,12 +230,12 @@ def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> N
                   "Loss: by the copper, + by the dielectric.")
 
 
-def _say_readings(result: CheckResult | RunResult, console: Console) -> None:
+def _say_rises(result: CheckResult | RunResult, console: Console) -> None:
     for line in result.lines:
-        if line.reading is not None:
-            _say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.reading.position:.6g} mm '
-                          f"from the launch is higher by {fixed(line.reading.rise, 2)} ohm of series resistance "
-                          f"({line.reading.resistance:.3g} ohm/m to direct current).")
+        if line.rise is not None:
+            _say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.rise.position:.6g} mm '
+                          f"from the launch is higher by {fixed(line.rise.rise, 2)} ohm of series resistance "
+                          f"({line.rise.resistance:.3g} ohm/m to direct current).")
 
 
 def _share_table(result: CheckResult, name_width: int) -> RichTable:

@@ -14,10 +14,6 @@ def _given(_value: Any) -> bool:
     return True
 
 
-def _beyond_coupon(level: Any) -> bool:
-    return any(level.get(name) for name in ("lot", "panel")) if isinstance(level, dict) else level != "coupon"
-
-
 class NotYet(NamedTuple):
     """Keys (or, without one, a whole table) that are refused where they stand and `when` holds of the value.
 
@@ -30,11 +26,8 @@ class NotYet(NamedTuple):
 
 
 NOT_YET = (
-    NotYet("variations", ("level",), _beyond_coupon),
     NotYet("variations", ("shape",), lambda shape: shape == "measured"),
     NotYet("offers"),
-    *(NotYet("test", (key,)) for key in ("repeatability", "bias", "guard_band", "panels_per_lot", "coupons_per_panel",
-                                         "sample_size", "accept_number")),
 )
 
 _REMOVE: Mapping[bool, str] = MappingProxyType({

@@ -247,6 +247,11 @@ class Scenario(BaseModel):
                 return layer
         raise KeyError(name)
 
+    @property
+    def has_levels(self) -> bool:
+        """Whether anything is shared by the coupons of a lot or a panel; then coupons are drawn as whole lots."""
+        return any(each.level.lot > 0.0 or each.level.panel > 0.0 for each in self.variations)
+
     def limit_of(self, line: Line) -> float:
         """Half-width of the line's impedance limits, as a share of the target."""
         limit = self.evaluation.limit if line.limit is None else line.limit

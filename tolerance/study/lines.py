@@ -37,7 +37,7 @@ class PreparedLine:
     low_limit: float
     high_limit: float
     frequency: float | None = None  # [Hz]; None: lossless and static
-    reading: ReadingRise | None = None
+    rise: ReadingRise | None = None
 
     @property
     def mode(self) -> str:
@@ -104,10 +104,10 @@ def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> Prepare
     half = line.target * scenario.limit_of(line)
     return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
                         low_limit=line.target - half, high_limit=line.target + half,
-                        frequency=scenario.evaluation.frequency, reading=_reading(scenario, line, nominal))
+                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal))
 
 
-def _reading(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:
+def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:
     """What series resistance adds to a reading on the nominal line: that of both traces of a differential pair in
     series, of a common-mode pair side by side."""
     if scenario.test is None or scenario.test.reading is None:
