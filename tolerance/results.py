@@ -119,6 +119,29 @@ class LineResult:
 
 
 @dataclass(frozen=True, slots=True)
+class MeasuredInput:
+    """What was taken from a table of readings for one property; lengths in metres, shares as fractions.
+
+    method : "smoothed" quantiles, or the fitted shape "normal" or "lognormal".  p_normal, p_lognormal : of the tests
+    of fit (Shapiro and Wilk); None where there is none.
+    """
+
+    of: str
+    file: str
+    sheet: str | None
+    column: str
+    readings: int
+    method: str
+    mean: float
+    deviation: float
+    lowest: float
+    highest: float
+    measure: str  # length | copper length | share | number
+    p_normal: float | None
+    p_lognormal: float | None
+
+
+@dataclass(frozen=True, slots=True)
 class Lots:
     """How coupons were drawn as whole lots."""
 
@@ -158,6 +181,7 @@ class RunResult:
     reading: ReadingRisks | None = None  # of all lines together
     acceptance: LotAcceptance | None = None  # with sample_size only
     frequency: float | None = None  # [Hz] where the lines are evaluated; None: lossless and static
+    measured: tuple[MeasuredInput, ...] = ()
 
     @property
     def misses_target(self) -> bool:

@@ -15,7 +15,8 @@ from scipy.stats import qmc
 
 from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.process.laws import Law, quantile
-from tolerance.process.resin import RESIN_MAKES, Resin, resins_of, with_causes
+from tolerance.process.measured import measured_law
+from tolerance.process.resin import Resin, resins_of, through_resin, with_causes
 from tolerance.process.values import nominals_of
 from tolerance.scenario.amounts import LevelShares
 from tolerance.scenario.properties import Property, members
@@ -95,10 +96,7 @@ class ProcessDraws:
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name` ("P1.thickness"), shape (coupons,). KeyError where there is none."""
-        layer, _, item = name.rpartition(".")
-        resin = self.process.resins.get(layer) if item in RESIN_MAKES else None
-        drawn = self._drawn(name)
-        return drawn if resin is None else resin.applied(item, drawn, self._drawn)
+        return through_resin(name, self._drawn, self.process.resins)
 
     def _drawn(self, name: str) -> FloatArray:
         """Values of the property by its own law alone, (coupons,)."""
@@ -215,15 +213,16 @@ def sobol_uniforms(dimensions: int, points: int, chance: np.random.Generator) ->
 
 def _variables(scenario: Scenario, variation: Variation) -> tuple[Variable, ...]:
     """One variable for each property that the variation names, or one for all where they are drawn together."""
-    pairs = tuple((each, _law(each, variation)) for each in members(scenario, variation))
+    pairs = tuple((each, _law(scenario, each, variation)) for each in members(scenario, variation))
     if variation.together:
         return (Variable(" + ".join(each.name for each, _ in pairs), pairs, variation.level),)
     return tuple(Variable(each.name, ((each, law),), variation.level) for each, law in pairs)
 
 
-def _law(each: Property, variation: Variation) -> Law:
+def _law(scenario: Scenario, each: Property, variation: Variation) -> Law:
     if variation.shape == "measured":
-        raise ValueError("a measured law is not acted on yet, and is refused when the scenario is checked")
+        readings = np.array(scenario.readings_of(each.name).values)
+        return Law("measured", each.nominal, shift=variation.shift, measured=measured_law(readings))
     return Law(
         variation.shape, each.nominal, tolerance=variation.tolerance, shift=variation.shift,
         sigmas=variation.sigmas, cpk=variation.cpk, low=variation.low, high=variation.high,

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 
 from tolerance.nominal import CheckResult, FormulaOpinion, LossFigures, NominalLine, ReadingRise, ShareFigures
 from tolerance.report.lots_json import line_keys, run_keys
+from tolerance.report.measured import measured_object
 
 if TYPE_CHECKING:
     from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
@@ -31,6 +32,7 @@ def check_json(result: CheckResult) -> str:
 
 def run_object(result: RunResult) -> dict[str, object]:
     """The same as plain Python values."""
+    measured = {"measured": [measured_object(one) for one in result.measured]} if result.measured else {}
     return {
         "title": result.title,
         "seed": int(result.seed),
@@ -41,6 +43,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "impossible": int(result.impossible),
         "solver_runs": int(result.record.solver_runs),
         **run_keys(result),
+        **measured,
         "lines": [_line(line) for line in result.lines],
     }
 

@@ -14,6 +14,7 @@ from rich.table import Table as RichTable
 from rich.text import Text
 
 from tolerance.report.lots_tables import Heading, sentences, text_tables
+from tolerance.report.measured import intervals_of, measured_sentences
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
 from tolerance.report.wording import (
     CAUTION,
@@ -84,10 +85,12 @@ def print_run(result: RunResult, console: Console) -> None:
     _say_direct(result, console)
     for sentence in sentences(result):
         _say(console, sentence)
+    for sentence in measured_sentences(result):
+        _say(console, sentence)
     if result.frequency is not None:
         _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
     _say_rises(result, console)
-    _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
+    _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
 def _name_width(console: Console) -> int:

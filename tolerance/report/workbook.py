@@ -22,6 +22,7 @@ from tolerance.report.lots_tables import (
     level_table,
     reading_table,
 )
+from tolerance.report.measured import intervals_of, measured_table
 from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
@@ -58,6 +59,7 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     for name, table in (
         ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
         ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
+        *([("Measured data", measured_table(result, scenario.report.lengths))] if result.measured else []),
         *([("Correlations", correlation_table(scenario))] if scenario.correlations else []),
     ):
         sheet = book.create_sheet(name)
@@ -100,7 +102,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
          _font(12, bold=bool(missing), color=FAIL if missing else INK)),
         (f"{len(scenario.layers)} layers, {length_text(board_thickness(scenario), scenario.report.lengths)} thick"
          + (f"; {result.impossible:,} coupons cannot exist and count as failing" if result.impossible else "")
-         + ". Yield: share of coupons inside the limits; its ends: 95 % interval of the computation alone.",
+         + f". Yield: share of coupons inside the limits; its ends: 95 % interval of {intervals_of(result)}.",
          _font()),
         (CAUTION, _font(italic=True)),
     ]

@@ -26,7 +26,6 @@ class NotYet(NamedTuple):
 
 
 NOT_YET = (
-    NotYet("variations", ("shape",), lambda shape: shape == "measured"),
     NotYet("offers"),
 )
 

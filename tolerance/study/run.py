@@ -28,9 +28,11 @@ from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.reading import Coupons
-from tolerance.statistics.yields import Limits, LineYield, histogram, judge
+from tolerance.statistics.sampling import Figures, widened_by_sampling
+from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
+from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
 
 Progress = Callable[[str, int, int], None]
@@ -53,7 +55,8 @@ def run(
     coupons = scenario.evaluation.coupons if coupons is None else coupons
     seed = scenario.evaluation.seed if seed is None else seed
     seed = secrets.randbelow(2**31) if seed is None else seed
-    process_chance, training_chance, driver_chance, level_chance, test_chance = np.random.default_rng(seed).spawn(5)
+    process_chance, training_chance, driver_chance, level_chance, test_chance, sampling_chance = (
+        np.random.default_rng(seed).spawn(6))
     clock = _Clock()
 
     process = process_of(scenario)
@@ -81,6 +84,8 @@ def run(
         limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
         target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
+    judged = _with_doubt_of_readings(judged, predicted, draws, sampling_chance, tell)
+    clock.lap("doubt of readings")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
         return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
@@ -104,6 +109,7 @@ def run(
         inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock), frequency=scenario.evaluation.frequency,
         lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
+        measured=measured_inputs(scenario, process),
     )
 
 
@@ -115,6 +121,23 @@ def _coupons(predicted: list[PredictedLine], draws: ProcessDraws) -> Coupons:
         np.array([line.prediction.held_out_error for line in predicted]), draws.replicates,
         cluster=1 if draws.lots is None else draws.lots.coupons,
     )
+
+
+def _with_doubt_of_readings(
+    judged: Judgement, predicted: Sequence[PredictedLine], draws: ProcessDraws, chance: np.random.Generator,
+    tell: Progress,
+) -> Judgement:
+    """The judgement with what the number of readings of measured data leaves open in its intervals."""
+    if not has_measured(draws.process):
+        return judged
+    limits = [Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted]
+    lines = [line.again for line in predicted]
+
+    def judge_again(chance_of_law: np.random.Generator) -> Figures:
+        return judged_again(lines, limits, draws, chance_of_law)
+
+    others = _on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
+    return widened_by_sampling(judged, judged_again(lines, limits, draws, None), others)
 
 
 def _on_all_cores(
