@@ -27,7 +27,7 @@ ROWS: list[list[str]] = [
     ["formulas"],
     ["surrogate"],
     ["statistics"],
-    ["nominal", "results"],
+    ["nominal", "results", "fitted"],
     ["study"],
     ["report"],
     ["command"],

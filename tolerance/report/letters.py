@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 FAMILY = "DejaVu Sans"
-HINTED = 1.02  # letters fitted to the points of a picture may come out a little wider
+HINTED = 1.04  # letters fitted to the points of a picture may come out a little wider
 
 
 @contextmanager
