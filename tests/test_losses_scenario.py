@@ -219,3 +219,40 @@ def test_check_shows_losses_shares_and_readings() -> None:
     for part in ("[ohm/m]", "[nH/m]", "[mS/m]", "[pF/m]", "[dB/m]", "[dB/inch]", "At 1 GHz: the impedance above is the "
                  "magnitude", "75 mm from the launch is higher by 1.15 ohm", "left side", "inner side", "capacitive"):
         assert part in words
+
+
+@pytest.mark.parametrize("line", ["wire", "both", "both as one"])
+def test_resin_at_the_height_of_the_copper_loses_like_its_ply(line: str) -> None:
+    """With resin of the ply's own Dk nothing changes: exact; with a lower one the capacitance falls, G / C stays."""
+    plain = check_lines(strip(frequency="1 GHz"))[line]
+    text = STRIP.replace("FREQUENCY", 'frequency = "1 GHz"').replace("PLANE", "").replace("ANCHOR", "")
+    same, lower = (check_lines(parse(changed(text, ('kind = "prepreg"', f'kind = "prepreg"\nresin_dk = {dk}'))))[line]
+                   for dk in (4.0, 3.2))
+    for key in ("resistance_ohm_per_m", "conductance_s_per_m", "capacitance_f_per_m", "impedance_ohm"):
+        assert same[key] == pytest.approx(plain[key], rel=2e-5)
+    assert lower["capacitance_f_per_m"] < 0.99 * plain["capacitance_f_per_m"]
+    assert lower["conductance_s_per_m"] / lower["capacitance_f_per_m"] == pytest.approx(
+        plain["conductance_s_per_m"] / plain["capacitance_f_per_m"], rel=1e-9)
+
+
+def test_broadside_and_coplanar_lines_have_losses_too() -> None:
+    """Of a broadside pair between equal dielectrics the loss tangent is exact; its two traces are in series or tied."""
+    more = ('[[lines]]\nname = "facing"\nlayer = "L2"\npartner = "L2b"\nwidth = "75 um"\ntarget = "80 ohm"\n'
+            '[[lines]]\nname = "facing, tied"\nlayer = "L2"\npartner = "L2b"\nwidth = "75 um"\ntarget = "30 ohm"\n'
+            'mode = "common"\n'
+            '[[lines]]\nname = "beside ground"\nlayer = "L2"\nground_gap = "100 um"\nwidth = "75 um"\n'
+            'target = "50 ohm"\n' + READ)
+    partner = ('[[layers]]\nname = "C2"\nkind = "core"\nthickness = "120 um"\ndk = 4.0\ndf = 0.02\n\n'
+               '[[layers]]\nname = "L2b"\nkind = "copper"\nuse = "signal"\nfoil = "15 um"\n\n')
+    text = changed(STRIP, ('[[layers]]\nname = "P1"', partner + '[[layers]]\nname = "P1"'),
+                   ('name = "L2"\nkind = "copper"', 'name = "L2"\nkind = "copper"\nfoot = "down"'))
+    text = changed(text, ("FREQUENCY", 'frequency = "1 GHz"')).replace("PLANE", "").replace("ANCHOR", "")
+    lines = check_lines(parse(text + more))
+    for name in ("facing", "facing, tied", "beside ground"):
+        line = lines[name]
+        assert line["conductance_s_per_m"] / (2e9 * math.pi * line["capacitance_f_per_m"]) == pytest.approx(
+            0.02, rel=1e-6)
+        assert line["resistance_ohm_per_m"] > 10.0
+    assert lines["facing"]["reading_rise"]["rise_ohm"] == pytest.approx(2.30, abs=0.006)  # type: ignore[index]
+    assert lines["facing, tied"]["reading_rise"]["rise_ohm"] == pytest.approx(0.575, abs=0.003)  # type: ignore[index]
+    assert lines["facing"]["common_mode_ohm"] == pytest.approx(lines["facing, tied"]["impedance_ohm"], rel=1e-12)

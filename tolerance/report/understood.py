@@ -32,6 +32,7 @@ def stackup_table(scenario: Scenario) -> Table:
         Column("dk_frequency", "Dk and Df hold at", "GHz"), Column("conductivity", "conductivity", "MS/m", 1),
         Column("roughness_foot", "roughness of the foot", unit, 2),
         Column("roughness_crest", "roughness of the crest", unit, 2),
+        Column("resin_dk", "Dk of the resin", "", 3),
         Column("resin_content", "resin content by weight", "share", 1),
     )
     rows = [_layer_row(scenario, layer, unit) for layer in scenario.layers]
@@ -112,6 +113,7 @@ def _layer_row(scenario: Scenario, layer: Layer, unit: LengthUnit) -> dict[str, 
         "conductivity": layer.conductivity / 1e6 if copper and lossy else None,
         "roughness_foot": _length(layer.roughness_foot, unit),
         "roughness_crest": _length(layer.roughness_crest, unit), "resin_content": layer.resin_content,
+        "resin_dk": layer.resin_dk,
     }
 
 

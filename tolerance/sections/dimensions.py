@@ -49,6 +49,8 @@ class Dimensions:
             lengths += [section.mask.on_laminate, section.mask.over_copper]
             dks.append(section.mask.dk)
             dfs += [] if section.mask.df is None else [DF_SCALE * section.mask.df]
+        if isinstance(section, Section) and section.band_dk is not None:
+            dks.append(section.band_dk)
         split, ratios = len(lengths), [*_ratios(section), *dfs]
         result = np.empty((split + len(dks) + len(ratios), section.count))
         np.log(np.maximum(lengths, SMALLEST_LENGTH), out=result[:split])

@@ -46,7 +46,7 @@ class LayeredSection:
     top_plane: bool
     traces: tuple[PlacedTrace, ...]
     names: tuple[str, ...] = ()
-    kinds: tuple[str, ...] = ()  # air | prepreg | core | mask
+    kinds: tuple[str, ...] = ()  # air | prepreg | core | mask | resin (at the height of a trace)
     dfs: tuple[FloatArray, ...] = ()  # where the line is evaluated at a frequency, as the two below
     dk_frequencies: tuple[float | None, ...] = ()
     metals: Metals | None = None

@@ -40,10 +40,12 @@ def at_frequency(section: Section, frequency: float) -> Section:
     def ply_at(ply: Ply) -> Ply:
         return replace(ply, dk=_carried(ply, frequency))
 
-    mask = section.mask
+    mask, band = section.mask, section.band_dk
+    if band is not None:  # resin that comes out of the ply that presses into the copper, with its loss tangent
+        band = _carried(replace(section.crest_side[0], dk=band), frequency)
     return replace(
         section, foot_side=tuple(map(ply_at, section.foot_side)), crest_side=tuple(map(ply_at, section.crest_side)),
-        mask=None if mask is None else replace(mask, dk=_carried(mask, frequency)),
+        mask=None if mask is None else replace(mask, dk=_carried(mask, frequency)), band_dk=band,
     )
 
 
