@@ -16,6 +16,7 @@ from rich.text import Text
 from tolerance.report.lots_tables import Heading, sentences, text_tables
 from tolerance.report.measured import intervals_of, measured_sentences
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
+from tolerance.report.weights import lever_words, ppm_words
 from tolerance.report.wording import (
     CAUTION,
     METRES_IN,
@@ -42,6 +43,7 @@ NARROWEST_NAME = 15
 WIDEST_NAME = 40
 OTHER_COLUMNS = 65  # what the widest table needs beside the names
 DRIVERS_SHOWN = 3
+LEVERS_SHOWN = 2
 LONGEST_DRIVER = 38
 NAMES_IN_VERDICT = 4
 
@@ -82,6 +84,7 @@ def print_run(result: RunResult, console: Console) -> None:
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
+    _say_rare(result, console)
     _say_direct(result, console)
     for sentence in sentences(result):
         _say(console, sentence)
@@ -139,7 +142,10 @@ def _yield_table(result: RunResult, name_width: int) -> RichTable:
 
 
 def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
-    table = _table(("line", True), (f"largest drivers, by {ranking_name(result.lines)}", True),
+    heading = f"largest drivers, by {ranking_name(result.lines)}"
+    if any(lever_words(line, 1) for line in result.lines):
+        heading += "\n/ points of yield gained, spread halved"
+    table = _table(("line", True), (heading, True),
                    ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
         table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
@@ -152,12 +158,22 @@ def _drivers(line: LineResult, width: int) -> str:
     rows = [""]
     for driver in line.drivers[:DRIVERS_SHOWN]:
         words = f"{shorten(variable_words(driver.variable), LONGEST_DRIVER)} {percent(ranking(driver).value, 0)}"
-        joined = f"{rows[-1]}, {words}" if rows[-1] else words
-        if len(joined) <= width:
-            rows[-1] = joined
-        else:
-            rows.append(words)
-    return "\n".join(rows) if line.drivers else "none: nothing that varies reaches it"
+        _append(rows, words, width)
+    if not line.drivers:
+        return "none: nothing that varies reaches it"
+    gains = [""]
+    for words in lever_words(line, LEVERS_SHOWN):
+        _append(gains, words, width - 2)
+    return "\n".join([*rows, *(f"/ {row}" for row in gains if row)])
+
+
+def _append(rows: list[str], words: str, width: int) -> None:
+    """Put words behind the last row, or, where there is no room, into a new one."""
+    joined = f"{rows[-1]}, {words}" if rows[-1] else words
+    if len(joined) <= width:
+        rows[-1] = joined
+    else:
+        rows.append(words)
 
 
 def _say_verdict(result: RunResult, console: Console) -> None:
@@ -192,6 +208,13 @@ def _say_certificate(result: RunResult, console: Console) -> None:
             _say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
                           f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
                           f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
+
+
+def _say_rare(result: RunResult, console: Console) -> None:
+    """Failures too rare to be counted."""
+    rare = [f'"{shorten(line.name, LONGEST_DRIVER)}" {ppm_words(line.tail)}' for line in result.lines if line.tail]
+    if rare:
+        _say(console, f"Coupons that fail too rarely to be counted, so integrated: {'; '.join(rare)}.")
 
 
 def _say_direct(result: RunResult, console: Console) -> None:
