@@ -27,7 +27,7 @@ ROWS: list[list[str]] = [
     ["formulas"],
     ["surrogate"],
     ["statistics"],
-    ["nominal", "results", "fitted"],
+    ["nominal", "results", "fitted", "pictures"],
     ["study"],
     ["report"],
     ["command"],

@@ -65,6 +65,10 @@ def _parser() -> argparse.ArgumentParser:
                        help="set published formulas beside the field solver, as a second opinion")
     check.add_argument("--shares", action="store_true",
                        help="show charge and current by face, fringe capacitance, and the coupling of pairs")
+    check.add_argument("--picture", action="store_true",
+                       help="draw the field and the current of each line to scale, one file a line")
+    check.add_argument("--out", type=Path, metavar="DIR", help="folder for the pictures; default out/<file stem>")
+    check.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the pictures")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
@@ -126,15 +130,35 @@ def _check(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
     from tolerance.study.check import check
 
+    if options.out is not None and not options.picture:
+        raise InputError(f"--out {options.out}: only with --picture")
     scenario = load(options.file)
     result = check(scenario, formulas=options.formulas)
+    folder = options.out or Path("out") / options.file.stem
+    written = _write_pictures(scenario, folder, options) if options.picture else []
     if options.json:
         print(check_json(result))
     elif not options.quiet:
         from tolerance.report.terminal import print_check
 
-        print_check(result, scenario.report.lengths, _console(), shares=options.shares)
+        console = _console()
+        print_check(result, scenario.report.lengths, console, shares=options.shares)
+        if written:
+            console.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}", highlight=False)
     return 0
+
+
+def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespace) -> list[Path]:
+    from tolerance.report.field_plot import write_pictures
+    from tolerance.report.files import remove_earlier
+    from tolerance.study.picture import pictures
+
+    with _progress(quiet=options.quiet) as tell:
+        found = pictures(scenario, on_progress=tell)
+        written = write_pictures(found, folder, scenario.report.lengths, figure_format=options.figures,
+                                 on_progress=tell)
+        remove_earlier(folder, written, job="check")
+    return written
 
 
 def _run(options: argparse.Namespace) -> int:

@@ -1,6 +1,7 @@
 """What a picture of a line's field is made of: finished arrays, drawn by the report as they are.
 
-Lengths in metres, x sideways and y up as in the stackup; potentials as a share of the voltage on the trace.
+Lengths in metres, x sideways and y up as in the stackup; potentials as a share of the voltage on the trace, of a
+broadside pair as a share of half the voltage between its traces.
 """
 
 from __future__ import annotations

@@ -22,7 +22,6 @@ from tolerance.report.looks import (
     BODY,
     BODY_EDGE,
     COPPER,
-    CORE_GRAIN,
     FAINT_INK,
     INK,
     LARGE,
@@ -30,7 +29,6 @@ from tolerance.report.looks import (
     MEDIUM,
     MOST_STEPS,
     PAGE,
-    PAPER,
     RESOLUTION,
     SMALL,
     TITLE,
@@ -51,12 +49,13 @@ if TYPE_CHECKING:
     from tolerance.report.figures import FigureFormat
 
 LEVELS = np.linspace(0.1, 0.9, 9)  # of the voltage on the trace
-MEAN_HEIGHT = 0.028  # how high the mean current density is drawn, of the picture's height
+MEAN_HEIGHT = 0.025  # how high the mean current density is drawn, of the picture's height
 CUT = 3.0  # times the mean: the border ends there, for the density grows without limit towards a corner
 MARGIN = 0.025
+DRAWN = 8.4  # inches wide
+LOWEST_PAGE = 6.2  # inches: room for the legend
 FIELD_DASHES = (0, (6, 2.5))
 WORDS_WIDTH = 38
-FLUX = "flux between neighbours: 1/{} of the trace's charge"
 IMPEDANCE = {"single": "impedance", "differential": "differential impedance", "common": "common-mode impedance"}
 
 
@@ -78,20 +77,36 @@ def write_pictures(pictures: Sequence[FieldPicture], folder: Path, lengths: Leng
 def picture_page(picture: FieldPicture, *, lengths: LengthUnit) -> Figure:
     """The field of one line on a page of its own, with its legend beside."""
     with our_looks():
-        page = Figure(figsize=PAGE, dpi=RESOLUTION)
+        height = _page_height(picture)
+        page = Figure(figsize=(PAGE[0], height), dpi=RESOLUTION)
         answer = f"{IMPEDANCE[picture.mode]} {fixed(picture.impedance, 2)} ohm"
         room = 72.0 * PAGE[0] * 0.6
         words, size = fitted(picture.name, room, (TITLE, 18.0, LARGE), bold=True)
-        page.text(MARGIN, 0.944, words, fontsize=size, weight="bold", va="center")
-        subtitle = f"{picture.kind}; {place_words(picture.layer, picture.references)}; nominal section"
+        page.text(MARGIN, 1.0 - 0.42 / height, words, fontsize=size, weight="bold", va="center")
+        layers = dict.fromkeys(part.name for part in picture.drawing.conductors if part.role == "trace")
+        where = place_words(" and ".join(layers), picture.references)
+        subtitle = f"{picture.kind}; {where}; nominal section"
         words, size = fitted(subtitle, room, (MEDIUM, SMALL))
-        page.text(MARGIN, 0.896, words, fontsize=size, color=FAINT_INK, va="center")
-        page.text(1.0 - MARGIN, 0.944, answer, fontsize=LARGE, weight="bold", va="center", ha="right")
-        axes = page.add_axes((0.065, 0.09, 0.63, 0.76))
+        page.text(MARGIN, 1.0 - 0.78 / height, words, fontsize=size, color=FAINT_INK, va="center")
+        page.text(1.0 - MARGIN, 1.0 - 0.42 / height, answer, fontsize=LARGE, weight="bold", va="center", ha="right")
+        axes = page.add_axes((0.065, 0.7 / height, DRAWN / PAGE[0], 1.0 - 1.85 / height))
         draw_field(axes, picture, lengths=lengths)
-        page.legend(handles=_legend(picture), loc="upper left", bbox_to_anchor=(0.712, 0.86), frameon=False,
-                    fontsize=SMALL, handlelength=2.6, labelspacing=1.0, borderaxespad=0.0)
+        page.legend(handles=_legend(picture), loc="upper left", bbox_to_anchor=(0.712, 1.0 - 1.1 / height),
+                    frameon=False, fontsize=SMALL, handlelength=2.6, labelspacing=1.0, borderaxespad=0.0)
     return page
+
+
+def _page_height(picture: FieldPicture) -> float:
+    """As high as the picture, or its legend, needs [inches]."""
+    low, high, width = *_heights(picture), float(np.ptp(picture.across))
+    return max(LOWEST_PAGE, 1.85 + DRAWN * (high - low) / width)
+
+
+def _heights(picture: FieldPicture) -> tuple[float, float]:
+    """Lowest and highest that is drawn [m]: the grid and all copper."""
+    copper = np.concatenate([part.outline[:, 1] for part in picture.drawing.conductors])
+    return (min(float(picture.height.min()), float(copper.min())),
+            max(float(picture.height.max()), float(copper.max())))
 
 
 def draw_field(axes: Axes, picture: FieldPicture, *, lengths: LengthUnit) -> Axes:
@@ -99,8 +114,7 @@ def draw_field(axes: Axes, picture: FieldPicture, *, lengths: LengthUnit) -> Axe
     unit = METRES_IN[lengths]
     across, height = picture.across / unit, picture.height / unit
     left, right = float(across[0]), float(across[-1])
-    copper = np.concatenate([part.outline[:, 1] for part in picture.drawing.conductors]) / unit
-    bottom, top = min(float(height.min()), float(copper.min())), max(float(height.max()), float(copper.max()))
+    bottom, top = (level / unit for level in _heights(picture))
     _section(axes, picture, unit, left, right)
     odd = float(picture.potential.min()) < -0.5
     levels = np.concatenate([-LEVELS[::-1], [0.0], LEVELS]) if odd else LEVELS
@@ -124,7 +138,8 @@ def draw_field(axes: Axes, picture: FieldPicture, *, lengths: LengthUnit) -> Axe
 def _section(axes: Axes, picture: FieldPicture, unit: float, left: float, right: float) -> None:
     """Materials and copper, what reaches the sides drawn to the edge."""
     drawing = picture.drawing
-    corners = np.concatenate([part.outline[:, 0] for part in (*drawing.regions, *drawing.conductors)]) / unit
+    outlines = [*(part.outline for part in drawing.regions), *(part.outline for part in drawing.conductors)]
+    corners = np.concatenate([outline[:, 0] for outline in outlines]) / unit
     ends = float(corners.min()), float(corners.max())
 
     def reaching(outline: FloatArray) -> FloatArray:
@@ -157,29 +172,31 @@ def _current(axes: Axes, profile: CurrentProfile, unit: float, mean_height: floa
     """A border round the trace as thick as the current density is high."""
     ends = profile.outline / unit
     thickness = mean_height * np.clip(profile.density / profile.mean, 0.0, CUT)
-    for number, high in enumerate(thickness):
-        base = ends[number : number + 2]
-        outer = base + high * profile.normals[number]
-        axes.add_patch(Polygon(np.vstack([base, outer[::-1]]), closed=True, facecolor=BODY, edgecolor=BODY,
-                               linewidth=0.4, zorder=4))
-    tops = np.repeat(ends, 2, axis=0)[1:-1] + np.repeat(thickness[:, None] * profile.normals, 2, axis=0)
-    axes.plot(tops[:, 0], tops[:, 1], color=BODY_EDGE, linewidth=0.9, zorder=4)
+    turns = np.flatnonzero(np.any(np.abs(np.diff(profile.normals, axis=0)) > 1e-6, axis=1)) + 1
+    for face in np.split(np.arange(thickness.size), turns):
+        normal, base = profile.normals[face[0]], ends[face[0] : face[-1] + 2]
+        middles = 0.5 * (base[:-1] + base[1:]) + thickness[face, None] * normal
+        first, last = (end + thickness[number] * normal for end, number in ((base[0], face[0]), (base[-1], face[-1])))
+        shape = np.vstack([base[0], first, middles, last, base[-1]])
+        axes.add_patch(Polygon(shape, closed=True, facecolor=BODY, edgecolor=BODY_EDGE, linewidth=0.9, zorder=4))
 
 
 def _legend(picture: FieldPicture) -> list[Artist]:
     profile = picture.currents[0]
     mean = 1e-3 * profile.mean
+    apart = picture.mode == "differential" and not picture.symmetry_plane
+    voltage = "half the voltage between the traces" if apart else "the voltage on the trace"
     entries: list[Artist] = [
-        Line2D([], [], color=INK, linewidth=0.7, label=two_rows("equipotentials, every 10 % of the voltage on the "
-                                                                "trace", WORDS_WIDTH)),
+        Line2D([], [], color=INK, linewidth=0.7, label=two_rows(f"equipotentials, every 10 % of {voltage}",
+                                                                WORDS_WIDTH)),
         Line2D([], [], color=FAINT_INK, linewidth=1.0, linestyle=FIELD_DASHES,
-               label=f"field lines, from + to -; between neighbours\n1/{picture.lines_of_charge} of the charge "
-                     "of a trace"),
+               label="field lines, from + to -; between\n"
+                     f"neighbours 1/{picture.lines_of_charge} of the charge of a trace"),
         Patch(facecolor=BODY, edgecolor=BODY_EDGE,
-              label="current density round the trace,\nas the height of this border: 1 A in the\n"
-                    f"trace, mean {fixed(mean, 2)} A/mm, drawn up to {fixed(CUT * mean, 1)}\n"
-                    "(it rises without limit at a corner);\nof the line without loss: the density\n"
-                    "of charge of the same copper in air"),
+              label="current density round the trace, as\nthe height of this border. With 1 A in\n"
+                    f"the trace its mean is {fixed(mean, 2)} A/mm; cut at\n{fixed(CUT * mean, 1)} A/mm, for it "
+                    "rises without limit\nat a corner. Of the line without loss:\nthe density of charge of the "
+                    "same copper\nin air"),
     ]
     if picture.symmetry_plane:
         entries.append(Line2D([], [], color=INK, linewidth=1.2, linestyle=(0, (8, 2, 1, 2)),

@@ -26,7 +26,7 @@ from tolerance.report.tables import MISSES, verdict
 from tolerance.report.wording import LengthUnit, headline_text, place_words, share_range_text, trimmed
 
 if TYPE_CHECKING:
-    from collections.abc import Callable
+    from collections.abc import Callable, Sequence
     from pathlib import Path
 
     from tolerance.results import Interval, LineResult, NestedYield, RunResult
@@ -54,7 +54,13 @@ def write_figures(result: RunResult, folder: Path, lengths: LengthUnit,
 
     Raises UnfinishedError where a file cannot be written.
     """
-    pages, jobs = _pages(result, lengths), []
+    return save_pages(_pages(result, lengths), folder, figure_format=figure_format, on_progress=on_progress)
+
+
+def save_pages(pages: Sequence[tuple[str, Callable[[], Figure]]], folder: Path, *, figure_format: FigureFormat,
+               on_progress: Callable[[str, int, int], None] | None = None) -> list[Path]:
+    """Draw each page and write it under its name; see write_figures."""
+    jobs = []
     with ThreadPoolExecutor(max_workers=1) as writer:  # packs one picture while the next is drawn
         for number, (name, draw) in enumerate(pages, start=1):
             page = draw()

@@ -149,8 +149,10 @@ def _reflections(layers: Layers, k: FloatArray, way: int) -> list[FloatArray]:
 def _waves(
     layers: Layers, here: int, there: int, k: FloatArray, down: ComplexArray, up: ComplexArray,
 ) -> tuple[ComplexArray, ComplexArray]:
-    """Amplitudes (k,) of the wave that rises from the lower and that falls from the upper face of layer `there`, without
-    what the images already have.  down, up : what the charges send to the lower and the upper face of their layer."""
+    """Amplitudes (k,) of the wave that rises from the lower and that falls from the upper face of layer `there`.
+
+    Without what the images already have.  down, up : what the charges send to both faces of their layer.
+    """
     below, above = _reflections(layers, k, -1), _reflections(layers, k, 1)
     through = np.exp(-k * np.diff(layers.faces)[:, None])
     first_down, first_up = first_steps(layers, here)

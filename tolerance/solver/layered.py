@@ -32,12 +32,12 @@ class LayeredPlan:
 
 def plan_layered(section: LayeredSection, settings: SolverSettings) -> LayeredPlan:
     """The plan for sections like the first one."""
-    edges = [edge for trace in range(len(section.traces)) for edge in _edges(section, trace)]
+    edges = [edge for trace in range(len(section.traces)) for edge in trace_faces(section, trace)]
     heights = [section.thicknesses[0] * 0.0]
     for thickness in section.thicknesses:
         heights.append(heights[-1] + thickness)
     bases = {name: float(heights[trace.layer][0]) for number, trace in enumerate(section.traces)
-             for name in (edge.name for edge in _edges(section, number))}
+             for name in (edge.name for edge in trace_faces(section, number))}
     planes = [float(heights[0][0])] * section.bottom_plane + [float(heights[-1][0])] * section.top_plane
     counts = edge_counts(edges, settings, levels=planes, bases=bases)
     reach = max(float(np.abs(edge.start[0]).max()) for edge in edges) + max(
@@ -131,7 +131,7 @@ class _Block:
     @staticmethod
     def of(section: LayeredSection, plan: LayeredPlan, layer: int) -> _Block:
         numbers = [number for number, trace in enumerate(section.traces) if trace.layer == layer]
-        edges = [edge for number in numbers for edge in _edges(section, number)]
+        edges = [edge for number in numbers for edge in trace_faces(section, number)]
         dk, thickness = section.dks[layer], section.thicknesses[layer]
         below, above = _below(section, layer), _above(section, layer)
         images = (NearImage(None), NearImage(np.zeros(section.count), touching=_touching(section, numbers, up=False)),
@@ -199,7 +199,7 @@ def _above(section: LayeredSection, layer: int) -> FlatStack:
     return FlatStack(section.thicknesses[layer + 1 :], section.dks[layer + 1 :], section.top_plane)
 
 
-def _edges(section: LayeredSection, number: int) -> list[Edge]:
+def trace_faces(section: LayeredSection, number: int) -> list[Edge]:
     """Faces of one trace, heights from the lower face of its layer."""
     trace = section.traces[number]
     thickness = section.thicknesses[trace.layer]

@@ -61,8 +61,8 @@ def _next(faces: Sequence[Face], end: complex, small: float) -> tuple[Face, bool
 
 
 def follow(
-    starts: ComplexArray, directions: Callable[[ComplexArray], ComplexArray], inside: Callable[[ComplexArray], BoolArray],
-    *, step: float, most: int,
+    starts: ComplexArray, directions: Callable[[ComplexArray], ComplexArray],
+    inside: Callable[[ComplexArray], BoolArray], *, step: float, most: int,
 ) -> list[ComplexArray]:
     """Lines along the field from `starts`, as long as `inside` holds, by Runge-Kutta steps of length `step` [m].
 

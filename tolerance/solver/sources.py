@@ -12,14 +12,16 @@ from dataclasses import dataclass
 import numpy as np
 
 from tolerance.arrays import ComplexArray, FloatArray, IntArray, read_only
+from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
-from tolerance.solver.assembly import full_matrix, near_system
+from tolerance.solver.assembly import near_system, node_charges
 from tolerance.solver.edges import GRADING, Edge, Nodes
+from tolerance.solver.layered import LayeredPlan, TraceCharges, trace_charges, trace_faces
 from tolerance.solver.plan import Plan
-from tolerance.solver.rules import ground_positions, graded_positions, piece_charges, tail_positions
+from tolerance.solver.rules import graded_positions, ground_positions, piece_charges, tail_positions
 from tolerance.solver.structure import media, structure
 
-PIECES = 32  # on each edge
+PIECES = 40  # on each edge
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,10 +74,8 @@ def charged(section: Section, plan: Plan, *, mode: int, air: bool = False) -> So
     parts = structure(one)
     filled, in_air = media(parts, multiples=plan.multiples, wavenumbers=plan.wavenumbers)
     system = near_system(parts.edges, parts.images, counts=[plan.count(edge) for edge in parts.edges])
-    matrix = full_matrix(system, in_air if air else filled, sign=mode, air=air)[0]
-    wanted = np.zeros(len(matrix))
-    wanted[: system.trace] = -2.0 * np.pi * (1.0 if air else float(parts.body_dk[0]))
-    charges = np.linalg.solve(matrix, wanted)
+    body_dk = np.ones(1) if air else parts.body_dk
+    charges = node_charges(system, in_air if air else filled, body_dk=body_dk, sign=mode, air=air)[0]
     pieces, faces, start = [], [], 0
     for nodes in system.nodes:
         stop = start + nodes.across.shape[1]
@@ -93,6 +93,39 @@ def charged(section: Section, plan: Plan, *, mode: int, air: bool = False) -> So
                      (*below.dks[::-1], parts.body_dk, *(above.dks if above else ())),
                      below.plane, above is not None and above.plane, body=len(below.dks), air=air)
     return _joined(layers, pieces, [len(below.dks) + (not below.plane)] * len(pieces), faces)
+
+
+def charged_broadside(section: LayeredSection, plan: LayeredPlan, *, mode: int, air: bool = False) -> Sources:
+    """The same of traces on several layers; heights from the bottom of the stack.
+
+    Odd: charges equal and opposite, a voltage of 2 between the traces. Even: 1 on both, tied.
+    """
+    one = section.rows(slice(0, 1))
+    found = trace_charges(one.in_air() if air else one, plan)
+    charges = _unit_potentials(found, mode)
+    layers = _layers(one.thicknesses, one.dks, one.bottom_plane, one.top_plane, body=None, air=air)
+    lifted = int(not one.bottom_plane)
+    pieces: list[tuple[ComplexArray, FloatArray]] = []
+    faces, numbers = [], []
+    for number, name in enumerate(found.edge_names):
+        trace, face = int(name.split()[0]), name.split(" ", 1)[1]
+        edge = next(edge for edge in trace_faces(one, trace) if edge.name == name)
+        base = layers.faces[one.traces[trace].layer + lifted]
+        ends, on_pieces = _pieces_along(edge, charges[found.edge == number])
+        pieces.append((ends + 1j * base, on_pieces))
+        numbers.append(one.traces[trace].layer + lifted)
+        faces.append(Face(trace, face, *pieces[-1]))
+    return _joined(layers, pieces, numbers, faces)
+
+
+def _unit_potentials(found: TraceCharges, mode: int) -> FloatArray:
+    """Charges (unknowns,) for a potential of 1 on both traces (mode 1), or for equal and opposite charges and a
+    voltage of 2 between the traces (mode -1)."""
+    voltages = np.ones(2)
+    if mode < 0:
+        voltages = np.linalg.solve(found.matrix[0], np.array([1.0, -1.0]))
+        voltages = voltages * 2.0 / (voltages[0] - voltages[1])
+    return np.asarray(found.charges[0] @ voltages)
 
 
 def _layers(
@@ -127,7 +160,7 @@ def _pieces_along(edge: Edge, charges: FloatArray) -> tuple[ComplexArray, FloatA
         ends = start + (stop - start) * positions
     else:
         ends = 0.5 * (start + stop) + 0.5 * (stop - start) * graded_positions(PIECES, GRADING[edge.role])
-    return ends, np.asarray(piece_charges(charges.size, PIECES) @ charges)
+    return np.asarray(ends, dtype=np.complex128), np.asarray(piece_charges(charges.size, PIECES) @ charges)
 
 
 def _joined(

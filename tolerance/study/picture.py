@@ -15,12 +15,14 @@ from tolerance.sections.layered import LayeredSection
 from tolerance.solver.field import field_at
 from tolerance.solver.layered import LayeredPlan
 from tolerance.solver.outlines import Outline, follow, outline_of
-from tolerance.solver.plan import Plan, SolverSettings
+from tolerance.solver.plan import SolverSettings, plan_for
 from tolerance.solver.sources import Sources, charged, charged_broadside
 from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
 
 ROWS = 90  # of the grid
 LINES = 24  # of the field from each trace
+#: More nodes on faces of the mask than an impedance needs: the field next to the face is seen here.
+SETTINGS = SolverSettings(dielectric_nodes=20)
 WIDEST = 2.2  # of the picture over its height
 
 
@@ -43,7 +45,7 @@ def picture(prepared: PreparedLine) -> FieldPicture:
     broadside = isinstance(prepared.nominal, LayeredSection)
     way = 1.0 if broadside or not getattr(around, "foot_up", False) else -1.0
     grid = _grid(sources, drawing, way, None if broadside else mode)
-    lines = _field_lines(sources, grid, None if broadside else mode)
+    lines = _field_lines(sources, grid)
     return FieldPicture(
         name=prepared.line.name, kind=prepared.kind, layer=prepared.line.layer, references=around.references,
         mode=prepared.mode, impedance=float(prepared.impedance(prepared.nominal)[0]), drawing=drawing,
@@ -58,8 +60,7 @@ def _solved(prepared: PreparedLine, mode: int, *, air: bool) -> Sources:
     if isinstance(prepared.nominal, LayeredSection):
         assert isinstance(prepared.plan, LayeredPlan)
         return charged_broadside(prepared.nominal, prepared.plan, mode=mode, air=air)
-    assert isinstance(prepared.plan, Plan)
-    return charged(prepared.nominal, prepared.plan, mode=mode, air=air)
+    return charged(prepared.nominal, plan_for(prepared.nominal, SETTINGS), mode=mode, air=air)
 
 
 def _symmetry(prepared: PreparedLine, *, broadside: bool) -> str:
@@ -125,9 +126,12 @@ def _grid(sources: Sources, drawing: Drawing, way: float, mirror: int | None) ->
     room = max(0.9 * (high - low), 0.35 * width)
     low, high = low - (0.0 if layers.bottom_plane else room), high + (0.0 if layers.top_plane else room)
     half = min(0.5 * width + 1.1 * (high - low), 0.5 * WIDEST * max(high - low, width))
+    grounds = [part.outline[:, 0] for part in drawing.conductors if part.role == "ground"]
+    half = max([half, *(float(np.abs(outline).min()) + 0.3 * (high - low) for outline in grounds)])
     step = (high - low) / ROWS
     columns = int(np.ceil(half / step))
-    across, height = step * np.arange(0 if mirror else -columns, columns + 1), low + step * np.arange(ROWS + 1)
+    across = step * np.arange(0 if mirror else -columns, columns + 1, dtype=np.float64)
+    height = low + step * np.arange(ROWS + 1, dtype=np.float64)
     xs, ys = (values.ravel() for values in np.meshgrid(across, height))
     found = field_at(sources, across=xs, height=ys)
     shape = height.size, across.size
@@ -137,7 +141,7 @@ def _grid(sources: Sources, drawing: Drawing, way: float, mirror: int | None) ->
         across = np.concatenate([-across[:0:-1], across])
         potential = np.concatenate([mirror * potential[:, :0:-1], potential], axis=1)
         field = np.concatenate([-mirror * field[:, :0:-1].conj(), field], axis=1)
-    return _Grid(across, height, potential, field, copper)
+    return _Grid(np.asarray(across), np.asarray(height), potential, field, copper)
 
 
 def _outlines(sources: Sources) -> list[Outline]:
@@ -145,7 +149,7 @@ def _outlines(sources: Sources) -> list[Outline]:
     return [outline_of([face for face in sources.faces if face.trace == number]) for number in numbers]
 
 
-def _field_lines(sources: Sources, grid: _Grid, mirror: int | None) -> list[ComplexArray]:
+def _field_lines(sources: Sources, grid: _Grid) -> list[ComplexArray]:
     """From each trace at equal steps of charge; a line that comes in at a trace is told by the trace it leaves."""
     lines: list[ComplexArray] = []
     for outline in _outlines(sources):
