@@ -26,7 +26,6 @@ class NotYet(NamedTuple):
 
 
 NOT_YET = (
-    NotYet("evaluation", ("frequency",)),
     NotYet("offers"),
 )
 
