@@ -43,7 +43,7 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     """The workbook, not yet written."""
     book = Workbook()
     book.properties.creator = "tolerance"
-    book.properties.title = _clean(result.title)
+    book.properties.title = clean(result.title)
     first = book.active
     assert first is not None
     book.remove(first)
@@ -80,7 +80,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
         (CAUTION, _font(italic=True)),
     ]
     for row, (sentence, font) in enumerate(sentences, start=1):
-        _put(sheet, row, 1, sentence).font = font
+        put(sheet, row, 1, sentence).font = font
         sheet.row_dimensions[row].height = 1.5 * float(font.size or 11.0)
     table, top = summary_table(result), len(sentences) + 2
     _write_table(sheet, table, top=top)
@@ -91,7 +91,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
 def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     """Headings in row `top`, filterable, and the rows below them."""
     for column, heading in enumerate(table.columns, start=1):
-        cell = _put(sheet, top, column, heading.head)
+        cell = put(sheet, top, column, heading.head)
         cell.font = _font(bold=True)
         cell.fill = PatternFill("solid", start_color=HEAD_FILL)
         cell.border = Border(bottom=Side(style="thin", color=HAIRLINE))
@@ -101,7 +101,7 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     alignments = [_alignment(table, column) for column in range(len(table.columns))]
     for row, cells in enumerate(table.rows, start=top + 1):
         for column, (heading, value) in enumerate(zip(table.columns, cells, strict=True), start=1):
-            cell = _put(sheet, row, column, value)
+            cell = put(sheet, row, column, value)
             cell.alignment = alignments[column - 1]
             if isinstance(value, int | float):
                 cell.number_format = number_format(heading)
@@ -187,17 +187,17 @@ def _pieces(line: str) -> list[str]:
     return [line[start:start + LONGEST_TEXT] for start in range(0, max(len(line), 1), LONGEST_TEXT)]
 
 
-def _clean(text: str) -> str:
+def clean(text: str) -> str:
     """Without the control characters that a workbook cannot hold."""
     return ILLEGAL_CHARACTERS_RE.sub("\N{REPLACEMENT CHARACTER}", text)
 
 
-def _put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
+def put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
     """Write one cell. Text stays text, also where it begins like a formula."""
     cell = sheet.cell(row=row, column=column)
     assert isinstance(cell, SheetCell)
     if isinstance(value, str):
-        cell.value = _clean(value)
+        cell.value = clean(value)
         cell.data_type = "s"
         if value.startswith(LIKE_A_FORMULA):
             cell.quotePrefix = True
