@@ -31,6 +31,8 @@ ROWS: list[list[str]] = [
     ["exchanged"],
     ["study"],
     ["report"],
+    ["screen"],
+    ["talk_commands"],
     ["command"],
     ["__main__"],
 ]

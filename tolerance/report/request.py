@@ -41,6 +41,7 @@ if TYPE_CHECKING:
 INK, HEAD_FILL, ANSWER_HEAD, ANSWER_FILL, HAIRLINE = "1D2433", "DBE3EC", "F3E3B8", "FFFBEE", "B4BAC8"
 HEAD_ROW = 5
 DECIDES, COUNTS = 0.10, 0.01  # of all weights: above the first a row decides, above the second it counts
+LEAST_SHOWN = 0.005  # of a line's variance: less is not worth a word
 WIDTHS = {"name": 24, "words": 34, "nominal": 22, "importance": 12, "lines": 30, "assumed": 15, "assumed_basis": 20,
           "tolerance": 12, "unit": 9, "basis": 12, "cpk": 8, "mean": 14, "deviation": 14, "tighter": 12, "price": 13,
           "remarks": 32}
@@ -72,8 +73,8 @@ def request_workbook(request: Request, *, hide_targets: bool = False) -> Workboo
 def _table_sheet(sheet: Worksheet, request: Request, headings: tuple[Heading, ...]) -> None:
     scenario = request.scenario
     put(sheet, 1, 1, scenario.title).font = _font(16, bold=True)
-    put(sheet, 2, 1, "How closely do you hold these? Please fill in the yellow columns as far as you can, the first rows "
-        "first, and send the file back.").font = _font(12)
+    put(sheet, 2, 1, "How closely do you hold these? Please fill in the yellow columns as far as you can, the first "
+        "rows first, and send the file back.").font = _font(12)
     put(sheet, 3, 1, f"What each column means stands on the sheet \"{HELP_SHEET}\". An empty cell says: our assumption "
         "may stand.").font = _font()
     for column, heading in enumerate(headings, start=1):
@@ -89,13 +90,13 @@ def _table_sheet(sheet: Worksheet, request: Request, headings: tuple[Heading, ..
         for column, heading in enumerate(headings, start=1):
             cell = put(sheet, number, column, texts.get(heading.key))
             cell.alignment = Alignment(wrap_text=True, vertical="top", horizontal="left")
-            cell.border = _line()
+            cell.border = _box() if heading.answer else _line()
             if heading.answer:
                 cell.fill = PatternFill("solid", start_color=ANSWER_FILL)
         longest = max(-(-len(str(texts.get(heading.key) or "")) // (WIDTHS[heading.key] - 3)) for heading in headings)
         sheet.row_dimensions[number].height = 15.5 * max(longest, 1)
     _checks(sheet, request, headings)
-    sheet.freeze_panes = sheet.cell(HEAD_ROW + 1, 2)
+    sheet.freeze_panes = f"B{HEAD_ROW + 1}"
     _page(sheet, f"{HEAD_ROW}:{HEAD_ROW}")
 
 
@@ -143,7 +144,7 @@ def _texts(scenario: Scenario, row: RequestRow) -> dict[str, str]:
     return {
         "name": name_of(variation.of), "words": _words(row.members),
         "nominal": _nominals(row.members, lengths), "importance": importance(row.weight),
-        "lines": ", ".join(f"{name} {percent(share, 0)}" for name, share in row.lines[:3]),
+        "lines": ", ".join(f"{name} {percent(share, 0)}" for name, share in row.lines[:3] if share >= LEAST_SHOWN),
         "assumed": assumed_tolerance(variation, row.members, lengths), "assumed_basis": assumed_basis(variation),
         "unit": usual_unit(variation, row.members, lengths),
     }
@@ -274,6 +275,11 @@ def _page(sheet: Worksheet, titles: str) -> None:
 
 def _line() -> Border:
     return Border(bottom=Side(style="thin", color=HAIRLINE))
+
+
+def _box() -> Border:
+    side = Side(style="thin", color=HAIRLINE)
+    return Border(left=side, right=side, top=side, bottom=side)
 
 
 def _font(size: float = 11.0, *, bold: bool = False) -> Font:

@@ -49,45 +49,45 @@ NAMES_IN_VERDICT = 4
 def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
     """Nominal impedance, effective Dk and delay of each line."""
     per_length = "mm" if lengths == "um" else "inch"
-    table = _table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
+    table = text_table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
                    ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
                    (f"delay\n\n[ps/{per_length}]", False))
     for line in result.lines:
-        table.add_row(Text(two_rows(line.name, _name_width(console))), *_check_cells(line, lengths))
-    _say(console, result.title, style="bold")
-    _print_table(console, table)
+        table.add_row(Text(two_rows(line.name, name_width(console))), *_check_cells(line, lengths))
+    say(console, result.title, style="bold")
+    print_table(console, table)
     _say_modes(result, console)
     if any(line.formulas is not None for line in result.lines):
-        _print_table(console, _formula_table(result, _name_width(console)))
-        _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
+        print_table(console, _formula_table(result, name_width(console)))
+        say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
                       "by their authors.")
 
 
 def print_run(result: RunResult, console: Console) -> None:
     """Yield of every line and of the board, what drives it, and how far the numbers can be trusted."""
-    _say(console, result.title, style="bold")
-    _print_table(console, _yield_table(result, _name_width(console)))
-    _print_table(console, _driver_table(result, _name_width(console), console.width))
-    for columns, rows in text_tables(result, _name_width(console)):
-        _print_table(console, _filled_table(columns, rows))
-    _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
+    say(console, result.title, style="bold")
+    print_table(console, _yield_table(result, name_width(console)))
+    print_table(console, _driver_table(result, name_width(console), console.width))
+    for columns, rows in text_tables(result, name_width(console)):
+        print_table(console, _filled_table(columns, rows))
+    say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
                   f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
     _say_direct(result, console)
     for sentence in sentences(result):
-        _say(console, sentence)
+        say(console, sentence)
     for sentence in measured_sentences(result):
-        _say(console, sentence)
-    _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
+        say(console, sentence)
+    say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
-def _name_width(console: Console) -> int:
+def name_width(console: Console) -> int:
     return min(max(console.width - OTHER_COLUMNS, NARROWEST_NAME), WIDEST_NAME)
 
 
-def _table(*columns: tuple[str, bool]) -> RichTable:
+def text_table(*columns: tuple[str, bool]) -> RichTable:
     """An empty table; a column is its heading and whether it holds text (on the left, may wrap) or numbers."""
     table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
     for heading, is_text in columns:
@@ -96,22 +96,22 @@ def _table(*columns: tuple[str, bool]) -> RichTable:
 
 
 def _filled_table(columns: tuple[Heading, ...], rows: list[tuple[str, ...]]) -> RichTable:
-    table = _table(*columns)
+    table = text_table(*columns)
     for cells in rows:
         table.add_row(*(Text(cell) for cell in cells))
     return table
 
 
-def _print_table(console: Console, table: RichTable) -> None:
+def print_table(console: Console, table: RichTable) -> None:
     console.print(Padding(table, (1, 0, 1, 0)))
 
 
-def _say(console: Console, sentence: str, *, style: str = "") -> None:
+def say(console: Console, sentence: str, *, style: str = "") -> None:
     console.print(Text(sentence, style=style))
 
 
 def _yield_table(result: RunResult, name_width: int) -> RichTable:
-    table = _table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
+    table = text_table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
                    ("dev.\n\n[ohm]", False), ("yield\ninterval\n[%]", False), ("below\nabove\n[%]", False),
                    ("Cpk", False))
     for line in result.lines:
@@ -129,7 +129,7 @@ def _yield_table(result: RunResult, name_width: int) -> RichTable:
 
 
 def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
-    table = _table(("line", True), (f"largest drivers, by {ranking_name(result.lines)}", True),
+    table = text_table(("line", True), (f"largest drivers, by {ranking_name(result.lines)}", True),
                    ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
         table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
@@ -154,11 +154,11 @@ def _say_verdict(result: RunResult, console: Console) -> None:
     target = f"{trimmed(100.0 * result.target_yield, 3)} %"
     missing = [line.name for line in result.lines if line.inside.value < result.target_yield]
     if not missing:
-        _say(console, f"Every line meets the target yield of {target}.")
+        say(console, f"Every line meets the target yield of {target}.")
         return
     named = ", ".join(f'"{shorten(name, LONGEST_DRIVER)}"' for name in missing[:NAMES_IN_VERDICT])
     more = f" and {len(missing) - NAMES_IN_VERDICT} more" if len(missing) > NAMES_IN_VERDICT else ""
-    _say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
+    say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
 
 
 def _say_impossible(result: RunResult, console: Console) -> None:
@@ -166,7 +166,7 @@ def _say_impossible(result: RunResult, console: Console) -> None:
         return
     lines = ", ".join(f'"{shorten(line.name, LONGEST_DRIVER)}" {line.impossible:,}'
                       for line in result.lines if line.impossible)
-    _say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
+    say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
                   f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
 
 
@@ -174,33 +174,33 @@ def _say_certificate(result: RunResult, console: Console) -> None:
     certain = [line.certificate for line in result.lines if line.certificate.certified]
     if certain:
         lines = "every line" if len(certain) == len(result.lines) else f"{len(certain)} lines"
-        _say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
+        say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
                       f"within {trimmed(certain[0].multiple, 1)} errors of a limit were solved themselves.")
     for line in result.lines:
         one = line.certificate
         if not one.certified:
-            _say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
+            say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
                           f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
                           f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
 
 
 def _say_direct(result: RunResult, console: Console) -> None:
     """The solver's own answers beside the predictions: one row a line."""
-    table = _table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
+    table = text_table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
                    ("off, most\n[ohm]", False), ("verdicts\nthat differ", False))
     for line in result.lines:
         if line.direct is not None:
-            table.add_row(Text(two_rows(line.name, _name_width(console))), f"{line.direct.coupons:,}",
+            table.add_row(Text(two_rows(line.name, name_width(console))), f"{line.direct.coupons:,}",
                           fixed(line.direct.root_mean_square, 4), fixed(line.direct.largest, 4),
                           str(line.direct.verdicts_that_differ))
     if table.row_count:
-        _say(console, "")
-        _say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
-        _print_table(console, table)
+        say(console, "")
+        say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
+        print_table(console, table)
 
 
 def _formula_table(result: CheckResult, name_width: int) -> RichTable:
-    table = _table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
+    table = text_table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
                    ("claimed\n[%]", False))
     for line in result.lines:
         name = two_rows(line.name, name_width)
@@ -223,10 +223,10 @@ def _say_modes(result: CheckResult, console: Console) -> None:
     """What impedance, effective Dk and delay of a pair are."""
     pairs = {line.mode for line in result.lines if line.common_mode is not None}
     if pairs - {"common"}:
-        _say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
+        say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
                       "impedance of both traces tied together.")
     if "common" in pairs:
-        _say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
+        say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
 
 
 def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:

@@ -85,7 +85,7 @@ def _lot_sheets(book: Workbook, result: RunResult) -> None:
         sheet.freeze_panes = "B2"
     if result.acceptance is not None:
         sheet = book.create_sheet("Lot acceptance")
-        _put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
+        put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
         _write_table(sheet, acceptance_table(result.acceptance), top=3)
 
 

@@ -111,8 +111,8 @@ class _Row:
             return
         place = answer.places.get("basis") or answer.places["cpk"]
         if answer.tolerance is None and given.tolerance is None:
-            self._note("basis" if "basis" in answer.places else "cpk", "says how a tolerance is meant, and there is none "
-                       "in this row or in the scenario")
+            key = "basis" if "basis" in answer.places else "cpk"
+            self._note(key, "says how a tolerance is meant, and there is none in this row or in the scenario")
             return
         if basis == LIMITS and given.shape not in BOUNDED:
             keys["shape"] = ('"uniform"', place)

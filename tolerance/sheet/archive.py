@@ -55,7 +55,7 @@ def _why_not_archive(archive: zipfile.ZipFile) -> str:
     members = archive.infolist()
     sizes = [member.file_size for member in members]
     if len(members) > MOST_MEMBERS or max(sizes, default=0) > LARGEST_MEMBER or sum(sizes) > LARGEST_TOTAL:
-        return f"unpacks to more than {LARGEST_TOTAL // 1_000_000} MB or {MOST_MEMBERS} parts, which no filled sheet does"
+        return f"unpacks to more than {LARGEST_TOTAL // 1_000_000} MB or {MOST_MEMBERS} parts: no filled sheet does"
     names = {member.filename.casefold() for member in members}
     if "[content_types].xml" not in names or not any(name.startswith("xl/workbook") for name in names):
         return "is not an XLSX workbook"

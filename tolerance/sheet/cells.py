@@ -10,15 +10,15 @@ from datetime import date, datetime, time
 from tolerance.errors import as_toml
 from tolerance.sheet.layout import ABSOLUTE, BASES, CPK, LIMITS, PERCENT, THREE_SIGMA, is_length_unit, plain
 
-_NUMBER = re.compile(r"(?P<sign>\+-|\+/-|[+-]?)\s*(?P<digits>[0-9]+(?:[.,][0-9]*)?|[.,][0-9]+)(?P<power>[eE][+-]?[0-9]{1,3})?"
-                     r"\s*(?P<unit>[^\s0-9.,+-][^0-9]*)?")
+_NUMBER = re.compile(r"(?P<sign>\+-|\+/-|[+-]?)\s*(?P<digits>[0-9]+(?:[.,][0-9]*)?|[.,][0-9]+)"
+                     r"(?P<power>[eE][+-]?[0-9]{1,3})?\s*(?P<unit>[^\s0-9.,+-][^0-9]*)?")
 _THOUSANDS = re.compile(r"[1-9][0-9]{0,2},[0-9]{3}")
 _UNITS = {"µm": "um", "μm": "um", "micron": "um", "microns": "um", "in": "inch", '"': "inch", "mils": "mil",
           "percent": PERCENT, "abs": ABSOLUTE}
 _BASES = {
-    **{word: LIMITS for word in ("limits", "limit", "hard limits", "min/max", "min max", "range")},
-    **{word: THREE_SIGMA for word in ("3 sigma", "3sigma", "3 σ", "3σ", "3s", "3 s", "three sigma", "sigma 3")},
-    **{word: CPK for word in ("cpk", "cp k", "capability")},
+    **dict.fromkeys(("limits", "limit", "hard limits", "min/max", "min max", "range"), LIMITS),
+    **dict.fromkeys(("3 sigma", "3sigma", "3 σ", "3σ", "3s", "3 s", "three sigma", "sigma 3"), THREE_SIGMA),
+    **dict.fromkeys(("cpk", "cp k", "capability"), CPK),
 }
 _LONGEST = 200
 
@@ -61,7 +61,7 @@ def typed_of(cell: SeenCell) -> Typed:
     value = cell.value
     if value is None:
         raise CellError("holds a formula without a stored value: type the number itself")
-    if isinstance(value, bool) or isinstance(value, (date, datetime, time)):
+    if isinstance(value, (bool, date, datetime, time)):
         what = "a truth value" if isinstance(value, bool) else "a date (a spreadsheet program may have made it one)"
         raise CellError(f"holds {what}; a number is wanted")
     if isinstance(value, (int, float)):

@@ -36,13 +36,12 @@ HEADINGS = (
     Heading("nominal", "Nominal", False, "What we aim at."),
     Heading("importance", "Importance", False, "How much the answer counts for us. The first rows count most."),
     Heading("lines", "Lines it moves most", False, "The controlled lines whose impedance hangs on it most."),
-    Heading("assumed", "Assumed tolerance", False, "What we have assumed so far: plus and minus, or from one end to the "
-            "other."),
+    Heading("assumed", "Assumed tolerance", False, "What we have assumed so far: plus and minus, or from end to end."),
     Heading("assumed_basis", "Assumed as", False, "How we have read that tolerance."),
     Heading("tolerance", "Your tolerance, +-", True, "Half of the whole width: 8 for +-8. Leave it empty where our "
             "assumption is right, or where you do not know.", ("your tolerance", "tolerance")),
-    Heading("unit", "Unit", True, "Of the numbers in this row; choose from the list. % is percent of the nominal, for an "
-            "etch percent of each line's width. A unit typed behind a number holds for that cell.", ("units",)),
+    Heading("unit", "Unit", True, "Of the numbers in this row; choose from the list. % is percent of the nominal, for "
+            "an etch percent of each line's width. A unit typed behind a number holds for that cell.", ("units",)),
     Heading("basis", "Your tolerance is", True, "limits: nothing outside leaves the house, inside anything may occur. "
             "3 sigma: three standard deviations of the process. Cpk: held with the capability in the next column. "
             "Empty: as we have assumed.", ("basis", "meaning")),
@@ -54,7 +53,8 @@ HEADINGS = (
     Heading("tighter", "Tighter tolerance, +-", True, "A closer grade that you could offer.", ("tighter tolerance",)),
     Heading("price", "Price of the tighter, per panel", True, "What the closer grade costs more per panel, in the "
             "currency of your offer; 0 if nothing.", ("price", "price per panel")),
-    Heading("remarks", "Remarks", True, "Anything else: a grade by its standard, a condition, a question.", ("remark",)),
+    Heading("remarks", "Remarks", True, "Anything else: a grade by its standard, a condition, a question.",
+            ("remark",)),
 )
 
 #: property -> what it is called in front of a layer's name
