@@ -54,7 +54,7 @@ def test_a_reply_that_nobody_touched_changes_nothing(tmp_path: Path) -> None:
 
 def test_what_is_filled_in_is_what_is_taken(tmp_path: Path) -> None:
     def edit(sheet: Worksheet) -> None:
-        fill(sheet, ETCH, tolerance=12.7, basis="Cpk", cpk=1.33, mean=-2, tighter=9, price=4.25, remarks="imaged = 1\n[x]")
+        fill(sheet, ETCH, tolerance=12.7, basis="Cpk", cpk=1.33, mean=-2, tighter=9, price=4.25, remarks="a = 1\n[x]")
         fill(sheet, PRESSED, tolerance=7.5, basis="3 sigma", deviation=2, tighter="4 %", price=0)
         fill(sheet, DK, tolerance=0.07, basis="limits")
         fill(sheet, CORE, tolerance=8, unit="um", basis="limits")
@@ -151,7 +151,8 @@ SPOILED: list[tuple[str, Callable[[Worksheet], object], str, str]] = [
     ("looser", lambda sheet: fill(sheet, ETCH, tighter=20, price=1), "tighter", "not tighter"),
     ("shift over Cpk", lambda sheet: fill(sheet, ETCH, tolerance=3, mean=5, cpk=1.33, basis="Cpk"), "tolerance",
      "cannot be used, and its row with it: cpk: "),
-    ("renamed row", lambda sheet: fill(sheet, ETCH, tolerance=8, name="L1.etch"), "name", "no dimension of the scenario"),
+    ("renamed row", lambda sheet: fill(sheet, ETCH, tolerance=8, name="L1.etch"), "name",
+     "no dimension of the scenario"),
     ("repeated row", _repeat_row, "A30", "stands in an earlier row too"),
     ("missing row", _drop_row, "", 'the row "P1.thickness" is missing'),
     ("two headings", _second_heading, "H5", 'the heading "Your tolerance, +-" stands in H5 and R5; neither'),
@@ -232,8 +233,8 @@ def test_a_workbook_that_is_more_than_data_is_refused(tmp_path: Path, member: st
 
 
 def test_what_is_no_workbook_is_refused(tmp_path: Path) -> None:
-    for name, content, said in (("a.xlsx", b"no workbook", "not an XLSX"), ("b.xlsx", b"\xd0\xcf\x11\xe0rest", "password"),
-                                ("c.xlsx", b"PK\x03\x04broken", "not an XLSX")):
+    for name, content, said in (("a.xlsx", b"no workbook", "not an XLSX"), ("c.xlsx", b"PK\x03\x04broken", "not an XLSX"),
+                                ("b.xlsx", b"\xd0\xcf\x11\xe0rest", "password")):
         (tmp_path / name).write_bytes(content)
         with pytest.raises(InputError, match=said):
             safe_content(tmp_path / name)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import difflib
 import re
 import subprocess
@@ -10,6 +11,7 @@ from pathlib import Path
 
 import jsonschema
 import pytest
+from matplotlib.axes import Axes
 
 from tests.readme_numbers import README, ROOT, marked_block, python_example, refreshed
 from tolerance.results import RunResult
@@ -45,6 +47,14 @@ def test_the_quoted_numbers_are_what_the_tool_gives(result: RunResult) -> None:
     difference = difflib.unified_diff(TEXT.split("\n"), now.split("\n"), "README.md", "the tool", lineterm="", n=0)
     changes = "\n".join(difference)
     assert not changes, f"README.md quotes old numbers; `python -m tests.readme_numbers` refreshes them:\n{changes}"
+
+
+def test_the_example_of_figures_runs(result: RunResult, tmp_path: Path) -> None:
+    names: dict[str, object] = {"result": result}
+    with contextlib.chdir(tmp_path):
+        exec(compile(marked_block(TEXT, "python: figures"), "README.md", "exec"), names)
+    assert isinstance(names["axes"], Axes)
+    assert [path.name for path in tmp_path.iterdir()] == ["antenna-feed.svg"]
 
 
 def test_the_python_example_runs_the_scenario_of_the_first_command(result: RunResult) -> None:

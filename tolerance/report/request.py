@@ -11,8 +11,9 @@ from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.files import put_in_place
+from tolerance.report.sheet_text import clean_text
 from tolerance.report.wording import LengthUnit, length_text, percent, trimmed
-from tolerance.report.workbook import clean, put
+from tolerance.report.workbook import put
 from tolerance.scenario.amounts import Amount
 from tolerance.scenario.properties import MEASURE
 from tolerance.sheet.layout import (
@@ -58,7 +59,7 @@ def request_workbook(request: Request, *, hide_targets: bool = False) -> Workboo
     """The workbook, not yet written."""
     book = Workbook()
     book.properties.creator = "tolerance"
-    book.properties.title = clean(request.scenario.title)
+    book.properties.title = clean_text(request.scenario.title)
     sheet = book.active
     assert sheet is not None
     headings = tuple(heading for heading in HEADINGS if not (hide_targets and heading.key == "lines"))
