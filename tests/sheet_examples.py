@@ -7,6 +7,7 @@ from functools import cache
 from pathlib import Path
 
 from openpyxl import load_workbook
+from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.worksheet import Worksheet
 
 from tests.scenario_texts import HEAD, LINES, SIX_LAYERS
@@ -75,7 +76,8 @@ def edited(path: Path, edit: Callable[[Worksheet], object]) -> Path:
 
 def address(sheet: Worksheet, name: str, key: str) -> str:
     """The cell of a column in the row of a dimension."""
-    heads = {heading.key: cell.column_letter for cell in sheet[5] if (heading := heading_of(str(cell.value)))}
+    heads = {heading.key: get_column_letter(column) for column, cell in enumerate(sheet[5], start=1)
+             if (heading := heading_of(str(cell.value)))}
     row = next(cell.row for cell in sheet["A"] if cell.value == name)
     assert key in {heading.key for heading in HEADINGS}
     return f"{heads[key]}{row}"

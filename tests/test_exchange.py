@@ -233,7 +233,8 @@ def test_a_workbook_that_is_more_than_data_is_refused(tmp_path: Path, member: st
 
 
 def test_what_is_no_workbook_is_refused(tmp_path: Path) -> None:
-    for name, content, said in (("a.xlsx", b"no workbook", "not an XLSX"), ("c.xlsx", b"PK\x03\x04broken", "not an XLSX"),
+    for name, content, said in (("a.xlsx", b"no workbook", "not an XLSX"),
+                                ("c.xlsx", b"PK\x03\x04broken", "not an XLSX"),
                                 ("b.xlsx", b"\xd0\xcf\x11\xe0rest", "password")):
         (tmp_path / name).write_bytes(content)
         with pytest.raises(InputError, match=said):
