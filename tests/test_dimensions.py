@@ -26,6 +26,7 @@ PAIR = Section(
     foot_side=(Ply(around(60e-6, 5), DK), Ply(around(50e-6, 6), DK), Ply(around(200e-6, 7), around(4.2, 8))),
     foot_plane=True, crest_side=(), crest_plane=False,
     mask=Mask(around(25e-6, 10), around(15e-6, 11), around(3.5, 12)), ground_gap=around(300e-6, 13),
+    band_dk=around(3.2, 14),
 )
 NOT_A_DIMENSION = {"foot_plane", "crest_plane", "crest_side"}
 

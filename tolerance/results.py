@@ -251,7 +251,23 @@ def _line_row(line: LineResult) -> dict[str, object]:
         "impossible": line.impossible,
         "certified": line.certificate.certified, "coupons_solved": line.certificate.solved,
         "solver_runs": line.prediction.solver_runs, "held_out_error_ohm": line.prediction.held_out_error,
+        **_nested_columns(line),
     }
+
+
+def _nested_columns(line: LineResult) -> dict[str, float | None]:
+    """With levels and with readings only."""
+    columns: dict[str, float | None] = {}
+    if line.nested is not None and line.variance is not None:
+        columns |= {
+            **_interval_columns("panel_yield", line.nested.panel), **_interval_columns("lot_yield", line.nested.lot),
+            "variance_lot": line.variance.lot.value, "variance_panel": line.variance.panel.value,
+            "variance_coupon": line.variance.coupon.value,
+        }
+    if line.reading is not None:
+        for name in ("as_read", "accepted", "false_accepts", "false_rejects"):
+            columns |= _interval_columns(name, getattr(line.reading, name))
+    return columns
 
 
 def _driver_row(line: LineResult, rank: int, driver: Driver) -> dict[str, object]:

@@ -32,6 +32,7 @@ def stackup_table(scenario: Scenario) -> Table:
         Column("dk_frequency", "Dk and Df hold at", "GHz"), Column("conductivity", "conductivity", "MS/m", 1),
         Column("roughness_foot", "roughness of the foot", unit, 2),
         Column("roughness_crest", "roughness of the crest", unit, 2),
+        Column("resin_dk", "Dk of the resin", "", 3),
         Column("resin_content", "resin content by weight", "share", 1),
     )
     rows = [_layer_row(scenario, layer, unit) for layer in scenario.layers]
@@ -62,14 +63,14 @@ def variation_table(scenario: Scenario) -> Table:
         Column("unit", "unit"), Column("shape", "shape"), Column("tolerance", "half-width"),
         Column("tolerance_unit", "half-width in"), Column("basis", "the half-width is"), Column("shift", "shift"),
         Column("shift_unit", "shift in"), Column("low", "low end"), Column("high", "high end"),
-        Column("level", "level"), Column("measured", "measured values"),
+        Column("level", "level"), Column("measured", "measured values"), Column("origin", "where from"),
     )
     rows = []
     for variation in scenario.variations:
         named = members(scenario, variation)
         joined = " + ".join(item.name for item in named)
         rows += [_variation_row(variation, item, joined if variation.together else item.name, scenario.report.lengths)
-                 for item in named]
+                 | {"origin": _origin(scenario, item)} for item in named]
     needed = ("variable", "property", "nominal", "unit", "shape", "tolerance", "tolerance_unit", "basis")
     filled = tuple(column for column in columns
                    if column.key in needed or any(row[column.key] is not None for row in rows))
@@ -112,6 +113,7 @@ def _layer_row(scenario: Scenario, layer: Layer, unit: LengthUnit) -> dict[str, 
         "conductivity": layer.conductivity / 1e6 if copper and lossy else None,
         "roughness_foot": _length(layer.roughness_foot, unit),
         "roughness_crest": _length(layer.roughness_crest, unit), "resin_content": layer.resin_content,
+        "resin_dk": layer.resin_dk,
     }
 
 
@@ -138,6 +140,11 @@ def _variation_row(variation: Variation, item: Property, variable: str, lengths:
         "low": _in_unit(variation.low, unit), "high": _in_unit(variation.high, unit),
         "level": _level(variation.level), "measured": _measured(variation),
     }
+
+
+def _origin(scenario: Scenario, item: Property) -> str | None:
+    """Where the law comes from; nothing is said in a scenario without a preset."""
+    return scenario.origins.get(item.name, "this scenario") if scenario.origins else None
 
 
 def _in_unit(value: float | None, unit: LengthUnit | None) -> float | None:

@@ -13,10 +13,12 @@ from tolerance.scenario.drafts import kind_of
 from tolerance.scenario.entry_rules import LAYER_KEYS, SHAPE_KEYS
 from tolerance.scenario.keys import Kind, Text
 from tolerance.scenario.mixtures import RESIN_KEYS
+from tolerance.scenario.presets import preset_names
 from tolerance.scenario.tables import (
     COPPER,
     FORMAT,
     MASK,
+    PREPREG,
     Correlation,
     Evaluation,
     ImpedanceTest,
@@ -64,6 +66,8 @@ def _top_keys() -> Schema:
         "title": {**Text("a title").json_schema(), "description": "What reports are headed with"},
         "extends": {"type": "string", "minLength": 1,
                     "description": "Another scenario, relative to this file; entries with the same name are merged"},
+        "preset": {"enum": list(preset_names()),
+                   "description": "Tolerances for what no variation names; `tolerance presets` lists them"},
     }
 
 
@@ -116,7 +120,9 @@ def _layer_of(kind: str) -> Schema:
         then: Schema = {"required": list(keys.needed)}
     else:
         by_resin = {"required": list(RESIN_KEYS), "not": {"required": ["dk"]}}
-        then = {"anyOf": [{"required": list(keys.needed), **_none_of(RESIN_KEYS)}, by_resin]}
+        band = {"resin_dk"} if kind == PREPREG else set()
+        by_dk = {"required": list(keys.needed), **_none_of(key for key in RESIN_KEYS if key not in band)}
+        then = {"anyOf": [by_dk, by_resin]}
     return {"if": {"properties": {"kind": {"const": kind}}, "required": ["kind"]},
             "then": {"allOf": [then, _none_of(others)]}}
 

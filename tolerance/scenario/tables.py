@@ -6,6 +6,7 @@ Only what one key says by itself is checked here; what keys and tables say toget
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Annotated, Literal
 
@@ -97,7 +98,9 @@ class Layer(Table):
         default=None, description="Rms roughness of the face bonded to the laminate; used with a frequency only")
     roughness_crest: Annotated[float | None, _ROUGHNESS] = Field(
         default=None, description="Rms roughness of the face away from the laminate; used with a frequency only")
-    resin_dk: Annotated[float | None, _DK] = Field(default=None, description="Dk of the resin; instead of dk")
+    resin_dk: Annotated[float | None, _DK] = Field(
+        default=None, description="Dk of the resin: with glass_dk and resin_content instead of dk; beside the dk of a "
+                                  "prepreg that of the band at the height of the copper that it presses into")
     glass_dk: Annotated[float | None, _DK] = Field(default=None, description="Dk of the glass; instead of dk")
     resin_content: Annotated[float | None, Quantity("share", Range(0.0, 1.0, low_in=False, high_in=False))] = Field(
         default=None, description="Share of resin by weight; instead of dk")
@@ -247,6 +250,7 @@ class Scenario(BaseModel):
     test: ImpedanceTest | None = None
     report: Report = Report()
     readings: tuple[Readings, ...] = ()  # of measured variations, one for each property
+    origins: Mapping[str, str] = {}  # where a preset has the law of a property from, by the property's name
     source: str = ""  # path of the file
     text: str = ""  # the TOML as read, with that of every file it extends
 

@@ -11,7 +11,7 @@ from tolerance.process.values import ProcessValues
 from tolerance.scenario.tables import Line
 from tolerance.sections.layered import LayeredSection, PlacedTrace
 from tolerance.sections.section import Mask, Ply, Section
-from tolerance.sections.surroundings import BroadsideSurroundings, PlyPlan, Surroundings
+from tolerance.sections.surroundings import BroadsideSurroundings, BroadsideTrace, PlyPlan, Surroundings
 
 #: Height of the layer of air that holds a bare outer trace of a broadside pair, over its copper; only a place to
 #: count heights from: beyond it there is air as well.
@@ -43,6 +43,7 @@ def as_built(
         crest_side=tuple(_ply(plan, values) for plan in surroundings.crest_side),
         crest_plane=surroundings.crest_plane is not None,
         mask=mask, ground_gap=None if line.ground_gap is None else line.ground_gap - (foot - line.width),
+        band_dk=None if surroundings.band_dk is None else np.full(foot.shape, surroundings.band_dk),
     )
 
 
@@ -56,16 +57,24 @@ def _trace(line: Line, layer: str, values: ProcessValues) -> tuple[FloatArray, F
 
 
 def _broadside(line: Line, around: BroadsideSurroundings, values: ProcessValues) -> LayeredSection:
-    """The partner is shifted by the offset and by what the registration of both layers adds."""
+    """The partner is shifted by the offset and by what the registration of both layers adds.
+
+    A band of resin at the height of a trace is a layer of its own.
+    """
     plies = [_ply(plan, values) for plan in around.plies]
     shapes = [_trace(line, trace.layer, values) for trace in (around.upper, around.lower)]
     above, below = ([] if trace.body is not None else [_air(thickness)]
                     for trace, (_, _, thickness) in zip((around.upper, around.lower), shapes, strict=True))
     plies = [*below, *plies, *above]
-    traces = []
+    traces: list[PlacedTrace] = []
     for trace, (foot, crest, thickness) in zip((around.upper, around.lower), shapes, strict=True):
         inside = trace.body + len(below) if trace.body is not None else 0 if trace.foot_up else len(plies) - 1
-        plies[inside] = replace(plies[inside], thickness=plies[inside].thickness + thickness)
+        if trace.band_dk is None:
+            plies[inside] = replace(plies[inside], thickness=plies[inside].thickness + thickness)
+        else:
+            inside += 0 if not trace.foot_up else 1
+            plies.insert(inside, _band(trace, thickness))
+            traces = [_lifted(one, inside) for one in traces]
         shift = values.value(f"{trace.layer}.registration") + (line.offset if trace.layer == line.partner else 0.0)
         traces.append(PlacedTrace(inside, trace.foot_up, foot, crest, thickness, shift))
     middle = 0.5 * (traces[0].centre + traces[1].centre)
@@ -74,6 +83,15 @@ def _broadside(line: Line, around: BroadsideSurroundings, values: ProcessValues)
         around.top_plane is not None, tuple(replace(trace, centre=trace.centre - middle) for trace in traces),
         tuple(ply.name for ply in plies), tuple(ply.kind for ply in plies),
     )
+
+
+def _band(trace: BroadsideTrace, thickness: FloatArray) -> Ply:
+    return Ply(thickness, np.full(thickness.shape, trace.band_dk), f"resin round {trace.layer}", "resin")
+
+
+def _lifted(trace: PlacedTrace, inserted: int) -> PlacedTrace:
+    """The trace after a layer has been put in at number `inserted`."""
+    return replace(trace, layer=trace.layer + 1) if trace.layer >= inserted else trace
 
 
 def _air(copper: FloatArray) -> Ply:

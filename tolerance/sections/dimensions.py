@@ -43,6 +43,8 @@ class Dimensions:
         if isinstance(section, Section) and section.mask is not None:
             lengths += [section.mask.on_laminate, section.mask.over_copper]
             dks.append(section.mask.dk)
+        if isinstance(section, Section) and section.band_dk is not None:
+            dks.append(section.band_dk)
         split, ratios = len(lengths), _ratios(section)
         result = np.empty((split + len(dks) + len(ratios), section.count))
         np.log(np.maximum(lengths, SMALLEST_LENGTH), out=result[:split])

@@ -45,7 +45,7 @@ class LayeredSection:
     top_plane: bool
     traces: tuple[PlacedTrace, ...]
     names: tuple[str, ...] = ()
-    kinds: tuple[str, ...] = ()  # air | prepreg | core | mask
+    kinds: tuple[str, ...] = ()  # air | prepreg | core | mask | resin (at the height of a trace)
 
     @property
     def count(self) -> int:

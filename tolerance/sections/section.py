@@ -2,7 +2,8 @@
 
 The trace is a trapezoid whose foot (the face bonded to laminate) lies at height 0 and whose crest lies at
 `thickness`. Dielectric is told outwards from the trace: `foot_side` from the foot, `crest_side` from the crest.
-The first ply of the crest side also fills the height of the trace. Beyond an open side there is air.
+The first ply of the crest side also fills the height of the trace, unless a band of resin of its own Dk does. Beyond an
+open side there is air.
 """
 
 from __future__ import annotations
@@ -52,6 +53,7 @@ class Section:
     crest_plane: bool
     mask: Mask | None = None  # only over an open crest side without plies
     ground_gap: FloatArray | None = None  # coplanar: from the outer foot edges to grounded copper of the same layer
+    band_dk: FloatArray | None = None  # of the resin at the height of the trace; only under plies on the crest side
 
     @property
     def count(self) -> int:
@@ -70,6 +72,8 @@ class Section:
         if self.mask is not None:
             lengths += [self.mask.on_laminate, self.mask.over_copper]
             dks.append(self.mask.dk)
+        if self.band_dk is not None:
+            dks.append(self.band_dk)
         result = np.ones(self.count, dtype=np.bool_)
         for length in lengths:
             result &= np.isfinite(length) & (length > 0.0)
@@ -87,4 +91,5 @@ class Section:
             tuple(ply.rows(index) for ply in self.crest_side), self.crest_plane,
             None if mask is None else Mask(mask.on_laminate[index], mask.over_copper[index], mask.dk[index], mask.name),
             None if self.ground_gap is None else self.ground_gap[index],
+            None if self.band_dk is None else self.band_dk[index],
         )

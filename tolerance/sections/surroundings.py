@@ -8,7 +8,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from tolerance.scenario.stackup import foot_side, position, reference_planes
-from tolerance.scenario.tables import COPPER, MASK, Layer, Line, Scenario
+from tolerance.scenario.tables import COPPER, MASK, PREPREG, Layer, Line, Scenario
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,6 +26,7 @@ class Surroundings:
 
     foot_plane, crest_plane : the plane that ends a side, None where it ends in air.
     mask : the solder mask that follows the trace itself, None where there is none or it lies flat over plies.
+    band_dk : of the resin at the height of the copper, None where the ply that presses into it fills it as it is.
     """
 
     foot_up: bool
@@ -34,6 +35,7 @@ class Surroundings:
     crest_side: tuple[PlyPlan, ...]
     crest_plane: str | None
     mask: str | None
+    band_dk: float | None = None
 
     @property
     def references(self) -> tuple[str, ...]:
@@ -52,7 +54,8 @@ def surroundings_of(scenario: Scenario, line: Line) -> Surroundings:
     foot, crest = (above, below) if foot_up else (below, above)
     foot_plane, crest_plane = (planes.above, planes.below) if foot_up else (planes.below, planes.above)
     mask = crest[0].layer if crest and crest[0].kind == MASK else None
-    return Surroundings(foot_up, foot, foot_plane, () if mask else crest, crest_plane, mask)
+    return Surroundings(foot_up, foot, foot_plane, () if mask else crest, crest_plane, mask,
+                        band_dk=_band_dk(scenario, crest[0].layer if crest else None))
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,11 +63,13 @@ class BroadsideTrace:
     """One trace of a broadside pair: its copper layer, which way its foot points, and the ply its crest presses into.
 
     body : number of that ply, from the bottom; None where the crest stands in air outside all plies.
+    band_dk : see Surroundings.
     """
 
     layer: str
     foot_up: bool
     body: int | None
+    band_dk: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -95,13 +100,24 @@ def broadside_surroundings_of(scenario: Scenario, line: Line) -> BroadsideSurrou
     plies = (*below[::-1], *between[::-1], *above)
     upper_up, lower_up = (foot_side(scenario, layers[at].name) == "up" for at in (high, low))
     first_above = len(below) + len(between)
+
+    def trace(at: int, up: bool, body: int | None) -> BroadsideTrace:
+        return BroadsideTrace(layers[at].name, up, body,
+                              _band_dk(scenario, None if body is None else plies[body].layer))
+
     return BroadsideSurroundings(
         plies, planes.below, planes.above,
-        upper=BroadsideTrace(layers[high].name, upper_up,
-                             first_above - 1 if upper_up else first_above if above else None),
-        lower=BroadsideTrace(layers[low].name, lower_up,
-                             len(below) if not lower_up else len(below) - 1 if below else None),
+        upper=trace(high, upper_up, first_above - 1 if upper_up else first_above if above else None),
+        lower=trace(low, lower_up, len(below) if not lower_up else len(below) - 1 if below else None),
     )
+
+
+def _band_dk(scenario: Scenario, pressing: str | None) -> float | None:
+    """Dk of the resin between the copper into which the ply `pressing` presses: given beside the ply's own Dk."""
+    if pressing is None:
+        return None
+    layer = scenario.layer(pressing)
+    return layer.resin_dk if layer.kind == PREPREG and layer.resin_content is None else None
 
 
 def properties_that_reach(surroundings: Surroundings | BroadsideSurroundings, line: Line) -> frozenset[str]:

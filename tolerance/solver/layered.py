@@ -94,10 +94,8 @@ class _Block:
         edges = [edge for group in groups for edge in group]
         dk, thickness = section.dks[layer], section.thicknesses[layer]
         below, above = _below(section, layer), _above(section, layer)
-        feet = {up: tuple(f"{number} foot" for number in numbers if section.traces[number].foot_up == up)
-                for up in (False, True)}
-        images = (NearImage(None), NearImage(np.zeros(section.count), touching=feet[False]),
-                  NearImage(thickness, touching=feet[True]))
+        images = (NearImage(None), NearImage(np.zeros(section.count), touching=_touching(section, numbers, up=False)),
+                  NearImage(thickness, touching=_touching(section, numbers, up=True)))
         system = near_system(edges, images, counts=[plan.counts[edge.name] for edge in edges], mirror=False)
         factors = (np.ones(section.count), below.first_reflection(dk), above.first_reflection(dk))
         matrix = sum((factor[:, None, None] * own for factor, own in zip(factors, system.own, strict=True)),
@@ -107,6 +105,14 @@ class _Block:
         matrix = matrix + rest.whole_matrix(system.across, system.height)
         sizes = tuple(sum(plan.counts[edge.name][0] for edge in group) for group in groups)
         return _Block(layer, matrix / dk[:, None, None], system.across, system.height, sizes)
+
+
+def _touching(section: LayeredSection, numbers: Sequence[int], *, up: bool) -> tuple[str, ...]:
+    """Which faces of the traces of a layer lie on its upper (`up`) or lower face: feet, and crests as high as it."""
+    feet = [f"{number} foot" for number in numbers if section.traces[number].foot_up == up]
+    crests = [f"{number} crest" for number in numbers if section.traces[number].foot_up != up
+              and np.array_equal(section.traces[number].thickness, section.thicknesses[section.traces[number].layer])]
+    return (*feet, *crests)
 
 
 def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Block) -> FloatArray:

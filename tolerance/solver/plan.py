@@ -131,7 +131,7 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float, float]]:
     others += [(edge, points * [-1.0, 1.0]) for edge, points in outlines if not edge.folded]
     levels = [-float(parts.below.thicknesses[0][0])] if parts.below.thicknesses else []
     if parts.above is not None and parts.body_thickness is not None:
-        levels.append(float(parts.body_thickness[0]))
+        levels.append(float((parts.body_thickness + (parts.above.thicknesses[0] if parts.crest_touches else 0.0))[0]))
     result = []
     for edge, points in outlines:
         length = float(edge.length[0])
