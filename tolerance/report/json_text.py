@@ -13,9 +13,20 @@ from typing import TYPE_CHECKING
 from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
 from tolerance.report.lots_json import line_keys, run_keys
 from tolerance.report.measured import measured_object
+from tolerance.report.weights import in_ppm
 
 if TYPE_CHECKING:
-    from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
+    from tolerance.results import (
+        Certificate,
+        DirectCheck,
+        Driver,
+        Group,
+        Interval,
+        Lever,
+        LineResult,
+        RunResult,
+        Tail,
+    )
 
 PICOSECONDS_PER_MILLIMETRE = 1e9  # of a delay in seconds per metre
 
@@ -82,6 +93,9 @@ def _line(line: LineResult) -> dict[str, object]:
         "held_out_error_ohm": float(line.prediction.held_out_error),
         "certificate": _certificate(line.certificate),
         "drivers": [_driver(driver) for driver in line.drivers],
+        "groups": [_group(group) for group in line.groups],
+        "yield_levers": None if line.levers is None else [_lever(lever) for lever in line.levers.each],
+        "rare_failures": None if line.tail is None else _tail(line.tail),
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
@@ -106,6 +120,25 @@ def _driver(driver: Driver) -> dict[str, object]:
     if driver.shapley is not None:
         values.update(_flat("shapley", driver.shapley))
     return values
+
+
+def _group(group: Group) -> dict[str, object]:
+    return {"name": group.name, "of": group.of, "variables": list(group.variables), **_flat("total", group.total)}
+
+
+def _lever(lever: Lever) -> dict[str, object]:
+    return {
+        "variable": lever.variable, **_flat("gain_if_halved", lever.halved), **_flat("by_mean", lever.by_mean),
+        **_flat("by_log_deviation", lever.by_deviation), "order_probability": float(lever.order),
+    }
+
+
+def _tail(tail: Tail) -> dict[str, object]:
+    return {
+        "failing_ppm": _interval(in_ppm(tail.failing)), "below_ppm": _interval(in_ppm(tail.below)),
+        "above_ppm": _interval(in_ppm(tail.above)), "monotone": bool(tail.monotone),
+        "solver_runs": int(tail.solver_runs), "largest_difference_ohm": float(tail.largest_difference),
+    }
 
 
 def _direct(direct: DirectCheck) -> dict[str, object]:

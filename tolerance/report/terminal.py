@@ -16,6 +16,7 @@ from rich.text import Text
 from tolerance.report.lots_tables import Heading, sentences, text_tables
 from tolerance.report.measured import intervals_of, measured_sentences
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
+from tolerance.report.weights import lever_words, ppm_words
 from tolerance.report.wording import (
     CAUTION,
     METRES_IN,
@@ -42,6 +43,7 @@ NARROWEST_NAME = 15
 WIDEST_NAME = 40
 OTHER_COLUMNS = 65  # what the widest table needs beside the names
 DRIVERS_SHOWN = 3
+LEVERS_SHOWN = 2
 LONGEST_DRIVER = 38
 NAMES_IN_VERDICT = 4
 
@@ -49,45 +51,46 @@ NAMES_IN_VERDICT = 4
 def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
     """Nominal impedance, effective Dk and delay of each line."""
     per_length = "mm" if lengths == "um" else "inch"
-    table = text_table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
+    table = _table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
                    ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
                    (f"delay\n\n[ps/{per_length}]", False))
     for line in result.lines:
-        table.add_row(Text(two_rows(line.name, name_width(console))), *_check_cells(line, lengths))
-    say(console, result.title, style="bold")
-    print_table(console, table)
+        table.add_row(Text(two_rows(line.name, _name_width(console))), *_check_cells(line, lengths))
+    _say(console, result.title, style="bold")
+    _print_table(console, table)
     _say_modes(result, console)
     if any(line.formulas is not None for line in result.lines):
-        print_table(console, _formula_table(result, name_width(console)))
-        say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
+        _print_table(console, _formula_table(result, _name_width(console)))
+        _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
                       "by their authors.")
 
 
 def print_run(result: RunResult, console: Console) -> None:
     """Yield of every line and of the board, what drives it, and how far the numbers can be trusted."""
-    say(console, result.title, style="bold")
-    print_table(console, _yield_table(result, name_width(console)))
-    print_table(console, _driver_table(result, name_width(console), console.width))
-    for columns, rows in text_tables(result, name_width(console)):
-        print_table(console, _filled_table(columns, rows))
-    say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
+    _say(console, result.title, style="bold")
+    _print_table(console, _yield_table(result, _name_width(console)))
+    _print_table(console, _driver_table(result, _name_width(console), console.width))
+    for columns, rows in text_tables(result, _name_width(console)):
+        _print_table(console, _filled_table(columns, rows))
+    _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
                   f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
+    _say_rare(result, console)
     _say_direct(result, console)
     for sentence in sentences(result):
-        say(console, sentence)
+        _say(console, sentence)
     for sentence in measured_sentences(result):
-        say(console, sentence)
-    say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
+        _say(console, sentence)
+    _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
-def name_width(console: Console) -> int:
+def _name_width(console: Console) -> int:
     return min(max(console.width - OTHER_COLUMNS, NARROWEST_NAME), WIDEST_NAME)
 
 
-def text_table(*columns: tuple[str, bool]) -> RichTable:
+def _table(*columns: tuple[str, bool]) -> RichTable:
     """An empty table; a column is its heading and whether it holds text (on the left, may wrap) or numbers."""
     table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
     for heading, is_text in columns:
@@ -96,22 +99,22 @@ def text_table(*columns: tuple[str, bool]) -> RichTable:
 
 
 def _filled_table(columns: tuple[Heading, ...], rows: list[tuple[str, ...]]) -> RichTable:
-    table = text_table(*columns)
+    table = _table(*columns)
     for cells in rows:
         table.add_row(*(Text(cell) for cell in cells))
     return table
 
 
-def print_table(console: Console, table: RichTable) -> None:
+def _print_table(console: Console, table: RichTable) -> None:
     console.print(Padding(table, (1, 0, 1, 0)))
 
 
-def say(console: Console, sentence: str, *, style: str = "") -> None:
+def _say(console: Console, sentence: str, *, style: str = "") -> None:
     console.print(Text(sentence, style=style))
 
 
 def _yield_table(result: RunResult, name_width: int) -> RichTable:
-    table = text_table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
+    table = _table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
                    ("dev.\n\n[ohm]", False), ("yield\ninterval\n[%]", False), ("below\nabove\n[%]", False),
                    ("Cpk", False))
     for line in result.lines:
@@ -129,7 +132,10 @@ def _yield_table(result: RunResult, name_width: int) -> RichTable:
 
 
 def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
-    table = text_table(("line", True), (f"largest drivers, by {ranking_name(result.lines)}", True),
+    heading = f"largest drivers, by {ranking_name(result.lines)}"
+    if any(lever_words(line, 1) for line in result.lines):
+        heading += "\n/ points of yield gained, spread halved"
+    table = _table(("line", True), (heading, True),
                    ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
         table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
@@ -142,23 +148,33 @@ def _drivers(line: LineResult, width: int) -> str:
     rows = [""]
     for driver in line.drivers[:DRIVERS_SHOWN]:
         words = f"{shorten(variable_words(driver.variable), LONGEST_DRIVER)} {percent(ranking(driver).value, 0)}"
-        joined = f"{rows[-1]}, {words}" if rows[-1] else words
-        if len(joined) <= width:
-            rows[-1] = joined
-        else:
-            rows.append(words)
-    return "\n".join(rows) if line.drivers else "none: nothing that varies reaches it"
+        _append(rows, words, width)
+    if not line.drivers:
+        return "none: nothing that varies reaches it"
+    gains = [""]
+    for words in lever_words(line, LEVERS_SHOWN):
+        _append(gains, words, width - 2)
+    return "\n".join([*rows, *(f"/ {row}" for row in gains if row)])
+
+
+def _append(rows: list[str], words: str, width: int) -> None:
+    """Put words behind the last row, or, where there is no room, into a new one."""
+    joined = f"{rows[-1]}, {words}" if rows[-1] else words
+    if len(joined) <= width:
+        rows[-1] = joined
+    else:
+        rows.append(words)
 
 
 def _say_verdict(result: RunResult, console: Console) -> None:
     target = f"{trimmed(100.0 * result.target_yield, 3)} %"
     missing = [line.name for line in result.lines if line.inside.value < result.target_yield]
     if not missing:
-        say(console, f"Every line meets the target yield of {target}.")
+        _say(console, f"Every line meets the target yield of {target}.")
         return
     named = ", ".join(f'"{shorten(name, LONGEST_DRIVER)}"' for name in missing[:NAMES_IN_VERDICT])
     more = f" and {len(missing) - NAMES_IN_VERDICT} more" if len(missing) > NAMES_IN_VERDICT else ""
-    say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
+    _say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
 
 
 def _say_impossible(result: RunResult, console: Console) -> None:
@@ -166,7 +182,7 @@ def _say_impossible(result: RunResult, console: Console) -> None:
         return
     lines = ", ".join(f'"{shorten(line.name, LONGEST_DRIVER)}" {line.impossible:,}'
                       for line in result.lines if line.impossible)
-    say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
+    _say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
                   f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
 
 
@@ -174,33 +190,40 @@ def _say_certificate(result: RunResult, console: Console) -> None:
     certain = [line.certificate for line in result.lines if line.certificate.certified]
     if certain:
         lines = "every line" if len(certain) == len(result.lines) else f"{len(certain)} lines"
-        say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
+        _say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
                       f"within {trimmed(certain[0].multiple, 1)} errors of a limit were solved themselves.")
     for line in result.lines:
         one = line.certificate
         if not one.certified:
-            say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
+            _say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
                           f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
                           f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
 
 
+def _say_rare(result: RunResult, console: Console) -> None:
+    """Failures too rare to be counted."""
+    rare = [f'"{shorten(line.name, LONGEST_DRIVER)}" {ppm_words(line.tail)}' for line in result.lines if line.tail]
+    if rare:
+        _say(console, f"Coupons that fail too rarely to be counted, so integrated: {'; '.join(rare)}.")
+
+
 def _say_direct(result: RunResult, console: Console) -> None:
     """The solver's own answers beside the predictions: one row a line."""
-    table = text_table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
+    table = _table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
                    ("off, most\n[ohm]", False), ("verdicts\nthat differ", False))
     for line in result.lines:
         if line.direct is not None:
-            table.add_row(Text(two_rows(line.name, name_width(console))), f"{line.direct.coupons:,}",
+            table.add_row(Text(two_rows(line.name, _name_width(console))), f"{line.direct.coupons:,}",
                           fixed(line.direct.root_mean_square, 4), fixed(line.direct.largest, 4),
                           str(line.direct.verdicts_that_differ))
     if table.row_count:
-        say(console, "")
-        say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
-        print_table(console, table)
+        _say(console, "")
+        _say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
+        _print_table(console, table)
 
 
 def _formula_table(result: CheckResult, name_width: int) -> RichTable:
-    table = text_table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
+    table = _table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
                    ("claimed\n[%]", False))
     for line in result.lines:
         name = two_rows(line.name, name_width)
@@ -223,10 +246,10 @@ def _say_modes(result: CheckResult, console: Console) -> None:
     """What impedance, effective Dk and delay of a pair are."""
     pairs = {line.mode for line in result.lines if line.common_mode is not None}
     if pairs - {"common"}:
-        say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
+        _say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
                       "impedance of both traces tied together.")
     if "common" in pairs:
-        say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
+        _say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
 
 
 def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:

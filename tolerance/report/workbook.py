@@ -36,6 +36,7 @@ from tolerance.report.tables import (
     summary_table,
 )
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
+from tolerance.report.weights import group_table, lever_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
 
 if TYPE_CHECKING:
@@ -50,6 +51,7 @@ INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3E
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
+RECORD_WIDTH = 120  # letters, of the values of the run record: whole lines of a scenario
 PAGE = 240.0  # letters across a printed page at most; a wider table goes on on further ones
 ROW = 15.0  # points, one row of letters of the usual size
 
@@ -84,6 +86,8 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
 def _tables(result: RunResult, scenario: Scenario) -> list[tuple[str, Table]]:
     """The tables that have a sheet of their own, by its name, in their order."""
     tables = [("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Yield by limit", limit_table(result))]
+    tables += [(name, table) for name, table in (("Yield levers", lever_table(result)),
+                                                 ("Groups of drivers", group_table(result))) if table.rows]
     if result.nested is not None:
         tables += [("Levels", level_table(result)), ("Levels by variable", level_driver_table(result))]
     if result.reading is not None:
@@ -101,7 +105,7 @@ def _acceptance_sheet(book: Workbook, result: RunResult) -> None:
     """What the sampling plan does to lots, where there is one; it stands after the test."""
     if result.acceptance is not None:
         sheet = book.create_sheet("Lot acceptance", book.sheetnames.index("Stackup"))
-        put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
+        _put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
         _write_table(sheet, acceptance_table(result.acceptance), top=3)
         sheet.freeze_panes = "A4"
 
@@ -124,7 +128,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> P
         (CAUTION, _font(italic=True)),
     ]
     for row, (sentence, font) in enumerate(sentences, start=1):
-        put(sheet, row, 1, sentence).font = font
+        _put(sheet, row, 1, sentence).font = font
         sheet.row_dimensions[row].height = 1.5 * float(font.size or 11.0)
     placed = Placed(sheet, summary_table(result), len(sentences) + 2)
     _write_table(sheet, placed.table, top=placed.top)
@@ -136,7 +140,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> P
 def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     """Headings in row `top`, filterable, and the rows below them."""
     for column, heading in enumerate(table.columns, start=1):
-        cell = put(sheet, top, column, heading.head)
+        cell = _put(sheet, top, column, heading.head)
         cell.font = _font(bold=True)
         cell.fill = PatternFill("solid", start_color=HEAD_FILL)
         cell.border = Border(bottom=Side(style="thin", color=HAIRLINE))
@@ -146,7 +150,7 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     alignments = [_alignment(table, column) for column in range(len(table.columns))]
     for row, cells in enumerate(table.rows, start=top + 1):
         for column, (heading, value) in enumerate(zip(table.columns, cells, strict=True), start=1):
-            cell = put(sheet, row, column, value)
+            cell = _put(sheet, row, column, value)
             cell.alignment = alignments[column - 1]
             if isinstance(value, int | float):
                 cell.number_format = number_format(heading)
@@ -233,7 +237,9 @@ def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
         *(("scenario text", text) for line in record.scenario_text.splitlines() for text in _pieces(line)),
     ]
     _write_table(sheet, Table((Column("item", "item"), Column("value", "value")), tuple(rows)), top=1)
-    sheet.column_dimensions["B"].width = 110
+    sheet.column_dimensions["B"].width = RECORD_WIDTH
+    for number, (_, value) in enumerate(rows, start=2):
+        sheet.row_dimensions[number].height = ROW * max(len(textwrap.wrap(str(value), RECORD_WIDTH)), 1)
     sheet.freeze_panes = "B2"
 
 
@@ -242,7 +248,7 @@ def _pieces(line: str) -> list[str]:
     return [line[start:start + LONGEST_TEXT] for start in range(0, max(len(line), 1), LONGEST_TEXT)]
 
 
-def put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
+def _put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
     """Write one cell. Text stays text, also where it begins like a formula."""
     cell = sheet.cell(row=row, column=column)
     assert isinstance(cell, SheetCell)
