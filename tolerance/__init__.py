@@ -17,13 +17,15 @@ if TYPE_CHECKING:
     from tolerance.study.check import check as check
     from tolerance.study.exchange import ask as ask
     from tolerance.study.exchange import take as take
+    from tolerance.study.reconcile import reconcile as reconcile
     from tolerance.study.run import run as run
 
-__all__ = ["ask", "check", "load", "run", "take"]
+__all__ = ["ask", "check", "load", "reconcile", "run", "take"]
 
 _HOMES = {
     "load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run",
     "ask": "tolerance.study.exchange", "take": "tolerance.study.exchange",
+    "reconcile": "tolerance.study.reconcile",
 }
 
 

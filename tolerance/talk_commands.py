@@ -28,6 +28,18 @@ def add_talk(commands: Any) -> None:
                                                                "beside the first; an existing file is left alone")
 
 
+    reconcile = commands.add_parser("reconcile", help="measured coupons against the prediction, and what has moved")
+    _add_common(reconcile, _reconcile)
+    reconcile.add_argument("measured", type=Path, metavar="MEASURED",
+                           help="impedances of coupons (CSV or XLSX): columns line, value, and lot, panel if known")
+    reconcile.add_argument("--sections", type=Path, metavar="FILE",
+                           help="microsections (CSV or XLSX): columns property, value")
+    reconcile.add_argument("--repeatability", metavar="OHM", help='of one reading, such as "0.3 ohm"; instead of the '
+                                                                  "scenario's [test]")
+    reconcile.add_argument("--sheet", metavar="NAME", help="of XLSX tables that have several sheets")
+    reconcile.add_argument("--out", type=Path, metavar="DIR", help="folder of the figure; default out/<file stem>")
+
+
 def _add_common(parser: argparse.ArgumentParser, command: Callable[[argparse.Namespace], int]) -> None:
     parser.add_argument("file", type=Path, metavar="FILE", help="scenario (TOML)")
     parser.add_argument("--json", action="store_true",
@@ -85,6 +97,49 @@ def _take(options: argparse.Namespace) -> int:
 
         print_taken(taken, console(), written)
     return 0
+
+
+def _reconcile(options: argparse.Namespace) -> int:
+    from tolerance.scenario import load
+
+    scenario = load(options.file)
+    check_numbers(options)
+    repeatability = _resistance(options.repeatability)
+    from tolerance.study.reconcile import reconcile
+
+    with progress(quiet=options.quiet) as tell:
+        result = reconcile(scenario, options.measured, sections=options.sections, repeatability=repeatability,
+                           sheet=options.sheet, coupons=options.coupons, seed=options.seed, on_progress=tell)
+    folder = options.out or (None if options.json else Path("out") / options.file.stem)
+    written = None
+    if folder is not None:
+        from tolerance.report.reconcile_plot import write_reconcile_figure
+
+        written = write_reconcile_figure(result, folder / "predicted-and-measured.png", scenario.report.lengths)
+    if options.json:
+        from tolerance.report.reconcile_words import reconciled_json
+
+        print(reconciled_json(result))
+    elif not options.quiet:
+        from tolerance.report.reconcile_terminal import print_reconciled
+
+        print_reconciled(result, scenario.report.lengths, console(), written)
+    return 0
+
+
+def _resistance(given: str | None) -> float | None:
+    """A resistance from 0 up [ohm]. Raises InputError."""
+    if given is None:
+        return None
+    from tolerance.units import QuantityError, read_quantity
+
+    try:
+        value = read_quantity(given, "resistance")
+    except QuantityError as reason:
+        raise InputError(f"--repeatability {given}: {reason}") from None
+    if value < 0.0:
+        raise InputError(f"--repeatability {given}: must be 0 ohm or more")
+    return value
 
 
 def _write_scenario(taken: Taken, out: Path | None) -> Path | None:
