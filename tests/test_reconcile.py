@@ -234,7 +234,7 @@ def test_tables_are_read_and_what_is_wrong_is_told_by_its_row(tmp_path: Path) ->
     with pytest.raises(InputError, match=r'row 2: no line is called "radio fed"; did you mean "radio feed".*row 3: an'):
         read_coupons(bad, scenario)
     bad.write_text("trace,value\nradio feed,50\n", encoding="utf-8")
-    with pytest.raises(InputError, match='needs a column headed line; it has "trace", "value"'):
+    with pytest.raises(InputError, match=r'needs a column headed line; it has "trace", "value"'):
         read_coupons(bad, scenario)
     book = Workbook()
     sheet = book.active
@@ -247,7 +247,7 @@ def test_tables_are_read_and_what_is_wrong_is_told_by_its_row(tmp_path: Path) ->
     assert [cut.value for cut in cuts] == pytest.approx([6e-6, 4.1, 98e-6])
     sheet.append(("P2.thickness", "98 um"))
     book.save(tmp_path / "cuts.xlsx")
-    with pytest.raises(InputError, match='row 5: "P2.thickness" is nothing that varies'):
+    with pytest.raises(InputError, match=r'row 5: "P2.thickness" is nothing that varies'):
         read_sections(tmp_path / "cuts.xlsx", scenario, board()[1].process)
 
 

@@ -280,6 +280,7 @@ def test_a_frequency_needs_the_loss_of_each_dielectric() -> None:
     told = messages(changed(BOARD, ("seed = 1", 'frequency = "1 GHz"')))
     assert [one.split(": ")[1] for one in told if "df: missing" in one] == [
         '[[layers]] "top mask"', '[[layers]] "P1"', '[[layers]] "C1"', '[[layers]] "P2"']
+    assert len(told) == 4
 
 
 @pytest.mark.parametrize(("part", "keys"), [

@@ -15,6 +15,7 @@ from tolerance.hypertext import hypertext
 from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
+from tolerance.sections.reading import ReadingRise as ReadingRise
 from tolerance.statistics.acceptance import LotAcceptance as LotAcceptance
 from tolerance.statistics.acceptance import OperatingPoint as OperatingPoint
 from tolerance.statistics.against_limit import YieldByLimit as YieldByLimit
@@ -145,6 +146,7 @@ class LineResult:
     nested: NestedYield | None = None  # panels and lots; with levels only
     variance: VarianceShares | None = None  # by level; with levels only
     reading: ReadingRisks | None = None  # with a [test] of readings only
+    rise: ReadingRise | None = None  # what series resistance adds to a reading; the judged impedance is without it
 
     @property
     def limit(self) -> float:
@@ -214,6 +216,7 @@ class RunResult:
     nested: NestedYield | None = None  # of all lines together
     reading: ReadingRisks | None = None  # of all lines together
     acceptance: LotAcceptance | None = None  # with sample_size only
+    frequency: float | None = None  # [Hz] where the lines are evaluated; None: lossless and static
     measured: tuple[MeasuredInput, ...] = ()
 
     def _repr_html_(self) -> str:

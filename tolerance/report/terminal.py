@@ -48,8 +48,8 @@ LONGEST_DRIVER = 38
 NAMES_IN_VERDICT = 4
 
 
-def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
-    """Nominal impedance, effective Dk and delay of each line."""
+def print_check(result: CheckResult, lengths: LengthUnit, console: Console, *, shares: bool = False) -> None:
+    """Nominal impedance, effective Dk and delay of each line, and its losses; `shares`: charge and current by face."""
     per_length = "mm" if lengths == "um" else "inch"
     table = _table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
                    ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
@@ -59,6 +59,13 @@ def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> N
     _say(console, result.title, style="bold")
     _print_table(console, table)
     _say_modes(result, console)
+    _say_losses(result, lengths, console)
+    _say_rises(result, console)
+    if shares:
+        _print_table(console, _share_table(result, _name_width(console)))
+        _say(console, "Shares of a trace's charge and, at small skin depth, of its current by face; fringe: share of "
+                      "the capacitance beyond that of parallel plates. Coupling: inductive, capacitive, and the "
+                      "backward crosstalk coefficient.")
     if any(line.formulas is not None for line in result.lines):
         _print_table(console, _formula_table(result, _name_width(console)))
         _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
@@ -83,6 +90,9 @@ def print_run(result: RunResult, console: Console) -> None:
         _say(console, sentence)
     for sentence in measured_sentences(result):
         _say(console, sentence)
+    if result.frequency is not None:
+        _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
+    _say_rises(result, console)
     _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
@@ -220,6 +230,56 @@ def _say_direct(result: RunResult, console: Console) -> None:
         _say(console, "")
         _say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
         _print_table(console, table)
+
+
+def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
+    """A table of what the line loses, in the unit of the report, where the scenario has a frequency."""
+    lossy = [(line, line.losses) for line in result.lines if line.losses is not None]
+    if not lossy:
+        return
+    per_length, unit = (1.0, "m") if lengths == "um" else (1000.0 * METRES_IN["mil"], "inch")
+    table = _table(("line", True), ("complex\nimpedance\n[ohm]", False), (f"R\n\n[ohm/{unit}]", False),
+                   (f"L\n\n[nH/{unit}]", False), (f"G\n\n[mS/{unit}]", False), (f"C\n\n[pF/{unit}]", False),
+                   ("loss\n\n[dB/m]", False), ("whole\n\n[dB/inch]", False))
+    for line, losses in lossy:
+        impedance = losses.complex_impedance
+        table.add_row(
+            Text(two_rows(line.name, _name_width(console))),
+            f"{fixed(impedance.real, 2)}\n{'-' if impedance.imag < 0.0 else '+'} j {fixed(abs(impedance.imag), 2)}",
+            *(f"{scale * value * per_length:.4g}" for value, scale in (
+                (losses.resistance, 1.0), (losses.inductance, 1e9), (losses.conductance, 1e3),
+                (losses.capacitance, 1e12))),
+            f"{fixed(losses.conductor_loss, 2)}\n+ {fixed(losses.dielectric_loss, 2)}",
+            fixed((losses.conductor_loss + losses.dielectric_loss) * 1000.0 * METRES_IN["mil"], 3))
+    _print_table(console, table)
+    _say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one. "
+                  "Loss: by the copper, + by the dielectric.")
+
+
+def _say_rises(result: CheckResult | RunResult, console: Console) -> None:
+    for line in result.lines:
+        if line.rise is not None:
+            _say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.rise.position:.6g} mm '
+                          f"from the launch is higher by {fixed(line.rise.rise, 2)} ohm of series resistance "
+                          f"({line.rise.resistance:.3g} ohm/m to direct current).")
+
+
+def _share_table(result: CheckResult, name_width: int) -> RichTable:
+    table = _table(("line", True), ("face", True), ("charge\n[%]", False), ("current\n[%]", False),
+                   ("fringe\n[%]", False), ("coupling", True))
+    for line in result.lines:
+        if line.shares is None:
+            continue
+        faces, coupling = line.shares.faces, line.coupling
+        words = "" if coupling is None else (
+            f"inductive {coupling.inductive:.4f}\ncapacitive {coupling.capacitive:.4f}\n"
+            f"backward {coupling.backward:.4f}")
+        table.add_row(
+            Text(two_rows(line.name, name_width)), Text("\n".join(face for face, _, _ in faces)),
+            *("\n".join(fixed(100.0 * share, 1) for share in shares)
+              for shares in ([charge for _, charge, _ in faces], [current for _, _, current in faces])),
+            "-" if line.shares.fringe is None else fixed(100.0 * line.shares.fringe, 1), Text(words))
+    return table
 
 
 def _formula_table(result: CheckResult, name_width: int) -> RichTable:

@@ -134,7 +134,8 @@ def _variation_row(variation: Variation, item: Property, variable: str, lengths:
     tolerance, tolerance_unit = _amount(variation.tolerance, item, unit)
     shift, shift_unit = _amount(variation.shift, item, unit)
     return {
-        "variable": variable, "property": item.name, "nominal": _in_unit(item.nominal, unit), "unit": unit or "-",
+        "variable": variable, "property": item.name,
+        "nominal": _rounded(_in_unit(item.nominal, unit)), "unit": unit or "-",
         "shape": variation.shape.replace("_", " "), "tolerance": tolerance, "tolerance_unit": tolerance_unit,
         "basis": _basis(variation), "shift": shift, "shift_unit": shift_unit,
         "low": _in_unit(variation.low, unit), "high": _in_unit(variation.high, unit),
@@ -149,6 +150,11 @@ def _origin(scenario: Scenario, item: Property) -> str | None:
 
 def _in_unit(value: float | None, unit: LengthUnit | None) -> float | None:
     return value if unit is None else _length(value, unit)
+
+
+def _rounded(value: float | None) -> float | None:
+    """To six digits: nominals that follow from others, a ply's by its resin, have no end of them."""
+    return None if value is None else float(f"{value:.6g}")
 
 
 def _amount(amount: Amount | None, item: Property, unit: LengthUnit | None) -> tuple[float | None, str | None]:

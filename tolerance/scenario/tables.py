@@ -13,8 +13,9 @@ from typing import Annotated, Literal
 from pydantic import BaseModel, ConfigDict, Field
 
 from tolerance.scenario.amounts import Amount as Amount
-from tolerance.scenario.amounts import AmountOf, EndOf, Level
+from tolerance.scenario.amounts import AmountOf, EndOf, Level, ReadingAt
 from tolerance.scenario.amounts import LevelShares as LevelShares
+from tolerance.scenario.amounts import Reading as Reading
 from tolerance.scenario.keys import Flag, Number, Quantity, Range, Text, Texts, Whole, Word
 
 FORMAT = 1
@@ -214,6 +215,8 @@ class ImpedanceTest(Table):
     sample_size: Annotated[int | None, _COUNT] = Field(default=None, description="Coupons measured in a lot")
     accept_number: Annotated[int | None, Whole(Range(0, 100_000))] = Field(
         default=None, description="The lot is rejected above so many failures")
+    reading: Annotated[Reading | None, ReadingAt(Quantity("length", Range(0.0, 2.0, low_in=False), "mm"))] = Field(
+        default=None, description="Where on the coupon is read: shows what series resistance adds there")
 
 
 class Report(Table):

@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from tolerance.arrays import FloatArray, IntArray
+from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.section import Mask, Ply, Section
 from tolerance.solver.assembly import Medium, NearImage
 from tolerance.solver.edges import Edge, ground_edges, mask_edges, trace_edges
@@ -19,7 +19,7 @@ class Structure:
 
     edges: tuple[Edge, ...]
     images: tuple[NearImage, ...]
-    body_dk: FloatArray
+    body_dk: NumberArray
     below: FlatStack
     above: FlatStack | None  # None: air, or a mask with a face of its own
     body_thickness: FloatArray | None
@@ -76,7 +76,7 @@ def media(
 
     distance : (sections,) [m] what sets the wavenumbers between flat plies; absent: the shortest remaining way.
     """
-    one = np.ones_like(parts.body_dk)
+    one = np.ones(parts.body_dk.shape)
     if parts.above is None:
         filled = Medium((one, parts.below.first_reflection(parts.body_dk)),
                         far=far_images(parts.below, parts.body_dk, multiples=multiples))
@@ -110,7 +110,7 @@ def _is(section: Section, bit: int) -> bool:
     return bool(int(topology(section.rows(slice(0, 1)))[0]) & bit)
 
 
-def _open_above(section: Section, body_dk: FloatArray) -> Structure:
+def _open_above(section: Section, body_dk: NumberArray) -> Structure:
     """The plane on the foot side; over the trace air, or a mask whose face carries unknowns."""
     zero = np.zeros(section.count)
     edges = trace_edges(section) + ground_edges(section)

@@ -141,7 +141,8 @@ def _seen(
 ) -> Seen:
     own_chance, chance = chance.spawn(2)
     shares = training_shares(len(columns), runs=UNLIKE, chance=own_chance)
-    dimensions = dimensions_like(prepared.section(BoxValues(draws.process, columns, prepared.line.width, shares)))
+    unlike = prepared.section(BoxValues(draws.process, columns, prepared.line.width, shares))
+    dimensions = dimensions_like(unlike, scale_free=prepared.frequency is None)
 
     def logarithms(values: ProcessValues) -> FloatArray:
         return dimensions.logarithms(prepared.section(values))

@@ -109,7 +109,7 @@ def run(
         title=scenario.title, seed=seed, coupons=draws.coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside.at_most(min(line.inside.value for line in results)), impossible=judged.impossible,
         lines=tuple(results), by_limit=together,
-        record=_record(scenario, settings, results, draws.replicates, clock),
+        record=_record(scenario, settings, results, draws.replicates, clock), frequency=scenario.evaluation.frequency,
         lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
         measured=measured_inputs(scenario, process),
     )
@@ -179,7 +179,7 @@ def _line_result(
         drivers=weights.drivers, groups=weights.groups, levers=weights.levers, tail=tail,
         spread=Spread(edges, counts), by_limit=by_limit, prediction=replace(line.prediction, solver_runs=runs),
         certificate=line.certificate,
-        drawing=drawing, direct=line.direct,
+        drawing=drawing, direct=line.direct, rise=prepared.rise,
     )
 
 
