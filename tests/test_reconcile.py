@@ -112,7 +112,7 @@ def test_a_linear_normal_case_is_the_conditional_normal() -> None:
     assert found.mean == pytest.approx(gain @ (values - 50.0), rel=1e-7)
     assert found.covariance == pytest.approx(PRIOR - gain @ SLOPES @ PRIOR, rel=1e-7)
     whole = SLOPES @ PRIOR @ SLOPES.T + NOISE
-    expected = (values - 50.0) @ np.linalg.inv(whole) @ (values - 50.0)
+    expected = float((values - 50.0) @ np.linalg.inv(whole) @ (values - 50.0))
     assert misfit_of(linear, Observed(values, NOISE), PRIOR) == pytest.approx(expected, rel=1e-7)
     assert chance_of_more(expected, 2) == pytest.approx(np.exp(-0.5 * expected))  # chi-squared of 2 degrees, exact
 

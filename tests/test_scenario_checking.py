@@ -311,17 +311,6 @@ def test_foreign_text_stays_on_one_line() -> None:
     assert '"P\\n1"' in told[0]
 
 
-@pytest.mark.parametrize(("part", "changes"), [
-    ('frequency = "1 GHz": is part of the format but not yet',
-     [("seed = 1", 'frequency = "1 GHz"'), *[(f"dk = {dk}", f"DK {dk}\ndf = 0.02") for dk in (3.5, "4.0", 4.2, 3.9)]]),
-])
-def test_keys_that_are_not_acted_on_are_refused(part: str, changes: list[tuple[str, str]]) -> None:
-    told = messages(changed(BOARD, *changes).replace("DK ", "dk = "))
-    assert len(told) == 1, told
-    assert part in told[0]
-    assert "is part of the format but not yet acted on by this version" in told[0]
-
-
 @pytest.mark.parametrize(("part", "table"), [
     ("accept_number: missing; sample_size and accept_number stand together", "sample_size = 8"),
     ("sample_size: missing", "accept_number = 0"),
