@@ -87,7 +87,10 @@ def test_every_scenario_is_in_the_table() -> None:
     assert named == {f"scenarios/{path.name}" for path in (ROOT / "scenarios").glob("*.toml")}
 
 
-@pytest.mark.parametrize("words", [["run"], ["check"], ["fit"], ["new"], ["presets"], ["schema"]])
+@pytest.mark.parametrize("words", [
+    ["run"], ["check"], ["fit"], ["new"], ["presets"], ["schema"], ["ask"], ["take"],
+    ["reconcile"],
+])
 def test_every_option_is_told(words: list[str], capsys: pytest.CaptureFixture[str]) -> None:
     from tolerance.command import main
 

@@ -4,6 +4,8 @@
     tolerance.check(scenario)            # nominal impedance of each line
     result = tolerance.run(scenario)     # yield and drivers
     result.line_table                    # a pandas DataFrame
+    tolerance.ask(scenario)              # what to ask the fabricator, the most important first
+    tolerance.take(scenario, "reply.xlsx")  # what the reply changes, old and new yield
 """
 
 from __future__ import annotations
@@ -13,11 +15,18 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from tolerance.scenario import load as load
     from tolerance.study.check import check as check
+    from tolerance.study.exchange import ask as ask
+    from tolerance.study.exchange import take as take
+    from tolerance.study.reconcile import reconcile as reconcile
     from tolerance.study.run import run as run
 
-__all__ = ["check", "load", "run"]
+__all__ = ["ask", "check", "load", "reconcile", "run", "take"]
 
-_HOMES = {"load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run"}
+_HOMES = {
+    "load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run",
+    "ask": "tolerance.study.exchange", "take": "tolerance.study.exchange",
+    "reconcile": "tolerance.study.reconcile",
+}
 
 
 def __getattr__(name: str) -> Any:

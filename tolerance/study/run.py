@@ -69,7 +69,7 @@ def run(
         return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1], direct=direct)
 
     tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
-    predicted = _on_all_cores(predict, tasks, "solving lines", tell)
+    predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
     sample = _coupons(predicted, draws)
@@ -91,12 +91,12 @@ def run(
         return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
-    weights = _on_all_cores(rank, ranking, "ranking drivers", tell)
+    weights = on_all_cores(rank, ranking, "ranking drivers", tell)
 
     def share_out(task: tuple[PredictedLine, np.random.Generator]) -> VarianceShares | None:
         return variance_by_level(process, model_of(task[0].predictor), task[1])
 
-    variances = _on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
+    variances = on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
                               "variance by level", tell) if draws.lots else [None] * len(predicted)
     drawings = [draw_line(line.prepared, process) for line in predicted]
     results = [
@@ -138,11 +138,11 @@ def _with_doubt_of_readings(
     def judge_again(chance_of_law: np.random.Generator) -> Figures:
         return judged_again(lines, limits, draws, chance_of_law)
 
-    others = _on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
+    others = on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
     return widened_by_sampling(judged, judged_again(lines, limits, draws, None), others)
 
 
-def _on_all_cores(
+def on_all_cores(
     work: Callable[[Task], Done], tasks: Sequence[Task], step: str, tell: Progress,
 ) -> list[Done]:
     """`work` done on every task, in threads, results in the order of the tasks.
