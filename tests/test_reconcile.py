@@ -33,7 +33,7 @@ from tolerance.statistics.reconcile import (
 )
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
-from tolerance.study.reconcile import _fit, _Fitted, _silent, reconcile, reconciled
+from tolerance.study.reconcile import FittedLines, fit_lines, reconcile, reconciled, silent
 
 VARIATIONS = """
 [[variations]]
@@ -72,9 +72,9 @@ def linear(germ: FloatArray) -> FloatArray:
 
 
 @cache
-def board() -> tuple[Scenario, _Fitted]:
+def board() -> tuple[Scenario, FittedLines]:
     scenario = parse(TEXT)
-    return scenario, _fit(scenario, process_of(scenario), 4096, 1, _silent)[0]
+    return scenario, fit_lines(scenario, process_of(scenario), 4096, 1, silent)[0]
 
 
 def measured(germ: FloatArray, *, noise: float, chance: np.random.Generator) -> CouponTable:

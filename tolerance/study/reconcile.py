@@ -62,7 +62,7 @@ ALL_LOTS, ALL_LINES = "all readings", "all lines together"
 
 
 @dataclass(frozen=True, slots=True)
-class _Fitted:
+class FittedLines:
     """Every line predicted, and what coupons of the given process do: mean (lines,), covariance (lines, lines)."""
 
     process: Process
@@ -100,7 +100,7 @@ def reconcile(
     process = process_of(scenario)
     table = read_coupons(Path(measured), scenario, sheet=sheet)
     cuts = () if sections is None else read_sections(Path(sections), scenario, process, sheet=sheet)
-    fitted, chance = _fit(scenario, process, coupons, seed, on_progress or _silent)
+    fitted, chance = fit_lines(scenario, process, coupons, seed, on_progress or silent)
     return reconciled(scenario, fitted, _without_bias(table, test.bias), cuts, repeatability, seed, chance)
 
 
@@ -110,7 +110,7 @@ def _without_bias(table: CouponTable, bias: float) -> CouponTable:
 
 
 def reconciled(
-    scenario: Scenario, fitted: _Fitted, table: CouponTable, cuts: Sequence[SectionReading], repeatability: float,
+    scenario: Scenario, fitted: FittedLines, table: CouponTable, cuts: Sequence[SectionReading], repeatability: float,
     seed: int, chance: np.random.Generator,
 ) -> Reconciled:
     """The same from lines that are fitted and tables that are read."""
@@ -141,9 +141,9 @@ def reconciled(
     )
 
 
-def _fit(
+def fit_lines(
     scenario: Scenario, process: Process, coupons: int | None, seed: int, tell: Progress,
-) -> tuple[_Fitted, np.random.Generator]:
+) -> tuple[FittedLines, np.random.Generator]:
     """Every line fitted as `run` does it, with the same draws; and a stream of chance for what comes after."""
     process_chance, training_chance, yield_chance = np.random.default_rng(seed).spawn(3)
     draws = draw(scenario, process, coupons=coupons or scenario.evaluation.coupons, chance=process_chance)
@@ -156,7 +156,7 @@ def _fit(
     lines = tuple(on_all_cores(fit, tasks, "solving lines", tell))
     mean = np.array([float(np.mean(line.impedance[line.possible])) for line in lines])
     error = np.array([line.prediction.held_out_error for line in lines])
-    known = _Fitted(process, draws, lines, mean, error, np.zeros((len(lines), len(process.variables))))
+    known = FittedLines(process, draws, lines, mean, error, np.zeros((len(lines), len(process.variables))))
     return replace(known, slopes=slopes_at_nominal(known.impedance, len(process.variables))), yield_chance
 
 
@@ -193,7 +193,7 @@ def _between_lots(process: Process) -> FloatArray:
 
 
 def _observations(
-    fitted: _Fitted, means: LineMeans, cuts: Sequence[SectionReading], scatter: float,
+    fitted: FittedLines, means: LineMeans, cuts: Sequence[SectionReading], scatter: float,
 ) -> tuple[Response, Observed]:
     """Means of lines, then microsections, as a function of the shift; with the covariance of their errors."""
     rows = means.lines
@@ -223,7 +223,7 @@ def _law(process: Process, name: str) -> tuple[int, Law]:
                 for member, law in variable.members if member.name == name)
 
 
-def _lot_fit(lot: str, means: LineMeans, fitted: _Fitted, between: FloatArray) -> LotFit:
+def _lot_fit(lot: str, means: LineMeans, fitted: FittedLines, between: FloatArray) -> LotFit:
     rows = means.lines
     slopes = fitted.slopes[rows]
     off = means.mean - fitted.mean[rows]
@@ -291,7 +291,7 @@ def _tied(process: Process, shifts: Shifts) -> tuple[tuple[str, str, float], ...
 
 
 def _yields(
-    fitted: _Fitted, shifts: Shifts, scatter: float, chance: np.random.Generator,
+    fitted: FittedLines, shifts: Shifts, scatter: float, chance: np.random.Generator,
 ) -> tuple[LineYields, ...]:
     """As given; of lots like those measured (shift known as it is, their scatter); shifted, all else as given."""
     free = np.concatenate([sobol_normals(len(fitted.process.variables), POINTS // REPLICATES, one)
@@ -306,7 +306,7 @@ def _yields(
     return (*rows, LineYields(ALL_LINES, given.inside, alike.inside, shifted.inside))
 
 
-def _judged(fitted: _Fitted, germ: FloatArray) -> Judgement:
+def _judged(fitted: FittedLines, germ: FloatArray) -> Judgement:
     draws = ProcessDraws(fitted.process, np.asfortranarray(germ))
     possible: BoolArray = np.stack([line.prepared.section(draws).possible for line in fitted.lines])
     limits = tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in fitted.lines)
@@ -320,7 +320,7 @@ def _root(covariance: FloatArray) -> FloatArray:
     return np.asarray(vectors * np.sqrt(np.maximum(values, 0.0)), dtype=np.float64)
 
 
-def _pictures(fitted: _Fitted, readings: Readings, shifts: Shifts, scatter: float) -> tuple[LinePicture, ...]:
+def _pictures(fitted: FittedLines, readings: Readings, shifts: Shifts, scatter: float) -> tuple[LinePicture, ...]:
     still, moved = fitted.impedance(np.stack([np.zeros_like(shifts.mean), shifts.mean]))
     found = []
     for place, line in enumerate(fitted.lines):
@@ -333,5 +333,5 @@ def _pictures(fitted: _Fitted, readings: Readings, shifts: Shifts, scatter: floa
     return tuple(found)
 
 
-def _silent(step: str, done: int, total: int) -> None:
+def silent(step: str, done: int, total: int) -> None:
     """Tell nobody."""
