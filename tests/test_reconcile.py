@@ -276,5 +276,11 @@ def test_the_command_prints_writes_a_figure_and_says_the_same_as_json(
     assert answer["yields"][-1]["name"] == "all lines together"
     assert command("-1 ohm") == 2
     assert command("1 um") == 2
+    (tmp_path / "high.csv").write_text("\n".join(["line,value ohm", *(
+        f"{name},{value + 3.0:.4f}" for name, value in zip(table.lines, table.values.tolist(), strict=True))]),
+        encoding="utf-8")
+    biased = parse(TEXT + '[test]\nbias = "3 ohm"\n')  # what a reading has too much is taken off it
+    off = reconcile(biased, tmp_path / "high.csv", repeatability=0.1, coupons=1024, seed=1).everything.lines[0].mean
+    assert off == pytest.approx(float(np.mean(table.values[:20])), abs=1e-3)
     direct = reconcile(parse(TEXT), tmp_path / "lot.csv", repeatability=0.1, coupons=1024, seed=1)
     assert direct.shift_table.iloc[0]["learned"] > 0.8
