@@ -7,6 +7,7 @@ import numpy as np
 from tolerance.arrays import FloatArray, read_only
 from tolerance.nominal import CheckResult, NominalLine
 from tolerance.results import (
+    Certificate,
     Conductor,
     DirectCheck,
     Drawing,
@@ -197,6 +198,7 @@ def made_up_line(name: str = "radio feed", *, target: float = 50.0, limit: float
         by_limit=some_curve(np.abs(impedance / target - 1.0)),
         prediction=Prediction(solver_runs=96, degree=2, terms=28, leave_one_out_error=0.004, held_out_error=0.0037,
                               held_out_largest=0.011),
+        certificate=Certificate(certified=True, solved=41, needed=41, cap=4096, multiple=6.0, error=0.005),
         drawing=microstrip_drawing() if drawing is None else drawing,
     )
 

@@ -10,18 +10,15 @@ import numpy as np
 import pytest
 from scipy.special import erf
 
-from tests.process_examples import process, variable
+from tests.process_examples import predictor_of, process, variable
 from tests.test_statistics_drivers import from_minus_one_to_one, germ_itself, ishigami
 from tolerance.arrays import FloatArray
-from tolerance.process.draws import ProcessDraws
+from tolerance.process.values import ProcessValues
 from tolerance.statistics import dependent
 from tolerance.statistics.dependent import conditional_normals, dependent_indices
 from tolerance.statistics.drivers import Model
 from tolerance.statistics.estimates import interval_of
 from tolerance.statistics.ranking import model_of, rank_drivers
-from tolerance.surrogate.coordinates import Coordinates
-from tolerance.surrogate.polynomial import count_runs
-from tolerance.surrogate.prediction import fit_predictor
 
 
 def model(
@@ -178,12 +175,11 @@ def test_drivers_of_a_line_with_correlated_variables_rank_by_their_effects() -> 
     correlation = correlation_of(3, {(1, 2): -0.5})
     known = process(*(variable(name, 4.0, shape="lognormal", tolerance=float(tolerance))
                       for name, tolerance in zip(names, tolerances, strict=True)), correlation=correlation)
-    coordinates = Coordinates(known, (0, 1, 2), 1e-4)
-    germ = coordinates.training_germs(runs=count_runs(3, 2), chance=np.random.default_rng(0))
-    draws = ProcessDraws(known, germ)
-    impedance = 50.0 * np.exp(sum(
-        power * np.log(draws.value(name) / 4.0) for name, power in zip(names, powers, strict=True)))
-    predictor = fit_predictor(coordinates, germ, impedance, degree=2)
+
+    def logarithms(values: ProcessValues) -> FloatArray:
+        return np.log([values.value(name) / 4.0 for name in names])
+
+    predictor = predictor_of(known, (0, 1, 2), lambda values: 50.0 * np.exp(powers @ logarithms(values)), logarithms)
     drivers = rank_drivers(model_of(predictor), chance=np.random.default_rng(2), with_shapley=True)
     exact = exact_shapley(powers * np.log1p(tolerances) / 3.0, correlation)
     assert [driver.variable for driver in drivers] == [names[place] for place in np.argsort(-exact)]

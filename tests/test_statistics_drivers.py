@@ -1,28 +1,23 @@
-"""Sobol' indices of independent variables: standard test functions, closed forms, SALib itself and chaospy."""
+"""Sobol' indices of independent variables: standard test functions, closed forms, and SALib itself."""
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable
 
-import chaospy
 import numpy as np
 import pytest
 from SALib.analyze import sobol as salib_analyze
 from SALib.sample import sobol as salib_sample
 from scipy.special import erf
 
-from tests.process_examples import process, variable
+from tests.process_examples import predictor_of, process, variable
 from tolerance.arrays import FloatArray
-from tolerance.process.draws import Process, ProcessDraws
-from tolerance.process.laws import Shape
-from tolerance.statistics.analytic import analytic_indices
+from tolerance.process.draws import Process
+from tolerance.process.values import ProcessValues
 from tolerance.statistics.drivers import Model, saltelli_values, sobol_indices
 from tolerance.statistics.estimates import interval_of
 from tolerance.statistics.ranking import model_of, rank_drivers
-from tolerance.surrogate.coordinates import Coordinates
-from tolerance.surrogate.polynomial import count_runs, full_exponents, polynomial
-from tolerance.surrogate.prediction import Predictor, fit_predictor
+from tolerance.surrogate.prediction import Predictor
 
 
 def from_minus_one_to_one(_: int, germ: FloatArray) -> FloatArray:
@@ -147,57 +142,20 @@ def test_seed_nought_is_a_seed() -> None:
     assert not np.array_equal(first, other)
 
 
-# --- the polynomial's own indices -----------------------------------------------------------------------------------
-
-@pytest.mark.parametrize("degree", [2, 3])
-def test_analytic_indices_agree_with_chaospy(degree: int) -> None:
-    """chaospy (general library): the same polynomial of a uniform, a normal and a triangular variable."""
-    exponents = full_exponents(3, degree)
-    coefficients = np.random.default_rng(degree).normal(size=len(exponents))
-    ours = polynomial(degree, exponents, coefficients)
-
-    def triangle(germ: FloatArray) -> FloatArray:  # inverse of the triangular distribution on [-1, 1], peak at 0
-        share = 0.5 * (1.0 + erf(germ * np.sqrt(0.5)))
-        lower, upper = np.sqrt(2.0 * share) - 1.0, 1.0 - np.sqrt(2.0 * (1.0 - share))
-        return np.asarray(np.where(share < 0.5, lower, upper), dtype=np.float64)
-
-    laws = (lambda germ: from_minus_one_to_one(0, germ), lambda germ: germ / 3.0, triangle)
-    first, total = analytic_indices(ours, lambda position, germ: np.asarray(laws[position](germ)))
-
-    joint = chaospy.J(chaospy.Uniform(-1, 1), chaospy.Normal(0, 1 / 3), chaospy.Triangle(-1, 0, 1))
-    q = chaospy.variable(3)
-    legendre = [lambda x: x**0, lambda x: x, lambda x: 1.5 * x**2 - 0.5, lambda x: 2.5 * x**3 - 1.5 * x]
-    expression = sum(
-        math.prod((legendre[power](q[axis]) for axis, power in enumerate(row)), start=coefficient)
-        for row, coefficient in zip(exponents.tolist(), coefficients.tolist(), strict=True))
-    nodes, weights = chaospy.generate_quadrature(8, joint, rule="gaussian")
-    expansion = chaospy.generate_expansion(degree, joint)
-    fitted, fourier = chaospy.fit_quadrature(expansion, nodes, weights, expression(*nodes), retall=True)
-    assert fitted is not None
-    present = np.array([term.exponents.max(axis=0) > 0 for term in expansion])
-    scaled = np.asarray(fourier) ** 2 * np.array([float(chaospy.E(term**2, joint)) for term in expansion])
-    alone = present.sum(axis=1) == 1
-    variance = scaled[present.any(axis=1)].sum()
-    assert first == pytest.approx([scaled[alone & present[:, axis]].sum() / variance for axis in range(3)], abs=1e-6)
-    assert total == pytest.approx([scaled[present[:, axis]].sum() / variance for axis in range(3)], abs=1e-6)
-
-
 # --- a predicted line -----------------------------------------------------------------------------------------------
 
 NAMES = ("L1.foil", "P1.thickness", "P1.dk")
 EXPONENTS = np.array([-0.3, 0.6, -0.5])
 
 
-def power_law(draws: ProcessDraws) -> FloatArray:
+def power_law(values: ProcessValues) -> FloatArray:
     """An impedance [ohm] that goes with powers of what varies."""
-    logarithm = sum(power * np.log(draws.value(name) / 4.0) for name, power in zip(NAMES, EXPONENTS, strict=True))
+    logarithm = sum(power * np.log(values.value(name) / 4.0) for name, power in zip(NAMES, EXPONENTS, strict=True))
     return np.asarray(50.0 * np.exp(logarithm), dtype=np.float64)
 
 
-def predictor_of(known: Process) -> Predictor:
-    coordinates = Coordinates(known, (0, 1, 2), 1e-4)
-    germ = coordinates.training_germs(runs=count_runs(3, 2), chance=np.random.default_rng(0))
-    return fit_predictor(coordinates, germ, power_law(ProcessDraws(known, germ)), degree=2)
+def power_law_predictor(known: Process) -> Predictor:
+    return predictor_of(known, (0, 1, 2), power_law, lambda values: np.log([values.value(name) for name in NAMES]))
 
 
 def test_drivers_of_a_predicted_line_are_the_closed_form_ones() -> None:
@@ -208,24 +166,13 @@ def test_drivers_of_a_predicted_line_are_the_closed_form_ones() -> None:
                     variable("P9.dk", 4.0, tolerance=0.5))
     squares = (EXPONENTS * np.log1p(tolerances) / 3.0) ** 2
     exact = np.expm1(squares) / np.expm1(squares.sum())
-    drivers = rank_drivers(model_of(predictor_of(known)), chance=np.random.default_rng(2), with_shapley=False)
+    drivers = rank_drivers(model_of(power_law_predictor(known)), chance=np.random.default_rng(2), with_shapley=False)
     assert [driver.variable for driver in drivers] == [NAMES[place] for place in np.argsort(-exact)]
     for driver in drivers:
         assert driver.first.value == pytest.approx(exact[NAMES.index(driver.variable)], abs=0.003)
         assert driver.total.value == pytest.approx(exact[NAMES.index(driver.variable)], abs=0.003)
         assert driver.total.low < driver.total.value < driver.total.high
         assert driver.shapley is None
-
-
-@pytest.mark.parametrize("shape", ["normal", "truncated_normal", "uniform", "triangular"])
-def test_sampled_indices_agree_with_the_polynomials_own(shape: Shape) -> None:
-    known = process(*(variable(name, 4.0, shape=shape, tolerance=tolerance)
-                      for name, tolerance in zip(NAMES, (0.10, 0.12, 0.05), strict=True)))
-    predictor = predictor_of(known)
-    sampled = sobol_indices(model_of(predictor), chance=np.random.default_rng(3))
-    first, total = analytic_indices(predictor.polynomial, predictor.coordinates.of_one)
-    assert np.mean(sampled.first, axis=0) == pytest.approx(first, abs=0.003)
-    assert np.mean(sampled.total, axis=0) == pytest.approx(total, abs=0.003)
 
 
 def test_a_line_that_nothing_moves_has_no_drivers() -> None:

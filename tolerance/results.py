@@ -43,6 +43,23 @@ class Prediction:
 
 
 @dataclass(frozen=True, slots=True)
+class Certificate:
+    """Coupons near a limit are solved, not predicted, so that every verdict is the field solver's.
+
+    solved : coupons solved for it.  needed : how many lay within `multiple` standard errors of a limit, `solved`
+    included; above `cap` those are not solved, the line is not `certified`, and the interval of the yield is widened.
+    error : root mean square of the standard errors [ohm] of the prediction there.
+    """
+
+    certified: bool
+    solved: int
+    needed: int
+    cap: int
+    multiple: float
+    error: float
+
+
+@dataclass(frozen=True, slots=True)
 class DirectCheck:
     """The field solver run on `coupons` of the sample itself, against the prediction: differences in ohm."""
 
@@ -79,6 +96,7 @@ class LineResult:
     spread: Spread
     by_limit: YieldByLimit  # the yield were the limits wider or closer
     prediction: Prediction
+    certificate: Certificate
     drawing: Drawing
     direct: DirectCheck | None = None
 
@@ -153,6 +171,7 @@ def _line_row(line: LineResult) -> dict[str, object]:
         **_interval_columns("yield", line.inside), **_interval_columns("below", line.below),
         **_interval_columns("above", line.above), **_interval_columns("cp", line.cp),
         **_interval_columns("cpk", line.cpk), "impossible": line.impossible,
+        "certified": line.certificate.certified, "coupons_solved": line.certificate.solved,
         "solver_runs": line.prediction.solver_runs, "held_out_error_ohm": line.prediction.held_out_error,
     }
 

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
 
 if TYPE_CHECKING:
-    from tolerance.results import DirectCheck, Driver, Interval, LineResult, RunResult
+    from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
 
 PICOSECONDS_PER_MILLIMETRE = 1e9  # of a delay in seconds per metre
 
@@ -74,11 +74,23 @@ def _line(line: LineResult) -> dict[str, object]:
         "impossible": int(line.impossible),
         "solver_runs": int(line.prediction.solver_runs),
         "held_out_error_ohm": float(line.prediction.held_out_error),
+        "certificate": _certificate(line.certificate),
         "drivers": [_driver(driver) for driver in line.drivers],
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
     return values
+
+
+def _certificate(certificate: Certificate) -> dict[str, object]:
+    return {
+        "certified": bool(certificate.certified),
+        "coupons_solved": int(certificate.solved),
+        "coupons_near_limits": int(certificate.needed),
+        "most_coupons": int(certificate.cap),
+        "errors_from_limit": float(certificate.multiple),
+        "error_ohm": float(certificate.error),
+    }
 
 
 def _driver(driver: Driver) -> dict[str, object]:

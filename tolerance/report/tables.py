@@ -141,6 +141,7 @@ LINE_COLUMNS = (
     Column("impossible", "impossible coupons", "", 0),
     Column("kind", "kind"), Column("layer", "layer"), Column("references", "reference planes"),
     Column("solver_runs", "field solver runs", "", 0), Column("degree", "polynomial degree", "", 0),
+    Column("certified", "verdicts"), Column("coupons_solved", "coupons near limits solved", "", 0),
     Column("held_out_error_ohm", "held-out error", "ohm", 4),
     Column("held_out_largest_ohm", "largest held-out error", "ohm", 4),
 )
@@ -202,6 +203,8 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
         **_ends("mean_ohm", line.mean), **_ends("std_ohm", line.deviation), **_ends("yield", line.inside),
         **_ends("below", line.below), **_ends("above", line.above), **_ends("cp", line.cp), **_ends("cpk", line.cpk),
         "impossible": int(line.impossible), "solver_runs": int(line.prediction.solver_runs),
+        "certified": "the solver's" if line.certificate.certified else "predicted",
+        "coupons_solved": int(line.certificate.solved),
         "degree": int(line.prediction.degree), "held_out_error_ohm": float(line.prediction.held_out_error),
         "held_out_largest_ohm": float(line.prediction.held_out_largest),
     }

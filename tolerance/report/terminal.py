@@ -70,6 +70,7 @@ def print_run(result: RunResult, console: Console) -> None:
                   f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
+    _say_certificate(result, console)
     _say_direct(result, console)
     _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
 
@@ -152,6 +153,20 @@ def _say_impossible(result: RunResult, console: Console) -> None:
                       for line in result.lines if line.impossible)
     _say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
                   f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
+
+
+def _say_certificate(result: RunResult, console: Console) -> None:
+    certain = [line.certificate for line in result.lines if line.certificate.certified]
+    if certain:
+        lines = "every line" if len(certain) == len(result.lines) else f"{len(certain)} lines"
+        _say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
+                      f"within {trimmed(certain[0].multiple, 1)} errors of a limit were solved themselves.")
+    for line in result.lines:
+        one = line.certificate
+        if not one.certified:
+            _say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
+                          f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
+                          f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
 
 
 def _say_direct(result: RunResult, console: Console) -> None:

@@ -79,20 +79,31 @@ def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, ai
 
     air : copper alone, every Dk 1.
     """
+    matrix = full_matrix(system, medium, sign=sign, air=air)
+    wanted = np.zeros((*matrix.shape[:2], 1))
+    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
+
+
+def full_matrix(
+    system: System, medium: Medium, *, sign: int, air: bool, kept: list[FloatArray] | None = None,
+) -> FloatArray:
+    """The matrix of all conditions, even (`sign` 1) or odd (-1): (sections, unknowns, unknowns).
+
+    kept : a list that takes the matrix of each far image, before its factor.
+    """
     size = system.copper if air else system.across.shape[1]
     matrix = np.zeros((system.across.shape[0], size, size))
     for factor, own, mirrored in zip(medium.factors, system.own, system.mirrored, strict=True):
         if np.any(factor):
             matrix += factor[:, None, None] * (own[:, :size, :size] + sign * mirrored[:, :size, :size])
     if medium.far is not None:
-        _add_far_images(matrix, system, medium.far, sign, size)
+        _add_far_images(matrix, system, medium.far, sign, size, kept)
     if medium.rest is not None:
         matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
     if not air:
         _turn_into_interface_conditions(matrix, system)
-    wanted = np.zeros((matrix.shape[0], size, 1))
-    wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
+    return matrix
 
 
 def _image_matrices(
@@ -136,27 +147,41 @@ def _kernel(run: FloatArray, rise: FloatArray, normals: Sequence[FloatArray], co
     return square
 
 
-def _add_far_images(matrix: FloatArray, system: System, far: FarImages, sign: int, size: int) -> None:
+def _add_far_images(
+    matrix: FloatArray, system: System, far: FarImages, sign: int, size: int, kept: list[FloatArray] | None,
+) -> None:
     across, height = system.across[:, :size], system.height[:, :size]
     normals = tuple(values[:, :size] for values in system.normals)
+    if kept is not None:
+        kept += [np.empty_like(matrix) for _ in range(far.shifts.shape[1])]
     start = 0
     for source in system.nodes:
         stop = start + source.across.shape[1]
         if start >= size:
             break
-        # a tail's nodes lie further apart than the images lie below it: it needs its finer places
-        source_across, source_height = ((source.fine_across, source.fine_height) if source.edge.tail
-                                        else (source.across, source.height))
+        source_across, source_height = far_places(source)
         total = height[:, :, None] + source_height[:, None, :]
+        runs = [across[:, :, None] - source_across[:, None, :], across[:, :, None] + source_across[:, None, :]]
         block = np.zeros_like(total)
-        for way, side in ((1.0, 1.0), (float(sign), -1.0)):
-            run = across[:, :, None] - side * source_across[:, None, :]
-            for number in range(far.shifts.shape[1]):
-                kernel = _kernel(run, total + far.shifts[:, number, None, None], normals, system.copper)
-                kernel *= (way * far.factors[:, number])[:, None, None]
-                block += kernel
+        for number in range(far.shifts.shape[1]):
+            rise = total + far.shifts[:, number, None, None]
+            kernel = _kernel(runs[0], rise, normals, system.copper)
+            mirrored = _kernel(runs[1], rise, normals, system.copper)
+            kernel += mirrored if sign > 0 else -mirrored
+            if kept is not None:
+                kept[number][:, :, start:stop] = kernel @ source.refine if source.edge.tail else kernel
+            kernel *= far.factors[:, number, None, None]
+            block += kernel
         matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
         start = stop
+
+
+def far_places(source: Nodes) -> tuple[FloatArray, FloatArray]:
+    """Where an edge's charge is seen from by far images: at its nodes.
+
+    A tail's nodes lie further apart than the images lie below it: it needs its finer places.
+    """
+    return (source.fine_across, source.fine_height) if source.edge.tail else (source.across, source.height)
 
 
 def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:

@@ -61,53 +61,92 @@ class Edge:
 
 
 @dataclass(frozen=True, slots=True)
-class Nodes:
-    """An edge with its unknowns: places (sections, unknowns), and the finer places of its quadrature.
+class Places:
+    """Where an edge has its unknowns, and the finer places of its quadrature: arrays (sections, unknowns or fine) [m].
 
-    refine : (fine, unknowns) charges at fine places from the unknown charges.
-    alone  : (sections, unknowns, unknowns) logarithmic potential of the edge on itself; None on dielectric.
-    mirrored : the same of the mirror image of a folded edge, else None.
-    jacobian : (sections, unknowns) quadrature weight in metres: density is charge over it.
-    normal : (x, y) of the unit normal to the left, arrays (sections,).
+    jacobian : quadrature weight in metres: density is charge over it.  length : (sections,), see Edge.
     """
 
-    edge: Edge
     across: FloatArray
     height: FloatArray
     fine_across: FloatArray
     fine_height: FloatArray
+    jacobian: FloatArray
+    length: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Nodes:
+    """An edge with its unknowns.
+
+    refine : (fine, unknowns) charges at fine places from the unknown charges.
+    alone  : (sections, unknowns, unknowns) logarithmic potential of the edge on itself; None on dielectric.
+    mirrored : the same of the mirror image of a folded edge, else None.
+    normal : (x, y) of the unit normal to the left, arrays (sections,).
+    """
+
+    edge: Edge
+    places: Places
     refine: FloatArray
     alone: FloatArray | None
     mirrored: FloatArray | None
-    jacobian: FloatArray
     normal: tuple[FloatArray, FloatArray]
+
+    @property
+    def across(self) -> FloatArray:
+        """x of the unknowns."""
+        return self.places.across
+
+    @property
+    def height(self) -> FloatArray:
+        """y of the unknowns."""
+        return self.places.height
+
+    @property
+    def fine_across(self) -> FloatArray:
+        """x of the quadrature."""
+        return self.places.fine_across
+
+    @property
+    def fine_height(self) -> FloatArray:
+        """y of the quadrature."""
+        return self.places.fine_height
+
+    @property
+    def jacobian(self) -> FloatArray:
+        """See Places."""
+        return self.places.jacobian
+
+
+def edge_places(edge: Edge, *, unknowns: int, fine: int) -> Places:
+    """Places of `edge`; a folded edge gets half of `unknowns` and `fine`, which must be even."""
+    rule, fine_rule = (_rule(edge, count) for count in (unknowns, fine))
+    keep, keep_fine = (slice(unknowns // 2, None), slice(fine // 2, None)) if edge.folded else (slice(None),) * 2
+    length = edge.length
+    stretch = length if edge.tail else 0.5 * length
+    return Places(*_along(edge, length, rule, keep), *_along(edge, length, fine_rule, keep_fine),
+                  stretch[:, None] * (rule.weights * rule.slope)[keep], length)
 
 
 def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
-    """Nodes of `edge`; a folded edge gets half of `unknowns` and `fine`, which must be even."""
-    power = GRADING[edge.role]
-    rule, fine_rule = (_rule(edge, count) for count in (unknowns, fine))
+    """Nodes of `edge`, with what it does to itself; see edge_places."""
+    places = edge_places(edge, unknowns=unknowns, fine=fine)
+    length, power = places.length, GRADING[edge.role]
     keep, keep_fine = (slice(unknowns // 2, None), slice(fine // 2, None)) if edge.folded else (slice(None),) * 2
-    across, height = _places(edge, rule, keep)
-    fine_across, fine_height = _places(edge, fine_rule, keep_fine)
     refine = refinement(unknowns, fine)
     alone: FloatArray | None = None
     mirrored: FloatArray | None = None
     if edge.conducts and edge.tail:
-        alone = ground_self_potential(unknowns) + np.log(edge.length)[:, None, None]
+        alone = ground_self_potential(unknowns) + np.log(length)[:, None, None]
     elif edge.conducts:
-        full = self_potential(unknowns, power) + np.log(0.5 * edge.length)[:, None, None]
+        full = self_potential(unknowns, power) + np.log(0.5 * length)[:, None, None]
         alone = full[:, keep, keep]
         mirrored = full[:, keep, : unknowns // 2][:, :, ::-1] if edge.folded else None
     if edge.folded:
         refine = refine[keep_fine, keep] + refine[keep_fine, : unknowns // 2][:, ::-1]
-    stretch = edge.length if edge.tail else 0.5 * edge.length
-    direction = ((edge.stop[0] - edge.start[0]) / edge.length, (edge.stop[1] - edge.start[1]) / edge.length)
-    return Nodes(
-        edge=edge, across=across, height=height, fine_across=fine_across, fine_height=fine_height, refine=refine,
-        alone=alone, mirrored=mirrored, jacobian=stretch[:, None] * (rule.weights * rule.slope)[keep],
-        normal=(-direction[1], direction[0]),
-    )
+    direction = ((edge.stop[0] - edge.start[0]) / length, (edge.stop[1] - edge.start[1]) / length)
+    return Nodes(edge=edge, places=places, refine=refine, alone=alone, mirrored=mirrored,
+                 normal=(-direction[1], direction[0]))
 
 
 def _rule(edge: Edge, count: int) -> Rule:
@@ -116,10 +155,10 @@ def _rule(edge: Edge, count: int) -> Rule:
     return ground_rule(count) if edge.conducts else tail_rule(count)
 
 
-def _places(edge: Edge, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray]:
+def _along(edge: Edge, length: FloatArray, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray]:
     position = rule.position[keep]
     if edge.tail:
-        across = edge.start[0][:, None] + edge.length[:, None] * position
+        across = edge.start[0][:, None] + length[:, None] * position
         return across, np.broadcast_to(edge.start[1][:, None], across.shape)
     middle = [0.5 * (edge.start[axis] + edge.stop[axis]) for axis in (0, 1)]
     half = [0.5 * (edge.stop[axis] - edge.start[axis]) for axis in (0, 1)]

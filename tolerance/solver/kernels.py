@@ -23,8 +23,10 @@ from tolerance.arrays import FloatArray, read_only
 
 #: Where exp(-k * distance) counts as nought in the spectral rest.
 LAST_EXPONENT = 17.0
-#: Largest error of a reflection (of 1) by far images.
-IMAGE_ERROR = 5e-6
+#: Wavenumbers at which far images are fitted.
+FIT_PLACES = 80
+#: Largest error by far images, of 1 + reflection: what the potential of a charge near the plane goes as.
+IMAGE_ERROR = 1e-4
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,7 +123,7 @@ def image_multiples(stack: FlatStack, body_dk: FloatArray) -> tuple[float, ...]:
     depth_ratio = float(nominal.depth[0] / nominal.thicknesses[0][0])
     if len(nominal.dks) == 1:
         candidates = [(1.0,), (1.0, 2.0), (1.0, 2.0, 3.0), (1.0, 2.0, 3.0, 4.0), (1.0, 2.0, 3.0, 4.0, 6.4),
-                      (1.0, 2.0, 3.0, 4.0, 6.4, 10.2)]
+                      (1.0, 2.0, 3.0, 4.0, 6.4, 10.2), (1.0, 2.0, 3.0, 4.0, 5.5, 8.0, 12.0, 20.0)]
     else:
         candidates = [tuple(step ** np.arange(1 + np.ceil(np.log(12.0 * depth_ratio) / np.log(step))))
                       for step in (1.45, 1.35, 1.25)]
@@ -131,7 +133,7 @@ def image_multiples(stack: FlatStack, body_dk: FloatArray) -> tuple[float, ...]:
     for multiples in candidates:
         images = far_images(nominal, body_dk[:1], multiples=multiples)
         met = np.exp(-wavenumber[0][:, None] * images.shifts[0]) @ images.factors[0]
-        if np.abs(met - wanted[0]).max() < IMAGE_ERROR:
+        if (np.abs(met - wanted[0]) / (1.0 + wanted[0] + nominal.first_reflection(body_dk[:1]))).max() < IMAGE_ERROR:
             break
     return multiples
 
@@ -189,7 +191,8 @@ def spectral_rest(
 @lru_cache(maxsize=64)
 def _image_fit(multiples: tuple[float, ...]) -> tuple[FloatArray, FloatArray]:
     """Wavenumbers (in units of 1 / scale) and the least-squares map from the reflection there to image factors."""
-    wavenumber = np.logspace(-3.0, 1.3, 240) / max(1.0, multiples[-1] / 60.0)
+    wavenumber = np.logspace(-3.0, 1.3, FIT_PLACES) / max(1.0, multiples[-1] / 60.0)
     images = np.exp(-np.outer(wavenumber, multiples))
-    free = images[:, :-1] - images[:, -1:]
-    return read_only(wavenumber), read_only(np.linalg.pinv(free, rcond=1e-13).T)
+    weight = 1.0 / np.minimum(wavenumber, 1.0)  # towards nought the potential goes as 1 + reflection, which vanishes
+    free = (images[:, :-1] - images[:, -1:]) * weight[:, None]
+    return read_only(wavenumber), read_only((np.linalg.pinv(free, rcond=1e-13) * weight).T)

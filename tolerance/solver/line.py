@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, IntArray
 from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
 from tolerance.solver.assembly import charge, near_system
@@ -66,18 +67,22 @@ def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -
         assert isinstance(plan, LayeredPlan)
         return _solve_layered(section, plan, modes)
     assert isinstance(plan, Plan)
-    count = section.count
-    filled = {mode: np.empty(count) for mode in modes}
-    air = {mode: np.empty(count) for mode in modes}
+    filled = {mode: np.empty(section.count) for mode in modes}
+    air = {mode: np.empty(section.count) for mode in modes}
+    for part in batches(section, plan):
+        for mode, (in_medium, in_air) in _solve_batch(section.rows(part), plan, modes).items():
+            filled[mode][part], air[mode][part] = in_medium, in_air
+    return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
+
+
+def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
+    """Rows that are solved together: of one topology, and so few that a matrix of them stays in cache."""
     kinds = topology(section)
     for kind in np.unique(kinds):
         rows = np.flatnonzero(kinds == kind)
         size = _batch_size(section.rows(rows[:1]), plan)
         for start in range(0, rows.size, size):
-            part = rows[start : start + size]
-            for mode, (in_medium, in_air) in _solve_batch(section.rows(part), plan, modes).items():
-                filled[mode][part], air[mode][part] = in_medium, in_air
-    return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
+            yield rows[start : start + size]
 
 
 def _solve_layered(section: LayeredSection, plan: LayeredPlan, modes: tuple[int, ...]) -> dict[int, ModeSolution]:

@@ -63,15 +63,20 @@ def structure(section: Section) -> Structure:
     return _between_flat_plies(section, section.crest_side)
 
 
-def media(parts: Structure, *, multiples: tuple[float, ...], wavenumbers: int) -> tuple[Medium, Medium]:
-    """The media of the section as built and of the same copper in air."""
+def media(
+    parts: Structure, *, multiples: tuple[float, ...], wavenumbers: int, distance: FloatArray | None = None,
+) -> tuple[Medium, Medium]:
+    """The media of the section as built and of the same copper in air.
+
+    distance : (sections,) [m] what sets the wavenumbers between flat plies; absent: the shortest remaining way.
+    """
     one = np.ones_like(parts.body_dk)
     if parts.above is None:
         filled = Medium((one, parts.below.first_reflection(parts.body_dk)),
                         far=far_images(parts.below, parts.body_dk, multiples=multiples))
         return filled, Medium((one, 0.0 * one), far=plane_image(parts.below.depth))
     assert parts.body_thickness is not None
-    distance = shortest_remaining_way(parts)
+    distance = shortest_remaining_way(parts) if distance is None else distance
     result = []
     for below, above, dk in ((parts.below, parts.above, parts.body_dk),
                              (parts.below.in_air(), parts.above.in_air(), one)):

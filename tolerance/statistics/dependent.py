@@ -48,6 +48,7 @@ class _Pairs:
     spare: FloatArray
     groups: list[list[int]]
     base: FloatArray
+    response: FloatArray  # at base
     fresh: FloatArray  # coordinates of the spare normals, which serve where nothing is correlated
     redrawn: dict[tuple[int, int], FloatArray] = field(default_factory=dict)
 
@@ -68,7 +69,7 @@ class _Pairs:
                 mate[:, unknown] = self._given(number, known)
             elif unknown:
                 mate[:, group] = self._given(number, 0)
-        one, other = self.model.response(self.base), self.model.response(mate)
+        one, other = self.response, self.model.response(mate)
         variance = float(np.var(np.concatenate([one, other])))
         if variance <= (1e-12 * float(np.mean(one))) ** 2:
             return 0.0
@@ -126,8 +127,9 @@ def _draw_pairs(model: Model, points: int, chance: np.random.Generator) -> _Pair
     normals = sobol_normals(2 * model.dimensions, points, chance)
     free, spare = normals[:, : model.dimensions], normals[:, model.dimensions :]
     germ = free @ np.linalg.cholesky(model.correlation).T
-    return _Pairs(model, germ, spare, correlated_groups(model.correlation),
-                  base=model.coordinates(germ), fresh=model.coordinates(spare))
+    base = model.coordinates(germ)
+    return _Pairs(model, germ, spare, correlated_groups(model.correlation), base=base, response=model.response(base),
+                  fresh=model.coordinates(spare))
 
 
 def _effects_of_all_sets(pairs: _Pairs) -> FloatArray:
@@ -182,7 +184,7 @@ class _LinearPart:
     @staticmethod
     def of(pairs: _Pairs) -> _LinearPart:
         """The least-squares linear part of the response over the design."""
-        response = pairs.model.response(pairs.base)
+        response = pairs.response
         centred = pairs.germ - np.mean(pairs.germ, axis=0)
         slopes = np.linalg.lstsq(centred, response - np.mean(response))[0]
         together = {position for group in pairs.groups for position in group}

@@ -14,8 +14,7 @@ from tolerance.surrogate.prediction import Predictor
 
 def model_of(predictor: Predictor) -> Model:
     """The predicted impedance [ohm] of one line, as a response of the variables that reach it."""
-    coordinates = predictor.coordinates
-    return Model(coordinates.names, coordinates.of_one, predictor.impedance_at, coordinates.correlation)
+    return Model(predictor.names, lambda _, germ: germ, predictor.impedance_at, predictor.correlation)
 
 
 def rank_drivers(model: Model, *, chance: np.random.Generator, with_shapley: bool) -> tuple[Driver, ...]:

@@ -57,35 +57,42 @@ class Limits:
 
 def judge(
     impedance: FloatArray, possible: BoolArray, limits: tuple[Limits, ...], *,
-    replicates: int, impedance_error: FloatArray | None = None,
+    replicates: int, impedance_error: FloatArray | None = None, verdict_error: FloatArray | None = None,
 ) -> Judgement:
     """Judge impedance [ohm] (lines, coupons); `possible` (lines, coupons): the section exists. Limits: one a line.
 
     Impossible coupons fail, and count neither as below nor as above; their impedances may hold anything.
-    impedance_error : (lines,) [ohm] root mean square error of the impedances; ends of intervals move by the share of
-        coupons that it could carry over a limit. Absent: none.
+    impedance_error : (lines,) [ohm] root mean square error of the impedances; ends of intervals move by it, and by the
+        share of coupons that it could carry over a limit. Absent: none.
+    verdict_error : the same of the impedances near the limits, where they are known better. Absent: impedance_error.
     Raises UnfinishedError where so few coupons of a line are possible that nothing can be said of its impedance.
     """
     errors = np.zeros(len(limits)) if impedance_error is None else impedance_error
+    near = errors if verdict_error is None else verdict_error
     lines: list[LineYield] = []
     every = np.ones((3, impedance.shape[1]), dtype=np.bool_)  # passes; surely passes; perhaps passes
-    for values, exists, limit, error in zip(impedance, possible, limits, errors.tolist(), strict=True):
-        lines.append(judge_line(values, exists, limit, replicates=replicates, impedance_error=error))
-        for verdicts, margin in zip(every, (0.0, -error, error), strict=True):
+    for values, exists, limit, error, doubt in zip(
+        impedance, possible, limits, errors.tolist(), near.tolist(), strict=True,
+    ):
+        lines.append(judge_line(values, exists, limit, replicates=replicates, impedance_error=error,
+                                verdict_error=doubt))
+        for verdicts, margin in zip(every, (0.0, -doubt, doubt), strict=True):
             verdicts &= exists & _between(values, limit.low - margin, limit.high + margin)
     inside = share_interval(every[0], replicates=replicates, surely=every[1], perhaps=every[2])
     return Judgement(tuple(lines), inside, int(np.count_nonzero(~np.all(possible, axis=0))))
 
 
 def judge_line(
-    impedance: FloatArray, possible: BoolArray, limit: Limits, *, replicates: int, impedance_error: float = 0.0
+    impedance: FloatArray, possible: BoolArray, limit: Limits, *, replicates: int, impedance_error: float = 0.0,
+    verdict_error: float | None = None,
 ) -> LineYield:
     """Judge one line: impedance [ohm] and possible, both (coupons,). See `judge`."""
     error = impedance_error
+    doubt = error if verdict_error is None else verdict_error
     mean, deviation = _moments(impedance, possible, replicates)
     fixed = deviation[0] - float(half_interval(deviation[1])) - error <= 0.0
     shares = {
-        name: _share(impedance, possible, low, high, error=error, replicates=replicates)
+        name: _share(impedance, possible, low, high, error=doubt, replicates=replicates)
         for name, low, high in (
             ("inside", limit.low, limit.high),
             ("below", -np.inf, np.nextafter(limit.low, -np.inf)),

@@ -12,53 +12,28 @@ import secrets
 import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass, replace
 from importlib.metadata import version
 from typing import TypeVar
 
 import numpy as np
 from threadpoolctl import threadpool_limits
 
-from tolerance.arrays import BoolArray, FloatArray, IntArray
-from tolerance.errors import UnfinishedError
-from tolerance.process.draws import (
-    REPLICATES,
-    Process,
-    ProcessDraws,
-    columns_moving,
-    draw_process,
-    process_of,
-)
-from tolerance.results import DirectCheck, LineResult, Prediction, Record, RunResult, Spread
+from tolerance.process.draws import REPLICATES, draw_process, process_of
+from tolerance.results import LineResult, Record, RunResult, Spread
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
-from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.yields import Limits, LineYield, histogram, judge
-from tolerance.study.lines import PreparedLine, nominal_impedance, prepare
-from tolerance.surrogate.coordinates import Coordinates
-from tolerance.surrogate.polynomial import HIGHEST_DEGREE, count_runs
-from tolerance.surrogate.prediction import HELD_OUT_RUNS, Predictor, fit_predictor, largest_error_wanted
+from tolerance.study.lines import prepare
+from tolerance.study.predicting import PredictedLine, predict_line
 
 Progress = Callable[[str, int, int], None]
 Task = TypeVar("Task")
 Done = TypeVar("Done")
 PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
-
-
-@dataclass(frozen=True, slots=True)
-class PredictedLine:
-    """A line with the predicted impedance [ohm] of every coupon, nought where its section cannot exist."""
-
-    prepared: PreparedLine
-    predictor: Predictor
-    prediction: Prediction
-    impedance: FloatArray
-    possible: BoolArray
-    direct: DirectCheck | None
 
 
 def run(
@@ -101,6 +76,7 @@ def run(
         sample.impedance, sample.possible,
         tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
         replicates=draws.replicates, impedance_error=sample.error,
+        verdict_error=np.array([line.verdict_error for line in predicted]),
     )
     by_limit, together = yields_by_limit(sample, limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
                                          target_yield=scenario.evaluation.target_yield)
@@ -117,80 +93,6 @@ def run(
         title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock),
-    )
-
-
-def predict_line(
-    prepared: PreparedLine, draws: ProcessDraws, *, chance: np.random.Generator, direct: int = 0,
-) -> PredictedLine:
-    """Fit the line's impedance on solved training sections and predict every coupon."""
-    reaching = properties_that_reach(prepared.surroundings, prepared.line)
-    columns = columns_moving(draws.process, reaching)
-    coordinates = Coordinates(draws.process, columns, prepared.line.width)
-    possible = prepared.section(draws).possible
-    predictor, runs = _fit_line(prepared, coordinates, chance)
-    held_out = _spread_rows(possible, HELD_OUT_RUNS)
-    sample = draws.rows(held_out)
-    root_mean_square, largest = predictor.held_out_errors(sample.germ, prepared.impedance(prepared.section(sample)))
-    impedance = np.where(possible, predictor.impedance(draws.germ), 0.0)
-    checked = _solve_directly(prepared, draws, impedance, possible, direct) if direct else None
-    prediction = Prediction(
-        solver_runs=runs + held_out.size + (checked.coupons if checked else 0),
-        degree=predictor.polynomial.degree, terms=predictor.polynomial.terms,
-        leave_one_out_error=predictor.leave_one_out_error, held_out_error=root_mean_square, held_out_largest=largest,
-    )
-    return PredictedLine(prepared, predictor, prediction, impedance, possible, checked)
-
-
-def _fit_line(
-    prepared: PreparedLine, coordinates: Coordinates, chance: np.random.Generator,
-) -> tuple[Predictor, int]:
-    """The prediction of degree 2, raised to 3 where its leave-one-out error asks for it, and the runs it took."""
-    wanted = largest_error_wanted(
-        target=prepared.line.target, limit=(prepared.high_limit - prepared.line.target) / prepared.line.target)
-    state = chance.bit_generator.state
-    germ, impedance = np.empty((0, len(coordinates.process.variables))), np.empty(0)
-    for degree in range(2, HIGHEST_DEGREE + 1):
-        chance.bit_generator.state = state  # the larger design begins with the smaller one
-        wider = coordinates.training_germs(runs=count_runs(coordinates.dimensions, degree), chance=chance)
-        more_germ, more_impedance = _solve_possible(prepared, coordinates.process, wider[len(germ) :])
-        germ, impedance = np.concatenate([germ, more_germ]), np.concatenate([impedance, more_impedance])
-        predictor = fit_predictor(coordinates, germ, impedance, degree=degree)
-        if predictor.leave_one_out_error <= wanted:
-            break
-    return predictor, impedance.size
-
-
-def _solve_possible(
-    prepared: PreparedLine, process: Process, germ: FloatArray,
-) -> tuple[FloatArray, FloatArray]:
-    """Training germs whose section can exist, and their solved impedances."""
-    section = prepared.section(ProcessDraws(process, germ))
-    rows = np.flatnonzero(section.possible)
-    return germ[rows], prepared.impedance(section.rows(rows))
-
-
-def _spread_rows(possible: BoolArray, count: int) -> IntArray:
-    """Up to `count` rows, evenly spread over the possible ones."""
-    rows = np.flatnonzero(possible)
-    if rows.size == 0:
-        raise UnfinishedError("no coupon has a section that can exist")
-    return rows[np.unique(np.linspace(0, rows.size - 1, min(count, rows.size)).astype(np.int64))]
-
-
-def _solve_directly(
-    prepared: PreparedLine, draws: ProcessDraws, impedance: FloatArray, possible: BoolArray, count: int,
-) -> DirectCheck:
-    rows = _spread_rows(possible, count)
-    solved = prepared.impedance(prepared.section(draws.rows(rows)))
-    difference = np.abs(solved - impedance[rows])
-    inside, predicted = (
-        (values >= prepared.low_limit) & (values <= prepared.high_limit) for values in (solved, impedance[rows]))
-    return DirectCheck(
-        coupons=rows.size, largest=float(difference.max()),
-        root_mean_square=float(np.sqrt(np.mean(difference**2))),
-        verdicts_that_differ=int(np.count_nonzero(inside != predicted)),
-        share_inside_solved=float(inside.mean()), share_inside_predicted=float(predicted.mean()),
     )
 
 
@@ -223,11 +125,10 @@ def _line_result(
     return LineResult(
         name=prepared.line.name, kind=prepared.kind, layer=prepared.line.layer, mode=prepared.mode,
         references=prepared.surroundings.references, target=prepared.line.target,
-        low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=nominal_impedance(prepared),
+        low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=line.nominal,
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
-        spread=Spread(edges, counts), by_limit=by_limit,
-        prediction=replace(line.prediction, solver_runs=line.prediction.solver_runs + 1),
+        spread=Spread(edges, counts), by_limit=by_limit, prediction=line.prediction, certificate=line.certificate,
         drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
     )
 

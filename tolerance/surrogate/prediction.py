@@ -2,67 +2,124 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
-from tolerance.surrogate.coordinates import Coordinates
-from tolerance.surrogate.polynomial import Polynomial, fit
+from tolerance.process.draws import Process, ProcessDraws
+from tolerance.process.values import ProcessValues
+from tolerance.surrogate.coordinates import BoxValues, Coordinates, coordinates_of, small_steps, training_shares
+from tolerance.surrogate.polynomial import Polynomial, Prior, fit
 
-HELD_OUT_RUNS = 32  # coupons solved for the check alone, never used in a fit
-LARGEST_ERROR = 0.01  # [ohm] leave-one-out error above which the degree is raised
-LIMIT_SHARE = 0.002  # of the distance from target to limit, where that asks for less
+BLOCK_ROWS = 8192  # coupons predicted at a time: what they need stays in the cache
+PLACES = 256  # of the box, from which the reach of the coordinates is known
+
+Logarithms = Callable[[ProcessValues], FloatArray]  # process values -> logarithms of dimensions (dimensions, points)
+
+
+@dataclass(frozen=True, slots=True)
+class Seen:
+    """How one line is seen by its prediction.
+
+    columns : of the process's variables that reach the line.
+    logarithms : dimensions of its sections for process values.
+    """
+
+    process: Process
+    columns: tuple[int, ...]
+    logarithms: Logarithms
+    coordinates: Coordinates
+
+    def of(self, values: ProcessValues) -> FloatArray:
+        """Coordinates (points, coordinates) for process values."""
+        return self.coordinates.of(self.logarithms(values))
 
 
 @dataclass(frozen=True, slots=True)
 class Predictor:
-    """Predicts one line's impedance from germs. `level` [ohm]: the geometric mean of the training impedances."""
+    """Predicts one line's impedance. `level` [ohm]: the geometric mean of the training impedances.
 
-    coordinates: Coordinates
+    The process may be another than that of the training runs, as long as its draws stay in their box.
+    """
+
+    seen: Seen
     polynomial: Polynomial
     level: float
 
     @property
-    def leave_one_out_error(self) -> float:
-        """Root mean square error [ohm] over the box of the training runs, which is wider than the draws."""
+    def names(self) -> tuple[str, ...]:
+        """Names of the variables that reach the line."""
+        return tuple(self.seen.process.variables[column].name for column in self.seen.columns)
+
+    @property
+    def correlation(self) -> FloatArray:
+        """Correlation of the germs of these variables, (variables, variables)."""
+        columns = self.seen.columns
+        return np.asarray(self.seen.process.correlation[np.ix_(columns, columns)], dtype=np.float64)
+
+    @property
+    def leave_one_out(self) -> FloatArray:
+        """Error [ohm] at each training run, predicted from the others: (runs,)."""
         return self.polynomial.leave_one_out * self.level
+
+    @property
+    def leave_one_out_in_doubts(self) -> FloatArray:
+        """The same in units of the standard error that the fit itself sees there."""
+        return self.polynomial.leave_one_out / self.polynomial.leave_one_out_doubt
 
     def impedance(self, germ: FloatArray) -> FloatArray:
         """Impedances [ohm] (coupons,) of draws of the whole process, germ (coupons, variables)."""
-        return self.impedance_at(self.coordinates.of_draws(germ))
+        result = np.empty(len(germ))
+        for start in range(0, len(germ), BLOCK_ROWS):
+            rows = slice(start, start + BLOCK_ROWS)
+            result[rows] = self.impedance_of(ProcessDraws(self.seen.process, germ[rows]))
+        return result
 
-    def impedance_at(self, coordinates: FloatArray) -> FloatArray:
-        """Impedances [ohm] (points,) at coordinates (points, dimensions)."""
-        return np.exp(self.polynomial.evaluate(coordinates))
+    def impedance_of(self, values: ProcessValues) -> FloatArray:
+        """Impedances [ohm] (points,) for process values."""
+        return np.exp(self.polynomial.evaluate(self.seen.of(values)))
 
-    def held_out_errors(self, germ: FloatArray, impedance: FloatArray) -> tuple[float, float]:
-        """Root mean square and largest error [ohm] at solved coupons that the fit has not seen.
+    def impedance_at(self, germ: FloatArray) -> FloatArray:
+        """Impedances [ohm] (points,) at germs of the variables that reach the line alone: (points, their number)."""
+        result = np.empty(len(germ))
+        variables = len(self.seen.process.variables)
+        for start in range(0, len(germ), BLOCK_ROWS):
+            rows = slice(start, start + BLOCK_ROWS)
+            whole = np.zeros((len(germ[rows]), variables), order="F")
+            whole[:, self.seen.columns] = germ[rows]
+            result[rows] = self.impedance_of(ProcessDraws(self.seen.process, whole))
+        return result
 
-        germ (coupons, variables); impedance (coupons,) [ohm], as solved.
-        """
-        error = np.abs(self.impedance(germ) - impedance)
-        return float(np.sqrt(np.mean(error**2))), float(np.max(error))
+    def doubt(self, germ: FloatArray) -> FloatArray:
+        """Standard error [ohm] of the predicted impedances, (coupons,), as the fit itself sees it."""
+        at = self.seen.of(ProcessDraws(self.seen.process, germ))
+        return self.polynomial.doubt(at) * np.exp(self.polynomial.evaluate(at))
 
 
 def fit_predictor(
-    coordinates: Coordinates, germ: FloatArray, impedance: FloatArray, *, degree: int
+    seen: Seen, coordinates: FloatArray, impedance: FloatArray, *, prior: Prior | None = None
 ) -> Predictor:
-    """Predictor of `degree` from training runs: germ (runs, variables), impedance (runs,) [ohm].
+    """Predictor from training runs at `coordinates` (runs, coordinates), impedance (runs,) [ohm].
 
+    prior : that of an earlier fit; found anew where absent.
     Raises UnfinishedError where an impedance is not a finite positive number, or as `polynomial.fit` does.
     """
     if not np.all(np.isfinite(impedance) & (impedance > 0.0)):
         raise UnfinishedError("a training run gave an impedance that is not a positive number")
     logarithm = np.log(impedance)
-    polynomial = fit(coordinates.of_draws(germ), logarithm, degree=degree)
-    return Predictor(coordinates, polynomial, float(np.exp(np.mean(logarithm))))
+    polynomial = fit(coordinates, logarithm, prior=prior)
+    return Predictor(seen, polynomial, float(np.exp(np.mean(logarithm))))
 
 
-def largest_error_wanted(*, target: float, limit: float) -> float:
-    """The leave-one-out error [ohm] to stay under: 0.01 ohm, or less for tight limits.
-
-    target [ohm]; limit: half-width of the limits as a share of the target.
-    """
-    return min(LARGEST_ERROR, LIMIT_SHARE * target * limit)
+def see(
+    process: Process, columns: tuple[int, ...], logarithms: Logarithms, *, width: float, chance: np.random.Generator,
+) -> Seen:
+    """How a line with the variables at `columns` is seen; width: the drawn width of the line [m]."""
+    steps, box = (
+        logarithms(BoxValues(process, columns, width, shares))
+        for shares in (small_steps(len(columns)), training_shares(len(columns), runs=PLACES, chance=chance))
+    )
+    return Seen(process, columns, logarithms, coordinates_of(steps, box))

@@ -1,0 +1,99 @@
+"""The dimensions of a section that its impedance depends on, as logarithms: what a prediction is fitted in.
+
+Inputs that act through one dimension are merged here: foil and plating are the thickness of the trace, absent copper
+thickens the ply that fills it, neighbouring plies that always have the same Dk are one ply. Without loss the
+impedance depends on ratios of lengths only, so that the logarithms of lengths are taken off their mean.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from tolerance.arrays import FloatArray
+from tolerance.sections.layered import LayeredSection
+from tolerance.sections.section import Section
+
+SMALLEST_LENGTH = 1e-12  # [m] what a length that is not above nought counts as; such a section is not possible
+SMALLEST_DK = 1e-3
+
+Runs = tuple[tuple[int, ...], ...]  # numbers of neighbouring plies that count as one, outwards or upwards
+
+
+@dataclass(frozen=True, slots=True)
+class Dimensions:
+    """Which plies of a line's sections count as one.
+
+    sides : runs of ply numbers, for each stack of plies of the section.
+    scale_free : the impedance stays where every length is scaled alike (no loss).
+    """
+
+    sides: tuple[Runs, ...]
+    scale_free: bool = True
+
+    def logarithms(self, section: Section | LayeredSection) -> FloatArray:
+        """Logarithms of lengths (off their mean where scale-free), of Dk, and plain ratios: (dimensions, sections)."""
+        lengths, dks = list(_copper_lengths(section)), []
+        for (thicknesses, side_dks), runs in zip(_sides(section), self.sides, strict=True):
+            for run in runs:
+                lengths.append(sum((thicknesses[number] for number in run[1:]), start=thicknesses[run[0]]))
+                dks.append(side_dks[run[0]])
+        if isinstance(section, Section) and section.mask is not None:
+            lengths += [section.mask.on_laminate, section.mask.over_copper]
+            dks.append(section.mask.dk)
+        split, ratios = len(lengths), _ratios(section)
+        result = np.empty((split + len(dks) + len(ratios), section.count))
+        np.log(np.maximum(lengths, SMALLEST_LENGTH), out=result[:split])
+        np.log(np.maximum(dks, SMALLEST_DK), out=result[split : split + len(dks)])
+        if self.scale_free:
+            result[:split] -= np.mean(result[:split], axis=0)
+        for row, ratio in enumerate(ratios, start=split + len(dks)):
+            result[row] = ratio
+        return result
+
+
+def dimensions_like(section: Section | LayeredSection, *, scale_free: bool = True) -> Dimensions:
+    """The dimensions of sections like those of a batch in which everything that varies does so."""
+    if isinstance(section, LayeredSection):
+        alone = {trace.layer for trace in section.traces}
+        return Dimensions((_equal_neighbours(section.dks, alone),), scale_free)
+    return Dimensions(tuple(_equal_neighbours(dks, set()) for _, dks in _sides(section)), scale_free)
+
+
+def _copper_lengths(section: Section | LayeredSection) -> list[FloatArray]:
+    if isinstance(section, LayeredSection):
+        return [length for trace in section.traces
+                for length in (trace.foot_width, trace.crest_width, trace.thickness)]
+    lengths = [section.foot_width, section.crest_width, section.thickness]
+    return lengths + [space for space in (section.gap, section.ground_gap) if space is not None]
+
+
+def _ratios(section: Section | LayeredSection) -> list[FloatArray]:
+    """How far the traces of a broadside pair lie apart sideways, over the foot; it may be nought and change sign."""
+    if not isinstance(section, LayeredSection):
+        return []
+    first = section.traces[0]
+    foot = np.maximum(first.foot_width, SMALLEST_LENGTH)
+    return [(trace.centre - first.centre) / foot for trace in section.traces[1:]]
+
+
+def _sides(section: Section | LayeredSection) -> list[tuple[Sequence[FloatArray], Sequence[FloatArray]]]:
+    """Thicknesses and Dk of each stack of plies."""
+    if isinstance(section, LayeredSection):
+        return [(section.thicknesses, section.dks)]
+    return [([ply.thickness for ply in side], [ply.dk for ply in side])
+            for side in (section.foot_side, section.crest_side)]
+
+
+def _equal_neighbours(dks: Sequence[FloatArray], alone: set[int]) -> Runs:
+    """Numbers of plies in runs of equal Dk; those in `alone` (they hold a trace) stay by themselves."""
+    runs: list[list[int]] = []
+    for number, dk in enumerate(dks):
+        before = runs[-1][-1] if runs else None
+        if before is not None and not {number, before} & alone and np.array_equal(dk, dks[before]):
+            runs[-1].append(number)
+        else:
+            runs.append([number])
+    return tuple(tuple(run) for run in runs)
