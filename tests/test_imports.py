@@ -26,7 +26,8 @@ ROWS: list[list[str]] = [
     ["formulas"],
     ["surrogate"],
     ["statistics"],
-    ["nominal", "results"],
+    ["decisions"],
+    ["nominal", "results", "decided"],
     ["study"],
     ["report"],
     ["command"],
@@ -40,6 +41,7 @@ FORBIDDEN = {
     "formulas": {"scenario", "process", "units", "solver"},
     "surrogate": {"solver", "sections", "formulas"},
     "statistics": {"solver", "sections", "formulas", "scenario"},
+    "decisions": {"solver", "sections", "formulas", "scenario", "surrogate", "units"},
     "report": {"solver", "surrogate", "process"},
 }
 

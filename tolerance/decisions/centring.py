@@ -14,16 +14,17 @@ import numpy as np
 from scipy.optimize import brentq, minimize_scalar
 from scipy.special import log_ndtr, logsumexp, ndtr
 
-from tolerance.arrays import FloatArray
-from tolerance.decisions.board import Board, LineModel
+from tolerance.arrays import BoolArray, FloatArray
+from tolerance.decisions.board import LineModel
 from tolerance.decisions.interpolation import Path, path_of
 from tolerance.process.changes import laws_of, moved, with_laws
 from tolerance.statistics.estimates import Interval, interval_of
 
 PLACES = 5
-SMOOTHING = 0.15  # deviations of ln Z by which each coupon is spread out
-SCAN = 33  # places looked at before the best is refined
-SEARCH_COUPONS = 8192  # of the sample, for the search of the best place alone
+SMOOTHING = 0.05  # deviations of ln Z by which each coupon is spread out
+FAR = 6.0  # of these spreads inside the limits a coupon adds nothing to what fails
+NEAREST = 256  # coupons nearest to their limits, which always count
+SCAN = 17  # places looked at before the best is refined
 FINEST = 1e-9  # [m] to which places are found
 
 
@@ -52,18 +53,13 @@ def path_of_moves(
         line.process, {name: moved(law, by, nominal=nominal) for name, law in laws.items()}))
 
 
-def centre_of(paths: Sequence[Path], board: Board) -> Centre:
+def centre_of(paths: Sequence[Path]) -> Centre:
     """The best place of one line, or of several that move together: then that of the line that fails most.
 
     `on_target` is only told of one line.
     """
-    step = max(board.coupons // SEARCH_COUPONS, 1)
-    thin = [path.rows(slice(None, None, step)) for path in paths]
     low, high = float(paths[0].places[0]), float(paths[0].places[-1])
-
-    def failing(place: float) -> float:
-        return max(_log_failing(path, place) for path in thin)
-
+    failing = log_failing_at(paths)
     scan = np.linspace(low, high, SCAN)
     heights = [failing(float(place)) for place in scan]
     lowest = int(np.argmin(heights))
@@ -86,8 +82,9 @@ def log_failing_at(paths: Sequence[Path]) -> Callable[[float], float]:
     return lambda place: max(_log_failing(path, place) for path in paths)
 
 
-def impedance_centred(impedance: FloatArray, possible: FloatArray | None, line: LineModel, *, error: float,
-                      lot_coupons: int | None) -> FloatArray:
+def chance_when_centred(
+    impedance: FloatArray, possible: BoolArray, line: LineModel, *, error: float, lot_coupons: int | None,
+) -> FloatArray:
     """Chance (coupons,) that a coupon passes when the fabricator brings each lot's median to the target.
 
     impedance [ohm] (coupons,).  error : standard deviation of the logarithm of what is left of a lot's offset.
@@ -102,7 +99,7 @@ def impedance_centred(impedance: FloatArray, possible: FloatArray | None, line: 
         chance = ((left >= low) & (left <= high)).astype(np.float64)
     else:
         chance = ndtr((high - left) / error) - ndtr((low - left) / error)
-    return np.asarray(chance if possible is None else chance * possible, dtype=np.float64)
+    return np.asarray(chance * possible, dtype=np.float64)
 
 
 def mean_chance(chance: FloatArray, replicates: int) -> Interval:
@@ -129,8 +126,9 @@ def _on_target(path: Path) -> float | None:
 
 def _log_failing(path: Path, place: float) -> float:
     """ln of the share that fails, each ln Z spread out by a normal."""
-    logarithm = np.log(path.impedance(place))
+    logarithm = path.at(place)
     scale = SMOOTHING * max(float(np.std(logarithm)), 1e-6)
-    low, high = np.log(path.line.limits.low), np.log(path.line.limits.high)
-    below, above = log_ndtr((low - logarithm) / scale), log_ndtr((logarithm - high) / scale)
-    return float(logsumexp(np.concatenate([below, above])) - np.log(logarithm.size))
+    room = np.minimum(logarithm - np.log(path.line.limits.low), np.log(path.line.limits.high) - logarithm)
+    nearest = min(NEAREST, room.size) - 1
+    near = room[room <= max(FAR * scale, float(np.partition(room, nearest)[nearest]))]
+    return float(logsumexp(log_ndtr(-near / scale)) - np.log(room.size))

@@ -73,7 +73,7 @@ class _Search:
             self._put(Chosen(tuple(number for number, taken in enumerate(prefix) if taken), cost, reached))
 
     def _beaten(self, cost: float, size: int, value: float) -> bool:
-        """Whether a set on the front costs no more and reaches as much (or, where equal in both, has no more offers)."""
+        """Whether a set on the front costs no more and reaches as much, and where equal in both has no more offers."""
         place = bisect_right(self.front, cost, key=lambda each: each.cost) - 1
         if place < 0 or self.front[place].value < value:
             return False

@@ -30,22 +30,30 @@ class Path:
     logarithm: FloatArray
     possible: BoolArray | None
 
+    def at(self, place: float) -> FloatArray:
+        """ln of the impedance in ohm (coupons,) at a place between the first and the last."""
+        return np.asarray(lagrange_weights(self.places, place) @ self.logarithm, dtype=np.float64)
+
     def impedance(self, place: float) -> FloatArray:
-        """Impedances [ohm] (coupons,) at a place between the first and the last."""
-        return np.exp(lagrange_weights(self.places, place) @ self.logarithm)
+        """The same in ohm."""
+        return np.exp(self.at(place))
+
+    def passes(self, place: float) -> BoolArray:
+        """Which coupons pass there, without regard to the prediction's error."""
+        logarithm, limits = self.at(place), self.line.limits
+        inside = (logarithm >= np.log(limits.low)) & (logarithm <= np.log(limits.high))
+        return inside if self.possible is None else inside & self._possible_at(self.possible, place)
 
     def sides(self, place: float) -> Side:
         """Verdicts at a place. Between two places only what is possible at both counts as possible."""
         if self.possible is None:
             return sides_of(self.impedance(place), None, self.line)
+        return sides_of(self.impedance(place), self._possible_at(self.possible, place), self.line)
+
+    def _possible_at(self, possible: BoolArray, place: float) -> BoolArray:
         around = {int(np.searchsorted(self.places, place, side="right")) - 1,
                   int(np.searchsorted(self.places, place, side="left"))}
-        return sides_of(self.impedance(place), np.all(self.possible[sorted(around)], axis=0), self.line)
-
-    def rows(self, index: slice) -> Path:
-        """The same of fewer coupons."""
-        possible = None if self.possible is None else self.possible[:, index]
-        return Path(self.line, self.places, np.ascontiguousarray(self.logarithm[:, index]), possible)
+        return np.asarray(np.all(possible[sorted(around)], axis=0), dtype=np.bool_)
 
 
 def path_of(line: LineModel, germ: FloatArray, places: FloatArray, process_at: Callable[[float], Process]) -> Path:

@@ -46,7 +46,10 @@ class OfferYields:
     _relevant: list[tuple[int, ...]] = field(default_factory=list)
 
     def __post_init__(self) -> None:
-        self._passes, self._shares, self._best = ([{} for _ in self.board.lines] for _ in range(3))
+        for _ in self.board.lines:
+            self._passes.append({})
+            self._shares.append({})
+            self._best.append({})
         self._relevant = [relevant(line, self.offers) for line in self.board.lines]
 
     def value(self, chosen: Prefix) -> float:

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
@@ -14,10 +15,11 @@ from tolerance.arrays import FloatArray, read_only
 from tolerance.decisions.board import Aim, Board, Side, aimed, every
 from tolerance.decisions.interpolation import Path, path_of
 from tolerance.process.changes import laws_of, scaled, with_laws
+from tolerance.process.draws import Process
 from tolerance.statistics.estimates import Interval
 
 FACTORS = (0.0, 0.5, 1.0, 1.5, 2.0)  # of the half-width: where impedances are predicted anew; between, interpolated
-CURVE = tuple(np.linspace(0.0, 2.0, 21).tolist())
+CURVE = tuple(step / 10.0 for step in range(21))
 BISECTIONS = 20  # the factor is then known to a millionth
 
 
@@ -69,7 +71,8 @@ class Alone:
 
     def yields(self, factor: float) -> tuple[list[float], float]:
         """Yield of each line and of all together."""
-        passes = [side[0] for side in self.sides(factor)]
+        passes = [self.paths[number].passes(factor) if number in self.paths and factor != 1.0 else side[0]
+                  for number, side in enumerate(self.base)]
         together = np.logical_and.reduce(passes)
         return [float(np.mean(each)) for each in passes], float(np.mean(together))
 
@@ -93,11 +96,14 @@ def alone(board: Board, base: tuple[Side, ...], names: frozenset[str]) -> Alone:
     factors = np.array(FACTORS)
     paths = {}
     for number, line in enumerate(board.lines):
-        laws = {name: law for name, law in laws_of(line.process).items() if name in names}
-        if laws:
-            paths[number] = path_of(line, board.germ, factors, lambda factor, line=line, laws=laws: with_laws(
-                line.process, {name: scaled(law, factor) for name, law in laws.items()}))
+        if names & set(laws_of(line.process)):
+            paths[number] = path_of(line, board.germ, factors, partial(scaled_process, line.process, names))
     return Alone(board, base, paths)
+
+
+def scaled_process(process: Process, names: frozenset[str], factor: float) -> Process:
+    """The process with the half-widths of the properties `names` times `factor`."""
+    return with_laws(process, {name: scaled(law, factor) for name, law in laws_of(process).items() if name in names})
 
 
 def tightening(one: Alone, name: str, *, aim: Aim, target_yield: float) -> Tightening:

@@ -35,7 +35,7 @@ def with_laws(process: Process, laws: Mapping[str, Law]) -> Process:
 
 
 def with_variable(process: Process, each: Property) -> Process:
-    """The process with one more variable, in the last column: a property that does not vary, so that it can be moved."""
+    """The process with one more variable in the last column: a property that stands still, so that it can be moved."""
     still = Law("normal", each.nominal, tolerance=Amount(0.0, relative=False))
     correlation = np.eye(len(process.variables) + 1)
     correlation[:-1, :-1] = process.correlation
@@ -105,13 +105,14 @@ def moved(law: Law, by: float, *, nominal: bool) -> Law:
     Where the nominal moves, a relative tolerance is of the new one; else (an etch that stands for the drawn width)
     amounts are to be absolute.
     """
-    ends = {} if law.low is None or law.high is None else {"low": law.low + by, "high": law.high + by}
+    if law.low is not None and law.high is not None:
+        law = replace(law, low=law.low + by, high=law.high + by)
     if nominal:
-        return replace(law, nominal=law.nominal + by, **ends)
+        return replace(law, nominal=law.nominal + by)
     shift = by + (0.0 if law.shift is None else law.shift.of(law.nominal))
     if law.cpk is not None:  # what the move adds is no shift of the process
         law = replace(law, cpk=None, sigmas=half_width_of(law) / law.deviation(reference=law.nominal))
-    return replace(law, shift=Amount(shift, relative=False), **ends)
+    return replace(law, shift=Amount(shift, relative=False))
 
 
 def _anchor(law: Law) -> float:

@@ -33,7 +33,6 @@ NOT_YET = (
     NotYet("evaluation", ("frequency",)),
     NotYet("variations", ("level",), _beyond_coupon),
     NotYet("variations", ("shape",), lambda shape: shape == "measured"),
-    NotYet("offers"),
     NotYet("test"),
 )
 

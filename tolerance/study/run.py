@@ -63,7 +63,7 @@ def run(
         return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1], direct=direct)
 
     tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
-    predicted = _on_all_cores(predict, tasks, "solving lines", tell)
+    predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
     sample = LimitSample(
@@ -86,7 +86,7 @@ def run(
         return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
-    drivers = _on_all_cores(rank, ranking, "ranking drivers", tell)
+    drivers = on_all_cores(rank, ranking, "ranking drivers", tell)
     results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, by_limit, strict=True)]
     clock.lap("drivers")
     return RunResult(
@@ -96,7 +96,7 @@ def run(
     )
 
 
-def _on_all_cores(
+def on_all_cores(
     work: Callable[[Task], Done], tasks: Sequence[Task], step: str, tell: Progress,
 ) -> list[Done]:
     """`work` done on every task, in threads, results in the order of the tasks.
