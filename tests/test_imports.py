@@ -30,6 +30,8 @@ ROWS: list[list[str]] = [
     ["nominal", "results", "decided"],
     ["study"],
     ["report"],
+    ["screen"],
+    ["decision_commands"],
     ["command"],
     ["__main__"],
 ]

@@ -12,12 +12,21 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from tolerance.scenario import load as load
+    from tolerance.study.center import center as center
     from tolerance.study.check import check as check
+    from tolerance.study.decide import compare as compare
+    from tolerance.study.decide import promise as promise
+    from tolerance.study.decide import tighten as tighten
+    from tolerance.study.note import note as note
     from tolerance.study.run import run as run
 
-__all__ = ["check", "load", "run"]
+__all__ = ["center", "check", "compare", "load", "note", "promise", "run", "tighten"]
 
-_HOMES = {"load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run"}
+_HOMES = {
+    "load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run",
+    "tighten": "tolerance.study.decide", "promise": "tolerance.study.decide", "compare": "tolerance.study.decide",
+    "center": "tolerance.study.center", "note": "tolerance.study.note",
+}
 
 
 def __getattr__(name: str) -> Any:

@@ -8,17 +8,15 @@ from __future__ import annotations
 import argparse
 import os
 import sys
-import time
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
+from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
+from tolerance.screen import console, progress
 
 if TYPE_CHECKING:
-    from rich.console import Console
-
     from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
@@ -26,7 +24,6 @@ if TYPE_CHECKING:
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
-SECONDS_BEFORE_PROGRESS = 1.0
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
@@ -65,6 +62,7 @@ def _parser() -> argparse.ArgumentParser:
                        help="set published formulas beside the field solver, as a second opinion")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
+    add_decisions(commands, _check_numbers)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -101,7 +99,7 @@ def _check(options: argparse.Namespace) -> int:
     elif not options.quiet:
         from tolerance.report.terminal import print_check
 
-        print_check(result, scenario.report.lengths, _console())
+        print_check(result, scenario.report.lengths, console())
     return 0
 
 
@@ -112,7 +110,7 @@ def _run(options: argparse.Namespace) -> int:
     _check_numbers(options)
     from tolerance.study.run import run
 
-    with _progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
@@ -123,10 +121,10 @@ def _run(options: argparse.Namespace) -> int:
     elif not options.quiet:
         from tolerance.report.terminal import print_run
 
-        console = _console()
-        print_run(result, console)
+        screen = console()
+        print_run(result, screen)
         if written:
-            console.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 
@@ -174,33 +172,3 @@ def _schema(_: argparse.Namespace) -> int:
 
     print(json.dumps(json_schema(), indent=2))
     return 0
-
-
-def _console() -> Console:
-    from rich.console import Console
-
-    return Console(width=None if sys.stdout.isatty() else 80)
-
-
-@contextmanager
-def _progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
-    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal."""
-    if quiet or not sys.stderr.isatty():
-        yield lambda _step, _done, _total: None
-        return
-    from rich.console import Console
-    from rich.progress import Progress
-
-    bar = Progress(console=Console(stderr=True), transient=True)
-    task = bar.add_task("starting")
-    start = time.monotonic()
-
-    def tell(step: str, done: int, total: int) -> None:
-        if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
-            bar.start()
-        bar.update(task, description=step, completed=done, total=total)
-
-    try:
-        yield tell
-    finally:
-        bar.stop()
