@@ -74,10 +74,10 @@ class Board:
     def difference(self, new: Side, old: Side) -> Interval:
         """Yield of `new` less that of `old` on the same coupons; the interval allows for the prediction's error."""
         gained, lost = new[0] & ~old[0], old[0] & ~new[0]
-        up, down = np.count_nonzero(gained), np.count_nonzero(lost)
+        up, down = int(np.count_nonzero(gained)), int(np.count_nonzero(lost))
         value = (up - down) / self.coupons
         if up + down < RARE * (1 if self.cluster == 1 else 2):
-            few, many = (binomial_interval(int(count), self.coupons) for count in (up, down))
+            few, many = (binomial_interval(count, self.coupons) for count in (up, down))
             interval = Interval(value, few.low - many.high, few.high - many.low) if up + down else \
                 Interval(0.0, -few.high, few.high)
         else:

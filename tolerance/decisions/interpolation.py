@@ -41,7 +41,7 @@ class Path:
     def passes(self, place: float) -> BoolArray:
         """Which coupons pass there, without regard to the prediction's error."""
         logarithm, limits = self.at(place), self.line.limits
-        inside = (logarithm >= np.log(limits.low)) & (logarithm <= np.log(limits.high))
+        inside = np.asarray((logarithm >= np.log(limits.low)) & (logarithm <= np.log(limits.high)), dtype=np.bool_)
         return inside if self.possible is None else inside & self._possible_at(self.possible, place)
 
     def sides(self, place: float) -> Side:

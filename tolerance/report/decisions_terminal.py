@@ -148,7 +148,7 @@ def print_compare(result: CompareResult, console: Console) -> None:
 
 def note_text(result: NoteResult, lengths: LengthUnit) -> str:
     """The note for the drawing as plain text: the impedance table, then numbered notes, 80 columns wide."""
-    heads = ("line", "target [ohm]", "limit", "layer, references", f"width, gap [{lengths}]")
+    heads = ("line", "target [ohm]", "limits [ohm]", "layer, planes", f"width, gap [{lengths}]")
     rows = [heads, *(_note_row(one, lengths) for one in result.lines)]
     widths = [max(len(row[column]) for row in rows) for column in range(len(heads))]
     over = sum(widths) + 2 * (len(heads) - 1) - NOTE_WIDTH
@@ -169,7 +169,7 @@ def _note_row(one: NotedLine, lengths: LengthUnit) -> tuple[str, str, str, str, 
     drawn = [one.width, *(gap for gap in (one.gap, one.ground_gap) if gap is not None)]
     sizes = ", ".join(length_text(each, lengths).removesuffix(f" {lengths}") for each in drawn)
     sizes += " to ground" if one.ground_gap is not None else ""
-    limits = f"{trimmed(100.0 * one.limit, 2)} % ({trimmed(one.low_limit, 2)} to {trimmed(one.high_limit, 2)})"
+    limits = f"{trimmed(100.0 * one.limit, 2)} %, {trimmed(one.low_limit, 2)} to {trimmed(one.high_limit, 2)}"
     place = place_words(layer, one.references, joint=", ").replace("references ", "").replace("reference ", "")
     return one.name, f"{trimmed(one.target, 2)}{mode}", limits, place, sizes
 
@@ -226,8 +226,8 @@ def _say_center(result: CenterResult, lengths: LengthUnit, console: Console) -> 
                      f"{length_text(moved.nominal, lengths)}.", style="bold")
     centred = result.centred.together
     say(console, f"All lines together: {share_text(result.now.together)} as drawn, {share_text(centred)} "
-                 f"{share_range_text(centred)} centred, both built to print; {share_text(result.to_impedance)} built to "
-                 "impedance, where the fabricator brings each lot to the targets and leaves "
+                 f"{share_range_text(centred)} centred, both built to print; {share_text(result.to_impedance)} built "
+                 "to impedance, where the fabricator brings each lot to the targets and leaves "
                  f"{percent(result.centring_error, 1)} (one deviation) over.")
     ends = [f'"{one.name}"' for one in result.lines if one.at_end]
     if ends or (moved is not None and moved.at_end):
@@ -242,7 +242,7 @@ def _way_words(basis: Basis, way: Way) -> str:
     verdict = "reaches" if way.reaches else "MISSES"
     name, lowest = basis.lowest(way.yields)
     bought = f" ({', '.join(way.offers)})" if way.offers else ""
-    cost = "" if way.cost is None else f" for {way.cost:g}{bought}"
+    cost = "" if way.cost is None or not way.offers else f" for {way.cost:g}{bought}"
     return (f"{head}: {verdict} the target{cost}; all lines {share_text(way.yields.together)}, "
             f'lowest "{shorten(name, 24)}" {share_text(lowest, target=basis.target_yield)}.')
 
