@@ -1,6 +1,6 @@
 """The board as decisions see it: each line's impedance for any process, on one sample of germs.
 
-Every change is judged on the same germs, so that the difference of two yields is far better known than either.
+Every change is judged on the same germs, so that coupons whose verdict stays do not blur the difference.
 """
 
 from __future__ import annotations
