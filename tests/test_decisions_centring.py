@@ -11,7 +11,6 @@ from scipy.special import ndtr
 from tests.decision_examples import COUPONS, board_of, lognormals, normal_etch, product_line, sum_line
 from tolerance.decisions.centring import centre_of, chance_when_centred, log_failing_at, on_grid, path_of_moves
 from tolerance.decisions.comparing import is_real, on_common_columns
-from tolerance.statistics.estimates import Interval
 
 SLOPE = -0.4e6  # ohm per metre: a micrometre wider is 0.4 ohm less
 DEVIATION = 0.4 * 4.0  # ohm
@@ -113,8 +112,9 @@ def test_a_difference_on_the_same_draws_holds_the_exact_one_and_tells_what_is_re
     assert difference.low < exact(0.14) - exact(0.15) < difference.high
     assert is_real(difference)
     assert not is_real(board.difference(before, before))
-    assert board.difference(before, before) == Interval(0.0, pytest.approx(-5.6e-5, rel=0.05), pytest.approx(
-        5.6e-5, rel=0.05))  # 3.69 in 65536: Clopper and Pearson for none, exact
+    none = board.difference(before, before)
+    bound = 1.0 - 0.025 ** (1.0 / COUPONS)  # Clopper and Pearson 1934 for none of so many
+    assert (none.value, none.low, none.high) == pytest.approx((0.0, -bound, bound), rel=1e-6)
 
 
 def test_one_seed_gives_two_processes_the_same_draws_by_name() -> None:

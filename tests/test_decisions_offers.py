@@ -22,8 +22,8 @@ PROBLEMS = 200
 
 def brute_force(costs: list[float], value: Callable[[Prefix], float]) -> list[tuple[float, float]]:
     """Costs and values of the sets that nothing beats, by rising cost."""
-    points = sorted(((math.fsum(cost for cost, taken in zip(costs, chosen, strict=True) if taken), -value(chosen))
-                     for chosen in itertools.product((False, True), repeat=len(costs))))
+    points = sorted((math.fsum(cost for cost, taken in zip(costs, chosen, strict=True) if taken), -value(chosen))
+                     for chosen in itertools.product((False, True), repeat=len(costs)))
     front: list[tuple[float, float]] = []
     for cost, negative in points:
         if not front or -negative > front[-1][1]:

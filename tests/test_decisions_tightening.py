@@ -94,8 +94,8 @@ def test_all_lines_together_are_judged_by_their_common_normal() -> None:
     one = tightening(alone(both, base_sides(both), frozenset({"P2.dk"})), "P2.dk", aim="together", target_yield=0.99)
     own, shared = 0.8 * math.log(1.2) / 3.0, 0.5 * math.log1p(0.5 * 0.2) / 3.0
     covariance = [[own**2 + shared**2, shared**2], [shared**2, own**2 + shared**2]]
-    exact = multivariate_normal.cdf(np.full(2, math.log(1.1)), cov=covariance,
-                                    lower_limit=np.full(2, math.log(0.9)))
+    exact = float(multivariate_normal.cdf(np.full(2, math.log(1.1)), cov=covariance,
+                                          lower_limit=np.full(2, math.log(0.9))))
     assert abs(one.halved.together.value - exact) < 3.0 * standard_error(exact)
 
 

@@ -19,6 +19,7 @@ PACKAGE = Path(__file__).parents[1] / "tolerance"
 ROWS: list[list[str]] = [
     ["errors", "arrays"],
     ["units", "laminate"],
+    ["measurements"],
     ["scenario"],
     ["process"],
     ["sections"],

@@ -23,7 +23,7 @@ TEXT = README.read_text(encoding="utf-8")
 #: key or table that may be refused as not acted on yet -> the README's words for it
 REFUSAL_WORDS = {
     "frequency": "`frequency`", "partner": "`partner`",
-    "ground_gap": "`ground_gap`", "level": "`level`", "shape": "measured shapes",
+    "ground_gap": "`ground_gap`", "level": "`level`",
     "offers": "`[[offers]]`", "test": "`[test]`",
 }
 
@@ -64,7 +64,7 @@ def test_the_scenario_example_is_a_scenario_near_its_targets(example: Path) -> N
 
 def test_every_property_shape_and_refusal_is_told() -> None:
     shapes = json_schema()["$defs"]["variations"]["properties"]["shape"]["enum"]
-    assert {shape for shape in shapes if f"| `{shape}`" not in TEXT} == {"measured"}
+    assert {shape for shape in shapes if f"| `{shape}`" not in TEXT} == set()
     for names in VARYING.values():
         assert all(f"`{name}`" in TEXT for name in names if name not in ("df",))
     refused = TEXT.split("**Not acted on yet.**")[1].split("\n\n")[0]

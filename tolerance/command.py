@@ -107,7 +107,7 @@ def _run(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
     scenario = load(options.file)
-    _check_numbers(options)
+    _check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 
     with progress(quiet=options.quiet) as tell:
@@ -128,12 +128,15 @@ def _run(options: argparse.Namespace) -> int:
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 
-def _check_numbers(options: argparse.Namespace) -> None:
-    """The same ranges as in a scenario. Raises InputError."""
+def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
+    """The same ranges as in a scenario; whole lots need no power of two of coupons. Raises InputError."""
     from tolerance.scenario.tables import LARGEST_COUPONS, SMALLEST_COUPONS
 
     coupons, seed, direct = options.coupons, options.seed, options.direct
-    if coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
+    if in_lots and coupons is not None:
+        if not 1 <= coupons <= LARGEST_COUPONS:
+            raise InputError(f"--coupons {coupons}: must be from 1 to {LARGEST_COUPONS}")
+    elif coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
         raise InputError(f"--coupons {coupons}: must be a power of two from {SMALLEST_COUPONS} to {LARGEST_COUPONS}")
     if seed is not None and seed < 0:
         raise InputError(f"--seed {seed}: must be 0 or more")

@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from tolerance.scenario import Scenario
 
 FARTHEST_REACH = 0.5
-NumberCheck = Callable[[argparse.Namespace], None]
+NumberCheck = Callable[..., None]
 
 
 def add_decisions(commands: Any, check_numbers: NumberCheck) -> None:
@@ -172,7 +172,7 @@ def _load(options: argparse.Namespace, file: Path) -> Scenario:
     from tolerance.scenario import load
 
     scenario = load(file)
-    options.check_numbers(options)
+    options.check_numbers(options, in_lots=scenario.has_levels)
     return scenario
 
 

@@ -14,9 +14,16 @@ from tolerance.arrays import FloatArray, IntArray
 from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
+from tolerance.statistics.acceptance import LotAcceptance as LotAcceptance
+from tolerance.statistics.acceptance import OperatingPoint as OperatingPoint
 from tolerance.statistics.against_limit import YieldByLimit as YieldByLimit
 from tolerance.statistics.estimates import Driver as Driver
 from tolerance.statistics.estimates import Interval as Interval
+from tolerance.statistics.levels import LevelDriver as LevelDriver
+from tolerance.statistics.levels import NestedYield as NestedYield
+from tolerance.statistics.levels import VarianceShares as VarianceShares
+from tolerance.statistics.reading import GuardBand as GuardBand
+from tolerance.statistics.reading import ReadingRisks as ReadingRisks
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -99,11 +106,46 @@ class LineResult:
     certificate: Certificate
     drawing: Drawing
     direct: DirectCheck | None = None
+    nested: NestedYield | None = None  # panels and lots; with levels only
+    variance: VarianceShares | None = None  # by level; with levels only
+    reading: ReadingRisks | None = None  # with a [test] of readings only
 
     @property
     def limit(self) -> float:
         """Half-width of the limits, a share of the target."""
         return self.high_limit / self.target - 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class MeasuredInput:
+    """What was taken from a table of readings for one property; lengths in metres, shares as fractions.
+
+    method : "smoothed" quantiles, or the fitted shape "normal" or "lognormal".  p_normal, p_lognormal : of the tests
+    of fit (Shapiro and Wilk); None where there is none.
+    """
+
+    of: str
+    file: str
+    sheet: str | None
+    column: str
+    readings: int
+    method: str
+    mean: float
+    deviation: float
+    lowest: float
+    highest: float
+    measure: str  # length | copper length | share | number
+    p_normal: float | None
+    p_lognormal: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class Lots:
+    """How coupons were drawn as whole lots."""
+
+    lots: int
+    panels_per_lot: int
+    coupons_per_panel: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -132,6 +174,11 @@ class RunResult:
     lines: tuple[LineResult, ...]
     by_limit: YieldByLimit  # of all lines together, were all held to the same limit
     record: Record
+    lots: Lots | None = None  # with levels only
+    nested: NestedYield | None = None  # of all lines together
+    reading: ReadingRisks | None = None  # of all lines together
+    acceptance: LotAcceptance | None = None  # with sample_size only
+    measured: tuple[MeasuredInput, ...] = ()
 
     @property
     def misses_target(self) -> bool:

@@ -14,7 +14,7 @@ import numpy as np
 from tolerance.arrays import BoolArray, FloatArray, read_only
 from tolerance.process.draws import Process
 from tolerance.statistics.estimates import Interval, half_interval
-from tolerance.statistics.yields import RARE, Limits, binomial_interval, share_interval
+from tolerance.statistics.yields import Limits, binomial_interval, crowding_of_rare, share_interval
 
 Aim = Literal["each line", "together"]  # which yield must reach the target: of every line, or of all of a coupon
 Side = tuple[BoolArray, BoolArray, BoolArray]  # passes; surely passes; perhaps passes
@@ -69,17 +69,18 @@ class Board:
     def share(self, sides: Side) -> Interval:
         """The share of coupons that pass, with its interval."""
         passes, surely, perhaps = sides
-        return share_interval(passes, replicates=self.replicates, surely=surely, perhaps=perhaps)
+        return share_interval(passes, replicates=self.replicates, surely=surely, perhaps=perhaps,
+                              cluster=self.cluster)
 
     def difference(self, new: Side, old: Side) -> Interval:
         """Yield of `new` less that of `old` on the same coupons; the interval allows for the prediction's error."""
         gained, lost = new[0] & ~old[0], old[0] & ~new[0]
         up, down = int(np.count_nonzero(gained)), int(np.count_nonzero(lost))
         value = (up - down) / self.coupons
-        if up + down < RARE * (1 if self.cluster == 1 else 2):
-            few, many = (binomial_interval(count, self.coupons) for count in (up, down))
-            interval = Interval(value, few.low - many.high, few.high - many.low) if up + down else \
-                Interval(0.0, -few.high, few.high)
+        crowding = crowding_of_rare(gained | lost, self.cluster)
+        if crowding is not None:
+            few, many = (binomial_interval(count / crowding, self.coupons / crowding) for count in (up, down))
+            interval = Interval(value, few.low - many.high, few.high - many.low)
         else:
             each = np.mean((gained.astype(float) - lost).reshape(self.replicates, -1), axis=1)
             half = float(half_interval(each))

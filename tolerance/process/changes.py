@@ -13,7 +13,7 @@ import numpy as np
 
 from tolerance.arrays import read_only
 from tolerance.process.draws import ETCH, Process, Variable
-from tolerance.process.laws import Law
+from tolerance.process.laws import DEFAULT_SIGMAS, Law
 from tolerance.scenario.amounts import Amount as Amount
 from tolerance.scenario.properties import Property
 
@@ -64,7 +64,9 @@ def in_absolute_terms(law: Law, *, reference: float) -> Law:
 
 
 def half_width_of(law: Law) -> float:
-    """Half-width [SI] of a law whose percentages are of its nominal."""
+    """Half-width [SI] of a law whose percentages are of its nominal; of a measured one three deviations."""
+    if law.measured is not None:
+        return DEFAULT_SIGMAS * law.measured.deviation
     return law.half_width(reference=law.nominal)
 
 
@@ -73,6 +75,8 @@ def scaled(law: Law, factor: float) -> Law:
 
     The peak stays where it is; of a uniform law the middle does.
     """
+    if law.measured is not None:
+        return replace(law, measured=law.measured.spread_by(factor))
     if law.low is not None and law.high is not None:
         anchor = _anchor(law)
         return replace(law, low=anchor - factor * (anchor - law.low), high=anchor + factor * (law.high - anchor))
@@ -94,7 +98,7 @@ def narrowed(law: Law, half_width: float) -> Law:
     own = half_width_of(law)
     if half_width >= own:
         return law
-    if law.low is not None and law.high is not None:
+    if law.measured is not None or (law.low is not None and law.high is not None):
         return scaled(law, half_width / own)
     return replace(law, tolerance=Amount(half_width, relative=False))
 
@@ -107,7 +111,7 @@ def moved(law: Law, by: float, *, nominal: bool) -> Law:
     """
     if law.low is not None and law.high is not None:
         law = replace(law, low=law.low + by, high=law.high + by)
-    if nominal:
+    if nominal and law.measured is None:
         return replace(law, nominal=law.nominal + by)
     shift = by + (0.0 if law.shift is None else law.shift.of(law.nominal))
     if law.cpk is not None:  # what the move adds is no shift of the process

@@ -15,14 +15,17 @@ from scipy.stats import qmc
 
 from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.process.laws import Law, quantile
-from tolerance.process.resin import RESIN_MAKES, Resin, resins_of, with_causes
+from tolerance.process.measured import measured_law
+from tolerance.process.resin import Resin, resins_of, through_resin, with_causes
 from tolerance.process.values import nominals_of
+from tolerance.scenario.amounts import LevelShares
 from tolerance.scenario.properties import Property, members
 from tolerance.scenario.tables import Scenario, Variation
 
 REPLICATES = 8  # independent scrambles of a sample; with 16 intervals of the yield are no narrower, of the mean wider
 SOBOL_BITS = 30  # of a coordinate; points are moved to the middle of their cell, so that 0 never occurs
 ETCH = "etch"  # the property whose percentages are of each line's own width
+COUPON_ALONE = LevelShares(coupon=1.0)  # every coupon has a draw of its own
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,10 +33,12 @@ class Variable:
     """One standard draw and the properties it moves, each by a law of its own.
 
     The name is that of the property, or, of properties drawn together, those of all joined by " + ".
+    levels : which shares of the variance of the draw lots, panels and coupons carry.
     """
 
     name: str
     members: tuple[tuple[Property, Law], ...]
+    levels: LevelShares = COUPON_ALONE
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,17 +59,36 @@ class Process:
     def is_correlated(self) -> bool:
         return len(correlated_groups(self.correlation)) > 0
 
+    @property
+    def has_levels(self) -> bool:
+        """Whether coupons of one lot or panel share anything."""
+        return any(variable.levels.lot > 0.0 or variable.levels.panel > 0.0 for variable in self.variables)
+
+
+@dataclass(frozen=True, slots=True)
+class LotSize:
+    """What a lot is made of."""
+
+    panels: int = 20
+    coupons_per_panel: int = 2
+
+    @property
+    def coupons(self) -> int:
+        return self.panels * self.coupons_per_panel
+
 
 @dataclass(frozen=True, slots=True)
 class ProcessDraws:
     """A sample of the process: germ (coupons, variables), standard normals with their correlation.
 
-    Coupons of one replicate stand together: replicate r has the rows from r * coupons / replicates on.
+    Coupons of one replicate stand together: replicate r has the rows from r * coupons / replicates on. Where coupons
+    were drawn as whole `lots`, those of a lot stand together, and in it those of a panel.
     """
 
     process: Process
     germ: FloatArray
     replicates: int = 1
+    lots: LotSize | None = None
 
     @property
     def coupons(self) -> int:
@@ -72,10 +96,7 @@ class ProcessDraws:
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name` ("P1.thickness"), shape (coupons,). KeyError where there is none."""
-        layer, _, item = name.rpartition(".")
-        resin = self.process.resins.get(layer) if item in RESIN_MAKES else None
-        drawn = self._drawn(name)
-        return drawn if resin is None else resin.applied(item, drawn, self._drawn)
+        return through_resin(name, self._drawn, self.process.resins)
 
     def _drawn(self, name: str) -> FloatArray:
         """Values of the property by its own law alone, (coupons,)."""
@@ -160,12 +181,17 @@ def draw_process(
         raise ValueError(f"{coupons} coupons do not make {replicates} replicates of a power of two")
     for replicate, generator in enumerate(chance.spawn(replicates)):
         germ[replicate * block : (replicate + 1) * block] = sobol_normals(len(process.variables), block, generator)
-    for group in correlated_groups(process.correlation):
-        root = np.linalg.cholesky(process.correlation[np.ix_(group, group)])
+    correlate(germ, process.correlation)
+    return ProcessDraws(process, read_only(germ), replicates)
+
+
+def correlate(germ: FloatArray, correlation: FloatArray) -> None:
+    """Give independent germs (coupons, variables) their correlation, in place."""
+    for group in correlated_groups(correlation):
+        root = np.linalg.cholesky(correlation[np.ix_(group, group)])
         free = germ[:, group]
         for row, column in enumerate(group):
             germ[:, column] = sum(root[row, other] * free[:, other] for other in range(row + 1))
-    return ProcessDraws(process, read_only(germ), replicates)
 
 
 def sobol_normals(dimensions: int, points: int, chance: np.random.Generator) -> FloatArray:
@@ -187,15 +213,16 @@ def sobol_uniforms(dimensions: int, points: int, chance: np.random.Generator) ->
 
 def _variables(scenario: Scenario, variation: Variation) -> tuple[Variable, ...]:
     """One variable for each property that the variation names, or one for all where they are drawn together."""
-    pairs = tuple((each, _law(each, variation)) for each in members(scenario, variation))
+    pairs = tuple((each, _law(scenario, each, variation)) for each in members(scenario, variation))
     if variation.together:
-        return (Variable(" + ".join(each.name for each, _ in pairs), pairs),)
-    return tuple(Variable(each.name, ((each, law),)) for each, law in pairs)
+        return (Variable(" + ".join(each.name for each, _ in pairs), pairs, variation.level),)
+    return tuple(Variable(each.name, ((each, law),), variation.level) for each, law in pairs)
 
 
-def _law(each: Property, variation: Variation) -> Law:
+def _law(scenario: Scenario, each: Property, variation: Variation) -> Law:
     if variation.shape == "measured":
-        raise ValueError("a measured law is not acted on yet, and is refused when the scenario is checked")
+        readings = np.array(scenario.readings_of(each.name).values)
+        return Law("measured", each.nominal, shift=variation.shift, measured=measured_law(readings))
     return Law(
         variation.shape, each.nominal, tolerance=variation.tolerance, shift=variation.shift,
         sigmas=variation.sigmas, cpk=variation.cpk, low=variation.low, high=variation.high,

@@ -14,9 +14,10 @@ from scipy.special import erf, ndtr, ndtri
 
 from tolerance.arrays import FloatArray
 from tolerance.errors import InputError
+from tolerance.process.measured import MeasuredLaw
 from tolerance.scenario.amounts import Amount
 
-Shape = Literal["normal", "truncated_normal", "uniform", "triangular", "lognormal"]
+Shape = Literal["normal", "truncated_normal", "uniform", "triangular", "lognormal", "measured"]
 
 DEFAULT_SIGMAS = 3.0  # deviations that a half-width covers unless the scenario says otherwise
 FARTHEST_CUT = 30.0  # deviations from the mean to the nearer end beyond which tail masses lose their digits
@@ -27,7 +28,8 @@ class Law:
     """How one property varies about its nominal; SI. What a field means: the scenario format, section Shapes.
 
     `tolerance` (half-width) and `shift` are amounts, absolute or a share of a reference; `low` and `high`, where
-    given, stand instead of `tolerance`. Of `sigmas` and `cpk` at most one is given.
+    given, stand instead of `tolerance`. Of `sigmas` and `cpk` at most one is given. A measured law has its readings
+    and of the rest at most a shift.
     """
 
     shape: Shape
@@ -38,6 +40,7 @@ class Law:
     cpk: float | None = None
     low: float | None = None
     high: float | None = None
+    measured: MeasuredLaw | None = None  # with the shape "measured", which takes its spread from readings
 
     def centre(self, *, reference: float) -> float:
         """Nominal + shift [SI]; percentages are of `reference`."""
@@ -81,6 +84,8 @@ def quantile(law: Law, germ: FloatArray, *, reference: float) -> FloatArray:
     reference : what a percentage is of [SI]: the nominal, or for an etch the line's own width.
     Rises with the germ; -inf and inf give the ends of a bounded shape. Raises InputError as `Law.deviation` does.
     """
+    if law.measured is not None:
+        return law.measured.value(germ) + _size(law.shift, reference)
     centre = law.centre(reference=reference)
     if law.shape == "normal":
         return np.asarray(centre + law.deviation(reference=reference) * germ, dtype=np.float64)

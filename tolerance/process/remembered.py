@@ -11,7 +11,7 @@ from tolerance.arrays import FloatArray
 from tolerance.process.draws import ETCH, Process, ProcessDraws
 from tolerance.process.laws import Law, quantile
 
-Key = tuple[int, Law, float]  # column of the germ, law, and what its percentages are of
+Key = tuple[int, int, float]  # column of the germ, identity of the law, and what its percentages are of
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,15 +30,18 @@ class RememberedDraws(ProcessDraws):
         return np.zeros(self.coupons) if found is None else self._value(*found, width)
 
     def _value(self, column: int, law: Law, reference: float) -> FloatArray:
-        known = self.known.get((column, law, reference))
+        known = self.known.get((column, id(law), reference))
         return quantile(law, self.germ[:, column], reference=reference) if known is None else known
 
 
 def remember(process: Process, germ: FloatArray, *, width: float) -> dict[Key, FloatArray]:
-    """What every law of the process comes to for germ (coupons, variables), etch for lines `width` [m] wide."""
+    """What every law of the process comes to for germ (coupons, variables), etch for lines `width` [m] wide.
+
+    Holds as long as the process does: laws are told apart by their identity.
+    """
     known: dict[Key, FloatArray] = {}
     for column, variable in enumerate(process.variables):
         for member, law in variable.members:
             reference = width if member.property == ETCH else process.nominals[member.name]
-            known[column, law, reference] = quantile(law, germ[:, column], reference=reference)
+            known[column, id(law), reference] = quantile(law, germ[:, column], reference=reference)
     return known

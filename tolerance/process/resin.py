@@ -63,6 +63,13 @@ def resins_of(scenario: Scenario, nominals: Mapping[str, float]) -> Mapping[str,
     return MappingProxyType(found)
 
 
+def through_resin(name: str, drawn: Callable[[str], FloatArray], resins: Mapping[str, Resin]) -> FloatArray:
+    """Values [SI] (coupons,) of a property from own draws of any, `drawn`: with what the resin of its layer does."""
+    layer, _, item = name.rpartition(".")
+    resin = resins.get(layer) if item in RESIN_MAKES else None
+    return drawn(name) if resin is None else resin.applied(item, drawn(name), drawn)
+
+
 def with_causes(names: Collection[str], resins: Mapping[str, Resin]) -> frozenset[str]:
     """The names, and with a ply's thickness or Dk all that moves it through the resin."""
     more = (cause for layer, resin in resins.items() for item in RESIN_MAKES if f"{layer}.{item}" in names

@@ -19,6 +19,7 @@ from tolerance.report.files import file_names, put_in_place
 from tolerance.report.letters import fitted, missing_glyphs_allowed, width_of
 from tolerance.report.limit_plot import draw_yield_by_limit
 from tolerance.report.looks import FAIL, FAINT_INK, INK, LARGE, MEDIUM, PAGE, RESOLUTION, SMALL, TITLE, our_looks
+from tolerance.report.lots_plot import draw_acceptance, draw_levels, draw_lots
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section
 from tolerance.report.tables import MISSES, verdict
@@ -28,12 +29,13 @@ if TYPE_CHECKING:
     from collections.abc import Callable
     from pathlib import Path
 
-    from tolerance.results import Interval, LineResult, RunResult
+    from tolerance.results import Interval, LineResult, NestedYield, RunResult
 
 FigureFormat = Literal["png", "svg", "pdf"]
 
-OVERVIEW, AGAINST_LIMIT = "all-lines", "yield-against-limit"
+OVERVIEW, AGAINST_LIMIT, LOTS = "all-lines", "yield-against-limit", "lots"
 ROW_OF_OVERVIEW = 0.5  # inches at least
+ROW_OF_LEVELS = 0.8
 PANELS_ABREAST = 4  # of the page of yields against the limit
 ROW_OF_PANELS = 2.45  # inches
 LIMITS_REMARK = ("Yield were the limits wider or closer, with its 95 % interval. Dashed, dot: limit and yield as they "
@@ -68,8 +70,10 @@ def _pages(result: RunResult, lengths: LengthUnit) -> list[tuple[str, Callable[[
     def page_of(line: LineResult) -> Callable[[], Figure]:
         return lambda: line_page(line, target_yield=result.target_yield, lengths=lengths)
 
-    names = file_names([line.name for line in result.lines], taken=(OVERVIEW, AGAINST_LIMIT))
-    return [(OVERVIEW, lambda: overview_page(result)), (AGAINST_LIMIT, lambda: limits_page(result)),
+    names = file_names([line.name for line in result.lines], taken=(OVERVIEW, AGAINST_LIMIT, LOTS))
+    nested = result.nested
+    of_lots = [] if nested is None else [(LOTS, lambda: lots_page(result, nested))]
+    return [(OVERVIEW, lambda: overview_page(result)), (AGAINST_LIMIT, lambda: limits_page(result)), *of_lots,
             *((name, page_of(line)) for name, line in zip(names, result.lines, strict=True))]
 
 
@@ -117,6 +121,26 @@ def limits_page(result: RunResult) -> Figure:
                 axes.set_ylabel("")
             if number + abreast < panels:
                 axes.set_xlabel("")
+    return page
+
+
+def lots_page(result: RunResult, nested: NestedYield) -> Figure:
+    """Levels and lots on a page: variance by level, lots by their failing coupons, and their acceptance by sample."""
+    height = max(PAGE[1], 2.0 + ROW_OF_LEVELS * len(result.lines))
+    lots = result.lots
+    drawn = "" if lots is None else (f"{lots.lots:,} lots of {lots.panels_per_lot} panels with "
+                                     f"{lots.coupons_per_panel} coupons, seed {result.seed}")
+    with our_looks():
+        page = _page(height)
+        _head(page, result.title, drawn, result.inside, result.target_yield, judged=False)
+        low, reach = 0.65 / height, 1.0 - 2.05 / height
+        draw_levels(page.add_axes((0.03, low, 0.42, reach)), result.lines)
+        if result.acceptance is None:
+            draw_lots(page.add_axes((0.53, low, 0.445, reach)), nested)
+        else:
+            each = 0.5 * (reach - 1.35 / height)
+            draw_lots(page.add_axes((0.53, low + reach - each, 0.445, each)), nested)
+            draw_acceptance(page.add_axes((0.53, low, 0.445, each)), result.acceptance)
     return page
 
 

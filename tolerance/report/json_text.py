@@ -11,6 +11,8 @@ import math
 from typing import TYPE_CHECKING
 
 from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
+from tolerance.report.lots_json import line_keys, run_keys
+from tolerance.report.measured import measured_object
 
 if TYPE_CHECKING:
     from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
@@ -30,6 +32,7 @@ def check_json(result: CheckResult) -> str:
 
 def run_object(result: RunResult) -> dict[str, object]:
     """The same as plain Python values."""
+    measured = {"measured": [measured_object(one) for one in result.measured]} if result.measured else {}
     return {
         "title": result.title,
         "seed": int(result.seed),
@@ -38,6 +41,8 @@ def run_object(result: RunResult) -> dict[str, object]:
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),
         "solver_runs": int(result.record.solver_runs),
+        **run_keys(result),
+        **measured,
         "lines": [_line(line) for line in result.lines],
     }
 
@@ -79,7 +84,7 @@ def _line(line: LineResult) -> dict[str, object]:
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
-    return values
+    return values | line_keys(line)
 
 
 def _certificate(certificate: Certificate) -> dict[str, object]:

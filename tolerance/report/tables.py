@@ -188,9 +188,9 @@ def driver_table(result: RunResult) -> Table:
     for line in result.lines:
         for rank, driver in enumerate(line.drivers, start=1):
             shapley = {column.key: None for column in SHAPLEY_COLUMNS} if driver.shapley is None \
-                else _ends("shapley", driver.shapley)
+                else ends("shapley", driver.shapley)
             rows.append({"line": line.name, "rank": rank, "variable": driver.variable,
-                         **_ends("total", driver.total), **_ends("first", driver.first), **shapley})
+                         **ends("total", driver.total), **ends("first", driver.first), **shapley})
     return Table.of(DRIVER_COLUMNS + (SHAPLEY_COLUMNS if with_shapley else ()), rows)
 
 
@@ -200,8 +200,8 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
         "layer": line.layer, "references": ", ".join(line.references),
         "target_ohm": float(line.target), "low_limit_ohm": float(line.low_limit),
         "high_limit_ohm": float(line.high_limit), "nominal_ohm": float(line.nominal),
-        **_ends("mean_ohm", line.mean), **_ends("std_ohm", line.deviation), **_ends("yield", line.inside),
-        **_ends("below", line.below), **_ends("above", line.above), **_ends("cp", line.cp), **_ends("cpk", line.cpk),
+        **ends("mean_ohm", line.mean), **ends("std_ohm", line.deviation), **ends("yield", line.inside),
+        **ends("below", line.below), **ends("above", line.above), **ends("cp", line.cp), **ends("cpk", line.cpk),
         "impossible": int(line.impossible), "solver_runs": int(line.prediction.solver_runs),
         "certified": "the solver's" if line.certificate.certified else "predicted",
         "coupons_solved": int(line.certificate.solved),
@@ -210,7 +210,8 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
     }
 
 
-def _ends(name: str, interval: Interval | None) -> Mapping[str, Cell]:
+def ends(name: str, interval: Interval | None) -> Mapping[str, Cell]:
+    """Cells of an estimate and the ends of its interval, empty where there is none or one is not finite."""
     if interval is None:
         return {name: None, f"{name}_low": None, f"{name}_high": None}
     values = {name: interval.value, f"{name}_low": interval.low, f"{name}_high": interval.high}

@@ -13,6 +13,8 @@ from rich.padding import Padding
 from rich.table import Table as RichTable
 from rich.text import Text
 
+from tolerance.report.lots_tables import Heading, sentences, text_tables
+from tolerance.report.measured import intervals_of, measured_sentences
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
 from tolerance.report.wording import (
     CAUTION,
@@ -66,13 +68,19 @@ def print_run(result: RunResult, console: Console) -> None:
     _say(console, result.title, style="bold")
     _print_table(console, _yield_table(result, _name_width(console)))
     _print_table(console, _driver_table(result, _name_width(console), console.width))
+    for columns, rows in text_tables(result, _name_width(console)):
+        _print_table(console, _filled_table(columns, rows))
     _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
                   f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
     _say_direct(result, console)
-    _say(console, f"In brackets: 95 % intervals of the computation alone. {CAUTION}")
+    for sentence in sentences(result):
+        _say(console, sentence)
+    for sentence in measured_sentences(result):
+        _say(console, sentence)
+    _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
 def _name_width(console: Console) -> int:
@@ -84,6 +92,13 @@ def _table(*columns: tuple[str, bool]) -> RichTable:
     table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
     for heading, is_text in columns:
         table.add_column(Text(heading), justify="left" if is_text else "right", no_wrap=not is_text, overflow="fold")
+    return table
+
+
+def _filled_table(columns: tuple[Heading, ...], rows: list[tuple[str, ...]]) -> RichTable:
+    table = _table(*columns)
+    for cells in rows:
+        table.add_row(*(Text(cell) for cell in cells))
     return table
 
 

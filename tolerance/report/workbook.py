@@ -15,6 +15,14 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.files import put_in_place
+from tolerance.report.lots_tables import (
+    acceptance_sentence,
+    acceptance_table,
+    level_driver_table,
+    level_table,
+    reading_table,
+)
+from tolerance.report.measured import intervals_of, measured_table
 from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
@@ -51,6 +59,7 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     for name, table in (
         ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
         ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
+        *([("Measured data", measured_table(result, scenario.report.lengths))] if result.measured else []),
         *([("Correlations", correlation_table(scenario))] if scenario.correlations else []),
     ):
         sheet = book.create_sheet(name)
@@ -58,8 +67,26 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
         sheet.freeze_panes = "B2"
         if name == "Lines":
             _mark_misses(sheet, table, top=1, target_yield=result.target_yield)
+    _lot_sheets(book, result)
     _record_sheet(book.create_sheet("Run record"), result)
     return book
+
+
+def _lot_sheets(book: Workbook, result: RunResult) -> None:
+    """Lots and the impedance test, where there is anything to say of them."""
+    tables = []
+    if result.nested is not None:
+        tables += [("Levels", level_table(result)), ("Levels by variable", level_driver_table(result))]
+    if result.reading is not None:
+        tables.append(("Test", reading_table(result)))
+    for name, table in tables:
+        sheet = book.create_sheet(name)
+        _write_table(sheet, table, top=1)
+        sheet.freeze_panes = "B2"
+    if result.acceptance is not None:
+        sheet = book.create_sheet("Lot acceptance")
+        _put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
+        _write_table(sheet, acceptance_table(result.acceptance), top=3)
 
 
 def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> None:
@@ -75,7 +102,7 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
          _font(12, bold=bool(missing), color=FAIL if missing else INK)),
         (f"{len(scenario.layers)} layers, {length_text(board_thickness(scenario), scenario.report.lengths)} thick"
          + (f"; {result.impossible:,} coupons cannot exist and count as failing" if result.impossible else "")
-         + ". Yield: share of coupons inside the limits; its ends: 95 % interval of the computation alone.",
+         + f". Yield: share of coupons inside the limits; its ends: 95 % interval of {intervals_of(result)}.",
          _font()),
         (CAUTION, _font(italic=True)),
     ]

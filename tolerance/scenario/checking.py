@@ -13,8 +13,9 @@ from tolerance.scenario.entry_rules import entry_findings
 from tolerance.scenario.mixtures import with_mixtures
 from tolerance.scenario.not_yet import not_yet_findings
 from tolerance.scenario.reading import document_of, read_document
+from tolerance.scenario.readings import readings_of
 from tolerance.scenario.stack_rules import stack_findings
-from tolerance.scenario.tables import FORMAT, Report, Scenario
+from tolerance.scenario.tables import FORMAT, Readings, Report, Scenario
 from tolerance.scenario.variation_rules import variation_findings
 
 
@@ -39,11 +40,12 @@ def _checked(document: Document, findings: Sequence[Finding], *, source: str) ->
     drafts, found = draft_tables(document)
     drafts, unmixed = with_mixtures(drafts)
     problems = [*findings, *found, *unmixed, *entry_findings(drafts)]
-    problems += [*stack_findings(drafts), *variation_findings(drafts)]
+    readings, unread = readings_of(drafts)
+    problems += [*stack_findings(drafts), *variation_findings(drafts), *unread]
     problems = _one_for_each_key([*problems, *not_yet_findings(document)])
     if problems:
         raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])
-    return _scenario(document, drafts, source)
+    return _scenario(document, drafts, readings, source)
 
 
 def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
@@ -56,14 +58,14 @@ def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
     return list(kept.values())
 
 
-def _scenario(document: Document, drafts: Drafts, source: str) -> Scenario:
+def _scenario(document: Document, drafts: Drafts, readings: tuple[Readings, ...], source: str) -> Scenario:
     return Scenario(
         format=FORMAT, title=document.top.values["title"], evaluation=_model(drafts.evaluation),
         layers=_models(drafts.layers), lines=_models(drafts.lines), variations=_models(drafts.variations),
         correlations=_models(drafts.correlations), offers=_models(drafts.offers),
         test=None if drafts.test is None else _model(drafts.test),
         report=_model(drafts.report) if "report" in document.tables else Report(),
-        source=source, text=document.text,
+        readings=readings, source=source, text=document.text,
     )
 
 

@@ -10,6 +10,7 @@ from tolerance.scenario.documents import Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
 from tolerance.scenario.keys import Range, listed
 from tolerance.scenario.mixtures import RESIN_KEYS
+from tolerance.scenario.readings import file_finding
 from tolerance.scenario.tables import (
     COPPER,
     CORE,
@@ -167,16 +168,10 @@ def _measured(draft: Draft[Variation]) -> Iterator[Finding]:
     for key in ("tolerance", *_ENDS, "sigmas", "cpk"):
         if key in entry.values:
             yield entry.finding(key, 'not with shape = "measured", which takes its spread from the file')
-    file = draft.text("file")
-    if file is None:
-        return
-    place = entry.places["file"]
-    suffix = file.rpartition(".")[2].lower()
-    if suffix not in ("csv", "xlsx"):
-        yield entry.finding("file", "must be the path of a CSV or XLSX file: its name must end in .csv or .xlsx")
-    elif not (place.folder / file).is_file():
-        yield entry.finding("file", f"must be the path of a file, from the folder of {place.file}: there is none")
-    if suffix == "csv" and "sheet" in entry.values:
+    wrong = file_finding(draft)
+    if wrong is not None:
+        yield wrong
+    if str(entry.values.get("file")).lower().endswith(".csv") and "sheet" in entry.values:
         yield entry.finding("sheet", "only with an XLSX file")
 
 

@@ -14,10 +14,6 @@ def _given(_value: Any) -> bool:
     return True
 
 
-def _beyond_coupon(level: Any) -> bool:
-    return any(level.get(name) for name in ("lot", "panel")) if isinstance(level, dict) else level != "coupon"
-
-
 class NotYet(NamedTuple):
     """Keys (or, without one, a whole table) that are refused where they stand and `when` holds of the value.
 
@@ -31,9 +27,6 @@ class NotYet(NamedTuple):
 
 NOT_YET = (
     NotYet("evaluation", ("frequency",)),
-    NotYet("variations", ("level",), _beyond_coupon),
-    NotYet("variations", ("shape",), lambda shape: shape == "measured"),
-    NotYet("test"),
 )
 
 _REMOVE: Mapping[bool, str] = MappingProxyType({

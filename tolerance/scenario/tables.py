@@ -6,6 +6,7 @@ Only what one key says by itself is checked here; what keys and tables say toget
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 from typing import Annotated, Literal
 
 from pydantic import BaseModel, ConfigDict, Field
@@ -219,6 +220,17 @@ class Report(Table):
         default="um", description="Unit of lengths in tables and figures; default um")
 
 
+@dataclass(frozen=True, slots=True)
+class Readings:
+    """Measured values of one property, in the order of their rows; SI."""
+
+    of: str  # "P1.thickness"
+    file: str
+    sheet: str | None
+    column: str
+    values: tuple[float, ...]
+
+
 class Scenario(BaseModel):
     """A whole scenario, checked: from here on nobody checks again. Layers stand top to bottom."""
 
@@ -234,6 +246,7 @@ class Scenario(BaseModel):
     offers: tuple[Offer, ...] = ()
     test: ImpedanceTest | None = None
     report: Report = Report()
+    readings: tuple[Readings, ...] = ()  # of measured variations, one for each property
     source: str = ""  # path of the file
     text: str = ""  # the TOML as read, with that of every file it extends
 
@@ -243,6 +256,18 @@ class Scenario(BaseModel):
             if layer.name == name:
                 return layer
         raise KeyError(name)
+
+    def readings_of(self, name: str) -> Readings:
+        """The readings of a property that varies as measured. Raises KeyError where it does not."""
+        for readings in self.readings:
+            if readings.of == name:
+                return readings
+        raise KeyError(name)
+
+    @property
+    def has_levels(self) -> bool:
+        """Whether anything is shared by the coupons of a lot or a panel; then coupons are drawn as whole lots."""
+        return any(each.level.lot > 0.0 or each.level.panel > 0.0 for each in self.variations)
 
     def limit_of(self, line: Line) -> float:
         """Half-width of the line's impedance limits, as a share of the target."""

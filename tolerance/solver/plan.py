@@ -145,7 +145,7 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float, float]]:
 
 def _points(edge: Edge) -> FloatArray:
     """Places along the first section's edge: shape (places, 2) [m]."""
-    steps = np.linspace(0.0, 1.0, 65)[:, None]
+    steps = np.linspace(0.0, 1.0, 33)[:, None]
     start, stop = (np.array([float(end[0][0]), float(end[1][0])]) for end in (edge.start, edge.stop))
     return np.asarray(start + steps * (stop - start))
 

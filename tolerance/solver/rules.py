@@ -18,6 +18,9 @@ from numpy.polynomial import polynomial
 
 from tolerance.arrays import FloatArray, read_only
 
+#: Panels that halve towards a logarithmic singularity; the smallest is 2^-31 of the largest.
+HALVINGS = 32
+
 
 @dataclass(frozen=True, slots=True)
 class Rule:
@@ -72,27 +75,29 @@ def self_potential(count: int, power: int) -> FloatArray:
     """Integral of ln |position(s_i) - position(s')| over the edge for unit charge at node j: shape (count, count).
 
     For an edge of half length `a` the logarithm of `a` is to be added to every entry. Integrated on panels that
-    halve towards the singularity; good to about 1e-13.
+    halve towards the singularity; good to about 1e-10.
     """
-    return _self_potential(graded_rule(count, power), lambda places: _graded_map(places, power)[0])
+    return _self_potential(graded_rule(count, power), lambda places: _graded_map(places, power)[0], symmetric=True)
 
 
 @lru_cache(maxsize=16)
 def ground_self_potential(count: int) -> FloatArray:
     """The same for copper that reaches far out; the logarithm of its scale is to be added to every entry."""
-    return _self_potential(ground_rule(count), lambda places: _ground_map(places)[0])
+    return _self_potential(ground_rule(count), lambda places: _ground_map(places)[0], symmetric=False)
 
 
-def _self_potential(rule: Rule, position: Callable[[FloatArray], FloatArray]) -> FloatArray:
+def _self_potential(rule: Rule, position: Callable[[FloatArray], FloatArray], *, symmetric: bool) -> FloatArray:
     count = rule.nodes.size
-    panel_nodes, panel_weights = np.polynomial.legendre.leggauss(20)
+    panel_nodes, panel_weights = np.polynomial.legendre.leggauss(14 + count // 2)  # exact for the polynomials, and more
     matrix = np.empty((count, count))
-    for row, node in enumerate(rule.nodes):
-        distance, sign, weight = _halving_panels(float(node), panel_nodes, panel_weights)
-        place = node + sign * distance
+    for row in range((count + 1) // 2 if symmetric else count):
+        distance, sign, weight = _halving_panels(float(rule.nodes[row]), panel_nodes, panel_weights)
+        place = rule.nodes[row] + sign * distance
         across = np.abs(position(place) - rule.position[row])
         across = np.where(distance < 1e-6, rule.slope[row] * distance, across)
         matrix[row] = (weight * np.log(across)) @ _interpolation(rule.nodes, place)
+    if symmetric:
+        matrix[count // 2 :] = matrix[: (count + 1) // 2][::-1, ::-1]
     return read_only(matrix / rule.weights)
 
 
@@ -100,7 +105,7 @@ def _halving_panels(node: float, nodes: FloatArray, weights: FloatArray) -> tupl
     """Distances from `node`, their sides (-1 or 1) and weights of a rule refined towards it from both sides."""
     distances, signs, panel_weights = [], [], []
     for side in (-1.0, 1.0):
-        ends = np.append(abs(side - node) * 0.5 ** np.arange(60), 0.0)
+        ends = np.append(abs(side - node) * 0.5 ** np.arange(HALVINGS), 0.0)
         middle, half = 0.5 * (ends[:-1] + ends[1:]), 0.5 * (ends[:-1] - ends[1:])
         distances.append((middle[:, None] + half[:, None] * nodes).ravel())
         panel_weights.append((half[:, None] * weights).ravel())

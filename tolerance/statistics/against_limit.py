@@ -13,7 +13,7 @@ import numpy as np
 
 from tolerance.arrays import BoolArray, FloatArray, IntArray, read_only
 from tolerance.statistics.estimates import Interval, half_interval
-from tolerance.statistics.yields import RARE, binomial_interval
+from tolerance.statistics.yields import RARE, binomial_interval, crowding_of_rare
 
 STEPS = 40  # of a grid of limits, at least
 BEYOND = 2.0  # how far a grid goes, over the widest limit
@@ -42,6 +42,7 @@ class LimitSample:
     target: FloatArray
     error: FloatArray
     replicates: int
+    cluster: int = 1  # coupons of a lot where coupons were drawn as lots
 
 
 def limit_grid(widest: float) -> FloatArray:
@@ -62,22 +63,27 @@ def yields_by_limit(
     ):
         off = np.where(possible, np.abs(impedance / target - 1.0), np.inf)
         views = (off, off + error / target, off - error / target)  # as it is; all doubt against; in favour
-        lines.append(_curve(views, limits, sample.replicates, target_yield))
+        lines.append(_curve(views, limits, sample, target_yield))
         for worst, view in zip(together, views, strict=True):
             np.maximum(worst, view, out=worst)
-    return tuple(lines), _curve(together, limits, sample.replicates, target_yield)
+    return tuple(lines), _curve(together, limits, sample, target_yield)
 
 
-def _curve(views: Sequence[FloatArray], limits: FloatArray, replicates: int, target_yield: float) -> YieldByLimit:
+def _curve(
+    views: Sequence[FloatArray], limits: FloatArray, sample: LimitSample, target_yield: float
+) -> YieldByLimit:
     """The curve of coupons that lie `views` [share of the target] off it, three times (coupons,)."""
+    replicates = sample.replicates
     each, surely, perhaps = (_passing(off, limits, replicates) for off in views)
     coupons, counts = views[0].size, each.sum(axis=0)
     value = counts / coupons
     half = half_interval(each / (coupons // replicates))
     low, high = value - half, value + half
-    for place in np.flatnonzero(np.minimum(counts, coupons - counts) < RARE):
-        rare = binomial_interval(int(counts[place]), coupons)
-        low[place], high[place] = rare.low, rare.high
+    for place in np.flatnonzero(np.minimum(counts, coupons - counts) < RARE * sample.cluster):
+        crowding = crowding_of_rare(views[0] <= limits[place], sample.cluster)
+        if crowding is not None:
+            rare = binomial_interval(counts[place] / crowding, coupons / crowding)
+            low[place], high[place] = rare.low, rare.high
     low -= (counts - surely.sum(axis=0)) / coupons
     high += (perhaps.sum(axis=0) - counts) / coupons
     return YieldByLimit(read_only(limits), read_only(value), read_only(np.maximum(low, 0.0)),

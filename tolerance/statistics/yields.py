@@ -16,7 +16,7 @@ from tolerance.arrays import BoolArray, FloatArray, IntArray
 from tolerance.errors import UnfinishedError
 from tolerance.statistics.estimates import CONFIDENCE, Interval, half_interval
 
-RARE = 20  # coupons: with fewer on one side the binomial interval stands
+RARE = 20  # coupons, or lots with such coupons: with fewer on one side the binomial interval stands
 STILL = 1e-12  # relative range of impedances below which nothing moves them
 FEWEST_POSSIBLE = 2  # coupons of each replicate that must be possible, for a deviation
 
@@ -58,6 +58,7 @@ class Limits:
 def judge(
     impedance: FloatArray, possible: BoolArray, limits: tuple[Limits, ...], *,
     replicates: int, impedance_error: FloatArray | None = None, verdict_error: FloatArray | None = None,
+    cluster: int = 1,
 ) -> Judgement:
     """Judge impedance [ohm] (lines, coupons); `possible` (lines, coupons): the section exists. Limits: one a line.
 
@@ -65,6 +66,7 @@ def judge(
     impedance_error : (lines,) [ohm] root mean square error of the impedances; ends of intervals move by it, and by the
         share of coupons that it could carry over a limit. Absent: none.
     verdict_error : the same of the impedances near the limits, where they are known better. Absent: impedance_error.
+    cluster : coupons that were drawn together, one after another (a lot); 1: each for itself.
     Raises UnfinishedError where so few coupons of a line are possible that nothing can be said of its impedance.
     """
     errors = np.zeros(len(limits)) if impedance_error is None else impedance_error
@@ -75,24 +77,29 @@ def judge(
         impedance, possible, limits, errors.tolist(), near.tolist(), strict=True,
     ):
         lines.append(judge_line(values, exists, limit, replicates=replicates, impedance_error=error,
-                                verdict_error=doubt))
+                                verdict_error=doubt, cluster=cluster))
         for verdicts, margin in zip(every, (0.0, -doubt, doubt), strict=True):
-            verdicts &= exists & _between(values, limit.low - margin, limit.high + margin)
-    inside = share_interval(every[0], replicates=replicates, surely=every[1], perhaps=every[2])
+            verdicts &= passes(values, exists, limit, margin=margin)
+    inside = share_interval(every[0], replicates=replicates, surely=every[1], perhaps=every[2], cluster=cluster)
     return Judgement(tuple(lines), inside, int(np.count_nonzero(~np.all(possible, axis=0))))
+
+
+def passes(impedance: FloatArray, possible: BoolArray, limit: Limits, *, margin: float = 0.0) -> BoolArray:
+    """Verdicts (coupons,) on impedances [ohm] (coupons,), the limits moved out by `margin` [ohm]."""
+    return possible & _between(impedance, limit.low - margin, limit.high + margin)
 
 
 def judge_line(
     impedance: FloatArray, possible: BoolArray, limit: Limits, *, replicates: int, impedance_error: float = 0.0,
-    verdict_error: float | None = None,
+    verdict_error: float | None = None, cluster: int = 1,
 ) -> LineYield:
     """Judge one line: impedance [ohm] and possible, both (coupons,). See `judge`."""
     error = impedance_error
     doubt = error if verdict_error is None else verdict_error
-    mean, deviation = _moments(impedance, possible, replicates)
+    mean, deviation = _moments(impedance, possible, replicates, cluster)
     fixed = deviation[0] - float(half_interval(deviation[1])) - error <= 0.0
     shares = {
-        name: _share(impedance, possible, low, high, error=doubt, replicates=replicates)
+        name: _share(impedance, possible, Limits(low, high), error=doubt, replicates=replicates, cluster=cluster)
         for name, low, high in (
             ("inside", limit.low, limit.high),
             ("below", -np.inf, np.nextafter(limit.low, -np.inf)),
@@ -110,25 +117,30 @@ def judge_line(
 
 
 def _share(
-    impedance: FloatArray, possible: BoolArray, low: float, high: float, *, error: float, replicates: int
+    impedance: FloatArray, possible: BoolArray, between: Limits, *, error: float, replicates: int, cluster: int
 ) -> Interval:
-    """Share of possible coupons from `low` to `high` [ohm], both included."""
-    verdicts, surely, perhaps = (possible & _between(impedance, low - margin, high + margin)
+    """Share of possible coupons in `between` [ohm], both ends included."""
+    verdicts, surely, perhaps = (passes(impedance, possible, between, margin=margin)
                                  for margin in (0.0, -error, error))
-    return share_interval(verdicts, replicates=replicates, surely=surely, perhaps=perhaps)
+    return share_interval(verdicts, replicates=replicates, surely=surely, perhaps=perhaps, cluster=cluster)
 
 
 def share_interval(
-    verdicts: BoolArray, *, replicates: int, surely: BoolArray | None = None, perhaps: BoolArray | None = None
+    verdicts: BoolArray, *, replicates: int, surely: BoolArray | None = None, perhaps: BoolArray | None = None,
+    cluster: int = 1,
 ) -> Interval:
     """Share of true `verdicts` (coupons,) with its interval, never of zero width.
 
     surely, perhaps : verdicts with all doubt counted against and in favour; they move the ends out.
+    cluster : see `judge`. What is rare and comes in few clusters counts as fewer trials, by how it crowds.
+    Source: E. L. Korn and B. I. Graubard, "Confidence intervals for proportions with small expected number of positive
+    counts estimated from survey data", Survey Methodology, volume 24, pages 193-201, 1998.
     """
     coupons = len(verdicts)
     count = int(np.count_nonzero(verdicts))
-    if min(count, coupons - count) < RARE:
-        interval = binomial_interval(count, coupons)
+    crowding = crowding_of_rare(verdicts, cluster)
+    if crowding is not None:
+        interval = binomial_interval(count / crowding, coupons / crowding)
     else:
         interval = _replicate_interval((count / coupons, np.mean(verdicts.reshape(replicates, -1), axis=1)))
     if surely is not None and perhaps is not None:
@@ -137,8 +149,21 @@ def share_interval(
     return interval.within(0.0, 1.0)
 
 
-def binomial_interval(count: int, trials: int) -> Interval:
-    """Exact 95 % interval of a share, `count` of `trials` independent ones.
+def crowding_of_rare(verdicts: BoolArray, cluster: int) -> float | None:
+    """How many of the rarer verdict stand together in a cluster that has any, where that is few clusters; else None.
+
+    With none at all: the whole cluster, for what is never seen may come by the lot.
+    """
+    count = np.count_nonzero(verdicts.reshape(-1, cluster), axis=1)
+    rarer = count if 2 * np.sum(count) <= len(verdicts) else cluster - count
+    spread_over = np.count_nonzero(rarer)
+    if spread_over >= min(RARE, 0.5 * len(rarer)):
+        return None
+    return float(np.sum(rarer**2) / np.sum(rarer)) if spread_over else float(cluster)
+
+
+def binomial_interval(count: float, trials: float) -> Interval:
+    """Exact 95 % interval of a share, `count` of `trials` independent ones (or as many as they are worth).
 
     Source: C. J. Clopper and E. S. Pearson, "The use of confidence or fiducial limits illustrated in the case of
     the binomial", Biometrika, volume 26, pages 404-413, 1934.
@@ -168,8 +193,13 @@ def _between(values: FloatArray, low: float, high: float) -> BoolArray:
     return np.asarray((values >= low) & (values <= high), dtype=np.bool_)
 
 
-def _moments(impedance: FloatArray, possible: BoolArray, replicates: int) -> tuple[_Estimates, _Estimates]:
-    """Mean and deviation [ohm] of the possible coupons, over all and of each replicate."""
+def _moments(
+    impedance: FloatArray, possible: BoolArray, replicates: int, cluster: int
+) -> tuple[_Estimates, _Estimates]:
+    """Mean and deviation [ohm] of the possible coupons, over all and of each replicate.
+
+    A replicate of few clusters says little of its own mean: there deviations are from the mean of all.
+    """
     blocks = [values[exists] for values, exists in zip(
         impedance.reshape(replicates, -1), possible.reshape(replicates, -1), strict=True)]
     if min(len(block) for block in blocks) < FEWEST_POSSIBLE:
@@ -180,7 +210,10 @@ def _moments(impedance: FloatArray, possible: BoolArray, replicates: int) -> tup
     if np.ptp(whole) <= STILL * abs(mean):
         return (mean, np.full(replicates, mean)), (0.0, np.zeros(replicates))
     means = np.array([np.mean(block) for block in blocks])
-    deviations = np.array([np.std(block, ddof=1) for block in blocks])
+    if cluster == 1:
+        deviations = np.array([np.std(block, ddof=1) for block in blocks])
+    else:
+        deviations = np.array([np.sqrt(np.mean((block - mean) ** 2)) for block in blocks])
     return (mean, means), (float(np.std(whole, ddof=1)), deviations)
 
 

@@ -11,7 +11,7 @@ import numpy as np
 from tolerance.arrays import BoolArray, FloatArray, read_only
 from tolerance.decisions.board import Board, LineModel
 from tolerance.process.changes import seen_by_line, with_laws, with_variable
-from tolerance.process.draws import ETCH, Process, ProcessDraws, draw_process, process_of
+from tolerance.process.draws import ETCH, Process, ProcessDraws, process_of
 from tolerance.process.laws import Law, quantile
 from tolerance.process.remembered import Key, RememberedDraws, remember
 from tolerance.process.resin import with_causes
@@ -22,8 +22,9 @@ from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample
 from tolerance.statistics.yields import Limits
 from tolerance.study.lines import PreparedLine, prepare
+from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, fit_line, predict_line
-from tolerance.study.run import Progress, on_all_cores
+from tolerance.study.run import Progress, limit_sample, on_all_cores
 from tolerance.surrogate.coordinates import REACH as DRAWS_REACH
 from tolerance.surrogate.prediction import BLOCK_ROWS, Predictor
 
@@ -61,7 +62,7 @@ def fit_board(
     """
     process_chance, training_chance = np.random.default_rng(seed).spawn(2)
     known = process_of(scenario) if process is None else process
-    draws = draw_process(known, coupons=coupons or scenario.evaluation.coupons, chance=process_chance)
+    draws = draw(scenario, known, coupons=coupons or scenario.evaluation.coupons, chance=process_chance)
     settings = SolverSettings()
 
     def fit(task: tuple[Line, np.random.Generator]) -> PredictedLine:
@@ -71,12 +72,7 @@ def fit_board(
     found = on_all_cores(fit, tasks, STEP, tell)
     fits = [(each.prepared, each.predictor, each.prediction.held_out_error, each.prediction.solver_runs)
             for each in found]
-    sample = LimitSample(
-        impedance=np.stack([each.impedance for each in found]), possible=np.stack([each.possible for each in found]),
-        target=np.array([each.prepared.line.target for each in found]),
-        error=np.array([each.prediction.held_out_error for each in found]), replicates=draws.replicates,
-    )
-    return replace(_board(draws, fits, known), sample=sample)
+    return replace(_board(draws, fits, known), sample=limit_sample(found, draws))
 
 
 def fit_wide_board(
@@ -89,13 +85,13 @@ def fit_wide_board(
     """
     process_chance, training_chance = np.random.default_rng(seed).spawn(2)
     known = process_of(scenario)
-    draws = draw_process(known, coupons=coupons or scenario.evaluation.coupons, chance=process_chance)
+    draws = draw(scenario, known, coupons=coupons or scenario.evaluation.coupons, chance=process_chance)
     missing = [name for name in dict.fromkeys(name for each in names for name in each)
                if not _varies(known, name)]
     for name in missing:
         known = with_variable(known, _property(scenario, name))
     still = np.zeros((draws.coupons, len(missing)))
-    draws = ProcessDraws(known, read_only(np.asfortranarray(np.hstack([draws.germ, still]))), draws.replicates)
+    draws = replace(draws, process=known, germ=read_only(np.asfortranarray(np.hstack([draws.germ, still]))))
     settings = SolverSettings()
 
     def fit(task: tuple[Line, Sequence[str], float, np.random.Generator]) -> tuple[PreparedLine, Predictor, float, int]:
@@ -124,7 +120,8 @@ def _board(
     draws: ProcessDraws, fits: Sequence[tuple[PreparedLine, Predictor, float, int]], process: Process,
 ) -> FittedBoard:
     lines = tuple(_model(prepared, predictor, process, error) for prepared, predictor, error, _ in fits)
-    return FittedBoard(Board(lines, draws.germ, draws.replicates), draws, tuple(fit[0] for fit in fits),
+    cluster = 1 if draws.lots is None else draws.lots.coupons
+    return FittedBoard(Board(lines, draws.germ, draws.replicates, cluster), draws, tuple(fit[0] for fit in fits),
                        tuple(fit[1] for fit in fits), sum(fit[3] for fit in fits))
 
 

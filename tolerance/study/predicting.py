@@ -49,6 +49,10 @@ class PredictedLine:
     certificate: Certificate
     direct: DirectCheck | None
 
+    def again(self, draws: ProcessDraws) -> tuple[BoolArray, FloatArray]:
+        """Which sections of other draws can exist, and their predicted impedances [ohm]."""
+        return self.prepared.section(draws).possible, self.predictor.impedance(draws.germ)
+
     @property
     def verdict_error(self) -> float:
         """Error [ohm] by which a coupon near a limit may be misjudged: none where they are solved."""

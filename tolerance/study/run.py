@@ -12,22 +12,27 @@ import secrets
 import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
 from importlib.metadata import version
 from typing import TypeVar
 
 import numpy as np
 from threadpoolctl import threadpool_limits
 
-from tolerance.process.draws import REPLICATES, draw_process, process_of
-from tolerance.results import LineResult, Record, RunResult, Spread
+from tolerance.process.draws import REPLICATES, ProcessDraws, process_of
+from tolerance.results import LineResult, Record, RunResult, Spread, VarianceShares
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.drawing import drawing_of
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
-from tolerance.statistics.yields import Limits, LineYield, histogram, judge
+from tolerance.statistics.reading import Coupons
+from tolerance.statistics.sampling import Figures, widened_by_sampling
+from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
 from tolerance.study.lines import prepare
+from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
+from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
 
 Progress = Callable[[str, int, int], None]
@@ -50,11 +55,12 @@ def run(
     coupons = scenario.evaluation.coupons if coupons is None else coupons
     seed = scenario.evaluation.seed if seed is None else seed
     seed = secrets.randbelow(2**31) if seed is None else seed
-    process_chance, training_chance, driver_chance = np.random.default_rng(seed).spawn(3)
+    process_chance, training_chance, driver_chance, level_chance, test_chance, sampling_chance = (
+        np.random.default_rng(seed).spawn(6))
     clock = _Clock()
 
     process = process_of(scenario)
-    draws = draw_process(process, coupons=coupons, chance=process_chance)
+    draws = draw(scenario, process, coupons=coupons, chance=process_chance)
     clock.lap("draws")
 
     settings = SolverSettings()
@@ -66,34 +72,77 @@ def run(
     predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
-    sample = LimitSample(
-        impedance=np.stack([line.impedance for line in predicted]),
-        possible=np.stack([line.possible for line in predicted]),
-        target=np.array([line.prepared.line.target for line in predicted]),
-        error=np.array([line.prediction.held_out_error for line in predicted]), replicates=draws.replicates,
-    )
-    judged = judge(
-        sample.impedance, sample.possible,
-        tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
-        replicates=draws.replicates, impedance_error=sample.error,
-        verdict_error=np.array([line.verdict_error for line in predicted]),
-    )
-    by_limit, together = yields_by_limit(sample, limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
-                                         target_yield=scenario.evaluation.target_yield)
+    sample = _coupons(predicted, draws)
+    verdict_error = np.array([line.verdict_error for line in predicted])
+    judged = judge(sample.impedance, sample.possible, sample.limits, replicates=sample.replicates,
+                   impedance_error=sample.error, verdict_error=verdict_error, cluster=sample.cluster)
+    nested = judge_nesting(sample, draws.lots, verdict_error)
+    tested = judge_test(scenario, draws, sample, test_chance)
+    by_limit, together = yields_by_limit(
+        limit_sample(predicted, draws), limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
+        target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
+    judged = _with_doubt_of_readings(judged, predicted, draws, sampling_chance, tell)
+    clock.lap("doubt of readings")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
         return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
     drivers = on_all_cores(rank, ranking, "ranking drivers", tell)
-    results = [_line_result(*parts) for parts in zip(predicted, judged.lines, drivers, by_limit, strict=True)]
+
+    def share_out(task: tuple[PredictedLine, np.random.Generator]) -> VarianceShares | None:
+        return variance_by_level(process, model_of(task[0].predictor), task[1])
+
+    variances = on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
+                              "variance by level", tell) if draws.lots else [None] * len(predicted)
+    results = [
+        replace(_line_result(line, verdict, ranked, curve), nested=of_lots, variance=variance, reading=reading)
+        for line, verdict, ranked, curve, of_lots, variance, reading in zip(
+            predicted, judged.lines, drivers, by_limit, nested.lines, variances, tested.lines, strict=True)
+    ]
     clock.lap("drivers")
     return RunResult(
-        title=scenario.title, seed=seed, coupons=coupons, target_yield=scenario.evaluation.target_yield,
+        title=scenario.title, seed=seed, coupons=draws.coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
         record=_record(scenario, settings, results, draws.replicates, clock),
+        lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
+        measured=measured_inputs(scenario, process),
     )
+
+
+def limit_sample(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> LimitSample:
+    """The sample as it is held against one limit and another."""
+    sample = _coupons(predicted, draws)
+    targets = np.array([line.prepared.line.target for line in predicted])
+    return LimitSample(sample.impedance, sample.possible, targets, sample.error, sample.replicates, sample.cluster)
+
+
+def _coupons(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
+    """The sample as it is judged."""
+    return Coupons(
+        np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
+        tuple(Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted),
+        np.array([line.prediction.held_out_error for line in predicted]), draws.replicates,
+        cluster=1 if draws.lots is None else draws.lots.coupons,
+    )
+
+
+def _with_doubt_of_readings(
+    judged: Judgement, predicted: Sequence[PredictedLine], draws: ProcessDraws, chance: np.random.Generator,
+    tell: Progress,
+) -> Judgement:
+    """The judgement with what the number of readings of measured data leaves open in its intervals."""
+    if not has_measured(draws.process):
+        return judged
+    limits = [Limits(line.prepared.low_limit, line.prepared.high_limit) for line in predicted]
+    lines = [line.again for line in predicted]
+
+    def judge_again(chance_of_law: np.random.Generator) -> Figures:
+        return judged_again(lines, limits, draws, chance_of_law)
+
+    others = on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
+    return widened_by_sampling(judged, judged_again(lines, limits, draws, None), others)
 
 
 def on_all_cores(

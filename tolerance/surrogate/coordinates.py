@@ -16,6 +16,7 @@ from scipy.linalg import qr
 from tolerance.arrays import FloatArray
 from tolerance.process.draws import ETCH, Process, sobol_uniforms
 from tolerance.process.laws import Law, quantile
+from tolerance.process.resin import through_resin
 
 REACH = 3.0  # germs from minus to plus this span the tolerance; uniform laws: from end to end
 WIDER = 1.25  # the box over that span
@@ -41,11 +42,14 @@ class BoxValues:
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name`, shape (points,)."""
-        return self._value(name, self.process.nominals[name])
+        return through_resin(name, self._own, self.process.resins)
 
     def etch(self, layer: str, *, width: float) -> FloatArray:
         """Finished foot width minus drawn width [m] of a line `width` [m] wide, shape (points,)."""
         return self._value(f"{layer}.{ETCH}", 0.0, width)
+
+    def _own(self, name: str) -> FloatArray:
+        return self._value(name, self.process.nominals[name])
 
     def _value(self, name: str, nominal: float, width: float | None = None) -> FloatArray:
         for position, column in enumerate(self.columns):
@@ -62,6 +66,8 @@ class BoxValues:
 def box_ends(law: Law, *, reference: float) -> tuple[float, float]:
     """Ends of the box [SI] in one property."""
     reach = np.inf if law.shape == "uniform" else REACH
+    if law.measured is not None:
+        reach *= law.measured.widest
     low, high = (float(end) for end in quantile(law, np.array([-reach, reach]), reference=reference))
     centre, half = 0.5 * (low + high), 0.5 * WIDER * (high - low)
     lowest = centre - half
