@@ -24,7 +24,7 @@ TEXT = README.read_text(encoding="utf-8")
 REFUSAL_WORDS = {
     "frequency": "`frequency`", "partner": "`partner`",
     "ground_gap": "`ground_gap`", "level": "`level`",
-    "offers": "`[[offers]]`", "test": "`[test]`",
+    "test": "`[test]`",
 }
 
 
