@@ -21,6 +21,7 @@ from tolerance.results import (
     VarianceShares,
 )
 from tolerance.statistics.acceptance import SamplingPlan
+from tolerance.statistics.reading import Reading
 
 
 def made_up_nested(lots: int = 512, coupons: int = 40) -> NestedYield:
@@ -36,7 +37,8 @@ def made_up_reading() -> ReadingRisks:
     """A reading that costs a little."""
     bands = tuple(GuardBand(wanted, around(band, 0.02, low=0.0), wanted, rejects)
                   for wanted, band, rejects in ((0.01, 0.0, 0.006), (0.001, 0.38, 0.021), (0.0001, 0.81, 0.055)))
-    return ReadingRisks(share(0.9634), share(0.9601), share(0.0028, 0.0002), share(0.0064, 0.0004), bands)
+    return ReadingRisks(Reading(0.5, 0.1, 0.05), share(0.9634), share(0.9601), share(0.0028, 0.0002),
+                        share(0.0064, 0.0004), bands)
 
 
 def made_up_acceptance() -> LotAcceptance:

@@ -17,7 +17,7 @@ PACKAGE = Path(__file__).parents[1] / "tolerance"
 
 #: The rooms from first to last step; what shares a row may import each other only inside the same room.
 ROWS: list[list[str]] = [
-    ["errors", "arrays"],
+    ["errors", "arrays", "hypertext"],
     ["units", "laminate"],
     ["measurements"],
     ["scenario"],
@@ -27,8 +27,12 @@ ROWS: list[list[str]] = [
     ["formulas"],
     ["surrogate"],
     ["statistics"],
+<<<<<<< HEAD
     ["decisions"],
     ["nominal", "results", "decided"],
+=======
+    ["nominal", "results", "fitted"],
+>>>>>>> main
     ["study"],
     ["report"],
     ["screen"],

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import difflib
 import re
 import subprocess
@@ -10,6 +11,7 @@ from pathlib import Path
 
 import jsonschema
 import pytest
+from matplotlib.axes import Axes
 
 from tests.readme_numbers import README, ROOT, marked_block, python_example, refreshed
 from tolerance.results import RunResult
@@ -47,6 +49,14 @@ def test_the_quoted_numbers_are_what_the_tool_gives(result: RunResult) -> None:
     assert not changes, f"README.md quotes old numbers; `python -m tests.readme_numbers` refreshes them:\n{changes}"
 
 
+def test_the_example_of_figures_runs(result: RunResult, tmp_path: Path) -> None:
+    names: dict[str, object] = {"result": result}
+    with contextlib.chdir(tmp_path):
+        exec(compile(marked_block(TEXT, "python: figures"), "README.md", "exec"), names)
+    assert isinstance(names["axes"], Axes)
+    assert [path.name for path in tmp_path.iterdir()] == ["antenna-feed.svg"]
+
+
 def test_the_python_example_runs_the_scenario_of_the_first_command(result: RunResult) -> None:
     file = marked_block(TEXT, "command: job").split()[-1]
     scenario = load(ROOT / file)
@@ -78,7 +88,7 @@ def test_every_scenario_is_in_the_table() -> None:
     assert named == {f"scenarios/{path.name}" for path in (ROOT / "scenarios").glob("*.toml")}
 
 
-@pytest.mark.parametrize("words", [["run"], ["check"], ["new"], ["schema"]])
+@pytest.mark.parametrize("words", [["run"], ["check"], ["fit"], ["new"], ["presets"], ["schema"]])
 def test_every_option_is_told(words: list[str], capsys: pytest.CaptureFixture[str]) -> None:
     from tolerance.command import main
 

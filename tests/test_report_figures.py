@@ -16,6 +16,7 @@ from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.image import imread
+from matplotlib.patches import PathPatch
 
 from tests.report_examples import (
     made_up_line,
@@ -25,6 +26,7 @@ from tests.report_examples import (
     share,
     some_drivers,
     stripline_drawing,
+    trace,
 )
 from tolerance.arrays import read_only
 from tolerance.errors import UnfinishedError
@@ -33,6 +35,7 @@ from tolerance.report.looks import BODY, FAIL, FAIL_FILL, FAINT_INK, MATERIAL
 from tolerance.report.plots import draw_drivers, draw_overview, draw_spread
 from tolerance.report.section_plot import draw_section, stand_apart
 from tolerance.results import Drawing, Driver, LineResult, Spread
+from tolerance.sections.bands import bands_of
 
 NOTHING_VARIES = replace(made_up_line("constant", drivers=()), spread=Spread(
     edges=read_only([50.2 - 1e-9, 50.2 + 1e-9]), counts=np.array([65536])))
@@ -151,10 +154,16 @@ def test_a_title_is_made_smaller_before_it_is_cut_and_never_runs_into_the_yield(
 @pytest.mark.parametrize("lines", [1, 20])
 def test_the_yield_against_the_limit_is_drawn_for_every_line(lines: int) -> None:
     page = limits_page(made_up_result(many_lines(lines, long_names=True)))
-    assert len(page.axes) == lines + 1
-    needed = page.axes[1].texts[0].get_text()
+    assert len(page.axes) == (1 if lines == 1 else lines + 1)  # and one of all together
+    canvas: Any = FigureCanvasAgg(page)
+    canvas.draw()
+    for axes in page.axes:  # a name never runs into the next panel
+        extent = axes.title.get_window_extent() if axes.get_title() else axes._left_title.get_window_extent()  # type: ignore[attr-defined]
+        assert extent.x1 <= axes.get_window_extent().x1 + 1.0
+    first = page.axes[-lines]
+    needed = first.texts[0].get_text()
     assert re.fullmatch(r"99 % would pass at \d+\.\d+ %", needed)
-    dots = [line for line in page.axes[1].lines if line.get_marker() == "o"]
+    dots = [line for line in first.lines if line.get_marker() == "o"]
     assert [float(np.asarray(dot.get_xdata())[0]) for dot in dots] == pytest.approx([7.0])  # the limit of 7 %
 
 
@@ -200,6 +209,31 @@ def test_the_section_names_its_materials_and_main_dimensions() -> None:
     in_mil = words_on(line_page(pair, target_yield=0.99, lengths="mil").axes[2])
     assert "width 4.72 mil" in in_mil  # 120 / 25.4
     assert "gap 5.91 mil" in in_mil  # 150 / 25.4
+
+
+def test_a_ply_that_fills_absent_copper_shows_both_heights() -> None:
+    plain = microstrip_drawing(height=115e-6)
+    filling = replace(plain, regions=(plain.regions[0], replace(plain.regions[1], filled=15e-6)))
+    words = words_on(line_page(made_up_line(drawing=filling), target_yield=0.99, lengths="um").axes[2])
+    assert "| 100 + 15 um" in words
+    assert "after a +: height of absent copper, filled" in words
+    assert "filled" not in words_on(line_page(made_up_line(drawing=plain), target_yield=0.99, lengths="um").axes[2])
+
+
+def test_bands_are_told_and_drawn_where_there_are_any() -> None:
+    bands = bands_of(microstrip_drawing(), [microstrip_drawing(height=90e-6), microstrip_drawing(width=190e-6)])
+    line = made_up_line(drawing=replace(microstrip_drawing(), bands=bands))
+    for one, told in ((line, 1), (made_up_line(), 0)):
+        axes = line_page(one, target_yield=0.99, lengths="um").axes[2]
+        assert words_on(axes).count("each tolerance alone") == told
+        assert sum(isinstance(patch, PathPatch) for patch in axes.patches) == told
+
+
+def test_a_broadside_pair_is_named_by_both_its_layers() -> None:
+    drawing = microstrip_drawing()
+    both = replace(drawing, conductors=(*drawing.conductors, trace(0.0, 180e-6, 150e-6, 0.2e-3, 0.243e-3, "L4")))
+    words = [text.get_text() for text in line_page(made_up_line(drawing=both), target_yield=0.99, lengths="um").texts]
+    assert any("L1 and L4, reference L2" in text for text in words)
 
 
 def test_a_section_on_the_bottom_shows_the_same_heights_as_on_the_top() -> None:

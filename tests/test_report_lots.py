@@ -27,6 +27,7 @@ def test_levels_have_the_keys_of_the_contract() -> None:
     answer = json.loads(run_json(made_up_lots()))
     for place in (answer, *answer["lines"]):
         assert set(place["panel_yield"]) == set(place["lot_yield"]) == ENDS
+        assert (place["panel_yield"]["value"], place["lot_yield"]["value"]) == (0.9213, 0.551)
     for line in answer["lines"]:
         assert line["variance_shares"] == {"lot": 0.262, "panel": 0.281, "coupon": 0.457}
         assert {driver["variable"] for driver in line["level_drivers"]} <= {
@@ -39,6 +40,8 @@ def test_what_a_reading_does_has_keys_of_its_own() -> None:
     for place in (answer, *answer["lines"]):
         assert {name for name, value in place["test"].items() if isinstance(value, dict) and set(value) == ENDS} == {
             "yield_as_read", "accepted", "false_accepts", "false_rejects"}
+        test = place["test"]
+        assert (test["repeatability_ohm"], test["bias_ohm"], test["guard_band_ohm"]) == (0.5, 0.1, 0.05)
         assert [each["guard_band_ohm"] for each in place["test"]["guard_bands"]] == [0.0, 0.38, 0.81]
     acceptance = answer["test"]["lot_acceptance"]
     assert (acceptance["sample_size"], acceptance["accept_number"]) == (8, 0)
@@ -62,6 +65,7 @@ def test_the_terminal_says_it_in_80_columns(count: int, long_names: bool) -> Non
     assert max(len(row) for row in text.splitlines()) <= 80
     words = " ".join(text.split())
     for said in ("26, 28, 46", "92.1", "[53, 57]", "0.28", "[0.36, 0.40]",
+                 "A reading scatters by 0.5 ohm and is off by 0.1 ohm; guard band 0.05 ohm.",
                  "Drawn as 512 lots of 20 panels with 2 coupons.", "(75 % by the formula for independent coupons)",
                  "Of the coupons in accepted lots 98.3 % [98.1, 98.5] pass."):
         assert said in words, said

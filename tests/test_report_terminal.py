@@ -145,6 +145,8 @@ def test_a_check_names_reference_planes_and_what_a_mode_means() -> None:
     assert "L1, references L2, L5" in text
     assert "L6, reference L2" in text
     assert "both traces tied together" in " ".join(text.split())
+    broadside = replace(pair, layer="L3", partner="L4")
+    assert "L3 and L4, reference L2" in check_text(replace(check, lines=(broadside,)), "um")
     common = replace(pair, kind="stripline pair, common mode", mode="common", impedance=31.4)
     text = check_text(replace(check, lines=(single, common)), "um")
     assert "common 31.40 ohm" not in text  # it is the impedance, and stands in its column

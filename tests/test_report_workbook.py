@@ -4,12 +4,19 @@ from __future__ import annotations
 
 import json
 import math
+import posixpath
+import re
+import shutil
+import subprocess
+import zipfile
 from dataclasses import replace
 from pathlib import Path
+from xml.etree import ElementTree
 
 import pandas as pd
 import pytest
 from openpyxl import load_workbook
+from openpyxl.worksheet.worksheet import Worksheet
 
 from tests.report_examples import (
     SCENARIO_TEXT,
@@ -26,7 +33,8 @@ from tolerance.report.workbook import write_workbook
 from tolerance.results import Interval, RunResult
 from tolerance.scenario.checking import parse
 
-SHEETS = ["Summary", "Lines", "Drivers", "Stackup", "Drawn lines", "Variations", "Run record"]
+SHEETS = ["Summary", "Charts", "Lines", "Drivers", "Yield by limit", "Stackup", "Drawn lines", "Variations",
+          "Run record"]
 FORMULA_LIKE = ("=1+1", "+feed", "-feed", "@feed", "=cmd|' /C calc'!A0", "#N/A")
 
 
@@ -80,7 +88,7 @@ def test_the_summary_says_the_answer_in_words_and_marks_what_misses(tmp_path: Pa
 def test_every_table_has_frozen_heads_a_filter_units_and_number_formats(tmp_path: Path) -> None:
     book = load_workbook(written(tmp_path, made_up_result()))
     assert book.sheetnames == SHEETS
-    for sheet in book.worksheets:
+    for sheet in (each for each in book.worksheets if each.title != "Charts"):
         assert sheet.freeze_panes is not None, sheet.title
         assert sheet.auto_filter.ref is not None, sheet.title
     lines = book["Lines"]
@@ -149,6 +157,83 @@ coefficient = -0.6
     assert "Correlations" not in load_workbook(written(tmp_path, made_up_result())).sheetnames
 
 
+def test_yield_against_the_limit_stands_in_numbers(tmp_path: Path) -> None:
+    result = made_up_result(many_lines(3))
+    sheet = pd.read_excel(written(tmp_path, result), sheet_name="Yield by limit")
+    assert list(sheet.columns) == ["limit, half-width", "all lines together", *(line.name for line in result.lines)]
+    assert sheet.to_numpy() == pytest.approx(result.limit_table.to_numpy(), abs=1e-15)
+    lines = pd.read_excel(tmp_path / "out" / "run.xlsx", sheet_name="Lines")
+    needed = [line.by_limit.needed.value for line in result.lines if line.by_limit.needed]
+    assert list(lines["limit that meets the target yield"]) == pytest.approx(needed, abs=1e-15)
+
+
+def cells_of(sheet: Worksheet, reference: str) -> list[object]:
+    """The values of the cells that a chart refers to, which all lie in `sheet`."""
+    name, _, cells = reference.rpartition("!")
+    assert name.strip("'") == sheet.title
+    return [cell.value for row in sheet[cells.replace("$", "")] for cell in row]
+
+
+def test_charts_are_drawn_from_the_cells_of_the_tables(tmp_path: Path) -> None:
+    lines = (*many_lines(3), made_up_line("no driver", drivers=()), made_up_line("bell\x07 & <co>"))
+    result = made_up_result(lines)
+    book = load_workbook(written(tmp_path, result))
+    charts = book["Charts"]._charts  # type: ignore[attr-defined]
+    assert len(charts) == 3 + 4  # yields, what fails, against the limit, and the lines that have drivers
+    names = [line.name.replace("\x07", "\N{REPLACEMENT CHARACTER}") for line in lines]
+    yields = charts[0].series[0]
+    assert cells_of(book["Summary"], yields.val.numRef.f) == [stored(line.inside.value) for line in lines]
+    assert cells_of(book["Summary"], yields.cat.numRef.f) == names
+    assert [len(cells_of(book["Summary"], series.val.numRef.f)) for series in charts[1].series] == [5, 5]
+    assert len(charts[2].series) == 6
+    last = charts[-1].series[0]
+    assert cells_of(book["Drivers"], last.val.numRef.f) == [stored(driver.total.value) for driver in lines[-1].drivers]
+    assert cells_of(book["Drivers"], last.cat.numRef.f) == [driver.variable for driver in lines[-1].drivers]
+
+
+def test_every_part_is_well_formed_and_every_relation_leads_somewhere(tmp_path: Path) -> None:
+    """What strict readers ask: parts that parse, declared types, targets that are there (ECMA-376, part 2)."""
+    lines = (*many_lines(4), *(made_up_line(name) for name in FORMULA_LIKE), made_up_line("a & b < c > \"d\" \x0b"))
+    path = written(tmp_path, made_up_result(lines, title="<&>"))
+    with zipfile.ZipFile(path) as parts:
+        names = set(parts.namelist())
+        trees = {name: ElementTree.fromstring(parts.read(name)) for name in names}
+    declared = {part.attrib.get("PartName", "").lstrip("/") for part in trees["[Content_Types].xml"]}
+    endings = {part.attrib.get("Extension") for part in trees["[Content_Types].xml"]}
+    assert all(name in declared or name.rpartition(".")[2] in endings for name in names - {"[Content_Types].xml"})
+    for name in (each for each in names if each.endswith(".rels")):
+        base = "/" + name.replace("_rels/", "").rpartition("/")[0]
+        for relation in trees[name]:
+            target = posixpath.normpath(posixpath.join(base, relation.attrib["Target"])).lstrip("/")
+            assert target in names, (name, target)
+
+
+OFFICE = shutil.which("soffice") or shutil.which("libreoffice")
+
+
+@pytest.mark.skipif(OFFICE is None, reason="LibreOffice, which would convert the workbook, is not installed here")
+def test_libreoffice_opens_it_and_finds_every_sheet(tmp_path: Path) -> None:
+    assert OFFICE is not None
+    result = made_up_result(many_lines(3))
+    path = written(tmp_path, result)
+    profile = (tmp_path / "profile").as_uri()
+    done = subprocess.run(
+        [OFFICE, f"-env:UserInstallation={profile}", "--headless", "--convert-to", "ods", "--outdir", str(tmp_path),
+         str(path)], capture_output=True, text=True, check=False, timeout=240)
+    converted = tmp_path / "run.ods"
+    assert converted.exists(), done.stderr
+    with zipfile.ZipFile(converted) as parts:
+        content = ElementTree.fromstring(parts.read("content.xml"))
+        charts = [name for name in parts.namelist() if re.fullmatch(r"Object [^/]*/content\.xml", name)]
+    table, office = ("{urn:oasis:names:tc:opendocument:xmlns:" + name + ":1.0}" for name in ("table", "office"))
+    assert [each.attrib[f"{table}name"] for each in content.iter(f"{table}table")][: len(SHEETS)] == SHEETS
+    values = [float(cell.attrib[f"{office}value"]) for cell in content.iter(f"{table}table-cell")
+              if f"{office}value" in cell.attrib]
+    for line in result.lines:
+        assert any(value == pytest.approx(line.inside.value, abs=1e-12) for value in values)
+    assert len(charts) == 3 + len(result.lines)
+
+
 def test_lengths_stand_in_the_unit_of_the_report(tmp_path: Path) -> None:
     path = written(tmp_path, made_up_result(), "mil")
     stackup = pd.read_excel(path, sheet_name="Stackup")
@@ -156,6 +241,10 @@ def test_lengths_stand_in_the_unit_of_the_report(tmp_path: Path) -> None:
     varying = pd.read_excel(path, sheet_name="Variations").set_index("property")
     assert varying["half-width"]["P1.thickness"] == pytest.approx(8.0 / 25.4, rel=1e-9)
     assert varying["unit"]["P1.thickness"] == "mil"
+    book = load_workbook(path)
+    written_words = [str(cell.value) for sheet in book.worksheets if sheet.title != "Run record"
+                     for row in sheet.iter_rows() for cell in row]
+    assert not [words for words in written_words if re.search(r"\bum\b", words)]
 
 
 def test_the_run_record_keeps_what_remakes_the_run(tmp_path: Path) -> None:

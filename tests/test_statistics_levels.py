@@ -96,6 +96,14 @@ def test_failures_that_come_by_the_lot_count_as_few() -> None:
     assert crowding_of_rare(failing_lots(40, 2), SIZE.coupons) is None
 
 
+def test_failing_panels_that_come_by_the_lot_count_as_few() -> None:
+    """Exact (Clopper-Pearson): three lots of 256 whose five panels all fail are three failures in 256 trials."""
+    impedance = np.where(failing_lots(3, SIZE.coupons), 50.0, 60.0)
+    panel = judged(impedance, LIMIT).lines[0].panel
+    counted = share_interval(failing_lots(3, 15).reshape(-1, 15)[:, 0], replicates=REPLICATES)
+    assert (panel.low, panel.high) == pytest.approx((counted.low, counted.high), rel=1e-12)
+
+
 def test_no_failure_at_all_is_one_trial_a_lot() -> None:
     """Exact: with none of n lots seen, (1 - p)^n = 0.025 gives the far end."""
     interval = share_interval(failing_lots(0, 0), replicates=REPLICATES, cluster=SIZE.coupons)
@@ -189,6 +197,18 @@ def test_what_does_not_vary_has_no_shares() -> None:
     still = type(model)(model.names, model.coordinate, lambda x: np.full(len(x), 50.0), model.correlation)
     found = variance_shares(still, np.full((3, 3), 1.0 / 3.0), chance=np.random.default_rng(0))
     assert (found.lot.value, found.panel.value, found.coupon.value) == (0.0, 0.0, 0.0)
+
+
+def test_the_deviation_of_what_varies_by_the_lot_alone() -> None:
+    """Within a lot nothing varies, between lots all does: eight of them still bound the deviation, 2 ohm (exact)."""
+    held, runs = 0, 60
+    for seed in range(runs):
+        impedance = np.repeat(np.random.default_rng(seed).normal(50.0, 2.0, size=8), 40)
+        deviation = judge(impedance[None], np.ones((1, 320), dtype=np.bool_), (LIMIT,), replicates=REPLICATES,
+                          cluster=40).lines[0].deviation
+        assert deviation.low < deviation.value < deviation.high
+        held += holds(deviation, 2.0)
+    assert held >= 0.85 * runs, "of eight normal values the deviation is low and skewed: the interval is a rough one"
 
 
 def test_one_lot_for_each_replicate_still_has_intervals() -> None:

@@ -41,6 +41,18 @@ def test_at_a_lines_own_limit_it_is_the_yield_that_is_judged() -> None:
         assert getattr(lines[0], name)[1] == pytest.approx(getattr(judged.lines[0].inside, name), abs=1e-9)
 
 
+def test_in_lots_too_it_is_the_yield_that_is_judged() -> None:
+    """Rare failures that come by the lot: as many trials as in the judgement."""
+    impedance = np.full((1, REPLICATES * BLOCK), 50.0)
+    impedance[0, :64], impedance[0, 6400:6464] = 56.0, 44.0  # two of 512 lots of 64
+    possible = np.ones(impedance.shape, dtype=np.bool_)
+    sample = LimitSample(impedance, possible, np.array([50.0]), np.zeros(1), REPLICATES, cluster=64)
+    judged = judge(impedance, possible, (Limits(45.0, 55.0),), replicates=REPLICATES, cluster=64)
+    lines, _ = yields_by_limit(sample, np.array([0.0, 0.10]), target_yield=0.99)
+    for name in ("value", "low", "high"):
+        assert getattr(lines[0], name)[1] == pytest.approx(getattr(judged.lines[0].inside, name), abs=1e-12)
+
+
 def test_a_wider_limit_never_passes_fewer_and_impossible_coupons_never_pass() -> None:
     sample = normal_sample(2.0)
     sample.possible[0, : BLOCK // 2] = False  # an eighth of an eighth over two: 1/16 of the coupons

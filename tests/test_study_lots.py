@@ -111,6 +111,16 @@ def test_what_varies_by_the_lot_alone_passes_or_fails_by_the_lot() -> None:
         assert line.inside.high - line.inside.low > 0.01, "512 lots, not 20,480 coupons"
 
 
+def test_where_no_coupon_fails_each_lot_is_one_trial() -> None:
+    """Exact: with none of n lots seen to fail, (1 - p)^n = 0.025 gives the far end of every yield."""
+    result = run(parse(changed(NESTED, ('"9 %"', '"60 %"'))), coupons=1000)
+    assert result.lots is not None
+    assert result.nested is not None
+    for interval in (result.inside, result.nested.panel, result.nested.lot, result.lines[0].inside):
+        assert interval.low == pytest.approx(0.025 ** (1.0 / result.lots.lots), rel=1e-9)
+        assert interval.high == 1.0
+
+
 def test_the_coupon_level_is_the_same_as_none_told() -> None:
     told = BOARD.replace("tolerance = ", 'level = "coupon"\ntolerance = ')
     assert run_json(run(parse(told), coupons=256)) == run_json(run(parse(BOARD), coupons=256))
@@ -130,6 +140,14 @@ def test_the_test_judges_readings_and_lots(nested: RunResult) -> None:
         assert bands == sorted(bands)
     assert nested.acceptance.quality is not None
     assert nested.acceptance.quality.value > nested.inside.value, "refused lots are the worse ones"
+
+
+def test_the_table_of_lines_has_what_levels_and_readings_add(nested: RunResult) -> None:
+    table = nested.line_table
+    for name in ("panel_yield_low", "lot_yield", "variance_lot", "variance_panel", "variance_coupon", "as_read",
+                 "false_accepts_high"):
+        assert table[name].notna().all(), name
+    assert "lot_yield" not in run(parse(BOARD), coupons=256).line_table
 
 
 def test_a_test_without_levels_has_lots_of_independent_coupons() -> None:

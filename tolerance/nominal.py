@@ -7,6 +7,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from tolerance.hypertext import hypertext
+
 
 @dataclass(frozen=True, slots=True)
 class FormulaOpinion:
@@ -51,6 +53,7 @@ class NominalLine:
     dimensions: tuple[tuple[str, float], ...] = ()  # ("width", 180e-6), ("gap", 150e-6): as they are to be shown
     formulas: FormulaOpinions | None = None  # None: not asked for
     mode: str = "single"  # single | differential | common
+    partner: str | None = None  # the other layer of a broadside pair
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,3 +62,11 @@ class CheckResult:
 
     title: str
     lines: tuple[NominalLine, ...]
+
+    def _repr_html_(self) -> str:
+        """What a notebook shows."""
+        rows = [(line.name, line.kind, line.layer, ", ".join(line.references), f"{line.target:g}",
+                 f"{line.impedance:.2f}", f"{100.0 * (line.impedance / line.target - 1.0):+.1f}",
+                 f"{line.effective_dk:.3f}", f"{1e9 * line.delay:.2f}") for line in self.lines]
+        return hypertext(self.title, [], ("line", "kind", "layer", "references", "target [ohm]", "nominal [ohm]",
+                                          "off target [%]", "effective Dk", "delay [ps/mm]"), rows)

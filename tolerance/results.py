@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from tolerance.arrays import FloatArray, IntArray
+from tolerance.hypertext import hypertext
 from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
@@ -180,6 +181,16 @@ class RunResult:
     acceptance: LotAcceptance | None = None  # with sample_size only
     measured: tuple[MeasuredInput, ...] = ()
 
+    def _repr_html_(self) -> str:
+        """What a notebook shows: the yields with their intervals, and what drives each line."""
+        sentence = (f"All lines together: {_percent(self.inside)} of {self.coupons:,} coupons pass (seed {self.seed}). "
+                    f"Target of each line: {100.0 * self.target_yield:g} %. In brackets: 95 % intervals of the "
+                    "computation alone.")
+        headings = ("line", "target [ohm]", "limits [ohm]", "nominal [ohm]", "mean [ohm]", "deviation [ohm]", "yield",
+                    "below", "above", "Cpk", "verdict", "largest drivers, share of the variance")
+        rows = [_notebook_row(line, self.target_yield) for line in self.lines]
+        return hypertext(self.title, [sentence], headings, rows)
+
     @property
     def misses_target(self) -> bool:
         """Whether some line's yield lies under the target yield."""
@@ -203,6 +214,25 @@ class RunResult:
         return pd.DataFrame({"limit": self.by_limit.limit, "all lines together": self.by_limit.value, **named})
 
 
+DRIVERS_TOLD = 3  # of each line, in a notebook
+
+
+def _percent(share: Interval) -> str:
+    """The share with its interval, "98.43 % [98.38, 98.48]"."""
+    return f"{100.0 * share.value:.2f} % [{100.0 * share.low:.2f}, {100.0 * share.high:.2f}]"
+
+
+def _notebook_row(line: LineResult, target_yield: float) -> tuple[str, ...]:
+    drivers = [(driver.variable, driver.shapley or driver.total) for driver in line.drivers[:DRIVERS_TOLD]]
+    return (
+        line.name, f"{line.target:g}", f"{line.low_limit:g} to {line.high_limit:g}", f"{line.nominal:.2f}",
+        f"{line.mean.value:.2f}", f"{line.deviation.value:.2f}", _percent(line.inside),
+        f"{100.0 * line.below.value:.2f} %", f"{100.0 * line.above.value:.2f} %",
+        "-" if line.cpk is None else f"{line.cpk.value:.2f}", "MISSES" if line.inside.value < target_yield else "meets",
+        ", ".join(f"{name} {100.0 * share.value:.0f} %" for name, share in drivers) or "none",
+    )
+
+
 def _interval_columns(name: str, interval: Interval | None) -> dict[str, float | None]:
     if interval is None:
         return dict.fromkeys((name, f"{name}_low", f"{name}_high"))
@@ -217,10 +247,27 @@ def _line_row(line: LineResult) -> dict[str, object]:
         **_interval_columns("mean_ohm", line.mean), **_interval_columns("std_ohm", line.deviation),
         **_interval_columns("yield", line.inside), **_interval_columns("below", line.below),
         **_interval_columns("above", line.above), **_interval_columns("cp", line.cp),
-        **_interval_columns("cpk", line.cpk), "impossible": line.impossible,
+        **_interval_columns("cpk", line.cpk), **_interval_columns("needed_limit", line.by_limit.needed),
+        "impossible": line.impossible,
         "certified": line.certificate.certified, "coupons_solved": line.certificate.solved,
         "solver_runs": line.prediction.solver_runs, "held_out_error_ohm": line.prediction.held_out_error,
+        **_nested_columns(line),
     }
+
+
+def _nested_columns(line: LineResult) -> dict[str, float | None]:
+    """With levels and with readings only."""
+    columns: dict[str, float | None] = {}
+    if line.nested is not None and line.variance is not None:
+        columns |= {
+            **_interval_columns("panel_yield", line.nested.panel), **_interval_columns("lot_yield", line.nested.lot),
+            "variance_lot": line.variance.lot.value, "variance_panel": line.variance.panel.value,
+            "variance_coupon": line.variance.coupon.value,
+        }
+    if line.reading is not None:
+        for name in ("as_read", "accepted", "false_accepts", "false_rejects"):
+            columns |= _interval_columns(name, getattr(line.reading, name))
+    return columns
 
 
 def _driver_row(line: LineResult, rank: int, driver: Driver) -> dict[str, object]:

@@ -81,7 +81,9 @@ def line_page(line: LineResult, *, target_yield: float, lengths: LengthUnit) -> 
     """One line on a page: spread and drivers above, the cross-section below."""
     with our_looks():
         page = _page(PAGE[1])
-        _head(page, line.name, f"{line.kind}; {place_words(line.layer, line.references)}", line.inside, target_yield)
+        layers = dict.fromkeys(part.name for part in line.drawing.conductors if part.role == "trace")
+        where = place_words(" and ".join(layers), line.references)
+        _head(page, line.name, f"{line.kind}; {where}", line.inside, target_yield)
         draw_spread(page.add_axes((0.065, 0.505, 0.43, 0.31)), line, target_yield=target_yield)
         draw_drivers(page.add_axes((0.56, 0.505, 0.40, 0.31)), line)
         draw_section(page.add_axes((0.065, 0.085, 0.69, 0.29)), line, lengths=lengths)
@@ -100,9 +102,11 @@ def overview_page(result: RunResult) -> Figure:
 
 
 def limits_page(result: RunResult) -> Figure:
-    """Yield against the limit: all lines together, and a panel for each line."""
-    panels = len(result.lines) + 1
-    abreast = min(PANELS_ABREAST, max(panels, 2))
+    """Yield against the limit: a panel for each line, and where there are several one for all together."""
+    together = [] if len(result.lines) == 1 else [("all lines held to one limit", result.by_limit, None, None)]
+    curves = [*together, *((line.name, line.by_limit, line.limit, line.inside) for line in result.lines)]
+    panels = len(curves)
+    abreast = min(PANELS_ABREAST, panels)
     rows = -(-panels // abreast)
     height = max(PAGE[1], 1.4 + ROW_OF_PANELS * rows)
     with our_looks():
@@ -111,12 +115,9 @@ def limits_page(result: RunResult) -> Figure:
         page.text(MARGIN, 1.0 - 1.12 / height, LIMITS_REMARK, fontsize=SMALL, color=FAINT_INK, va="center")
         grid = page.add_gridspec(rows, abreast, left=0.065, right=0.975, top=1.0 - 1.9 / height, bottom=0.65 / height,
                                  wspace=0.28, hspace=0.85 if rows > 1 else 0.0)
-        draw_yield_by_limit(page.add_subplot(grid[0, 0]), result.by_limit, name="all lines held to one limit",
-                            target_yield=result.target_yield)
-        for number, line in enumerate(result.lines, start=1):
+        for number, (name, curve, limit, inside) in enumerate(curves):
             axes = page.add_subplot(grid[number // abreast, number % abreast])
-            draw_yield_by_limit(axes, line.by_limit, name=line.name, target_yield=result.target_yield,
-                                limit=line.limit, inside=line.inside)
+            draw_yield_by_limit(axes, curve, name=name, target_yield=result.target_yield, limit=limit, inside=inside)
             if number % abreast:
                 axes.set_ylabel("")
             if number + abreast < panels:

@@ -75,6 +75,7 @@ def _line(line: LineResult) -> dict[str, object]:
         **_flat("mean_ohm", line.mean), **_flat("std_ohm", line.deviation),
         **_flat("below", line.below), **_flat("above", line.above),
         **_capability("cp", line.cp), **_capability("cpk", line.cpk),
+        **_capability("needed_limit", line.by_limit.needed),
         "yield": _interval(line.inside),
         "impossible": int(line.impossible),
         "solver_runs": int(line.prediction.solver_runs),

@@ -14,7 +14,10 @@ from tolerance.report.wording import shorten
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
 
+    from matplotlib.axes import Axes
+
 FAMILY = "DejaVu Sans"
+HINTED = 1.04  # letters fitted to the points of a picture may come out a little wider
 
 
 @contextmanager
@@ -33,12 +36,19 @@ def width_of(text: str, size: float, *, bold: bool = False) -> float:
     return float(width)
 
 
+def width_in_points(axes: Axes) -> float:
+    """How wide the axes are on their page [points]."""
+    figure = axes.get_figure(root=True)
+    assert figure is not None
+    return float(72.0 * axes.get_position().width * figure.get_figwidth())
+
+
 def fitted(text: str, room: float, sizes: Sequence[float], *, bold: bool = False) -> tuple[str, float]:
     """The text on one row no wider than `room` [points], and its size: the largest of `sizes` (falling) that fits.
 
     Where even the smallest is too wide, the text is cut in its middle.
     """
-    text = " ".join(text.split())
+    text, room = " ".join(text.split()), room / HINTED
     for size in sizes:
         if width_of(text, size, bold=bold) <= room:
             return text, size

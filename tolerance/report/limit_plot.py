@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from matplotlib.ticker import FixedLocator, MaxNLocator, NullLocator
 
+from tolerance.report.letters import fitted, width_in_points
 from tolerance.report.looks import (
     BODY,
     BODY_EDGE,
@@ -23,7 +24,7 @@ from tolerance.report.looks import (
     SMALL,
     quiet_axes,
 )
-from tolerance.report.wording import percent, percent_digits, shorten, trimmed
+from tolerance.report.wording import percent, percent_digits, trimmed
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -31,7 +32,6 @@ if TYPE_CHECKING:
     from tolerance.results import Interval, YieldByLimit
 
 LEAST_FAILING = 0.5e-4  # the end of the scale, 99.995 %
-NAME_LENGTH = 36
 YIELDS = (0.0, 0.9, 0.99, 0.999, 0.9999)
 
 
@@ -58,7 +58,8 @@ def draw_yield_by_limit(
     axes.set_yticklabels([trimmed(100.0 * share, 2) for share in YIELDS])
     axes.set_xlabel("limit, of the target [%]")
     axes.set_ylabel("yield [%]")
-    axes.set_title(shorten(name, NAME_LENGTH), fontsize=MEDIUM, weight="bold", pad=20.0)
+    words, size = fitted(name, width_in_points(axes), (MEDIUM, SMALL), bold=True)
+    axes.set_title(words, fontsize=size, weight="bold", pad=20.0)
     axes.annotate(_needed_words(curve.needed, target_yield), (0.0, 1.0), xycoords="axes fraction", xytext=(0, 5),
                   textcoords="offset points", va="bottom", fontsize=SMALL, color=FAINT_INK)
     quiet_axes(axes, grid="y")

@@ -27,6 +27,7 @@ COPPER = {"trace": "#1d2433", "ground": "#4b5267", "plane": "#4b5267"}
 MATERIAL = {"mask": "#cbbde4", "prepreg": "#f6f1e4", "core": "#dbe3ec"}
 CORE_GRAIN = "#aebccc"
 AIR = "#ffffff"
+BAND, BAND_OPACITY = "#e59a1c", 0.55  # where tolerances move an edge
 
 HATCH_FAIL = "////"
 PAGE = (13.333, 7.5)  # inches, a slide

@@ -55,7 +55,10 @@ def _nested(nested: NestedYield) -> dict[str, object]:
 def _reading(risks: ReadingRisks | None) -> dict[str, object]:
     if risks is None:
         return {}
+    reading = risks.reading
     return {
+        "repeatability_ohm": float(reading.repeatability), "bias_ohm": float(reading.bias),
+        "guard_band_ohm": float(reading.guard_band),
         "yield_as_read": _interval(risks.as_read), "accepted": _interval(risks.accepted),
         "false_accepts": _interval(risks.false_accepts), "false_rejects": _interval(risks.false_rejects),
         "guard_bands": [_guard_band(each) for each in risks.guard_bands],

@@ -63,7 +63,9 @@ def reading_table(result: RunResult) -> Table:
     """What readings make of the coupons, and guard bands against false accepts: one row a line, one for all."""
     assert result.reading is not None
     columns = (
-        Column("line", "line"), *_share_columns("yield", "yield, true", 2),
+        Column("line", "line"), Column("repeatability", "deviation of a reading", "ohm", 3),
+        Column("bias", "bias of a reading", "ohm", 3), Column("guard_band", "guard band", "ohm", 3),
+        *_share_columns("yield", "yield, true", 2),
         *_share_columns("as_read", "yield as read", 2), *_share_columns("accepted", "accepted", 2),
         *_share_columns("false_accepts", "false accepts", 3), *_share_columns("false_rejects", "false rejects", 3),
         *(column for each in result.reading.guard_bands for column in _guard_columns(each.wanted)),
@@ -114,7 +116,10 @@ def sentences(result: RunResult) -> list[str]:
                     f"coupons. Every coupon passes on {share_with_range(result.nested.panel)} of the panels, "
                     f"and in {share_with_range(result.nested.lot)} of the lots.")
     if result.reading is not None:
-        said.append("False accepts lie outside the limits and are read inside (less the guard band), false rejects the "
+        reading = result.reading.reading
+        said.append(f"A reading scatters by {trimmed(reading.repeatability, 3)} ohm and is off by "
+                    f"{trimmed(reading.bias, 3)} ohm; guard band {trimmed(reading.guard_band, 3)} ohm. "
+                    "False accepts lie outside the limits and are read inside (less the guard band), false rejects the "
                     "reverse: shares of all coupons. A guard band for 0.1 % holds false accepts to that.")
     if result.acceptance is not None:
         said.append(acceptance_sentence(result.acceptance))
@@ -157,7 +162,9 @@ def _level_row(name: str, nested: NestedYield, line: LineResult | None) -> dict[
 
 
 def _test_row(name: str, inside: Interval, risks: ReadingRisks) -> dict[str, Cell]:
-    row: dict[str, Cell] = {"line": name, **ends("yield", inside)}
+    reading = risks.reading
+    row: dict[str, Cell] = {"line": name, "repeatability": reading.repeatability, "bias": reading.bias,
+                            "guard_band": reading.guard_band, **ends("yield", inside)}
     for share in ("as_read", "accepted", "false_accepts", "false_rejects"):
         row |= ends(share, getattr(risks, share))
     for each in risks.guard_bands:

@@ -11,11 +11,14 @@ from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
-from matplotlib.patches import Polygon
+from matplotlib.patches import PathPatch, Polygon
+from matplotlib.path import Path
 from matplotlib.ticker import MaxNLocator
 
 from tolerance.report.looks import (
     AIR,
+    BAND,
+    BAND_OPACITY,
     COPPER,
     CORE_GRAIN,
     FAINT_INK,
@@ -72,6 +75,10 @@ def draw_section(axes: Axes, line: LineResult, *, lengths: LengthUnit) -> Axes:
     for conductor in drawing.conductors:
         axes.add_patch(Polygon(_reaching(conductor.outline, drawing, view) / unit, closed=True,
                                facecolor=COPPER[conductor.role], edgecolor=INK, linewidth=0.8))
+    if drawing.bands:  # as one path, so that they are no darker where they overlap
+        corners = [_reaching(band, drawing, view) / unit for band in drawing.bands]
+        bands = Path.make_compound_path(*(Path(np.vstack([band, band[:1]]), closed=True) for band in corners))
+        axes.add_patch(PathPatch(bands, facecolor=BAND, edgecolor="none", alpha=BAND_OPACITY, zorder=3))
     axes.set_xlim(view.left / unit, view.right / unit)
     axes.set_ylim(view.bottom / unit, view.top / unit)
     axes.set_aspect("equal", adjustable="box")
@@ -79,10 +86,23 @@ def draw_section(axes: Axes, line: LineResult, *, lengths: LengthUnit) -> Axes:
     axes.xaxis.set_major_locator(MaxNLocator(MOST_STEPS, steps=[1, 2, 5, 10]))
     axes.yaxis.set_major_locator(MaxNLocator(4, steps=[1, 2, 5, 10]))
     axes.set_title("cross-section at the nominals, to scale")
+    _remark(axes, drawing)
     _name_materials(axes, drawing, view, lengths)
     words_begin = _mark_widths(axes, drawing, view, lengths)
     _mark_heights(axes, drawing, view, lengths, right=words_begin - view.metres(14.0))
     return axes
+
+
+def _remark(axes: Axes, drawing: Drawing) -> None:
+    """A few faint words at the ends of the title's row and of the axis' row, on what needs to be told."""
+    told = []
+    if drawing.bands:
+        told.append(("bands: each tolerance alone, 99.7 % of coupons", 1.0, 11, "bottom"))
+    if any(region.filled > 0.0 for region in drawing.regions):
+        told.append(("after a +: height of absent copper, filled", 0.0, -24, "top"))
+    for words, height, offset, side in told:
+        axes.annotate(words, (1.0, height), xycoords="axes fraction", xytext=(0, offset), textcoords="offset points",
+                      ha="right", va=side, fontsize=SMALL, color=FAINT_INK)
 
 
 def view_of(drawing: Drawing, axes: Axes) -> View:
@@ -227,7 +247,17 @@ def _mark_heights(axes: Axes, drawing: Drawing, view: View, lengths: LengthUnit,
                   color=FAINT_INK, linewidth=0.7, linestyle=(0, (1, 2)))
     for (low, high), height in zip(steps, texts, strict=True):
         _dimension(axes, (place, low), (place, high), lengths)
-        _words(axes, (place - view.metres(9.0), height), length_text(high - low, lengths), lengths, ha="right")
+        _words(axes, (place - view.metres(9.0), height), _height_text(drawing, low, high, lengths), lengths, ha="right")
+
+
+def _height_text(drawing: Drawing, low: float, high: float, lengths: LengthUnit) -> str:
+    """A height of one dielectric; what of it fills absent copper stands after a plus: "200 + 15 um"."""
+    middle = 0.5 * (low + high)
+    filled = sum(region.filled for region in drawing.regions
+                 if region.outline[:, 1].min() < middle < region.outline[:, 1].max())
+    if not 0.0 < filled < high - low:
+        return length_text(high - low, lengths)
+    return f"{length_text(high - low - filled, lengths).removesuffix(f' {lengths}')} + {length_text(filled, lengths)}"
 
 
 @dataclass(frozen=True, slots=True)

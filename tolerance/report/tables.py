@@ -9,6 +9,8 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from tolerance.report.wording import (
     fixed,
     headline_text,
@@ -138,6 +140,9 @@ LINE_COLUMNS = (
     Column("above_high", "above, high end", "share", 2),
     Column("cp", "Cp", "", 2), Column("cp_low", "Cp, low end", "", 3), Column("cp_high", "Cp, high end", "", 3),
     Column("cpk", "Cpk", "", 2), Column("cpk_low", "Cpk, low end", "", 3), Column("cpk_high", "Cpk, high end", "", 3),
+    Column("needed_limit", "limit that meets the target yield", "share", 2),
+    Column("needed_limit_low", "that limit, low end", "share", 2),
+    Column("needed_limit_high", "that limit, high end", "share", 2),
     Column("impossible", "impossible coupons", "", 0),
     Column("kind", "kind"), Column("layer", "layer"), Column("references", "reference planes"),
     Column("solver_runs", "field solver runs", "", 0), Column("degree", "polynomial degree", "", 0),
@@ -194,6 +199,15 @@ def driver_table(result: RunResult) -> Table:
     return Table.of(DRIVER_COLUMNS + (SHAPLEY_COLUMNS if with_shapley else ()), rows)
 
 
+def limit_table(result: RunResult) -> Table:
+    """One row for each limit: the yield of all lines together were all held to it, and of each line."""
+    curves = [("all lines together", result.by_limit), *((line.name, line.by_limit) for line in result.lines)]
+    columns = (Column("limit", "limit, half-width", "share", 1),
+               *(Column(f"yield {number}", name, "share", 2) for number, (name, _) in enumerate(curves)))
+    values = np.stack([result.by_limit.limit, *(curve.value for _, curve in curves)], axis=1)
+    return Table(columns, tuple(tuple(row) for row in values.tolist()))
+
+
 def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
     return {
         "name": line.name, "verdict": verdict(line.inside.value, target_yield), "kind": line.kind,
@@ -202,6 +216,7 @@ def _line_row(line: LineResult, target_yield: float) -> dict[str, Cell]:
         "high_limit_ohm": float(line.high_limit), "nominal_ohm": float(line.nominal),
         **ends("mean_ohm", line.mean), **ends("std_ohm", line.deviation), **ends("yield", line.inside),
         **ends("below", line.below), **ends("above", line.above), **ends("cp", line.cp), **ends("cpk", line.cpk),
+        **ends("needed_limit", line.by_limit.needed),
         "impossible": int(line.impossible), "solver_runs": int(line.prediction.solver_runs),
         "certified": "the solver's" if line.certificate.certified else "predicted",
         "coupons_solved": int(line.certificate.solved),

@@ -231,7 +231,8 @@ def _say_modes(result: CheckResult, console: Console) -> None:
 
 def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:
     per_length = 1e-3 if lengths == "um" else 1000.0 * METRES_IN["mil"]
-    details = [line.kind, place_words(line.layer, line.references, joint=", "),
+    details = [line.kind, place_words(line.layer if line.partner is None else f"{line.layer} and {line.partner}",
+                                      line.references, joint=", "),
                *(f"{name} {length_text(size, lengths)}" for name, size in line.dimensions)]
     if line.common_mode is not None and line.mode != "common":
         details.append(f"common {fixed(line.common_mode, 2)} ohm")

@@ -62,14 +62,14 @@ def variation_table(scenario: Scenario) -> Table:
         Column("unit", "unit"), Column("shape", "shape"), Column("tolerance", "half-width"),
         Column("tolerance_unit", "half-width in"), Column("basis", "the half-width is"), Column("shift", "shift"),
         Column("shift_unit", "shift in"), Column("low", "low end"), Column("high", "high end"),
-        Column("level", "level"), Column("measured", "measured values"),
+        Column("level", "level"), Column("measured", "measured values"), Column("origin", "where from"),
     )
     rows = []
     for variation in scenario.variations:
         named = members(scenario, variation)
         joined = " + ".join(item.name for item in named)
         rows += [_variation_row(variation, item, joined if variation.together else item.name, scenario.report.lengths)
-                 for item in named]
+                 | {"origin": _origin(scenario, item)} for item in named]
     needed = ("variable", "property", "nominal", "unit", "shape", "tolerance", "tolerance_unit", "basis")
     filled = tuple(column for column in columns
                    if column.key in needed or any(row[column.key] is not None for row in rows))
@@ -138,6 +138,11 @@ def _variation_row(variation: Variation, item: Property, variable: str, lengths:
         "low": _in_unit(variation.low, unit), "high": _in_unit(variation.high, unit),
         "level": _level(variation.level), "measured": _measured(variation),
     }
+
+
+def _origin(scenario: Scenario, item: Property) -> str | None:
+    """Where the law comes from; nothing is said in a scenario without a preset."""
+    return scenario.origins.get(item.name, "this scenario") if scenario.origins else None
 
 
 def _in_unit(value: float | None, unit: LengthUnit | None) -> float | None:

@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
+import math
 import textwrap
 from typing import TYPE_CHECKING
 
 from openpyxl import Workbook
-from openpyxl.cell.cell import ILLEGAL_CHARACTERS_RE
 from openpyxl.cell.cell import Cell as SheetCell
 from openpyxl.formatting.rule import Rule
 from openpyxl.styles import Alignment, Border, Font, PatternFill, Side
@@ -14,6 +14,7 @@ from openpyxl.styles.differential import DifferentialStyle
 from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.properties import PageSetupProperties
 
+from tolerance.report.charts import Placed, draw_charts
 from tolerance.report.files import put_in_place
 from tolerance.report.lots_tables import (
     acceptance_sentence,
@@ -23,7 +24,17 @@ from tolerance.report.lots_tables import (
     reading_table,
 )
 from tolerance.report.measured import intervals_of, measured_table
-from tolerance.report.tables import MISSES, Cell, Column, Table, driver_table, line_table, summary_table
+from tolerance.report.sheet_text import clean_text
+from tolerance.report.tables import (
+    MISSES,
+    Cell,
+    Column,
+    Table,
+    driver_table,
+    limit_table,
+    line_table,
+    summary_table,
+)
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
 
@@ -39,6 +50,7 @@ INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3E
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
+PAGE = 240.0  # letters across a printed page at most; a wider table goes on on further ones
 ROW = 15.0  # points, one row of letters of the usual size
 
 
@@ -51,45 +63,50 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
     """The workbook, not yet written."""
     book = Workbook()
     book.properties.creator = "tolerance"
-    book.properties.title = _clean(result.title)
+    book.properties.title = clean_text(result.title)
     first = book.active
     assert first is not None
     book.remove(first)
-    _summary_sheet(book.create_sheet("Summary"), result, scenario)
-    for name, table in (
-        ("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Stackup", stackup_table(scenario)),
-        ("Drawn lines", drawn_table(scenario)), ("Variations", variation_table(scenario)),
-        *([("Measured data", measured_table(result, scenario.report.lengths))] if result.measured else []),
-        *([("Correlations", correlation_table(scenario))] if scenario.correlations else []),
-    ):
-        sheet = book.create_sheet(name)
-        _write_table(sheet, table, top=1)
-        sheet.freeze_panes = "B2"
-        if name == "Lines":
-            _mark_misses(sheet, table, top=1, target_yield=result.target_yield)
-    _lot_sheets(book, result)
+    placed = {"Summary": _summary_sheet(book.create_sheet("Summary"), result, scenario)}
+    charts = book.create_sheet("Charts")
+    for name, table in _tables(result, scenario):
+        placed[name] = Placed(book.create_sheet(name), table, 1)
+        _write_table(placed[name].sheet, table, top=1)
+        placed[name].sheet.freeze_panes = "B2"
+    _acceptance_sheet(book, result)
+    _mark_misses(placed["Lines"], target_yield=result.target_yield)
+    draw_charts(charts, summary=placed["Summary"], drivers=placed["Drivers"], by_limit=placed["Yield by limit"],
+                target=f"{trimmed(100.0 * result.target_yield, 3)} %")
     _record_sheet(book.create_sheet("Run record"), result)
     return book
 
 
-def _lot_sheets(book: Workbook, result: RunResult) -> None:
-    """Lots and the impedance test, where there is anything to say of them."""
-    tables = []
+def _tables(result: RunResult, scenario: Scenario) -> list[tuple[str, Table]]:
+    """The tables that have a sheet of their own, by its name, in their order."""
+    tables = [("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Yield by limit", limit_table(result))]
     if result.nested is not None:
         tables += [("Levels", level_table(result)), ("Levels by variable", level_driver_table(result))]
     if result.reading is not None:
         tables.append(("Test", reading_table(result)))
-    for name, table in tables:
-        sheet = book.create_sheet(name)
-        _write_table(sheet, table, top=1)
-        sheet.freeze_panes = "B2"
+    tables += [("Stackup", stackup_table(scenario)), ("Drawn lines", drawn_table(scenario)),
+               ("Variations", variation_table(scenario))]
+    if result.measured:
+        tables.append(("Measured data", measured_table(result, scenario.report.lengths)))
+    if scenario.correlations:
+        tables.append(("Correlations", correlation_table(scenario)))
+    return tables
+
+
+def _acceptance_sheet(book: Workbook, result: RunResult) -> None:
+    """What the sampling plan does to lots, where there is one; it stands after the test."""
     if result.acceptance is not None:
-        sheet = book.create_sheet("Lot acceptance")
+        sheet = book.create_sheet("Lot acceptance", book.sheetnames.index("Stackup"))
         _put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = _font(12, bold=True)
         _write_table(sheet, acceptance_table(result.acceptance), top=3)
+        sheet.freeze_panes = "A4"
 
 
-def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> None:
+def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> Placed:
     missing = [line.name for line in result.lines if line.inside.value < result.target_yield]
     aim = f"{trimmed(100.0 * result.target_yield, 3)} %"
     ends = share_range_text(result.inside)
@@ -109,10 +126,11 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> N
     for row, (sentence, font) in enumerate(sentences, start=1):
         _put(sheet, row, 1, sentence).font = font
         sheet.row_dimensions[row].height = 1.5 * float(font.size or 11.0)
-    table, top = summary_table(result), len(sentences) + 2
-    _write_table(sheet, table, top=top)
-    _mark_misses(sheet, table, top=top, target_yield=result.target_yield)
-    sheet.freeze_panes = f"B{top + 1}"
+    placed = Placed(sheet, summary_table(result), len(sentences) + 2)
+    _write_table(sheet, placed.table, top=placed.top)
+    _mark_misses(placed, target_yield=result.target_yield)
+    sheet.freeze_panes = f"B{placed.top + 1}"
+    return placed
 
 
 def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
@@ -132,11 +150,16 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
             cell.alignment = alignments[column - 1]
             if isinstance(value, int | float):
                 cell.number_format = number_format(heading)
+        lines = max(_rows_of(table, column, value) for column, value in enumerate(cells))
+        if lines > 1:
+            sheet.row_dimensions[row].height = ROW * lines
     last = get_column_letter(len(table.columns))
     sheet.auto_filter.ref = f"A{top}:{last}{max(top + len(table.rows), top + 1)}"
     sheet.sheet_view.showGridLines = False
     sheet.page_setup.orientation = "landscape"
     sheet.page_setup.fitToHeight = 0
+    sheet.page_setup.fitToWidth = math.ceil(sum(_width(table, column) for column in range(len(table.columns))) / PAGE)
+    sheet.print_title_cols = "A:A"
     sheet.sheet_properties.pageSetUpPr = PageSetupProperties(fitToPage=True)
     sheet.print_title_rows = f"{top}:{top}"
 
@@ -168,6 +191,12 @@ def _width(table: Table, column: int) -> float:
     return min(max(NARROWEST, len(heading.head) / 2.0, longest_word + 4, cells + 3), WIDEST)
 
 
+def _rows_of(table: Table, column: int, value: Cell) -> int:
+    """Rows that a text takes in its column; only the widest columns go on in further ones."""
+    width = _width(table, column)
+    return len(textwrap.wrap(value, int(width) - 3)) if isinstance(value, str) and width >= WIDEST else 1
+
+
 def _head_rows(table: Table, column: int) -> int:
     """Rows that a heading takes when it is wrapped into its column."""
     return len(textwrap.wrap(table.columns[column].head, max(int(_width(table, column)) - 3, 1)))
@@ -179,17 +208,16 @@ def _shown(column: Column, value: Cell) -> str:
     return "" if value is None else f"{value:.8g}" if isinstance(value, float) else str(value)
 
 
-def _mark_misses(sheet: Worksheet, table: Table, *, top: int, target_yield: float) -> None:
+def _mark_misses(placed: Placed, *, target_yield: float) -> None:
     """Mark yield and verdict of the lines under the target; the verdict says so in words too."""
-    keys = [column.key for column in table.columns]
-    first, last = top + 1, top + max(len(table.rows), 1)
-    letter = get_column_letter(keys.index("yield") + 1)
+    first, last = placed.top + 1, placed.top + max(len(placed.table.rows), 1)
+    letter = get_column_letter(placed.column("yield"))
     for key in ("name", "yield", "verdict"):
-        marked = get_column_letter(keys.index(key) + 1)
+        marked = get_column_letter(placed.column(key))
         look = DifferentialStyle(font=Font(bold=True, color=FAIL), fill=PatternFill(bgColor=FAIL_FILL))
         rule = Rule(type="expression", dxf=look,
                     formula=[f"AND(ISNUMBER(${letter}{first}),${letter}{first}<{target_yield!r})"])
-        sheet.conditional_formatting.add(f"{marked}{first}:{marked}{last}", rule)
+        placed.sheet.conditional_formatting.add(f"{marked}{first}:{marked}{last}", rule)
 
 
 def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
@@ -214,17 +242,12 @@ def _pieces(line: str) -> list[str]:
     return [line[start:start + LONGEST_TEXT] for start in range(0, max(len(line), 1), LONGEST_TEXT)]
 
 
-def _clean(text: str) -> str:
-    """Without the control characters that a workbook cannot hold."""
-    return ILLEGAL_CHARACTERS_RE.sub("\N{REPLACEMENT CHARACTER}", text)
-
-
 def _put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
     """Write one cell. Text stays text, also where it begins like a formula."""
     cell = sheet.cell(row=row, column=column)
     assert isinstance(cell, SheetCell)
     if isinstance(value, str):
-        cell.value = _clean(value)
+        cell.value = clean_text(value)
         cell.data_type = "s"
         if value.startswith(LIKE_A_FORMULA):
             cell.quotePrefix = True

@@ -12,6 +12,7 @@ from tolerance.scenario.drafts import Draft, Drafts, Model, draft_tables
 from tolerance.scenario.entry_rules import entry_findings
 from tolerance.scenario.mixtures import with_mixtures
 from tolerance.scenario.not_yet import not_yet_findings
+from tolerance.scenario.presets import Applied, with_preset
 from tolerance.scenario.reading import document_of, read_document
 from tolerance.scenario.readings import readings_of
 from tolerance.scenario.stack_rules import stack_findings
@@ -39,13 +40,14 @@ def _checked(document: Document, findings: Sequence[Finding], *, source: str) ->
     """The document as a Scenario. Raises ScenarioError with all problems, sorted by place."""
     drafts, found = draft_tables(document)
     drafts, unmixed = with_mixtures(drafts)
-    problems = [*findings, *found, *unmixed, *entry_findings(drafts)]
+    drafts, applied, unknown = with_preset(document, drafts)
+    problems = [*findings, *found, *unmixed, *unknown, *entry_findings(drafts)]
     readings, unread = readings_of(drafts)
     problems += [*stack_findings(drafts), *variation_findings(drafts), *unread]
     problems = _one_for_each_key([*problems, *not_yet_findings(document)])
     if problems:
         raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])
-    return _scenario(document, drafts, readings, source)
+    return _scenario(document, drafts, readings, applied, source)
 
 
 def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
@@ -58,15 +60,23 @@ def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
     return list(kept.values())
 
 
-def _scenario(document: Document, drafts: Drafts, readings: tuple[Readings, ...], source: str) -> Scenario:
+def _scenario(
+    document: Document, drafts: Drafts, readings: tuple[Readings, ...], applied: Applied | None, source: str,
+) -> Scenario:
     return Scenario(
         format=FORMAT, title=document.top.values["title"], evaluation=_model(drafts.evaluation),
         layers=_models(drafts.layers), lines=_models(drafts.lines), variations=_models(drafts.variations),
         correlations=_models(drafts.correlations), offers=_models(drafts.offers),
         test=None if drafts.test is None else _model(drafts.test),
         report=_model(drafts.report) if "report" in document.tables else Report(),
-        readings=readings, source=source, text=document.text,
+        readings=readings, source=source,
+        origins={} if applied is None else dict(applied.origins),
+        text=document.text if applied is None else _with_preset_text(document.text, applied),
     )
+
+
+def _with_preset_text(text: str, applied: Applied) -> str:
+    return f"{text.rstrip()}\n\n# ---- preset {applied.preset.name} ----\n{applied.preset.text}"
 
 
 def _models(drafts: Iterable[Draft[Model]]) -> tuple[Model, ...]:

@@ -13,7 +13,7 @@ from tolerance.errors import Problem
 from tolerance.scenario.keys import close_match, meant_by
 from tolerance.scenario.places import Lines
 
-TOP_KEYS = ("format", "title", "extends")
+TOP_KEYS = ("format", "title", "extends", "preset")
 SINGLE_TABLES = ("evaluation", "test", "report")
 ENTRY_TABLES = ("layers", "lines", "variations", "correlations", "offers")
 _KNOWN = (*TOP_KEYS, *SINGLE_TABLES, *ENTRY_TABLES)

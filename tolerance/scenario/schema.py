@@ -13,6 +13,7 @@ from tolerance.scenario.drafts import kind_of
 from tolerance.scenario.entry_rules import LAYER_KEYS, SHAPE_KEYS
 from tolerance.scenario.keys import Kind, Text
 from tolerance.scenario.mixtures import RESIN_KEYS
+from tolerance.scenario.presets import preset_names
 from tolerance.scenario.tables import (
     COPPER,
     FORMAT,
@@ -64,6 +65,8 @@ def _top_keys() -> Schema:
         "title": {**Text("a title").json_schema(), "description": "What reports are headed with"},
         "extends": {"type": "string", "minLength": 1,
                     "description": "Another scenario, relative to this file; entries with the same name are merged"},
+        "preset": {"enum": list(preset_names()),
+                   "description": "Tolerances for what no variation names; `tolerance presets` lists them"},
     }
 
 

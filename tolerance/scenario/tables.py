@@ -6,6 +6,7 @@ Only what one key says by itself is checked here; what keys and tables say toget
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Annotated, Literal
 
@@ -247,6 +248,7 @@ class Scenario(BaseModel):
     test: ImpedanceTest | None = None
     report: Report = Report()
     readings: tuple[Readings, ...] = ()  # of measured variations, one for each property
+    origins: Mapping[str, str] = {}  # where a preset has the law of a property from, by the property's name
     source: str = ""  # path of the file
     text: str = ""  # the TOML as read, with that of every file it extends
 

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -14,12 +15,16 @@ from tolerance.sections.surroundings import BroadsideSurroundings, Surroundings
 
 @dataclass(frozen=True, slots=True)
 class Region:
-    """A dielectric of a cross-section: outline (corners, 2) in metres, x sideways and y up."""
+    """A dielectric of a cross-section: outline (corners, 2) in metres, x sideways and y up.
+
+    filled : how much of its height [m] lies where copper is absent.
+    """
 
     name: str
     kind: str  # mask | prepreg | core
     dk: float
     outline: FloatArray
+    filled: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,10 +38,26 @@ class Conductor:
 
 @dataclass(frozen=True, slots=True)
 class Drawing:
-    """A line's nominal cross-section to scale."""
+    """A line's nominal cross-section to scale.
+
+    bands : where tolerances move its edges, quadrilaterals (4, 2) in metres; see sections/bands.py.
+    """
 
     regions: tuple[Region, ...]
     conductors: tuple[Conductor, ...]
+    bands: tuple[FloatArray, ...] = ()
+
+
+def with_fills(
+    drawing: Drawing, surroundings: Surroundings | BroadsideSurroundings, nominals: Mapping[str, float],
+) -> Drawing:
+    """The drawing with the height of absent copper that each ply fills; nominals [SI] by property name."""
+    plies = surroundings.plies if isinstance(surroundings, BroadsideSurroundings) \
+        else (*surroundings.foot_side, *surroundings.crest_side)
+    filled = {ply.layer: sum(nominals[f"{copper}.{item}"] for copper in ply.fills for item in ("foil", "plating"))
+              for ply in plies}
+    return replace(drawing, regions=tuple(
+        replace(region, filled=float(filled.get(region.name, 0.0))) for region in drawing.regions))
 
 
 def drawing_of(

@@ -98,7 +98,7 @@ def _nested(verdicts: BoolArray, size: LotSize, replicates: int) -> NestedYield:
     panels = np.all(verdicts.reshape(3, -1, size.coupons_per_panel), axis=2)
     lots = np.all(panels.reshape(3, -1, size.panels), axis=2)
     failing = np.count_nonzero(~verdicts[0].reshape(-1, size.coupons), axis=1)
-    shares = 1.0 - np.sort(failing)[::-1] / size.coupons
+    shares = 1.0 - failing / size.coupons
     return NestedYield(
         panel=share_interval(panels[0], replicates=replicates, surely=panels[1], perhaps=panels[2],
                              cluster=size.panels),

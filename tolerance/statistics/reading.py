@@ -56,6 +56,7 @@ class GuardBand:
 class ReadingRisks:
     """What readings make of the coupons. Shares of all coupons [-]."""
 
+    reading: Reading
     as_read: Interval  # read inside the limits, no guard band
     accepted: Interval  # read inside the limits less the guard band
     false_accepts: Interval  # outside in truth, accepted: the consumer's risk
@@ -137,7 +138,7 @@ def judge_readings(coupons: Coupons, reading: Reading) -> ReadingRisks:
         if _rests_on_few(estimates[0][name], coupons.cluster):
             intervals[name] = _allowing_for_more(intervals[name], behind, highest, coupons)
     return ReadingRisks(
-        as_read=intervals["as_read"], accepted=intervals["accepted"],
+        reading, as_read=intervals["as_read"], accepted=intervals["accepted"],
         false_accepts=intervals["false_accepts"], false_rejects=intervals["false_rejects"],
         guard_bands=tuple(guard_band_for(wanted, coupons, reading) for wanted in FALSE_ACCEPTS_WANTED),
     )

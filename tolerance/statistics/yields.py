@@ -97,7 +97,8 @@ def judge_line(
     error = impedance_error
     doubt = error if verdict_error is None else verdict_error
     mean, deviation = _moments(impedance, possible, replicates, cluster)
-    fixed = deviation[0] - float(half_interval(deviation[1])) - error <= 0.0
+    surely = min(deviation[0] - float(half_interval(deviation[1])), float(np.min(deviation[1])))
+    fixed = surely - error <= 0.0
     shares = {
         name: _share(impedance, possible, Limits(low, high), error=doubt, replicates=replicates, cluster=cluster)
         for name, low, high in (

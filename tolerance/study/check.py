@@ -31,6 +31,7 @@ def _check_line(prepared: PreparedLine, *, formulas: bool) -> NominalLine:
         even_effective_dk=float(modes[EVEN].effective_dk[0]) if pair else None,
         dimensions=tuple((name, length) for name, length in drawn if length is not None),
         formulas=_opinions(prepared) if formulas else None, mode=prepared.mode,
+        partner=line.partner,
     )
 
 

@@ -20,9 +20,8 @@ import numpy as np
 from threadpoolctl import threadpool_limits
 
 from tolerance.process.draws import REPLICATES, ProcessDraws, process_of
-from tolerance.results import LineResult, Record, RunResult, Spread, VarianceShares
+from tolerance.results import Drawing, LineResult, Record, RunResult, Spread, VarianceShares
 from tolerance.scenario.tables import Line, Scenario
-from tolerance.sections.drawing import drawing_of
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
@@ -30,6 +29,7 @@ from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.statistics.reading import Coupons
 from tolerance.statistics.sampling import Figures, widened_by_sampling
 from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
+from tolerance.study.drawing import draw_line
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
 from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
@@ -96,10 +96,11 @@ def run(
 
     variances = on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
                               "variance by level", tell) if draws.lots else [None] * len(predicted)
+    drawings = [draw_line(line.prepared, process) for line in predicted]
     results = [
-        replace(_line_result(line, verdict, ranked, curve), nested=of_lots, variance=variance, reading=reading)
-        for line, verdict, ranked, curve, of_lots, variance, reading in zip(
-            predicted, judged.lines, drivers, by_limit, nested.lines, variances, tested.lines, strict=True)
+        replace(_line_result(line, verdict, ranked, curve, drawing), nested=of_lots, variance=variance, reading=reading)
+        for line, verdict, ranked, curve, drawing, of_lots, variance, reading in zip(
+            predicted, judged.lines, drivers, by_limit, drawings, nested.lines, variances, tested.lines, strict=True)
     ]
     clock.lap("drivers")
     return RunResult(
@@ -167,7 +168,7 @@ def on_all_cores(
 
 
 def _line_result(
-    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit,
+    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit, drawing: Drawing,
 ) -> LineResult:
     prepared = line.prepared
     edges, counts = histogram(line.impedance[line.possible])
@@ -178,7 +179,7 @@ def _line_result(
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
         inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
         spread=Spread(edges, counts), by_limit=by_limit, prediction=line.prediction, certificate=line.certificate,
-        drawing=drawing_of(prepared.nominal, prepared.surroundings, prepared.line.layer), direct=line.direct,
+        drawing=drawing, direct=line.direct,
     )
 
 
