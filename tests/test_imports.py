@@ -27,12 +27,8 @@ ROWS: list[list[str]] = [
     ["formulas"],
     ["surrogate"],
     ["statistics"],
-<<<<<<< HEAD
     ["decisions"],
-    ["nominal", "results", "decided"],
-=======
-    ["nominal", "results", "fitted"],
->>>>>>> main
+    ["nominal", "results", "fitted", "decided"],
     ["study"],
     ["report"],
     ["screen"],

@@ -1,13 +1,14 @@
-"""Impedances along one quantity that is changed: solved at five places, and between them coupon by coupon.
+"""Impedances along one quantity that is changed: predicted at a few places, and between them coupon by coupon.
 
-ln Z of every coupon is a polynomial of degree 4 through five places, so that a yield at any place between them costs
+ln Z of every coupon is a polynomial through four or five places, so that a yield at any place between them costs
 one product of matrices. At the places themselves nothing is interpolated.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
 
 import numpy as np
 
@@ -20,9 +21,9 @@ SMALLEST_IMPEDANCE = 1e-6  # [ohm] what stands for an impedance of a section tha
 
 @dataclass(frozen=True, slots=True)
 class Path:
-    """One line along a quantity: places (5,) rising, logarithm (5, coupons) of the impedance in ohm there.
+    """One line along a quantity: places rising, logarithm (places, coupons) of the impedance in ohm there.
 
-    possible : (5, coupons); None where all are possible everywhere.
+    possible : (places, coupons); None where all are possible everywhere.
     """
 
     line: LineModel
@@ -56,14 +57,23 @@ class Path:
         return np.asarray(np.all(possible[sorted(around)], axis=0), dtype=np.bool_)
 
 
-def path_of(line: LineModel, germ: FloatArray, places: FloatArray, process_at: Callable[[float], Process]) -> Path:
+def logarithm_of(line: LineModel, process: Process, germ: FloatArray) -> FloatArray:
+    """ln of the impedance in ohm (coupons,)."""
+    return np.log(np.maximum(line.impedance(process, germ), SMALLEST_IMPEDANCE))
+
+
+def path_of(
+    line: LineModel, germ: FloatArray, places: FloatArray, process_at: Callable[[float], Process], *,
+    known: Mapping[float, FloatArray] = MappingProxyType({}),
+) -> Path:
     """A line along a quantity whose process at a place is `process_at`; germ (coupons, variables).
 
+    known : logarithms (coupons,) at places where they need not be predicted again.
     Sections lie between those of the two ends in every dimension, so that where both ends are possible all are.
     """
     processes = [process_at(float(place)) for place in places]
-    logarithm = np.stack([np.log(np.maximum(line.impedance(process, germ), SMALLEST_IMPEDANCE))
-                          for process in processes])
+    logarithm = np.stack([known[float(place)] if float(place) in known else logarithm_of(line, process, germ)
+                          for place, process in zip(places, processes, strict=True)])
     ends = [line.possible(processes[0], germ), line.possible(processes[-1], germ)]
     if all(bool(np.all(end)) for end in ends):
         return Path(line, places, logarithm, None)

@@ -13,12 +13,12 @@ import numpy as np
 
 from tolerance.arrays import FloatArray, read_only
 from tolerance.decisions.board import Aim, Board, Side, aimed, every
-from tolerance.decisions.interpolation import Path, path_of
+from tolerance.decisions.interpolation import Path, logarithm_of, path_of
 from tolerance.process.changes import laws_of, scaled, with_laws
 from tolerance.process.draws import Process
 from tolerance.statistics.estimates import Interval
 
-FACTORS = (0.0, 0.5, 1.0, 1.5, 2.0)  # of the half-width: where impedances are predicted anew; between, interpolated
+FACTORS = (0.0, 0.5, 1.0, 2.0)  # of the half-width: where impedances are predicted anew; between, interpolated
 CURVE = tuple(step / 10.0 for step in range(21))
 BISECTIONS = 20  # the factor is then known to a millionth
 
@@ -91,13 +91,25 @@ def judged(board: Board, sides: Sequence[Side]) -> Judged:
     return Judged(tuple(board.share(side) for side in sides), board.share(every(sides, board.coupons)))
 
 
-def alone(board: Board, base: tuple[Side, ...], names: frozenset[str]) -> Alone:
-    """Follow the properties `names`, all scaled together, on the lines that they reach."""
+def base_logarithms(board: Board) -> tuple[FloatArray, ...]:
+    """ln of the impedance in ohm of every line as it is, (coupons,) each."""
+    return tuple(logarithm_of(line, line.process, board.germ) for line in board.lines)
+
+
+def alone(
+    board: Board, base: tuple[Side, ...], names: frozenset[str], logarithms: Sequence[FloatArray] | None = None,
+) -> Alone:
+    """Follow the properties `names`, all scaled together, on the lines that they reach.
+
+    logarithms : `base_logarithms` of the board, where they are at hand.
+    """
     factors = np.array(FACTORS)
     paths = {}
     for number, line in enumerate(board.lines):
         if names & set(laws_of(line.process)):
-            paths[number] = path_of(line, board.germ, factors, partial(scaled_process, line.process, names))
+            known = {} if logarithms is None else {1.0: logarithms[number]}
+            paths[number] = path_of(line, board.germ, factors, partial(scaled_process, line.process, names),
+                                    known=known)
     return Alone(board, base, paths)
 
 

@@ -125,7 +125,7 @@ def print_compare(result: CompareResult, console: Console) -> None:
     """Scenarios side by side, and which differences are real."""
     for number, one in enumerate(result.scenarios, start=1):
         say(console, f"{number}: {one.title} ({one.file})", style="bold")
-    table = table_of(("line", True), *((f"{number}\nyield [%]" + ("" if number == 1 else "\nless 1"), False)
+    table = table_of(("line", True), *((f"{number}\nyield [%]\n" + ("" if number == 1 else "less 1"), False)
                                        for number in range(1, len(result.scenarios) + 1)))
     names = dict.fromkeys(name for one in result.scenarios for name in one.line_names)
     for name in (*names, ""):

@@ -23,7 +23,7 @@ from tolerance.decided import (
 from tolerance.decisions.board import Aim, Board, Side, every
 from tolerance.decisions.comparing import Difference, on_common_columns
 from tolerance.decisions.offers import OfferModel, board_for_offers, front_of_offers, judged_set
-from tolerance.decisions.tightening import Tightening, alone, base_sides, judged, tightening
+from tolerance.decisions.tightening import Tightening, alone, base_logarithms, base_sides, judged, tightening
 from tolerance.errors import InputError
 from tolerance.process.draws import Process, process_of
 from tolerance.scenario.properties import matching, members, properties
@@ -52,10 +52,10 @@ def tighten(
     offers = offer_models(scenario)
     fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)), tell=tell)
     board, basis = fitted.board, basis_of(scenario, fitted, seed=own, together=together)
-    base = base_sides(board)
+    base, logarithms = base_sides(board), base_logarithms(board)
 
     def follow(of: tuple[str, frozenset[str]]) -> Tightening:
-        return tightening(alone(board, base, of[1]), of[0], aim=basis.aim, target_yield=basis.target_yield)
+        return tightening(alone(board, base, of[1], logarithms), of[0], aim=basis.aim, target_yield=basis.target_yield)
 
     named = [(", ".join(variation.of), frozenset(each.name for each in members(scenario, variation)))
              for variation in scenario.variations]
