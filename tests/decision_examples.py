@@ -7,8 +7,8 @@ import numpy as np
 from tests.process_examples import process, variable
 from tolerance.arrays import BoolArray, FloatArray
 from tolerance.decisions.board import Board, LineModel
-from tolerance.process.changes import seen_by_line
 from tolerance.process.draws import Process, ProcessDraws, draw_process
+from tolerance.process.other_laws import seen_by_line
 from tolerance.scenario.amounts import Amount
 from tolerance.statistics.yields import Limits
 

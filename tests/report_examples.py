@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from tolerance.arrays import FloatArray, read_only
@@ -12,13 +14,17 @@ from tolerance.results import (
     DirectCheck,
     Drawing,
     Driver,
+    Group,
     Interval,
+    Lever,
+    Levers,
     LineResult,
     Prediction,
     Record,
     Region,
     RunResult,
     Spread,
+    Tail,
     YieldByLimit,
 )
 from tolerance.scenario.checking import parse
@@ -262,3 +268,15 @@ def made_up_check(lines: int = 2, *, long_names: bool = False) -> CheckResult:
             even_effective_dk=3.3 if pair else None,
             dimensions=(("width", 180e-6), *((("gap", 150e-6),) if pair else ()))))
     return CheckResult("Orchard gateway, 6 layers", tuple(rows))
+
+
+def with_weights(line: LineResult) -> LineResult:
+    """The line with what weighs on its yield, and with failures too rare to be counted."""
+    levers = tuple(Lever(driver.variable, share(0.004 / rank, 1e-4), around(0.001, 1e-4), around(-0.008 / rank, 1e-4),
+                         0.97) for rank, driver in enumerate(line.drivers, start=1))
+    rare = Interval(1.71e-8, 1.63e-8, 1.79e-8)
+    tail = Tail(below=Interval(0.0, 0.0, 1e-19), above=rare, failing=rare, monotone=True, solver_runs=24,
+                largest_difference=0.005)
+    groups = (Group("L1", "layer", ("L1.etch", "L1.plating"), share(0.4)),
+              Group("copper", "material", ("L1.etch", "L1.plating"), share(0.4)))
+    return replace(line, levers=Levers(line.inside, levers), tail=tail, groups=groups)

@@ -26,8 +26,9 @@ PAIR = Section(
     foot_side=(Ply(around(60e-6, 5), DK), Ply(around(50e-6, 6), DK), Ply(around(200e-6, 7), around(4.2, 8))),
     foot_plane=True, crest_side=(), crest_plane=False,
     mask=Mask(around(25e-6, 10), around(15e-6, 11), around(3.5, 12)), ground_gap=around(300e-6, 13),
+    band_dk=around(3.2, 14),
 )
-NOT_A_DIMENSION = {"foot_plane", "crest_plane", "crest_side"}
+NOT_A_DIMENSION = {"foot_plane", "crest_plane", "crest_side", "metals"}  # metals do not vary
 
 
 def stretched(section: Section, factor: float) -> Section:
@@ -74,6 +75,24 @@ def test_every_part_of_a_section_shows(name: str) -> None:
     for changed in changes:
         moved = seen.logarithms(replace(PAIR, **{name: changed})) - seen.logarithms(PAIR)
         assert np.max(np.abs(moved)) > 0.05
+
+
+def test_loss_tangents_show_where_there_is_a_frequency_and_part_plies_of_one_dk() -> None:
+    dfs = [around(0.02, seed) for seed in (30, 31, 32)]
+    plies = tuple(replace(ply, df=df) for ply, df in zip(PAIR.foot_side, dfs, strict=True))
+    assert PAIR.mask is not None
+    lossy = replace(PAIR, foot_side=plies, mask=replace(PAIR.mask, df=around(0.03, 33)))
+    seen = dimensions_like(lossy, scale_free=False)
+    assert seen.sides == (((0,), (1,), (2,)), ())
+    alike = replace(lossy, foot_side=(plies[0], replace(plies[1], df=dfs[0]), plies[2]))
+    assert dimensions_like(alike).sides == (((0, 1), (2,)), ())
+    elsewhere = replace(alike, foot_side=(plies[0], replace(plies[1], df=dfs[0], dk_frequency=1e9), plies[2]))
+    assert dimensions_like(elsewhere).sides == (((0,), (1,), (2,)), ())
+    for number in range(3):
+        changed = replace(lossy, foot_side=tuple(
+            replace(ply, df=1.2 * dfs[at]) if at == number else ply for at, ply in enumerate(plies)))
+        moved = seen.logarithms(changed) - seen.logarithms(lossy)
+        assert np.count_nonzero(np.max(np.abs(moved), axis=1) > 0.01) == 1
 
 
 def test_a_broadside_pair_is_seen_with_how_far_its_traces_lie_apart() -> None:

@@ -258,6 +258,17 @@ def test_the_run_record_keeps_what_remakes_the_run(tmp_path: Path) -> None:
     assert values["version: numpy"] == "2.4.0"
 
 
+def test_no_row_is_cut_off_and_none_stands_open_for_nothing(tmp_path: Path) -> None:
+    """A default row is 15 points high; a text goes on in as many rows as its column makes it need."""
+    name = "differential camera link from the front connector to the image processor, channel 12"
+    book = load_workbook(written(tmp_path, made_up_result((made_up_line(name), made_up_line("short")))))
+    lines = book["Lines"]
+    assert lines.row_dimensions[2].height == 30.0
+    assert lines.row_dimensions[3].height in (None, 15.0)
+    record = book["Run record"]
+    assert {record.row_dimensions[row].height for row in range(2, record.max_row + 1)} == {15.0}
+
+
 def test_a_workbook_that_cannot_be_written_leaves_nothing_and_says_why(tmp_path: Path) -> None:
     (tmp_path / "run.xlsx").mkdir()  # a folder stands where the file should go
     (tmp_path / "run.xlsx" / "kept").touch()

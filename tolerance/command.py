@@ -60,6 +60,8 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("--json", action="store_true", help="the result as one JSON object on standard output")
     check.add_argument("--formulas", action="store_true",
                        help="set published formulas beside the field solver, as a second opinion")
+    check.add_argument("--shares", action="store_true",
+                       help="show charge and current by face, fringe capacitance, and the coupling of pairs")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
     add_decisions(commands, _check_numbers)
@@ -129,7 +131,7 @@ def _check(options: argparse.Namespace) -> int:
     elif not options.quiet:
         from tolerance.report.terminal import print_check
 
-        print_check(result, scenario.report.lengths, console())
+        print_check(result, scenario.report.lengths, console(), shares=options.shares)
     return 0
 
 

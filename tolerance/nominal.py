@@ -8,6 +8,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from tolerance.hypertext import hypertext
+from tolerance.sections.reading import ReadingRise as ReadingRise
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,6 +34,41 @@ class FormulaOpinions:
 
 
 @dataclass(frozen=True, slots=True)
+class LossFigures:
+    """A line at a frequency [Hz], in its mode: of a differential pair the loop of both traces, of a common-mode pair
+    both tied together, so that the complex impedance is sqrt((R + j omega L) / (G + j omega C)) of these.
+
+    resistance [ohm/m], inductance [H/m], conductance [S/m], capacitance [F/m], losses [dB/m].
+    """
+
+    frequency: float
+    resistance: float
+    inductance: float
+    conductance: float
+    capacitance: float
+    complex_impedance: complex
+    conductor_loss: float
+    dielectric_loss: float
+
+
+@dataclass(frozen=True, slots=True)
+class CouplingFigures:
+    """Inductive and capacitive coupling coefficient of a pair, and the backward crosstalk coefficient [-]."""
+
+    inductive: float
+    capacitive: float
+    backward: float
+
+
+@dataclass(frozen=True, slots=True)
+class ShareFigures:
+    """Shares of a trace's charge and current by face, and of the capacitance that is fringe (None: not told)."""
+
+    faces: tuple[tuple[str, float, float], ...]  # ("foot", charge, current)
+    fringe: float | None
+
+
+@dataclass(frozen=True, slots=True)
 class NominalLine:
     """One line at the nominals of its layers.
 
@@ -52,6 +88,10 @@ class NominalLine:
     even_effective_dk: float | None = None
     dimensions: tuple[tuple[str, float], ...] = ()  # ("width", 180e-6), ("gap", 150e-6): as they are to be shown
     formulas: FormulaOpinions | None = None  # None: not asked for
+    losses: LossFigures | None = None  # where the scenario has a frequency; then `impedance` is the magnitude of theirs
+    coupling: CouplingFigures | None = None  # of pairs
+    shares: ShareFigures | None = None
+    rise: ReadingRise | None = None  # where the scenario says where a coupon is read
     mode: str = "single"  # single | differential | common
     partner: str | None = None  # the other layer of a broadside pair
 

@@ -15,6 +15,7 @@ from tolerance.hypertext import hypertext
 from tolerance.sections.drawing import Conductor as Conductor
 from tolerance.sections.drawing import Drawing as Drawing
 from tolerance.sections.drawing import Region as Region
+from tolerance.sections.reading import ReadingRise as ReadingRise
 from tolerance.statistics.acceptance import LotAcceptance as LotAcceptance
 from tolerance.statistics.acceptance import OperatingPoint as OperatingPoint
 from tolerance.statistics.against_limit import YieldByLimit as YieldByLimit
@@ -23,6 +24,8 @@ from tolerance.statistics.estimates import Interval as Interval
 from tolerance.statistics.levels import LevelDriver as LevelDriver
 from tolerance.statistics.levels import NestedYield as NestedYield
 from tolerance.statistics.levels import VarianceShares as VarianceShares
+from tolerance.statistics.levers import Lever as Lever
+from tolerance.statistics.levers import Levers as Levers
 from tolerance.statistics.reading import GuardBand as GuardBand
 from tolerance.statistics.reading import ReadingRisks as ReadingRisks
 
@@ -68,6 +71,36 @@ class Certificate:
 
 
 @dataclass(frozen=True, slots=True)
+class Tail:
+    """Failures too rare to be counted, by integration: shares of coupons [-].
+
+    monotone : on every line of the integration the impedance rises throughout.
+    solver_runs, largest_difference : field solver runs where the line starts to fail, and how far those of the check
+        lie off the limit at most [ohm].
+    """
+
+    below: Interval
+    above: Interval
+    failing: Interval
+    monotone: bool
+    solver_runs: int
+    largest_difference: float
+
+
+@dataclass(frozen=True, slots=True)
+class Group:
+    """Variables of one layer, or of one kind of material, and the share of the variance that goes with all of them.
+
+    total : what would be left were everything else known.
+    """
+
+    name: str
+    of: str  # layer | material
+    variables: tuple[str, ...]
+    total: Interval
+
+
+@dataclass(frozen=True, slots=True)
 class DirectCheck:
     """The field solver run on `coupons` of the sample itself, against the prediction: differences in ohm."""
 
@@ -107,9 +140,13 @@ class LineResult:
     certificate: Certificate
     drawing: Drawing
     direct: DirectCheck | None = None
+    tail: Tail | None = None  # where hardly any coupon fails; yield, below and above then come from it
+    levers: Levers | None = None  # None where nothing varies, or where some coupon cannot exist
+    groups: tuple[Group, ...] = ()
     nested: NestedYield | None = None  # panels and lots; with levels only
     variance: VarianceShares | None = None  # by level; with levels only
     reading: ReadingRisks | None = None  # with a [test] of readings only
+    rise: ReadingRise | None = None  # what series resistance adds to a reading; the judged impedance is without it
 
     @property
     def limit(self) -> float:
@@ -179,6 +216,7 @@ class RunResult:
     nested: NestedYield | None = None  # of all lines together
     reading: ReadingRisks | None = None  # of all lines together
     acceptance: LotAcceptance | None = None  # with sample_size only
+    frequency: float | None = None  # [Hz] where the lines are evaluated; None: lossless and static
     measured: tuple[MeasuredInput, ...] = ()
 
     def _repr_html_(self) -> str:

@@ -17,7 +17,7 @@ from scipy.special import log_ndtr, logsumexp, ndtr
 from tolerance.arrays import BoolArray, FloatArray
 from tolerance.decisions.board import LineModel
 from tolerance.decisions.interpolation import Path, path_of
-from tolerance.process.changes import laws_of, moved, with_laws
+from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.statistics.estimates import Interval, interval_of
 
 PLACES = 5

@@ -14,7 +14,7 @@ from tolerance.arrays import BoolArray, IntArray
 from tolerance.decisions.board import Aim, Board, LineModel, Side
 from tolerance.decisions.choosing import Front, Prefix, front_of
 from tolerance.decisions.tightening import Judged, judged
-from tolerance.process.changes import Amount, half_width_of, laws_of, narrowed, with_laws
+from tolerance.process.other_laws import Amount, half_width_of, laws_of, narrowed, with_laws
 
 WORK = 2**24  # coupons of lines to be predicted, at most, before the sample is thinned
 FEWEST_COUPONS = 4096

@@ -14,8 +14,8 @@ import numpy as np
 from tolerance.arrays import FloatArray, read_only
 from tolerance.decisions.board import Aim, Board, Side, aimed, every
 from tolerance.decisions.interpolation import Path, logarithm_of, path_of
-from tolerance.process.changes import laws_of, scaled, with_laws
 from tolerance.process.draws import Process
+from tolerance.process.other_laws import laws_of, scaled, with_laws
 from tolerance.statistics.estimates import Interval
 
 FACTORS = (0.0, 0.5, 1.0, 2.0)  # of the half-width: where impedances are predicted anew; between, interpolated

@@ -67,6 +67,8 @@ def why_none(section: Section) -> str:
     if one.crest_side and not one.crest_plane:
         return "dielectric covers it"
     dks = {round(float(ply.dk[0]), 9) for ply in (*one.foot_side, *one.crest_side)}
+    if one.band_dk is not None:
+        dks.add(round(float(one.band_dk[0]), 9))
     if len(dks) > 1:
         return "dielectrics of different Dk"
     if one.crest_plane and abs(_depth(one.foot_side) - _depth(one.crest_side)) > OFF_CENTRE_ALLOWED * _spacing(one):

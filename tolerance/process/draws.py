@@ -96,9 +96,9 @@ class ProcessDraws:
 
     def value(self, name: str) -> FloatArray:
         """Values [SI] of the property `name` ("P1.thickness"), shape (coupons,). KeyError where there is none."""
-        return through_resin(name, self._drawn, self.process.resins)
+        return through_resin(name, self.own, self.process.resins)
 
-    def _drawn(self, name: str) -> FloatArray:
+    def own(self, name: str) -> FloatArray:
         """Values of the property by its own law alone, (coupons,)."""
         nominal = self.process.nominals[name]
         found = self._law(name)

@@ -37,8 +37,9 @@ MARGIN = 0.025
 ABREAST = 4
 ROW = 2.45  # inches, of a row of panels
 LEAST_FAILING = 0.5e-4
+SCENARIOS = (FAINT_INK, BODY_EDGE, FAIL, INK)  # with a marker of its own each
 YIELDS = (0.0, 0.9, 0.99, 0.999, 0.9999)
-NAME = 34
+NAME = 28
 
 
 def tighten_page(result: TightenResult) -> Figure:
@@ -57,9 +58,9 @@ def front_page(result: TightenResult) -> Figure:
     with our_looks():
         page = _page(result.basis.title, "what the offers buy, and what each tolerance does", PAGE[1])
         draw_front(page.add_axes((0.07, 0.11, 0.40, 0.68)), result)
-        grid = page.add_gridspec(2, 3, left=0.55, right=0.98, top=0.80, bottom=0.11, wspace=0.35, hspace=0.7)
+        grid = page.add_gridspec(2, 3, left=0.55, right=0.98, top=0.79, bottom=0.11, wspace=0.5, hspace=0.75)
         for number, one in enumerate(result.variations[:6]):
-            draw_tightening(page.add_subplot(grid[number // 3, number % 3]), one, result.basis, name_length=20)
+            draw_tightening(page.add_subplot(grid[number // 3, number % 3]), one, result.basis, name_length=17)
     return page
 
 
@@ -113,7 +114,8 @@ def compare_page(result: CompareResult) -> Figure:
             shown = [(place, _failing(yields[name].value))
                      for place, name in enumerate(reversed([*names, "all lines together"])) if name in yields]
             axes.plot([value for _, value in shown], [place for place, _ in shown], marker="osD^v"[number % 5],
-                      linestyle="none", markersize=8, label=f"{number + 1}: {shorten(one.title, 40)}", clip_on=False)
+                      color=SCENARIOS[number % 4], linestyle="none", markersize=8, clip_on=False,
+                      label=f"{number + 1}: {shorten(one.title, 40)}")
         axes.set_yticks(range(len(names) + 1), [shorten(name, NAME) for name in reversed([*names,
                                                                                          "all lines together"])])
         axes.set_xlabel("yield [%]")
@@ -135,7 +137,7 @@ def draw_tightening(axes: Axes, one: Tightening, basis: Basis, *, name_length: i
     axes.axvline(1.0, color=FAINT_INK, linewidth=0.8)
     axes.set_xlim(0.0, float(one.factors[-1]))
     axes.set_title(shorten(one.name, name_length), fontsize=SMALL, weight="bold")
-    axes.set_xlabel("half-width, of what it is", fontsize=SMALL)
+    axes.set_xlabel("times half-width", fontsize=SMALL)
     quiet_axes(axes, grid="y")
     _failing_scale(axes, "y")
     return axes

@@ -38,8 +38,8 @@ ROW_OF_OVERVIEW = 0.5  # inches at least
 ROW_OF_LEVELS = 0.8
 PANELS_ABREAST = 4  # of the page of yields against the limit
 ROW_OF_PANELS = 2.45  # inches
-LIMITS_REMARK = ("Yield were the limits wider or closer, with its 95 % interval. Dashed, dot: limit and yield as they "
-                 "are. Shaded: under the target yield.")
+LIMITS_REMARK = ("Yield were the limits wider or closer; band: 95 % interval of the computation. Dashed, dot: as it is."
+                 " Shaded: under the target yield.")
 MARGIN = 0.025  # of the page's width
 PACKING = 1  # of the PNG files: quick, a few per cent larger
 METADATA: dict[str, dict[str, str | None]] = {

@@ -10,12 +10,23 @@ import json
 import math
 from typing import TYPE_CHECKING
 
-from tolerance.nominal import CheckResult, FormulaOpinion, NominalLine
+from tolerance.nominal import CheckResult, FormulaOpinion, LossFigures, NominalLine, ReadingRise, ShareFigures
 from tolerance.report.lots_json import line_keys, run_keys
 from tolerance.report.measured import measured_object
+from tolerance.report.weights import in_ppm
 
 if TYPE_CHECKING:
-    from tolerance.results import Certificate, DirectCheck, Driver, Interval, LineResult, RunResult
+    from tolerance.results import (
+        Certificate,
+        DirectCheck,
+        Driver,
+        Group,
+        Interval,
+        Lever,
+        LineResult,
+        RunResult,
+        Tail,
+    )
 
 PICOSECONDS_PER_MILLIMETRE = 1e9  # of a delay in seconds per metre
 
@@ -37,6 +48,7 @@ def run_object(result: RunResult) -> dict[str, object]:
         "title": result.title,
         "seed": int(result.seed),
         "coupons": int(result.coupons),
+        **({} if result.frequency is None else {"frequency_hz": float(result.frequency)}),
         "target_yield": float(result.target_yield),
         "yield": _interval(result.inside),
         "impossible": int(result.impossible),
@@ -82,9 +94,14 @@ def _line(line: LineResult) -> dict[str, object]:
         "held_out_error_ohm": float(line.prediction.held_out_error),
         "certificate": _certificate(line.certificate),
         "drivers": [_driver(driver) for driver in line.drivers],
+        "groups": [_group(group) for group in line.groups],
+        "yield_levers": None if line.levers is None else [_lever(lever) for lever in line.levers.each],
+        "rare_failures": None if line.tail is None else _tail(line.tail),
     }
     if line.direct is not None:
         values["direct"] = _direct(line.direct)
+    if line.rise is not None:
+        values["reading_rise"] = _rise(line.rise)
     return values | line_keys(line)
 
 
@@ -108,6 +125,25 @@ def _driver(driver: Driver) -> dict[str, object]:
     return values
 
 
+def _group(group: Group) -> dict[str, object]:
+    return {"name": group.name, "of": group.of, "variables": list(group.variables), **_flat("total", group.total)}
+
+
+def _lever(lever: Lever) -> dict[str, object]:
+    return {
+        "variable": lever.variable, **_flat("gain_if_halved", lever.halved), **_flat("by_mean", lever.by_mean),
+        **_flat("by_log_deviation", lever.by_deviation), "order_probability": float(lever.order),
+    }
+
+
+def _tail(tail: Tail) -> dict[str, object]:
+    return {
+        "failing_ppm": _interval(in_ppm(tail.failing)), "below_ppm": _interval(in_ppm(tail.below)),
+        "above_ppm": _interval(in_ppm(tail.above)), "monotone": bool(tail.monotone),
+        "solver_runs": int(tail.solver_runs), "largest_difference_ohm": float(tail.largest_difference),
+    }
+
+
 def _direct(direct: DirectCheck) -> dict[str, object]:
     return {
         "coupons": int(direct.coupons),
@@ -129,10 +165,45 @@ def _nominal_line(line: NominalLine) -> dict[str, object]:
         "common_mode_ohm": None if line.common_mode is None else float(line.common_mode),
         "even_effective_dk": None if line.even_effective_dk is None else float(line.even_effective_dk),
     }
+    if line.losses is not None:
+        values |= _losses(line.losses)
+    if line.coupling is not None:
+        values["coupling"] = {"inductive": float(line.coupling.inductive),
+                              "capacitive": float(line.coupling.capacitive),
+                              "backward_crosstalk": float(line.coupling.backward)}
+    if line.shares is not None:
+        values |= _shares(line.shares)
+    if line.rise is not None:
+        values["reading_rise"] = _rise(line.rise)
     if line.formulas is not None:
         values["formulas"] = [_opinion(opinion, line.impedance) for opinion in line.formulas.opinions]
         values["formulas_none_because"] = line.formulas.why_none or None
     return values
+
+
+def _losses(losses: LossFigures) -> dict[str, object]:
+    return {
+        "frequency_hz": float(losses.frequency),
+        "impedance_real_ohm": float(losses.complex_impedance.real),
+        "impedance_imaginary_ohm": float(losses.complex_impedance.imag),
+        "resistance_ohm_per_m": float(losses.resistance), "inductance_h_per_m": float(losses.inductance),
+        "conductance_s_per_m": float(losses.conductance), "capacitance_f_per_m": float(losses.capacitance),
+        "conductor_loss_db_per_m": float(losses.conductor_loss),
+        "dielectric_loss_db_per_m": float(losses.dielectric_loss),
+    }
+
+
+def _shares(shares: ShareFigures) -> dict[str, object]:
+    return {
+        "charge_shares": {face: float(charge) for face, charge, _ in shares.faces},
+        "current_shares": {face: float(current) for face, _, current in shares.faces},
+        "fringe_share": None if shares.fringe is None else float(shares.fringe),
+    }
+
+
+def _rise(rise: ReadingRise) -> dict[str, object]:
+    return {"position_mm": 1e3 * float(rise.position),
+            "direct_current_resistance_ohm_per_m": float(rise.resistance), "rise_ohm": float(rise.rise)}
 
 
 def _opinion(opinion: FormulaOpinion, solved: float) -> dict[str, object]:

@@ -23,6 +23,7 @@ from tolerance.report.looks import (
     quiet_axes,
 )
 from tolerance.report.tables import MISSES, LineWords, line_words, ranking
+from tolerance.report.weights import gain_words, worthwhile
 from tolerance.report.wording import percent, shorten, trimmed, variable_words
 
 if TYPE_CHECKING:
@@ -106,8 +107,13 @@ def draw_drivers(axes: Axes, line: LineResult) -> Axes:
     reach = 100.0 * max(max(ranking(driver).high, driver.total.high, driver.first.high) for driver in shown)
     axes.set_xlim(0.0, 1.17 * max(reach, 1.0))
     axes.set_ylim(rows - 0.45, -0.55)
+    gains = {lever.variable: gain_words(lever) for lever in worthwhile(line, len(line.drivers))}
     for row, driver in enumerate(shown):
         _draw_driver(axes, row, driver)
+        if driver.variable in gains:
+            words = f"halved: yield {gains[driver.variable]}" + (" points" if row == 0 else "")
+            axes.annotate(words, (1.0, row + 0.01), xycoords=("axes fraction", "data"), ha="right", va="bottom",
+                          fontsize=SMALL, color=FAINT_INK)
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
     axes.set_xlabel("share of the variance [%]", loc="left")

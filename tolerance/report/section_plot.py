@@ -43,7 +43,7 @@ ROOM_UPRIGHT = 1.16  # view over the height of the section
 LETTER_WIDTH = 0.56  # of the letter size, on average
 ROW_HEIGHT = 1.35  # of the letter size
 LABEL_WIDTH = 32
-MATERIAL_NAME = {"mask": "mask", "prepreg": "prepreg", "core": "core"}
+MATERIAL_NAME = {"mask": "mask", "prepreg": "prepreg", "core": "core", "resin": "resin"}
 
 
 @dataclass(frozen=True, slots=True)

@@ -16,6 +16,7 @@ from rich.text import Text
 from tolerance.report.lots_tables import Heading, sentences, text_tables
 from tolerance.report.measured import intervals_of, measured_sentences
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
+from tolerance.report.weights import lever_words, ppm_words
 from tolerance.report.wording import (
     CAUTION,
     METRES_IN,
@@ -42,12 +43,13 @@ NARROWEST_NAME = 15
 WIDEST_NAME = 40
 OTHER_COLUMNS = 65  # what the widest table needs beside the names
 DRIVERS_SHOWN = 3
+LEVERS_SHOWN = 2
 LONGEST_DRIVER = 38
 NAMES_IN_VERDICT = 4
 
 
-def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
-    """Nominal impedance, effective Dk and delay of each line."""
+def print_check(result: CheckResult, lengths: LengthUnit, console: Console, *, shares: bool = False) -> None:
+    """Nominal impedance, effective Dk and delay of each line, and its losses; `shares`: charge and current by face."""
     per_length = "mm" if lengths == "um" else "inch"
     table = _table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
                    ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
@@ -57,6 +59,13 @@ def print_check(result: CheckResult, lengths: LengthUnit, console: Console) -> N
     _say(console, result.title, style="bold")
     _print_table(console, table)
     _say_modes(result, console)
+    _say_losses(result, lengths, console)
+    _say_rises(result, console)
+    if shares:
+        _print_table(console, _share_table(result, _name_width(console)))
+        _say(console, "Shares of a trace's charge and, at small skin depth, of its current by face; fringe: share of "
+                      "the capacitance beyond that of parallel plates. Coupling: inductive, capacitive, and the "
+                      "backward crosstalk coefficient.")
     if any(line.formulas is not None for line in result.lines):
         _print_table(console, _formula_table(result, _name_width(console)))
         _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
@@ -75,11 +84,15 @@ def print_run(result: RunResult, console: Console) -> None:
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
+    _say_rare(result, console)
     _say_direct(result, console)
     for sentence in sentences(result):
         _say(console, sentence)
     for sentence in measured_sentences(result):
         _say(console, sentence)
+    if result.frequency is not None:
+        _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
+    _say_rises(result, console)
     _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
@@ -129,7 +142,10 @@ def _yield_table(result: RunResult, name_width: int) -> RichTable:
 
 
 def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
-    table = _table(("line", True), (f"largest drivers, by {ranking_name(result.lines)}", True),
+    heading = f"largest drivers, by {ranking_name(result.lines)}"
+    if any(lever_words(line, 1) for line in result.lines):
+        heading += "\n/ points of yield gained, spread halved"
+    table = _table(("line", True), (heading, True),
                    ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
         table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
@@ -142,12 +158,22 @@ def _drivers(line: LineResult, width: int) -> str:
     rows = [""]
     for driver in line.drivers[:DRIVERS_SHOWN]:
         words = f"{shorten(variable_words(driver.variable), LONGEST_DRIVER)} {percent(ranking(driver).value, 0)}"
-        joined = f"{rows[-1]}, {words}" if rows[-1] else words
-        if len(joined) <= width:
-            rows[-1] = joined
-        else:
-            rows.append(words)
-    return "\n".join(rows) if line.drivers else "none: nothing that varies reaches it"
+        _append(rows, words, width)
+    if not line.drivers:
+        return "none: nothing that varies reaches it"
+    gains = [""]
+    for words in lever_words(line, LEVERS_SHOWN):
+        _append(gains, words, width - 2)
+    return "\n".join([*rows, *(f"/ {row}" for row in gains if row)])
+
+
+def _append(rows: list[str], words: str, width: int) -> None:
+    """Put words behind the last row, or, where there is no room, into a new one."""
+    joined = f"{rows[-1]}, {words}" if rows[-1] else words
+    if len(joined) <= width:
+        rows[-1] = joined
+    else:
+        rows.append(words)
 
 
 def _say_verdict(result: RunResult, console: Console) -> None:
@@ -184,6 +210,13 @@ def _say_certificate(result: RunResult, console: Console) -> None:
                           f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
 
 
+def _say_rare(result: RunResult, console: Console) -> None:
+    """Failures too rare to be counted."""
+    rare = [f'"{shorten(line.name, LONGEST_DRIVER)}" {ppm_words(line.tail)}' for line in result.lines if line.tail]
+    if rare:
+        _say(console, f"Coupons that fail too rarely to be counted, so integrated: {'; '.join(rare)}.")
+
+
 def _say_direct(result: RunResult, console: Console) -> None:
     """The solver's own answers beside the predictions: one row a line."""
     table = _table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
@@ -197,6 +230,56 @@ def _say_direct(result: RunResult, console: Console) -> None:
         _say(console, "")
         _say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
         _print_table(console, table)
+
+
+def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
+    """A table of what the line loses, in the unit of the report, where the scenario has a frequency."""
+    lossy = [(line, line.losses) for line in result.lines if line.losses is not None]
+    if not lossy:
+        return
+    per_length, unit = (1.0, "m") if lengths == "um" else (1000.0 * METRES_IN["mil"], "inch")
+    table = _table(("line", True), ("complex\nimpedance\n[ohm]", False), (f"R\n\n[ohm/{unit}]", False),
+                   (f"L\n\n[nH/{unit}]", False), (f"G\n\n[mS/{unit}]", False), (f"C\n\n[pF/{unit}]", False),
+                   ("loss\n\n[dB/m]", False), ("whole\n\n[dB/inch]", False))
+    for line, losses in lossy:
+        impedance = losses.complex_impedance
+        table.add_row(
+            Text(two_rows(line.name, _name_width(console))),
+            f"{fixed(impedance.real, 2)}\n{'-' if impedance.imag < 0.0 else '+'} j {fixed(abs(impedance.imag), 2)}",
+            *(f"{scale * value * per_length:.4g}" for value, scale in (
+                (losses.resistance, 1.0), (losses.inductance, 1e9), (losses.conductance, 1e3),
+                (losses.capacitance, 1e12))),
+            f"{fixed(losses.conductor_loss, 2)}\n+ {fixed(losses.dielectric_loss, 2)}",
+            fixed((losses.conductor_loss + losses.dielectric_loss) * 1000.0 * METRES_IN["mil"], 3))
+    _print_table(console, table)
+    _say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one. "
+                  "Loss: by the copper, + by the dielectric.")
+
+
+def _say_rises(result: CheckResult | RunResult, console: Console) -> None:
+    for line in result.lines:
+        if line.rise is not None:
+            _say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.rise.position:.6g} mm '
+                          f"from the launch is higher by {fixed(line.rise.rise, 2)} ohm of series resistance "
+                          f"({line.rise.resistance:.3g} ohm/m to direct current).")
+
+
+def _share_table(result: CheckResult, name_width: int) -> RichTable:
+    table = _table(("line", True), ("face", True), ("charge\n[%]", False), ("current\n[%]", False),
+                   ("fringe\n[%]", False), ("coupling", True))
+    for line in result.lines:
+        if line.shares is None:
+            continue
+        faces, coupling = line.shares.faces, line.coupling
+        words = "" if coupling is None else (
+            f"inductive {coupling.inductive:.4f}\ncapacitive {coupling.capacitive:.4f}\n"
+            f"backward {coupling.backward:.4f}")
+        table.add_row(
+            Text(two_rows(line.name, name_width)), Text("\n".join(face for face, _, _ in faces)),
+            *("\n".join(fixed(100.0 * share, 1) for share in shares)
+              for shares in ([charge for _, charge, _ in faces], [current for _, _, current in faces])),
+            "-" if line.shares.fringe is None else fixed(100.0 * line.shares.fringe, 1), Text(words))
+    return table
 
 
 def _formula_table(result: CheckResult, name_width: int) -> RichTable:

@@ -32,6 +32,7 @@ def stackup_table(scenario: Scenario) -> Table:
         Column("dk_frequency", "Dk and Df hold at", "GHz"), Column("conductivity", "conductivity", "MS/m", 1),
         Column("roughness_foot", "roughness of the foot", unit, 2),
         Column("roughness_crest", "roughness of the crest", unit, 2),
+        Column("resin_dk", "Dk of the resin", "", 3),
         Column("resin_content", "resin content by weight", "share", 1),
     )
     rows = [_layer_row(scenario, layer, unit) for layer in scenario.layers]
@@ -112,6 +113,7 @@ def _layer_row(scenario: Scenario, layer: Layer, unit: LengthUnit) -> dict[str, 
         "conductivity": layer.conductivity / 1e6 if copper and lossy else None,
         "roughness_foot": _length(layer.roughness_foot, unit),
         "roughness_crest": _length(layer.roughness_crest, unit), "resin_content": layer.resin_content,
+        "resin_dk": layer.resin_dk,
     }
 
 
@@ -132,7 +134,8 @@ def _variation_row(variation: Variation, item: Property, variable: str, lengths:
     tolerance, tolerance_unit = _amount(variation.tolerance, item, unit)
     shift, shift_unit = _amount(variation.shift, item, unit)
     return {
-        "variable": variable, "property": item.name, "nominal": _in_unit(item.nominal, unit), "unit": unit or "-",
+        "variable": variable, "property": item.name,
+        "nominal": _rounded(_in_unit(item.nominal, unit)), "unit": unit or "-",
         "shape": variation.shape.replace("_", " "), "tolerance": tolerance, "tolerance_unit": tolerance_unit,
         "basis": _basis(variation), "shift": shift, "shift_unit": shift_unit,
         "low": _in_unit(variation.low, unit), "high": _in_unit(variation.high, unit),
@@ -147,6 +150,11 @@ def _origin(scenario: Scenario, item: Property) -> str | None:
 
 def _in_unit(value: float | None, unit: LengthUnit | None) -> float | None:
     return value if unit is None else _length(value, unit)
+
+
+def _rounded(value: float | None) -> float | None:
+    """To six digits: nominals that follow from others, a ply's by its resin, have no end of them."""
+    return None if value is None else float(f"{value:.6g}")
 
 
 def _amount(amount: Amount | None, item: Property, unit: LengthUnit | None) -> tuple[float | None, str | None]:

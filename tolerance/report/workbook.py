@@ -36,6 +36,7 @@ from tolerance.report.tables import (
     summary_table,
 )
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
+from tolerance.report.weights import group_table, lever_table
 from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
 
 if TYPE_CHECKING:
@@ -50,6 +51,7 @@ INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3E
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
+RECORD_WIDTH = 120  # letters, of the values of the run record: whole lines of a scenario
 PAGE = 240.0  # letters across a printed page at most; a wider table goes on on further ones
 ROW = 15.0  # points, one row of letters of the usual size
 
@@ -84,6 +86,8 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
 def _tables(result: RunResult, scenario: Scenario) -> list[tuple[str, Table]]:
     """The tables that have a sheet of their own, by its name, in their order."""
     tables = [("Lines", line_table(result)), ("Drivers", driver_table(result)), ("Yield by limit", limit_table(result))]
+    tables += [(name, table) for name, table in (("Yield levers", lever_table(result)),
+                                                 ("Groups of drivers", group_table(result))) if table.rows]
     if result.nested is not None:
         tables += [("Levels", level_table(result)), ("Levels by variable", level_driver_table(result))]
     if result.reading is not None:
@@ -233,7 +237,9 @@ def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
         *(("scenario text", text) for line in record.scenario_text.splitlines() for text in _pieces(line)),
     ]
     _write_table(sheet, Table((Column("item", "item"), Column("value", "value")), tuple(rows)), top=1)
-    sheet.column_dimensions["B"].width = 110
+    sheet.column_dimensions["B"].width = RECORD_WIDTH
+    for number, (_, value) in enumerate(rows, start=2):
+        sheet.row_dimensions[number].height = ROW * max(len(textwrap.wrap(str(value), RECORD_WIDTH)), 1)
     sheet.freeze_panes = "B2"
 
 

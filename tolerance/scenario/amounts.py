@@ -9,6 +9,7 @@ from typing import Any
 
 from tolerance.scenario.keys import (
     Kind,
+    Quantity,
     Range,
     RefusedError,
     is_number,
@@ -45,6 +46,13 @@ class LevelShares:
     lot: float = 0.0
     panel: float = 0.0
     coupon: float = 0.0
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """Where on a coupon a reflectometer reads: `position` [m], the way from the launch."""
+
+    position: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -169,6 +177,35 @@ class Level(Kind):
         shares = {"type": "object", "properties": dict.fromkeys(LEVELS, share), "additionalProperties": False,
                   "minProperties": 1}
         return {"anyOf": [{"enum": list(LEVELS)}, shares]}
+
+
+@dataclass(frozen=True, slots=True)
+class ReadingAt(Kind):
+    """A table with one key, `position`, which holds `position`."""
+
+    position: Quantity
+
+    @property
+    def allowed(self) -> str:
+        return self._words(self.position.allowed)
+
+    @staticmethod
+    def _words(position: object) -> str:
+        return f'{{ position = "75 mm" }}, the position being {position}'
+
+    def read(self, given: object, *, from_file: bool) -> Reading:
+        if isinstance(given, Reading) and not from_file:
+            return given
+        if not isinstance(given, Mapping) or set(given) != {"position"}:
+            raise RefusedError(self.allowed)
+        try:
+            return Reading(self.position.read(given["position"], from_file=from_file))
+        except RefusedError as reason:
+            raise RefusedError(self._words(reason)) from None
+
+    def json_schema(self) -> dict[str, Any]:
+        return {"type": "object", "properties": {"position": self.position.json_schema()}, "required": ["position"],
+                "additionalProperties": False}
 
 
 def _length_measure(measure: MeasureName | None) -> MeasureName:

@@ -6,7 +6,7 @@ from collections.abc import Iterator, Mapping
 from types import MappingProxyType
 from typing import NamedTuple
 
-from tolerance.scenario.documents import Finding
+from tolerance.scenario.documents import Entry, Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
 from tolerance.scenario.keys import Range, listed
 from tolerance.scenario.mixtures import RESIN_KEYS
@@ -84,7 +84,7 @@ def _layer(draft: Draft[Layer], has_frequency: bool) -> Iterator[Finding]:
     if kind is None:
         return
     needed, taken = LAYER_KEYS[kind]
-    by_resin = any(key in entry.values for key in RESIN_KEYS)
+    by_resin = any(key in entry.values for key in RESIN_KEYS) and not _resin_band(entry, kind)
     known = ("name", "kind", *needed, *taken)
     for key in entry.values:
         if key not in known and key not in draft.bad:
@@ -101,6 +101,12 @@ def _layer(draft: Draft[Layer], has_frequency: bool) -> Iterator[Finding]:
         if key not in entry.values:
             why = " (needed with evaluation.frequency)" if key == "df" else ""
             yield entry.finding(key, f"missing; must be {kind_of(Layer, key).allowed}{why}")
+
+
+def _resin_band(entry: Entry, kind: str) -> bool:
+    """Whether resin_dk is that of the band between the copper, beside the ply's own dk."""
+    given = [key for key in RESIN_KEYS if key in entry.values]
+    return kind == PREPREG and given == ["resin_dk"] and "dk" in entry.values
 
 
 def _line(draft: Draft[Line], has_limit: bool) -> Iterator[Finding]:

@@ -14,13 +14,13 @@ from typing import Any
 
 from tolerance.scenario.documents import ENTRY_TABLES, SINGLE_TABLES, Document, Entry
 
-_RESIN = frozenset({"resin_dk", "glass_dk", "resin_content", "glass_areal_weight", "outflow"})
+_MIXTURE = frozenset({"glass_dk", "resin_content", "glass_areal_weight", "outflow"})
 _ENDS = frozenset({"low", "high"})
 _MEASURED = frozenset({"file", "column", "sheet"})
 
 #: table -> key given by the extension -> keys of the base that give way to it
 _GIVES_WAY: Mapping[str, Mapping[str, frozenset[str]]] = MappingProxyType({
-    "layers": {"dk": _RESIN, **dict.fromkeys(_RESIN, frozenset({"dk"}))},
+    "layers": {"dk": _MIXTURE, **dict.fromkeys(_MIXTURE, frozenset({"dk"}))},
     "lines": {
         "gap": frozenset({"partner", "offset"}),
         "partner": frozenset({"gap", "ground_gap"}),
@@ -96,6 +96,8 @@ def _merge_entry(base: Entry | None, extension: Entry | None) -> Entry:
         assert entry is not None  # the caller has at least one of the two
         return entry
     dropped = _giving_way(extension)
+    if "dk" in extension.values and _MIXTURE & set(base.values):  # resin_dk was part of the mixture, not of a band
+        dropped |= {"resin_dk"}
     kept = {key: value for key, value in base.values.items() if key not in dropped}
     places = {key: base.places[key] for key in kept} | dict(extension.places)
     return Entry(table=base.table, values=kept | dict(extension.values), place=extension.place, places=places)

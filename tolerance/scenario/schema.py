@@ -18,6 +18,7 @@ from tolerance.scenario.tables import (
     COPPER,
     FORMAT,
     MASK,
+    PREPREG,
     Correlation,
     Evaluation,
     ImpedanceTest,
@@ -119,7 +120,9 @@ def _layer_of(kind: str) -> Schema:
         then: Schema = {"required": list(keys.needed)}
     else:
         by_resin = {"required": list(RESIN_KEYS), "not": {"required": ["dk"]}}
-        then = {"anyOf": [{"required": list(keys.needed), **_none_of(RESIN_KEYS)}, by_resin]}
+        band = {"resin_dk"} if kind == PREPREG else set()
+        by_dk = {"required": list(keys.needed), **_none_of(key for key in RESIN_KEYS if key not in band)}
+        then = {"anyOf": [by_dk, by_resin]}
     return {"if": {"properties": {"kind": {"const": kind}}, "required": ["kind"]},
             "then": {"allOf": [then, _none_of(others)]}}
 

@@ -37,6 +37,8 @@ def stack_findings(drafts: Drafts) -> Iterator[Finding]:
     if outlines is not None:
         yield from _order(outlines)
         yield from _feet(outlines)
+        if "frequency" in drafts.evaluation.entry.values:
+            yield from _rough_planes(outlines)
     for line in drafts.lines:
         yield from _line(line, drafts, outlines)
 
@@ -87,6 +89,18 @@ def _feet(layers: Sequence[Outline]) -> Iterator[Finding]:
         if undecided and len(near) == 2 and set(near) <= set(LAMINATES):
             yield layer.entry.finding(
                 "foot", f'missing; must be "up" or "down", because the copper lies between two {near[0]}s')
+
+
+def _rough_planes(layers: Sequence[Outline]) -> Iterator[Finding]:
+    """A plane whose faces differ in roughness must know which of them is its foot."""
+    for index, layer in enumerate(layers):
+        model = layer.draft.model
+        if model is None or layer.kind != COPPER or layer.use != "plane" or layer.foot is not None:
+            continue
+        if (model.roughness_foot or 0.0) != (model.roughness_crest or 0.0) and decided_foot(layers, index) is None:
+            yield layer.entry.finding(
+                "foot", 'missing; must be "up" or "down", because its faces differ in roughness and the stackup does '
+                        "not decide which is the foot")
 
 
 def _line(line: Draft[Line], drafts: Drafts, outlines: Sequence[Outline] | None) -> Iterator[Finding]:

@@ -13,8 +13,9 @@ from typing import Annotated, Literal
 from pydantic import BaseModel, ConfigDict, Field
 
 from tolerance.scenario.amounts import Amount as Amount
-from tolerance.scenario.amounts import AmountOf, EndOf, Level
+from tolerance.scenario.amounts import AmountOf, EndOf, Level, ReadingAt
 from tolerance.scenario.amounts import LevelShares as LevelShares
+from tolerance.scenario.amounts import Reading as Reading
 from tolerance.scenario.keys import Flag, Number, Quantity, Range, Text, Texts, Whole, Word
 
 FORMAT = 1
@@ -98,7 +99,9 @@ class Layer(Table):
         default=None, description="Rms roughness of the face bonded to the laminate; used with a frequency only")
     roughness_crest: Annotated[float | None, _ROUGHNESS] = Field(
         default=None, description="Rms roughness of the face away from the laminate; used with a frequency only")
-    resin_dk: Annotated[float | None, _DK] = Field(default=None, description="Dk of the resin; instead of dk")
+    resin_dk: Annotated[float | None, _DK] = Field(
+        default=None, description="Dk of the resin: with glass_dk and resin_content instead of dk; beside the dk of a "
+                                  "prepreg that of the band at the height of the copper that it presses into")
     glass_dk: Annotated[float | None, _DK] = Field(default=None, description="Dk of the glass; instead of dk")
     resin_content: Annotated[float | None, Quantity("share", Range(0.0, 1.0, low_in=False, high_in=False))] = Field(
         default=None, description="Share of resin by weight; instead of dk")
@@ -212,6 +215,8 @@ class ImpedanceTest(Table):
     sample_size: Annotated[int | None, _COUNT] = Field(default=None, description="Coupons measured in a lot")
     accept_number: Annotated[int | None, Whole(Range(0, 100_000))] = Field(
         default=None, description="The lot is rejected above so many failures")
+    reading: Annotated[Reading | None, ReadingAt(Quantity("length", Range(0.0, 2.0, low_in=False), "mm"))] = Field(
+        default=None, description="Where on the coupon is read: shows what series resistance adds there")
 
 
 class Report(Table):

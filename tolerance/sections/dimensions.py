@@ -1,8 +1,8 @@
 """The dimensions of a section that its impedance depends on, as logarithms: what a prediction is fitted in.
 
 Inputs that act through one dimension are merged here: foil and plating are the thickness of the trace, absent copper
-thickens the ply that fills it, neighbouring plies that always have the same Dk are one ply. Without loss the
-impedance depends on ratios of lengths only, so that the logarithms of lengths are taken off their mean.
+thickens the ply that fills it, neighbouring plies that always have the same Dk (and loss) are one ply. Without loss
+the impedance depends on ratios of lengths only, so that the logarithms of lengths are taken off their mean.
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ from tolerance.sections.section import Section
 
 SMALLEST_LENGTH = 1e-12  # [m] what a length that is not above nought counts as; such a section is not possible
 SMALLEST_DK = 1e-3
+DF_SCALE = 10.0  # loss tangents stand plain, since they may be nought, and act little: in tenths
 
 Runs = tuple[tuple[int, ...], ...]  # numbers of neighbouring plies that count as one, outwards or upwards
 
@@ -34,16 +35,23 @@ class Dimensions:
     scale_free: bool = True
 
     def logarithms(self, section: Section | LayeredSection) -> FloatArray:
-        """Logarithms of lengths (off their mean where scale-free), of Dk, and plain ratios: (dimensions, sections)."""
-        lengths, dks = list(_copper_lengths(section)), []
-        for (thicknesses, side_dks), runs in zip(_sides(section), self.sides, strict=True):
+        """Logarithms of lengths (off their mean where scale-free), of Dk, and plain ratios: (dimensions, sections).
+
+        Where a line is evaluated at a frequency the ratios hold its loss tangents too.
+        """
+        lengths, dks, dfs = list(_copper_lengths(section)), [], []
+        for side, runs in zip(_sides(section), self.sides, strict=True):
             for run in runs:
-                lengths.append(sum((thicknesses[number] for number in run[1:]), start=thicknesses[run[0]]))
-                dks.append(side_dks[run[0]])
+                lengths.append(sum((side.thicknesses[number] for number in run[1:]), start=side.thicknesses[run[0]]))
+                dks.append(side.dks[run[0]])
+                dfs += [DF_SCALE * side.dfs[run[0]]] if side.dfs else []
         if isinstance(section, Section) and section.mask is not None:
             lengths += [section.mask.on_laminate, section.mask.over_copper]
             dks.append(section.mask.dk)
-        split, ratios = len(lengths), _ratios(section)
+            dfs += [] if section.mask.df is None else [DF_SCALE * section.mask.df]
+        if isinstance(section, Section) and section.band_dk is not None:
+            dks.append(section.band_dk)
+        split, ratios = len(lengths), [*_ratios(section), *dfs]
         result = np.empty((split + len(dks) + len(ratios), section.count))
         np.log(np.maximum(lengths, SMALLEST_LENGTH), out=result[:split])
         np.log(np.maximum(dks, SMALLEST_DK), out=result[split : split + len(dks)])
@@ -58,8 +66,8 @@ def dimensions_like(section: Section | LayeredSection, *, scale_free: bool = Tru
     """The dimensions of sections like those of a batch in which everything that varies does so."""
     if isinstance(section, LayeredSection):
         alone = {trace.layer for trace in section.traces}
-        return Dimensions((_equal_neighbours(section.dks, alone),), scale_free)
-    return Dimensions(tuple(_equal_neighbours(dks, set()) for _, dks in _sides(section)), scale_free)
+        return Dimensions(tuple(_equal_neighbours(side, alone) for side in _sides(section)), scale_free)
+    return Dimensions(tuple(_equal_neighbours(side, set()) for side in _sides(section)), scale_free)
 
 
 def _copper_lengths(section: Section | LayeredSection) -> list[FloatArray]:
@@ -79,20 +87,38 @@ def _ratios(section: Section | LayeredSection) -> list[FloatArray]:
     return [(trace.centre - first.centre) / foot for trace in section.traces[1:]]
 
 
-def _sides(section: Section | LayeredSection) -> list[tuple[Sequence[FloatArray], Sequence[FloatArray]]]:
-    """Thicknesses and Dk of each stack of plies."""
+@dataclass(frozen=True, slots=True)
+class _Side:
+    """A stack of plies; `dfs` and `anchors` (where Dk and Df hold) are empty where there is no frequency."""
+
+    thicknesses: Sequence[FloatArray]
+    dks: Sequence[FloatArray]
+    dfs: Sequence[FloatArray]
+    anchors: Sequence[float | None]
+
+    def alike(self, one: int, other: int) -> bool:
+        """Whether two plies are the same dielectric in every section."""
+        if not np.array_equal(self.dks[one], self.dks[other]):
+            return False
+        return not self.dfs or (np.array_equal(self.dfs[one], self.dfs[other])
+                                and self.anchors[one] == self.anchors[other])
+
+
+def _sides(section: Section | LayeredSection) -> list[_Side]:
+    """Each stack of plies."""
     if isinstance(section, LayeredSection):
-        return [(section.thicknesses, section.dks)]
-    return [([ply.thickness for ply in side], [ply.dk for ply in side])
+        return [_Side(section.thicknesses, section.dks, section.dfs, section.dk_frequencies)]
+    return [_Side([ply.thickness for ply in side], [ply.dk for ply in side],
+                  [ply.df for ply in side if ply.df is not None], [ply.dk_frequency for ply in side])
             for side in (section.foot_side, section.crest_side)]
 
 
-def _equal_neighbours(dks: Sequence[FloatArray], alone: set[int]) -> Runs:
-    """Numbers of plies in runs of equal Dk; those in `alone` (they hold a trace) stay by themselves."""
+def _equal_neighbours(side: _Side, alone: set[int]) -> Runs:
+    """Numbers of plies in runs of one dielectric; those in `alone` (they hold a trace) stay by themselves."""
     runs: list[list[int]] = []
-    for number, dk in enumerate(dks):
+    for number in range(len(side.dks)):
         before = runs[-1][-1] if runs else None
-        if before is not None and not {number, before} & alone and np.array_equal(dk, dks[before]):
+        if before is not None and not {number, before} & alone and side.alike(number, before):
             runs[-1].append(number)
         else:
             runs.append([number])

@@ -21,7 +21,7 @@ class Region:
     """
 
     name: str
-    kind: str  # mask | prepreg | core
+    kind: str  # mask | prepreg | core | resin (at the height of the copper)
     dk: float
     outline: FloatArray
     filled: float = 0.0
@@ -75,8 +75,10 @@ def drawing_of(
     reach = _reach(one)
     thickness, foot_depth = float(one.thickness[0]), sum(float(ply.thickness[0]) for ply in one.foot_side)
     crest_top = thickness + sum(float(ply.thickness[0]) for ply in one.crest_side)
-    regions = [*_plies(one.foot_side, reach, start=0.0, way=-1.0),
-               *_plies(one.crest_side, reach, start=0.0, way=1.0, first_extra=thickness), *_mask(one, reach)]
+    band = _band(one, layer, reach)
+    crest_start, first_extra = (thickness, 0.0) if band else (0.0, thickness)
+    regions = [*_plies(one.foot_side, reach, start=0.0, way=-1.0), *band,
+               *_plies(one.crest_side, reach, start=crest_start, way=1.0, first_extra=first_extra), *_mask(one, reach)]
     copper = [Conductor(layer, "trace", outline) for outline in _traces(one)]
     copper += [Conductor(layer, "ground", outline) for outline in _grounds(one, reach)]
     sheet = 0.35 * thickness + 0.02 * (foot_depth + crest_top)
@@ -110,6 +112,13 @@ def _plies(
                                                                            max(height, further))))
         height = further
     return regions
+
+
+def _band(one: Section, layer: str, reach: float) -> list[Region]:
+    """Resin of its own Dk at the height of the copper `layer`."""
+    if one.band_dk is None:
+        return []
+    return [Region(f"resin round {layer}", "resin", float(one.band_dk[0]), _box(reach, 0.0, float(one.thickness[0])))]
 
 
 def _mask(one: Section, reach: float) -> list[Region]:

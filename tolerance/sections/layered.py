@@ -10,7 +10,8 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from tolerance.arrays import BoolArray, FloatArray, IntArray
+from tolerance.arrays import BoolArray, FloatArray, IntArray, NumberArray
+from tolerance.sections.section import Metals
 
 Index = IntArray | BoolArray | slice
 
@@ -40,12 +41,15 @@ class LayeredSection:
     """Flat layers from the bottom up, ended by planes or by air, and the traces in them."""
 
     thicknesses: tuple[FloatArray, ...]
-    dks: tuple[FloatArray, ...]
+    dks: tuple[NumberArray, ...]
     bottom_plane: bool
     top_plane: bool
     traces: tuple[PlacedTrace, ...]
     names: tuple[str, ...] = ()
-    kinds: tuple[str, ...] = ()  # air | prepreg | core | mask
+    kinds: tuple[str, ...] = ()  # air | prepreg | core | mask | resin (at the height of a trace)
+    dfs: tuple[FloatArray, ...] = ()  # where the line is evaluated at a frequency, as the two below
+    dk_frequencies: tuple[float | None, ...] = ()
+    metals: Metals | None = None
 
     @property
     def count(self) -> int:
@@ -54,7 +58,7 @@ class LayeredSection:
 
     @property
     def possible(self) -> BoolArray:
-        """Which sections can exist: every length above nought, finite, and every Dk at least 1."""
+        """Which sections can exist: every length above nought, finite, every Dk at least 1, no Df below 0."""
         lengths = [*self.thicknesses]
         for trace in self.traces:
             lengths += [trace.foot_width, trace.crest_width, trace.thickness]
@@ -63,14 +67,16 @@ class LayeredSection:
             result &= np.isfinite(length) & (length > 0.0)
         for dk in self.dks:
             result &= np.isfinite(dk) & (dk >= 1.0)
+        for df in self.dfs:
+            result &= np.isfinite(df) & (df >= 0.0)
         return result
 
     def rows(self, index: Index) -> LayeredSection:
         """The sections picked by `index`."""
         return replace(self, thicknesses=tuple(part[index] for part in self.thicknesses),
-                       dks=tuple(part[index] for part in self.dks),
+                       dks=tuple(part[index] for part in self.dks), dfs=tuple(part[index] for part in self.dfs),
                        traces=tuple(trace.rows(index) for trace in self.traces))
 
     def in_air(self) -> LayeredSection:
         """The same copper with every Dk 1."""
-        return replace(self, dks=tuple(np.ones_like(dk) for dk in self.dks))
+        return replace(self, dks=tuple(np.ones(dk.shape) for dk in self.dks))

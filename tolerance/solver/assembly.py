@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, NumberArray
 from tolerance.solver.edges import Edge, Nodes, place_nodes
 from tolerance.solver.kernels import FarImages, SpectralRest
 
@@ -32,7 +32,7 @@ class NearImage:
 class Medium:
     """What the dielectrics make of the images: a factor (sections,) for each near image, and the rest."""
 
-    factors: tuple[FloatArray, ...]
+    factors: tuple[NumberArray, ...]
     far: FarImages | None = None
     rest: SpectralRest | None = None
 
@@ -74,26 +74,36 @@ def near_system(
     return System(nodes, tuple(own), tuple(mirrored), across, height, (normals[0], normals[1]), trace, copper)
 
 
-def charge(system: System, medium: Medium, *, body_dk: FloatArray, sign: int, air: bool = False) -> FloatArray:
+def charge(
+    system: System, medium: Medium, *, body_dk: NumberArray, sign: int, air: bool = False,
+) -> NumberArray:
     """Charge on the right-hand trace (or right half) at potential 1, even or odd: (sections,), capacitance / eps0.
 
     air : copper alone, every Dk 1.
     """
+    solved = node_charges(system, medium, body_dk=body_dk, sign=sign, air=air)
+    return np.asarray(solved[:, : system.trace].sum(axis=1))
+
+
+def node_charges(
+    system: System, medium: Medium, *, body_dk: NumberArray, sign: int, air: bool = False,
+) -> NumberArray:
+    """Charge at every node, the traces at potential 1: (sections, unknowns); complex where a Dk is."""
     matrix = full_matrix(system, medium, sign=sign, air=air)
-    wanted = np.zeros((*matrix.shape[:2], 1))
+    wanted = np.zeros((*matrix.shape[:2], 1), dtype=matrix.dtype)
     wanted[:, : system.trace, 0] = (-2.0 * np.pi * body_dk)[:, None]
-    return np.asarray(np.linalg.solve(matrix, wanted)[:, : system.trace, 0].sum(axis=1))
+    return np.asarray(np.linalg.solve(matrix, wanted)[:, :, 0])
 
 
 def full_matrix(
     system: System, medium: Medium, *, sign: int, air: bool, kept: list[FloatArray] | None = None,
-) -> FloatArray:
+) -> NumberArray:
     """The matrix of all conditions, even (`sign` 1) or odd (-1): (sections, unknowns, unknowns).
 
     kept : a list that takes the matrix of each far image, before its factor.
     """
     size = system.copper if air else system.across.shape[1]
-    matrix = np.zeros((system.across.shape[0], size, size))
+    matrix = np.zeros((system.across.shape[0], size, size), dtype=np.result_type(*medium.factors))
     for factor, own, mirrored in zip(medium.factors, system.own, system.mirrored, strict=True):
         if np.any(factor):
             matrix += factor[:, None, None] * (own[:, :size, :size] + sign * mirrored[:, :size, :size])
@@ -148,7 +158,7 @@ def _kernel(run: FloatArray, rise: FloatArray, normals: Sequence[FloatArray], co
 
 
 def _add_far_images(
-    matrix: FloatArray, system: System, far: FarImages, sign: int, size: int, kept: list[FloatArray] | None,
+    matrix: NumberArray, system: System, far: FarImages, sign: int, size: int, kept: list[FloatArray] | None,
 ) -> None:
     across, height = system.across[:, :size], system.height[:, :size]
     normals = tuple(values[:, :size] for values in system.normals)
@@ -162,7 +172,7 @@ def _add_far_images(
         source_across, source_height = far_places(source)
         total = height[:, :, None] + source_height[:, None, :]
         runs = [across[:, :, None] - source_across[:, None, :], across[:, :, None] + source_across[:, None, :]]
-        block = np.zeros_like(total)
+        block = np.zeros(total.shape, dtype=matrix.dtype)
         for number in range(far.shifts.shape[1]):
             rise = total + far.shifts[:, number, None, None]
             kernel = _kernel(runs[0], rise, normals, system.copper)
@@ -170,8 +180,7 @@ def _add_far_images(
             kernel += mirrored if sign > 0 else -mirrored
             if kept is not None:
                 kept[number][:, :, start:stop] = kernel @ source.refine if source.edge.tail else kernel
-            kernel *= far.factors[:, number, None, None]
-            block += kernel
+            block += kernel * far.factors[:, number, None, None]
         matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
         start = stop
 
@@ -184,7 +193,7 @@ def far_places(source: Nodes) -> tuple[FloatArray, FloatArray]:
     return (source.fine_across, source.fine_height) if source.edge.tail else (source.across, source.height)
 
 
-def _turn_into_interface_conditions(matrix: FloatArray, system: System) -> None:
+def _turn_into_interface_conditions(matrix: NumberArray, system: System) -> None:
     """Rows of dielectric: (left - right) / (2 pi) * field + (left + right) / 2 * density = 0."""
     start = 0
     for nodes in system.nodes:

@@ -34,7 +34,7 @@ STEP = 1e-4
 class ModeDerivatives:
     """Impedance [ohm] of a mode and its derivatives, all (sections,), by name of what changes [ohm/m, or ohm].
 
-    Names: foot_width, crest_width, thickness, gap, ground_gap, foot_side.0.thickness, foot_side.0.dk, ...,
+    Names: foot_width, crest_width, thickness, gap, ground_gap, band_dk, foot_side.0.thickness, foot_side.0.dk, ...,
     crest_side.0.thickness, ..., mask.on_laminate, mask.over_copper, mask.dk. Each is with all others held.
     """
 
@@ -78,7 +78,7 @@ def parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
             return _with(one, "mask", _with(one.mask, name, value))
         return put
 
-    for name in ("foot_width", "crest_width", "thickness", "gap", "ground_gap"):
+    for name in ("foot_width", "crest_width", "thickness", "gap", "ground_gap", "band_dk"):
         value = getattr(section, name)
         if value is not None:
             found.append((name, value, plain(name)))
@@ -144,7 +144,7 @@ def _solve_alike(section: Section, plan: Plan, mode: int) -> tuple[FloatArray, d
 
 def _moves_media(name: str, parts: Structure) -> bool:
     """Whether a dimension or Dk changes factors and shifts of images, not only places."""
-    return name.startswith(("foot_side", "crest_side")) or name == "mask.dk" or (
+    return name.startswith(("foot_side", "crest_side")) or name in ("mask.dk", "band_dk") or (
         parts.above is not None and name in ("thickness", "mask.on_laminate"))
 
 

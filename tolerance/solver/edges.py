@@ -13,7 +13,7 @@ from typing import Literal
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, NumberArray
 from tolerance.sections.section import Section
 from tolerance.solver.rules import (
     Rule,
@@ -46,8 +46,8 @@ class Edge:
     stop: tuple[FloatArray, FloatArray]
     folded: bool = False
     tail: bool = False
-    left_dk: FloatArray | None = None
-    right_dk: FloatArray | None = None
+    left_dk: NumberArray | None = None
+    right_dk: NumberArray | None = None
 
     @property
     def conducts(self) -> bool:

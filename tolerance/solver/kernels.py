@@ -1,5 +1,7 @@
 """Potential of a line charge between flat dielectric layers and planes.
 
+A Dk may be complex, its loss in the imaginary part: every formula here is analytic in it.
+
 The charge and the point lie in one layer, the body: the dielectric round the trace, of Dk `body_dk`. Heights y are
 counted from the lower face of that layer. Transformed along x with wavenumber k, the potential of a unit charge is
 1 / (2 k Dk) times a sum of exponentials in k y; each exponential with a constant factor is an image charge.
@@ -19,7 +21,7 @@ from functools import lru_cache
 
 import numpy as np
 
-from tolerance.arrays import FloatArray, read_only
+from tolerance.arrays import FloatArray, NumberArray, read_only
 
 #: Where exp(-k * distance) counts as nought in the spectral rest.
 LAST_EXPONENT = 17.0
@@ -34,7 +36,7 @@ class FlatStack:
     """Flat plies on one side of the body, outwards, then a plane or air: arrays (sections,) [m] and [-]."""
 
     thicknesses: tuple[FloatArray, ...]
-    dks: tuple[FloatArray, ...]
+    dks: tuple[NumberArray, ...]
     plane: bool = True
 
     @property
@@ -44,9 +46,9 @@ class FlatStack:
 
     def in_air(self) -> FlatStack:
         """The same plies with Dk 1."""
-        return FlatStack(self.thicknesses, tuple(np.ones_like(dk) for dk in self.dks), self.plane)
+        return FlatStack(self.thicknesses, tuple(np.ones(dk.shape) for dk in self.dks), self.plane)
 
-    def reflection(self, wavenumber: FloatArray, body_dk: FloatArray) -> FloatArray:
+    def reflection(self, wavenumber: FloatArray, body_dk: NumberArray) -> NumberArray:
         """Reflected over arriving potential at the face of the body; `wavenumber` and result (sections, k)."""
         innermost = self.dks[-1] if self.dks else body_dk
         ending = -np.ones_like(body_dk) if self.plane else (innermost - 1.0) / (innermost + 1.0)
@@ -58,7 +60,7 @@ class FlatStack:
             result = (step + wave) / (1.0 + step * wave)
         return np.asarray(result)
 
-    def first_reflection(self, body_dk: FloatArray) -> FloatArray:
+    def first_reflection(self, body_dk: NumberArray) -> NumberArray:
         """The reflection of the nearest face alone: the limit of large wavenumber; -1 where that is the plane."""
         if not self.dks:
             return -np.ones_like(body_dk) if self.plane else np.asarray((body_dk - 1.0) / (body_dk + 1.0))
@@ -70,7 +72,7 @@ class FarImages:
     """Image charges `shift` [m] below the mirror image at y = 0, with factors: both (sections, images)."""
 
     shifts: FloatArray
-    factors: FloatArray
+    factors: NumberArray
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,15 +85,15 @@ class SpectralRest:
     """
 
     wavenumber: FloatArray
-    lower: FloatArray
-    upper: FloatArray
-    cross: FloatArray
-    level: FloatArray
+    lower: NumberArray
+    upper: NumberArray
+    cross: NumberArray
+    level: NumberArray
     body_thickness: FloatArray
-    compensation: FloatArray  # (sections,) factor of the logarithm taken off in the near part
+    compensation: NumberArray  # (sections,) factor of the logarithm taken off in the near part
     distance: FloatArray  # (sections,) [m]
 
-    def matrix(self, across: FloatArray, height: FloatArray, sign: int) -> FloatArray:
+    def matrix(self, across: FloatArray, height: FloatArray, sign: int) -> NumberArray:
         """Rest between all nodes (sections, nodes, nodes), even (`sign` 1) or odd (-1) about x = 0."""
         phase = self.wavenumber[:, None, :] * across[:, :, None]
         wave = np.cos(phase) if sign > 0 else np.sin(phase)
@@ -108,12 +110,12 @@ class SpectralRest:
             result -= 0.5 * self.compensation[:, None, None] * (own + sign * mirrored)
         return np.asarray(result)
 
-    def whole_matrix(self, across: FloatArray, height: FloatArray) -> FloatArray:
+    def whole_matrix(self, across: FloatArray, height: FloatArray) -> NumberArray:
         """Rest between all nodes of a section that is not mirrored: half the sum of even and odd."""
         return 0.5 * (self.matrix(across, height, 1) + self.matrix(across, height, -1))
 
 
-def image_multiples(stack: FlatStack, body_dk: FloatArray) -> tuple[float, ...]:
+def image_multiples(stack: FlatStack, body_dk: NumberArray) -> tuple[float, ...]:
     """Where far images stand, in units of twice the first ply's thickness, for the first section of the stack.
 
     One ply's images stand at whole multiples, the last ones wider apart; several plies need a denser set. The
@@ -138,7 +140,7 @@ def image_multiples(stack: FlatStack, body_dk: FloatArray) -> tuple[float, ...]:
     return multiples
 
 
-def far_images(stack: FlatStack, body_dk: FloatArray, *, multiples: Sequence[float]) -> FarImages:
+def far_images(stack: FlatStack, body_dk: NumberArray, *, multiples: Sequence[float]) -> FarImages:
     """Images that stand for the reflection of `stack` beyond its first face.
 
     Least squares on fixed wavenumbers over fixed image places, exact at wavenumber nought (so that the plane
@@ -162,7 +164,7 @@ def plane_image(depth: FloatArray) -> FarImages:
 
 
 def spectral_rest(
-    *, below: FlatStack, above: FlatStack, body_dk: FloatArray, body_thickness: FloatArray, distance: FloatArray,
+    *, below: FlatStack, above: FlatStack, body_dk: NumberArray, body_thickness: FloatArray, distance: FloatArray,
     count: int,
 ) -> SpectralRest:
     """The rest, beyond the images at both faces of the body, of the plies and planes on both sides.

@@ -13,12 +13,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.layered import LayeredSection
 from tolerance.solver.assembly import NearImage, near_system
-from tolerance.solver.edges import Edge
+from tolerance.solver.edges import Edge, Nodes
 from tolerance.solver.kernels import LAST_EXPONENT, FlatStack, spectral_rest
-from tolerance.solver.plan import SolverSettings, edge_counts
+from tolerance.solver.plan import PLANE_WAVENUMBERS, SolverSettings, edge_counts
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,6 +27,7 @@ class LayeredPlan:
 
     counts: Mapping[str, tuple[int, int]]
     wavenumbers: Mapping[tuple[int, int], int]
+    plane_wavenumbers: int = 0
 
 
 def plan_layered(section: LayeredSection, settings: SolverSettings) -> LayeredPlan:
@@ -48,13 +49,46 @@ def plan_layered(section: LayeredSection, settings: SolverSettings) -> LayeredPl
         for high in layers[number:]:
             way = float((_way_left(section, low) if low == high else _way_between(section, low, high))[0])
             wavenumbers[low, high] = math.ceil(16.0 + 0.5 * LAST_EXPONENT * reach / way + 4.0 * math.sqrt(depth / way))
-    return LayeredPlan(counts, wavenumbers)
+    ways = [abs(bases[edge.name] + float(end[1][0]) - plane) for edge in edges for end in (edge.start, edge.stop)
+            for plane in planes]
+    return LayeredPlan(counts, wavenumbers, math.ceil(PLANE_WAVENUMBERS + 0.7 * LAST_EXPONENT * reach / min(ways)))
 
 
-def capacitance_matrix(section: LayeredSection, plan: LayeredPlan) -> FloatArray:
+@dataclass(frozen=True, slots=True)
+class TraceCharges:
+    """Charges (sections, unknowns, traces) for 1 V on each trace, and where they are: edges with heights, trace by
+    trace in the order of the section.
+
+    owner : (unknowns,) number of the trace.  edge : (unknowns,) number of its edge.  jacobian as of Nodes.
+    height : (sections, unknowns) from the bottom of the stack [m].
+    """
+
+    charges: NumberArray
+    across: FloatArray
+    height: FloatArray
+    jacobian: FloatArray
+    owner: IntArray
+    edge_names: tuple[str, ...]
+    edge: IntArray
+
+    @property
+    def matrix(self) -> NumberArray:
+        """Capacitance matrix over vacuum permittivity: (sections, traces, traces)."""
+        order = list(dict.fromkeys(self.owner.tolist()))  # from the bottom up, as the equations stand
+        belongs = (self.owner == np.array(order)[:, None]).astype(np.float64)
+        result = np.empty((len(self.charges), len(order), len(order)), dtype=self.charges.dtype)
+        result[:, np.array(order)[:, None], np.array(order)[None, :]] = belongs @ self.charges[:, :, order]
+        return result
+
+
+def capacitance_matrix(section: LayeredSection, plan: LayeredPlan) -> NumberArray:
     """Capacitance matrix over vacuum permittivity: (sections, traces, traces), a row the charges for 1 V on a trace."""
+    return trace_charges(section, plan).matrix
+
+
+def trace_charges(section: LayeredSection, plan: LayeredPlan) -> TraceCharges:
+    """Solve for 1 V on each trace in turn, the others at nought; complex where a Dk is."""
     layers = sorted({trace.layer for trace in section.traces})
-    order = [number for layer in layers for number, trace in enumerate(section.traces) if trace.layer == layer]
     blocks = {layer: _Block.of(section, plan, layer) for layer in layers}
     rows = []
     for row in layers:
@@ -68,13 +102,20 @@ def capacitance_matrix(section: LayeredSection, plan: LayeredPlan) -> FloatArray
                 cells.append(_between(section, plan, blocks[column], blocks[row]).transpose(0, 2, 1))
         rows.append(np.concatenate(cells, axis=2))
     matrix = np.concatenate(rows, axis=1)
-    sizes = [size for layer in layers for size in blocks[layer].sizes]
-    belongs = np.repeat(np.eye(len(order)), sizes, axis=1)  # (traces in order, unknowns)
-    wanted = np.broadcast_to(-2.0 * np.pi * belongs.T, (section.count, *belongs.T.shape))
-    charges = np.linalg.solve(matrix, wanted)
-    result = np.empty((section.count, len(order), len(order)))
-    result[:, np.array(order)[:, None], np.array(order)[None, :]] = belongs @ charges
-    return result
+    edges = [nodes.edge.name for layer in layers for nodes in blocks[layer].nodes]
+    sizes = [nodes.across.shape[1] for layer in layers for nodes in blocks[layer].nodes]
+    owner = np.repeat([int(name.split()[0]) for name in edges], sizes)
+    order = np.array([number for layer in layers for number, trace in enumerate(section.traces)
+                      if trace.layer == layer])
+    wanted = -2.0 * np.pi * (owner[:, None] == order)
+    charges = np.linalg.solve(matrix, np.broadcast_to(wanted, (section.count, *wanted.shape)))[:, :, np.argsort(order)]
+    bases = {layer: np.asarray(sum(section.thicknesses[:layer], start=np.zeros(section.count))) for layer in layers}
+    return TraceCharges(
+        charges=charges, across=np.concatenate([blocks[layer].across for layer in layers], axis=1),
+        height=np.concatenate([blocks[layer].height + bases[layer][:, None] for layer in layers], axis=1),
+        jacobian=np.concatenate([nodes.jacobian for layer in layers for nodes in blocks[layer].nodes], axis=1),
+        owner=owner, edge_names=tuple(edges), edge=np.repeat(np.arange(len(edges)), sizes),
+    )
 
 
 @dataclass(frozen=True, slots=True)
@@ -82,22 +123,19 @@ class _Block:
     """The traces of one layer: M over Dk among themselves, and their nodes; heights from the layer's lower face."""
 
     layer: int
-    matrix: FloatArray
+    matrix: NumberArray
     across: FloatArray
     height: FloatArray
-    sizes: tuple[int, ...]
+    nodes: tuple[Nodes, ...]
 
     @staticmethod
     def of(section: LayeredSection, plan: LayeredPlan, layer: int) -> _Block:
         numbers = [number for number, trace in enumerate(section.traces) if trace.layer == layer]
-        groups = [_edges(section, number) for number in numbers]
-        edges = [edge for group in groups for edge in group]
+        edges = [edge for number in numbers for edge in _edges(section, number)]
         dk, thickness = section.dks[layer], section.thicknesses[layer]
         below, above = _below(section, layer), _above(section, layer)
-        feet = {up: tuple(f"{number} foot" for number in numbers if section.traces[number].foot_up == up)
-                for up in (False, True)}
-        images = (NearImage(None), NearImage(np.zeros(section.count), touching=feet[False]),
-                  NearImage(thickness, touching=feet[True]))
+        images = (NearImage(None), NearImage(np.zeros(section.count), touching=_touching(section, numbers, up=False)),
+                  NearImage(thickness, touching=_touching(section, numbers, up=True)))
         system = near_system(edges, images, counts=[plan.counts[edge.name] for edge in edges], mirror=False)
         factors = (np.ones(section.count), below.first_reflection(dk), above.first_reflection(dk))
         matrix = sum((factor[:, None, None] * own for factor, own in zip(factors, system.own, strict=True)),
@@ -105,11 +143,18 @@ class _Block:
         rest = spectral_rest(below=below, above=above, body_dk=dk, body_thickness=thickness,
                              distance=_way_left(section, layer), count=plan.wavenumbers[layer, layer])
         matrix = matrix + rest.whole_matrix(system.across, system.height)
-        sizes = tuple(sum(plan.counts[edge.name][0] for edge in group) for group in groups)
-        return _Block(layer, matrix / dk[:, None, None], system.across, system.height, sizes)
+        return _Block(layer, matrix / dk[:, None, None], system.across, system.height, system.nodes)
 
 
-def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Block) -> FloatArray:
+def _touching(section: LayeredSection, numbers: Sequence[int], *, up: bool) -> tuple[str, ...]:
+    """Which faces of the traces of a layer lie on its upper (`up`) or lower face: feet, and crests as high as it."""
+    feet = [f"{number} foot" for number in numbers if section.traces[number].foot_up == up]
+    crests = [f"{number} crest" for number in numbers if section.traces[number].foot_up != up
+              and np.array_equal(section.traces[number].thickness, section.thicknesses[section.traces[number].layer])]
+    return (*feet, *crests)
+
+
+def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Block) -> NumberArray:
     """M over Dk of points in the lower and charges in the upper layer: (sections, lower nodes, upper nodes).
 
     The wave of a charge in the upper layer goes down through every layer between, each with what comes back from

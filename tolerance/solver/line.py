@@ -7,15 +7,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tolerance.arrays import FloatArray, IntArray
+from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
 from tolerance.solver.assembly import charge, near_system
 from tolerance.solver.layered import LayeredPlan, capacitance_matrix, plan_layered
 from tolerance.solver.plan import Plan, SolverSettings, plan_for
 from tolerance.solver.structure import media, structure, topology
+from tolerance.solver.transmission import SPEED_OF_LIGHT
 
-SPEED_OF_LIGHT = 299792458.0  # [m/s], exact by definition of the metre
 #: Impedance of free space [ohm], CODATA 2018.
 FREE_SPACE_IMPEDANCE = 376.730313668
 
@@ -86,19 +86,26 @@ def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
 
 
 def _solve_layered(section: LayeredSection, plan: LayeredPlan, modes: tuple[int, ...]) -> dict[int, ModeSolution]:
-    unknowns = sum(count[0] for count in plan.counts.values())
-    size = max(1, 200_000 // unknowns**2)
     parts: dict[int, list[tuple[FloatArray, FloatArray]]] = {mode: [] for mode in modes}
-    for start in range(0, section.count, size):
-        batch = section.rows(slice(start, start + size))
+    for rows in layered_batches(section, plan):
+        batch = section.rows(rows)
         matrices = capacitance_matrix(batch, plan), capacitance_matrix(batch.in_air(), plan)
         for mode in modes:
-            parts[mode].append((_mode_capacitance(matrices[0], mode), _mode_capacitance(matrices[1], mode)))
+            parts[mode].append((mode_capacitance(matrices[0], mode), mode_capacitance(matrices[1], mode)))
     return {mode: ModeSolution(*(np.concatenate(column) for column in zip(*parts[mode], strict=True)))
             for mode in modes}
 
 
-def _mode_capacitance(matrix: FloatArray, mode: int) -> FloatArray:
+def layered_batches(section: LayeredSection, plan: LayeredPlan) -> Iterator[slice]:
+    """Rows of the section in batches that fit the cache."""
+    unknowns = sum(count[0] for count in plan.counts.values())
+    size = max(1, 200_000 // unknowns**2)
+    for start in range(0, section.count, size):
+        yield slice(start, start + size)
+
+
+def mode_capacitance(matrix: NumberArray, mode: int) -> NumberArray:
+    """Capacitance of a mode, see solve_modes, from the matrix of two traces (sections, 2, 2): (sections,)."""
     if mode > 0:
         return np.asarray(0.5 * matrix.sum(axis=(1, 2)))
     inverse = np.linalg.inv(matrix)

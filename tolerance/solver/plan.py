@@ -20,6 +20,9 @@ from tolerance.solver.structure import Structure, shortest_remaining_way, struct
 #: Unknowns per unit of length over distance: keeps centred strips within 2e-5 of Cohn 1954 at any width.
 NODES_ALONG_BROAD_FACE = 1.6
 
+#: Nodes over the wavenumber for the current in planes under a narrow line.
+PLANE_WAVENUMBERS = 24
+
 
 @dataclass(frozen=True, slots=True)
 class SolverSettings:
@@ -35,11 +38,15 @@ class SolverSettings:
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """Nodes (unknowns, quadrature places) by edge name, image places and nodes over wavenumber."""
+    """Nodes (unknowns, quadrature places) by edge name, image places, and nodes over the wavenumber.
+
+    plane_wavenumbers : those for the currents in the planes.
+    """
 
     counts: Mapping[str, tuple[int, int]]
     multiples: tuple[float, ...]
     wavenumbers: int
+    plane_wavenumbers: int = 0
     settings: SolverSettings = field(default_factory=SolverSettings)
 
     def count(self, edge: Edge) -> tuple[int, int]:
@@ -52,14 +59,16 @@ def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
     settings = settings or SolverSettings()
     counts: dict[str, tuple[int, int]] = {}
     multiples: tuple[float, ...] = ()
-    wavenumbers = 0
+    wavenumbers, plane_wavenumbers = 0, 0
     for section_as in _as_drawn_and_across(section.rows(slice(0, 1))):
         parts = structure(section_as)
         for edge, ratio, breadth in _crowding(parts):
             counts.setdefault(edge.name, _counts(edge, ratio, settings, breadth=breadth))
         multiples = multiples or _multiples(parts)
         wavenumbers = wavenumbers or _wavenumbers(parts)
-    return Plan(counts=counts, multiples=multiples, wavenumbers=wavenumbers, settings=settings)
+        plane_wavenumbers = max(plane_wavenumbers, _plane_wavenumbers(parts))
+    return Plan(counts=counts, multiples=multiples, wavenumbers=wavenumbers, plane_wavenumbers=plane_wavenumbers,
+                settings=settings)
 
 
 def _as_drawn_and_across(nominal: Section) -> list[Section]:
@@ -103,6 +112,18 @@ def _wavenumbers(parts: Structure) -> int:
     return math.ceil(16.0 + 0.5 * LAST_EXPONENT * 2.0 * across / shortest + 4.0 * math.sqrt(depth / shortest))
 
 
+def _plane_wavenumbers(parts: Structure) -> int:
+    """Enough for the square of what charges induce in planes, which goes like cos(2 k x) exp(-2 k distance)."""
+    heights = [float(end[1][0]) for edge in parts.edges for end in (edge.start, edge.stop) if edge.conducts]
+    across = max(float(np.abs(end[0][0])) for edge in parts.edges for end in (edge.start, edge.stop) if edge.conducts)
+    ways = []
+    if parts.below.plane:
+        ways.append(float(parts.below.depth[0]) + min(heights))
+    if parts.above is not None and parts.above.plane and parts.body_thickness is not None:
+        ways.append(float((parts.body_thickness + parts.above.depth)[0]) - max(heights))
+    return math.ceil(PLANE_WAVENUMBERS + 0.7 * LAST_EXPONENT * across / min(ways))
+
+
 def edge_counts(
     edges: Sequence[Edge], settings: SolverSettings, *, levels: Sequence[float], bases: Mapping[str, float],
 ) -> dict[str, tuple[int, int]]:
@@ -131,7 +152,7 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float, float]]:
     others += [(edge, points * [-1.0, 1.0]) for edge, points in outlines if not edge.folded]
     levels = [-float(parts.below.thicknesses[0][0])] if parts.below.thicknesses else []
     if parts.above is not None and parts.body_thickness is not None:
-        levels.append(float(parts.body_thickness[0]))
+        levels.append(float((parts.body_thickness + (parts.above.thicknesses[0] if parts.crest_touches else 0.0))[0]))
     result = []
     for edge, points in outlines:
         length = float(edge.length[0])

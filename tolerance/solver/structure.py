@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from tolerance.arrays import FloatArray, IntArray
+from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.section import Mask, Ply, Section
 from tolerance.solver.assembly import Medium, NearImage
 from tolerance.solver.edges import Edge, ground_edges, mask_edges, trace_edges
@@ -19,10 +19,15 @@ class Structure:
 
     edges: tuple[Edge, ...]
     images: tuple[NearImage, ...]
-    body_dk: FloatArray
+    body_dk: NumberArray
     below: FlatStack
     above: FlatStack | None  # None: air, or a mask with a face of its own
     body_thickness: FloatArray | None
+
+    @property
+    def crest_touches(self) -> bool:
+        """Whether the crest lies on the upper face of the body."""
+        return any("crest" in image.touching for image in self.images)
 
 
 #: What changes the edges of a section: bits of its topology.
@@ -48,7 +53,8 @@ def structure(section: Section) -> Structure:
     A coplanar line under one flat cover is a line under a mask as high as the cover: its grounded copper reaches
     further than a quadrature over the wavenumber could follow.
     """
-    if section.ground_gap is not None and len(section.crest_side) == 1 and not section.crest_plane:
+    open_cover = len(section.crest_side) == 1 and not section.crest_plane
+    if section.ground_gap is not None and open_cover and not _has_band(section):
         cover = section.crest_side[0]
         mask = Mask(section.thickness + cover.thickness, cover.thickness, cover.dk)
         return structure(replace(section, crest_side=(), mask=mask))
@@ -70,7 +76,7 @@ def media(
 
     distance : (sections,) [m] what sets the wavenumbers between flat plies; absent: the shortest remaining way.
     """
-    one = np.ones_like(parts.body_dk)
+    one = np.ones(parts.body_dk.shape)
     if parts.above is None:
         filled = Medium((one, parts.below.first_reflection(parts.body_dk)),
                         far=far_images(parts.below, parts.body_dk, multiples=multiples))
@@ -104,7 +110,7 @@ def _is(section: Section, bit: int) -> bool:
     return bool(int(topology(section.rows(slice(0, 1)))[0]) & bit)
 
 
-def _open_above(section: Section, body_dk: FloatArray) -> Structure:
+def _open_above(section: Section, body_dk: NumberArray) -> Structure:
     """The plane on the foot side; over the trace air, or a mask whose face carries unknowns."""
     zero = np.zeros(section.count)
     edges = trace_edges(section) + ground_edges(section)
@@ -117,16 +123,27 @@ def _open_above(section: Section, body_dk: FloatArray) -> Structure:
 
 
 def _between_flat_plies(section: Section, crest_side: tuple[Ply, ...]) -> Structure:
-    """Flat plies or planes on both sides: every dielectric is in the kernel."""
+    """Flat plies or planes on both sides: every dielectric is in the kernel.
+
+    The body is the ply that presses into the copper, or the band of resin at the copper's height.
+    """
     zero = np.zeros(section.count)
-    body_dk = crest_side[0].dk
-    thickness = section.thickness + crest_side[0].thickness
+    body_dk, thickness, further = crest_side[0].dk, section.thickness + crest_side[0].thickness, crest_side[1:]
+    touching: tuple[str, ...] = ()
+    if section.band_dk is not None and _has_band(section):
+        body_dk, thickness, further = section.band_dk, section.thickness, crest_side
+        touching = ("crest", "ground crest")
     return Structure(
         edges=tuple(trace_edges(section) + ground_edges(section, reach=_ground_reach(section, crest_side))),
-        images=(NearImage(None), NearImage(zero, touching=("foot", "ground foot")), NearImage(thickness)),
+        images=(NearImage(None), NearImage(zero, touching=("foot", "ground foot")), NearImage(thickness, touching)),
         body_dk=body_dk, below=_stack(section.foot_side, plane=section.foot_plane),
-        above=_stack(crest_side[1:], plane=section.crest_plane), body_thickness=thickness,
+        above=_stack(further, plane=section.crest_plane), body_thickness=thickness,
     )
+
+
+def _has_band(section: Section) -> bool:
+    """Whether resin of its own Dk stands at the height of the traces of a batch of one topology."""
+    return section.band_dk is not None and not _is(section, STRIP)
 
 
 def _ground_reach(section: Section, crest_side: tuple[Ply, ...]) -> FloatArray:

@@ -109,6 +109,23 @@ def dependent_indices(
     return result
 
 
+def group_totals(
+    model: Model, groups: list[list[int]], *, chance: np.random.Generator, points: int = POINTS,
+    replicates: int = REPLICATES,
+) -> FloatArray:
+    """Share of the variance that would be left were all but a group's variables known: (replicates, groups).
+
+    groups : positions of variables.  points : a power of two.
+    """
+    every = (1 << model.dimensions) - 1
+    result = np.zeros((replicates, len(groups)))
+    for replicate, generator in enumerate(chance.spawn(replicates)):
+        pairs = _draw_pairs(model, points, generator)
+        for number, group in enumerate(groups):
+            result[replicate, number] = 1.0 - pairs.explained(every ^ sum(1 << position for position in group))
+    return result
+
+
 def conditional_normals(
     correlation: FloatArray, germ: FloatArray, spare: FloatArray, *, given: list[int], unknown: list[int]
 ) -> FloatArray:

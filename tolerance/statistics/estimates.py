@@ -31,6 +31,10 @@ class Interval:
         """The same estimate with its ends moved out by `below` and `above`, both at least 0."""
         return Interval(self.value, float(self.low - below), float(self.high + above))
 
+    def at_most(self, bound: float) -> Interval:
+        """The same interval, its estimate not above a bound that is known better."""
+        return Interval(min(self.value, bound), min(self.low, bound), self.high)
+
     def within(self, lowest: float, highest: float) -> Interval:
         """The same estimate with its ends inside what is possible; the estimate itself is never moved."""
         return Interval(self.value, max(self.low, lowest), min(self.high, highest))

@@ -7,7 +7,7 @@ than independent ones); and the error of the predicted impedances, where it is g
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.special import betaincinv
@@ -17,6 +17,7 @@ from tolerance.errors import UnfinishedError
 from tolerance.statistics.estimates import CONFIDENCE, Interval, half_interval
 
 RARE = 20  # coupons, or lots with such coupons: with fewer on one side the binomial interval stands
+NEXT_TO_ONE = float(np.nextafter(1.0, 0.0))
 STILL = 1e-12  # relative range of impedances below which nothing moves them
 FEWEST_POSSIBLE = 2  # coupons of each replicate that must be possible, for a deviation
 
@@ -36,6 +37,11 @@ class LineYield:
     cp: Interval | None
     cpk: Interval | None
     impossible: int
+
+    def from_tails(self, below: Interval, above: Interval, failing: Interval) -> LineYield:
+        """The same line with its shares from an integral over its failures, which are too rare to be counted."""
+        low, high = min(1.0 - failing.high, NEXT_TO_ONE), min(1.0 - failing.low, 1.0)
+        return replace(self, below=below, above=above, inside=Interval(1.0 - failing.value, low, high))
 
 
 @dataclass(frozen=True, slots=True)

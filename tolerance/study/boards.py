@@ -10,9 +10,9 @@ import numpy as np
 
 from tolerance.arrays import BoolArray, FloatArray, read_only
 from tolerance.decisions.board import Board, LineModel
-from tolerance.process.changes import seen_by_line, with_laws, with_variable
 from tolerance.process.draws import ETCH, Process, ProcessDraws, process_of
 from tolerance.process.laws import Law, quantile
+from tolerance.process.other_laws import seen_by_line, with_laws, with_variable
 from tolerance.process.remembered import Key, RememberedDraws, remember
 from tolerance.process.resin import with_causes
 from tolerance.scenario.properties import Property, properties
@@ -29,6 +29,7 @@ from tolerance.surrogate.coordinates import REACH as DRAWS_REACH
 from tolerance.surrogate.prediction import BLOCK_ROWS, Predictor
 
 STEP = "solving lines"
+FEWEST_REMEMBERED = 4096  # coupons for which it is worth it to remember what unchanged laws come to
 
 
 @dataclass(frozen=True, slots=True)
@@ -159,6 +160,8 @@ class _Answers:
         return self._prepared.section(RememberedDraws(process, germ, known=self._known(germ))).possible
 
     def _known(self, germ: FloatArray) -> dict[Key, FloatArray]:
+        if len(germ) < FEWEST_REMEMBERED:
+            return {}
         remembered = self._remembered
         if remembered is None or remembered[0] is not germ:
             self._remembered = remembered = germ, remember(self._process, germ, width=self._prepared.line.width)

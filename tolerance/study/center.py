@@ -22,7 +22,7 @@ from tolerance.decisions.centring import (
 from tolerance.decisions.interpolation import Path
 from tolerance.decisions.tightening import Judged, base_sides, judged
 from tolerance.errors import InputError, UnfinishedError
-from tolerance.process.changes import laws_of, moved, with_laws
+from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board, fit_wide_board

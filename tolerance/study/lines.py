@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,6 +11,7 @@ from tolerance.arrays import FloatArray
 from tolerance.process.values import NominalValues, ProcessValues, nominals_of
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.as_built import as_built
+from tolerance.sections.reading import ReadingRise, reading_rise
 from tolerance.sections.surroundings import (
     BroadsideSurroundings,
     Surroundings,
@@ -17,7 +19,9 @@ from tolerance.sections.surroundings import (
     surroundings_of,
 )
 from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, solve_modes
+from tolerance.solver.lossy import cross_section, solve_lossy
 from tolerance.solver.plan import SolverSettings
+from tolerance.solver.transmission import LineParameters
 
 EVEN, ODD = 1, -1
 
@@ -32,6 +36,8 @@ class PreparedLine:
     plan: AnyPlan
     low_limit: float
     high_limit: float
+    frequency: float | None = None  # [Hz]; None: lossless and static
+    rise: ReadingRise | None = None
 
     @property
     def mode(self) -> str:
@@ -61,15 +67,33 @@ class PreparedLine:
         return as_built(self.line, self.surroundings, values)
 
     def impedance(self, section: AnySection) -> FloatArray:
-        """Solved impedance [ohm] of possible sections: of the line, or of the pair in its mode; shape (sections,)."""
-        mode = ODD if self.mode == "differential" else EVEN
-        return self.impedance_of(solve_modes(section, self.plan, modes=(mode,)))
+        """Solved impedance [ohm] of possible sections: of the line, or of the pair in its mode; shape (sections,).
 
-    def impedance_of(self, modes: dict[int, ModeSolution]) -> FloatArray:
+        At a frequency it is the magnitude of the lossy line's.
+        """
+        return self.impedance_of(self.solve(section, modes=(self.shown_mode,)))
+
+    @property
+    def shown_mode(self) -> int:
+        """The mode whose impedance is meant."""
+        return ODD if self.mode == "differential" else EVEN
+
+    @property
+    def mode_factor(self) -> float:
         """Differential impedance is twice the odd mode's, common half the even mode's."""
-        if self.mode == "single":
-            return modes[EVEN].impedance
-        return 2.0 * modes[ODD].impedance if self.mode == "differential" else 0.5 * modes[EVEN].impedance
+        return {"single": 1.0, "differential": 2.0, "common": 0.5}[self.mode]
+
+    def solve(
+        self, section: AnySection, *, modes: tuple[int, ...],
+    ) -> Mapping[int, ModeSolution] | Mapping[int, LineParameters]:
+        """Modes of possible sections, lossy where there is a frequency."""
+        if self.frequency is None:
+            return solve_modes(section, self.plan, modes=modes)
+        return solve_lossy(section, self.plan, modes=modes, frequency=self.frequency)
+
+    def impedance_of(self, modes: Mapping[int, ModeSolution] | Mapping[int, LineParameters]) -> FloatArray:
+        """The impedance that is meant, from its mode."""
+        return np.asarray(self.mode_factor * modes[self.shown_mode].impedance)
 
 
 def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> PreparedLine:
@@ -79,7 +103,22 @@ def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> Prepare
     nominal = as_built(line, surroundings, NominalValues(nominals_of(scenario)))
     half = line.target * scenario.limit_of(line)
     return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
-                        low_limit=line.target - half, high_limit=line.target + half)
+                        low_limit=line.target - half, high_limit=line.target + half,
+                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal))
+
+
+def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:
+    """What series resistance adds to a reading on the nominal line: that of both traces of a differential pair in
+    series, of a common-mode pair side by side."""
+    if scenario.test is None or scenario.test.reading is None:
+        return None
+    layers = [scenario.layer(line.layer)] * (2 if line.gap is not None else 1)
+    if line.partner is not None:
+        layers = sorted([*layers, scenario.layer(line.partner)], key=scenario.layers.index)
+    areas = [cross_section(nominal, trace if line.partner is not None else 0) for trace in range(len(layers))]
+    each = [1.0 / (layer.conductivity * float(area[0])) for layer, area in zip(layers, areas, strict=True)]
+    return reading_rise(each, position=scenario.test.reading.position,
+                        side_by_side=line.is_pair and line.mode == "common")
 
 
 def nominal_impedance(prepared: PreparedLine) -> float:

@@ -33,6 +33,27 @@ REFITS = 3
 WIDEST = 30.0  # root mean square errors from a limit beyond which no coupon is looked at
 
 
+@dataclass(slots=True)
+class Training:
+    """Solved sections: coordinates (runs, coordinates), impedance (runs,) [ohm]; the coupons among them by row.
+
+    coupon_runs : which runs are coupons.  rows : their rows in the sample, in the same order.
+    """
+
+    coordinates: FloatArray
+    impedance: FloatArray
+    coupon_runs: IntArray
+    rows: IntArray
+
+    def add(self, coordinates: FloatArray, impedance: FloatArray, rows: IntArray | None = None) -> None:
+        """Further runs; rows: where they are coupons."""
+        if rows is not None:
+            self.coupon_runs = np.concatenate([self.coupon_runs, len(self.impedance) + np.arange(rows.size)])
+            self.rows = np.concatenate([self.rows, rows])
+        self.coordinates = np.concatenate([self.coordinates, coordinates])
+        self.impedance = np.concatenate([self.impedance, impedance])
+
+
 @dataclass(frozen=True, slots=True)
 class PredictedLine:
     """A line with the impedance [ohm] of every coupon, nought where its section cannot exist.
@@ -48,6 +69,7 @@ class PredictedLine:
     possible: BoolArray
     certificate: Certificate
     direct: DirectCheck | None
+    training: Training
 
     def again(self, draws: ProcessDraws) -> tuple[BoolArray, FloatArray]:
         """Which sections of other draws can exist, and their predicted impedances [ohm]."""
@@ -57,26 +79,6 @@ class PredictedLine:
     def verdict_error(self) -> float:
         """Error [ohm] by which a coupon near a limit may be misjudged: none where they are solved."""
         return 0.0 if self.certificate.certified else max(self.certificate.error, self.prediction.held_out_error)
-
-
-@dataclass(slots=True)
-class _Training:
-    """Solved sections: coordinates (runs, coordinates), impedance (runs,) [ohm]; the coupons among them by row.
-
-    coupon_runs : which runs are coupons.  rows : their rows in the sample, in the same order.
-    """
-
-    coordinates: FloatArray
-    impedance: FloatArray
-    coupon_runs: IntArray
-    rows: IntArray
-
-    def add(self, coordinates: FloatArray, impedance: FloatArray, rows: IntArray | None = None) -> None:
-        if rows is not None:
-            self.coupon_runs = np.concatenate([self.coupon_runs, len(self.impedance) + np.arange(rows.size)])
-            self.rows = np.concatenate([self.rows, rows])
-        self.coordinates = np.concatenate([self.coordinates, coordinates])
-        self.impedance = np.concatenate([self.impedance, impedance])
 
 
 def predict_line(
@@ -100,7 +102,7 @@ def predict_line(
     runs = prediction.solver_runs + certificate.solved + (checked.coupons if checked else 0)
     return PredictedLine(
         prepared, float(training.impedance[0]), predictor, replace(prediction, solver_runs=runs), impedance, possible,
-        certificate, checked,
+        certificate, checked, training,
     )
 
 
@@ -118,13 +120,13 @@ def fit_line(
 
 def _train(
     prepared: PreparedLine, draws: ProcessDraws, possible: BoolArray, chance: np.random.Generator,
-) -> tuple[_Training, Predictor]:
+) -> tuple[Training, Predictor]:
     """Training runs and the prediction from them, doubled while its error is large."""
     see_chance, box_chance, coupon_chance = chance.spawn(3)
     columns = columns_moving(draws.process, properties_that_reach(prepared.surroundings, prepared.line))
     seen = _seen(prepared, draws, columns, see_chance)
     nominal = NominalValues(draws.process.nominals)
-    training = _Training(seen.of(nominal), prepared.impedance(prepared.nominal), np.empty(0, dtype=np.int64),
+    training = Training(seen.of(nominal), prepared.impedance(prepared.nominal), np.empty(0, dtype=np.int64),
                          np.empty(0, dtype=np.int64))
     wanted = LARGEST_ERROR * (prepared.high_limit - prepared.line.target)
     shares = training_shares(len(columns), runs=MOST_RUNS, chance=box_chance)
@@ -151,7 +153,8 @@ def _seen(
 ) -> Seen:
     own_chance, chance = chance.spawn(2)
     shares = training_shares(len(columns), runs=UNLIKE, chance=own_chance)
-    dimensions = dimensions_like(prepared.section(BoxValues(draws.process, columns, prepared.line.width, shares)))
+    unlike = prepared.section(BoxValues(draws.process, columns, prepared.line.width, shares))
+    dimensions = dimensions_like(unlike, scale_free=prepared.frequency is None)
 
     def logarithms(values: ProcessValues) -> FloatArray:
         return dimensions.logarithms(prepared.section(values))
@@ -159,21 +162,21 @@ def _seen(
     return see(draws.process, columns, logarithms, width=prepared.line.width, chance=chance)
 
 
-def _solve_possible(prepared: PreparedLine, seen: Seen, values: ProcessValues, training: _Training) -> None:
+def _solve_possible(prepared: PreparedLine, seen: Seen, values: ProcessValues, training: Training) -> None:
     section = prepared.section(values)
     rows = np.flatnonzero(section.possible)
     training.add(seen.of(values)[rows], prepared.impedance(section.rows(rows)))
 
 
 def _solve_rows(
-    prepared: PreparedLine, seen: Seen, draws: ProcessDraws, rows: IntArray, training: _Training,
+    prepared: PreparedLine, seen: Seen, draws: ProcessDraws, rows: IntArray, training: Training,
 ) -> None:
     sample = draws.rows(rows)
     training.add(seen.of(sample), prepared.impedance(prepared.section(sample)), rows)
 
 
 def certify(
-    prepared: PreparedLine, draws: ProcessDraws, possible: BoolArray, training: _Training, predictor: Predictor,
+    prepared: PreparedLine, draws: ProcessDraws, possible: BoolArray, training: Training, predictor: Predictor,
 ) -> tuple[Predictor, FloatArray, Certificate]:
     """Impedance of every coupon [ohm] (coupons,), those solved that lie within MULTIPLE errors of a limit.
 
@@ -229,7 +232,7 @@ class _Band:
         near = self.distance < MULTIPLE * self.factor * self.doubt
         return self.factor * _root_mean_square(self.doubt[near]) if np.any(near) else 0.0
 
-    def rows_within(self, training: _Training) -> IntArray:
+    def rows_within(self, training: Training) -> IntArray:
         """Rows within MULTIPLE errors of a limit that no training run has solved."""
         near = self.rows[self.distance < MULTIPLE * self.factor * self.doubt]
         return np.setdiff1d(near, training.rows)

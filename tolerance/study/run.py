@@ -24,8 +24,7 @@ from tolerance.results import Drawing, LineResult, Record, RunResult, Spread, Va
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample, YieldByLimit, limit_grid, yields_by_limit
-from tolerance.statistics.estimates import Driver
-from tolerance.statistics.ranking import model_of, rank_drivers
+from tolerance.statistics.ranking import model_of
 from tolerance.statistics.reading import Coupons
 from tolerance.statistics.sampling import Figures, widened_by_sampling
 from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
@@ -34,6 +33,7 @@ from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
 from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
+from tolerance.study.weighing import Weights, weigh
 
 Progress = Callable[[str, int, int], None]
 Task = TypeVar("Task")
@@ -85,11 +85,11 @@ def run(
     judged = _with_doubt_of_readings(judged, predicted, draws, sampling_chance, tell)
     clock.lap("doubt of readings")
 
-    def rank(task: tuple[PredictedLine, np.random.Generator]) -> tuple[Driver, ...]:
-        return rank_drivers(model_of(task[0].predictor), chance=task[1], with_shapley=process.is_correlated)
+    def rank(task: tuple[PredictedLine, np.random.Generator]) -> Weights:
+        return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
-    drivers = on_all_cores(rank, ranking, "ranking drivers", tell)
+    weights = on_all_cores(rank, ranking, "ranking drivers", tell)
 
     def share_out(task: tuple[PredictedLine, np.random.Generator]) -> VarianceShares | None:
         return variance_by_level(process, model_of(task[0].predictor), task[1])
@@ -98,15 +98,16 @@ def run(
                               "variance by level", tell) if draws.lots else [None] * len(predicted)
     drawings = [draw_line(line.prepared, process) for line in predicted]
     results = [
-        replace(_line_result(line, verdict, ranked, curve, drawing), nested=of_lots, variance=variance, reading=reading)
-        for line, verdict, ranked, curve, drawing, of_lots, variance, reading in zip(
-            predicted, judged.lines, drivers, by_limit, drawings, nested.lines, variances, tested.lines, strict=True)
+        replace(_line_result(line, verdict, weight, curve, drawing), nested=of_lots, variance=variance, reading=reading)
+        for line, verdict, weight, curve, drawing, of_lots, variance, reading in zip(
+            predicted, judged.lines, weights, by_limit, drawings, nested.lines, variances, tested.lines, strict=True)
     ]
     clock.lap("drivers")
     return RunResult(
         title=scenario.title, seed=seed, coupons=draws.coupons, target_yield=scenario.evaluation.target_yield,
-        inside=judged.inside, impossible=judged.impossible, lines=tuple(results), by_limit=together,
-        record=_record(scenario, settings, results, draws.replicates, clock),
+        inside=judged.inside.at_most(min(line.inside.value for line in results)), impossible=judged.impossible,
+        lines=tuple(results), by_limit=together,
+        record=_record(scenario, settings, results, draws.replicates, clock), frequency=scenario.evaluation.frequency,
         lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
         measured=measured_inputs(scenario, process),
     )
@@ -168,18 +169,22 @@ def on_all_cores(
 
 
 def _line_result(
-    line: PredictedLine, verdict: LineYield, drivers: tuple[Driver, ...], by_limit: YieldByLimit, drawing: Drawing,
+    line: PredictedLine, verdict: LineYield, weights: Weights, by_limit: YieldByLimit, drawing: Drawing,
 ) -> LineResult:
-    prepared = line.prepared
+    prepared, tail = line.prepared, weights.tail
+    verdict = verdict if tail is None else verdict.from_tails(tail.below, tail.above, tail.failing)
+    runs = line.prediction.solver_runs + (0 if tail is None else tail.solver_runs)
     edges, counts = histogram(line.impedance[line.possible])
     return LineResult(
         name=prepared.line.name, kind=prepared.kind, layer=prepared.line.layer, mode=prepared.mode,
         references=prepared.surroundings.references, target=prepared.line.target,
         low_limit=prepared.low_limit, high_limit=prepared.high_limit, nominal=line.nominal,
         mean=verdict.mean, deviation=verdict.deviation, below=verdict.below, above=verdict.above,
-        inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible, drivers=drivers,
-        spread=Spread(edges, counts), by_limit=by_limit, prediction=line.prediction, certificate=line.certificate,
-        drawing=drawing, direct=line.direct,
+        inside=verdict.inside, cp=verdict.cp, cpk=verdict.cpk, impossible=verdict.impossible,
+        drivers=weights.drivers, groups=weights.groups, levers=weights.levers, tail=tail,
+        spread=Spread(edges, counts), by_limit=by_limit, prediction=replace(line.prediction, solver_runs=runs),
+        certificate=line.certificate,
+        drawing=drawing, direct=line.direct, rise=prepared.rise,
     )
 
 

@@ -9,6 +9,7 @@ import numpy as np
 
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
+from tolerance.process.changes import Change, ChangedValues
 from tolerance.process.draws import Process, ProcessDraws
 from tolerance.process.values import ProcessValues
 from tolerance.surrogate.coordinates import BoxValues, Coordinates, coordinates_of, small_steps, training_shares
@@ -82,15 +83,19 @@ class Predictor:
         """Impedances [ohm] (points,) for process values."""
         return np.exp(self.polynomial.evaluate(self.seen.of(values)))
 
-    def impedance_at(self, germ: FloatArray) -> FloatArray:
-        """Impedances [ohm] (points,) at germs of the variables that reach the line alone: (points, their number)."""
+    def impedance_at(self, germ: FloatArray, *, change: Change | None = None) -> FloatArray:
+        """Impedances [ohm] (points,) at germs of the variables that reach the line alone: (points, their number).
+
+        change : to mean or spread of a variable.
+        """
         result = np.empty(len(germ))
         variables = len(self.seen.process.variables)
         for start in range(0, len(germ), BLOCK_ROWS):
             rows = slice(start, start + BLOCK_ROWS)
             whole = np.zeros((len(germ[rows]), variables), order="F")
             whole[:, self.seen.columns] = germ[rows]
-            result[rows] = self.impedance_of(ProcessDraws(self.seen.process, whole))
+            draws = ProcessDraws(self.seen.process, whole)
+            result[rows] = self.impedance_of(draws if change is None else ChangedValues(draws, change))
         return result
 
     def doubt(self, germ: FloatArray) -> FloatArray:

@@ -6,9 +6,9 @@ import numpy as np
 import pytest
 
 from tests.process_examples import process, variable
-from tolerance.process.changes import moved, narrowed, scaled, seen_by_line, with_laws, with_variable
 from tolerance.process.draws import Process, ProcessDraws, draw_process
 from tolerance.process.laws import Law, quantile
+from tolerance.process.other_laws import moved, narrowed, scaled, seen_by_line, with_laws, with_variable
 from tolerance.process.remembered import RememberedDraws, remember
 from tolerance.scenario.amounts import Amount
 from tolerance.scenario.properties import Property
