@@ -6,6 +6,7 @@ ln Z is normal with deviation sqrt(sum (power ln(1 + f t) / 3)^2), f being what 
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -14,9 +15,11 @@ from scipy.special import ndtr
 from scipy.stats import multivariate_normal
 
 from tests.decision_examples import COUPONS, board_of, lognormals, product_line
+from tolerance.arrays import BoolArray, FloatArray
 from tolerance.decisions.board import Board
 from tolerance.decisions.interpolation import lagrange_weights
 from tolerance.decisions.tightening import Tightening, alone, base_sides, tightening
+from tolerance.process.draws import Process, ProcessDraws
 
 POWERS = {"P1": 0.9, "P2": -0.6}
 TOLERANCES = {"P1": 0.12, "P2": 0.10}
@@ -112,3 +115,17 @@ def test_weights_of_a_polynomial_through_its_places_are_exact() -> None:
     places = np.array([0.0, 0.5, 1.0, 1.5, 2.0])
     for at in (0.0, 0.37, 1.0, 1.9):
         assert lagrange_weights(places, at) @ (places**4 - 2.0 * places) == pytest.approx(at**4 - 2.0 * at, abs=1e-12)
+
+
+def test_coupons_that_cannot_exist_fail_where_that_is_and_nowhere_else() -> None:
+    """Above a Dk of 4.4 there is no section: the share below is exact at every factor, also between the places."""
+    known = lognormals(P1=0.12)
+    line = product_line(known, {"P1": 0.5}, limit=0.5)
+
+    def possible(changed: Process, germ: FloatArray) -> BoolArray:
+        return ProcessDraws(changed, germ).value("P1.dk") < 4.4
+
+    bounded = board_of(known, replace(line, possible=possible))
+    one = tightened(bounded, 0.99)
+    exact = [ndtr(math.log(1.1) / (math.log1p(factor * 0.12) / 3.0)) if factor else 1.0 for factor in one.factors]
+    assert one.together == pytest.approx(np.array(exact), abs=4.0 / COUPONS)

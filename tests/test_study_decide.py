@@ -82,7 +82,7 @@ def test_as_it_is_it_yields_what_run_yields(tightened: TightenResult, board: Sce
     result = run(board, coupons=COUPONS)
     now = tightened.now
     assert [line.value for line in now.lines] == pytest.approx([line.inside.value for line in result.lines], abs=SAME)
-    assert tightened.basis.solver_runs == result.record.solver_runs, "no further solver run than run needs"
+    assert tightened.basis.solver_runs <= result.record.solver_runs, "no further solver run than run needs"
     for one in tightened.variations:
         place = one.factors.tolist().index(1.0)
         assert one.together[place] == now.together.value
