@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from threadpoolctl import threadpool_limits
+
 from tolerance.formulas.second_opinion import second_opinions, why_none
 from tolerance.nominal import (
     CheckResult,
@@ -23,8 +25,9 @@ from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
 def check(scenario: Scenario, *, formulas: bool = False) -> CheckResult:
     """Solve every line of a checked scenario at its nominals; `formulas` sets published formulas beside them."""
     settings = SolverSettings()
-    prepared = [prepare(scenario, line, settings) for line in scenario.lines]
-    return CheckResult(scenario.title, tuple(_check_line(one, formulas=formulas) for one in prepared))
+    with threadpool_limits(limits=1, user_api="blas"):  # small matrices: threads would wait for each other
+        prepared = [prepare(scenario, line, settings) for line in scenario.lines]
+        return CheckResult(scenario.title, tuple(_check_line(one, formulas=formulas) for one in prepared))
 
 
 def _check_line(prepared: PreparedLine, *, formulas: bool) -> NominalLine:
