@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, NoReturn
 from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
 from tolerance.screen import console, progress
+from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
     from tolerance.report.figures import FigureFormat
@@ -66,6 +67,7 @@ def _parser() -> argparse.ArgumentParser:
     check.set_defaults(command=_check)
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
+    add_talk(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
