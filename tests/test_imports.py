@@ -27,12 +27,13 @@ ROWS: list[list[str]] = [
     ["formulas"],
     ["surrogate"],
     ["statistics"],
-    ["nominal", "results", "fitted"],
+    ["decisions"],
+    ["nominal", "results", "fitted", "decided"],
     ["exchanged", "reconciled"],
     ["study"],
     ["report"],
     ["screen"],
-    ["talk_commands"],
+    ["decision_commands", "talk_commands"],
     ["command"],
     ["__main__"],
 ]
@@ -44,6 +45,7 @@ FORBIDDEN = {
     "formulas": {"scenario", "process", "units", "solver"},
     "surrogate": {"solver", "sections", "formulas"},
     "statistics": {"solver", "sections", "formulas", "scenario"},
+    "decisions": {"solver", "sections", "formulas", "scenario", "surrogate", "units"},
     "report": {"solver", "surrogate", "process"},
 }
 

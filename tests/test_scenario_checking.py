@@ -333,7 +333,7 @@ def test_the_impedance_test_is_checked(part: str, table: str) -> None:
     ("cost: missing", 'of = "P1.thickness"\ntolerance = "5 %"'),
 ])
 def test_offers_are_checked(part: str, offer: str) -> None:
-    assert not messages(f'{BOARD}\n[[offers]]\nof = "P1.thickness"\ntolerance = "5 %"\ncost = 4.0\n')
+    assert messages(BOARD + '\n[[offers]]\nof = "P1.thickness"\ntolerance = "5 %"\ncost = 4.0\n') == []
     told = messages(f"{BOARD}\n[[offers]]\n{offer}\n")
     assert any(part in one for one in told), told
 

@@ -12,6 +12,7 @@ from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
+from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
 from tolerance.screen import console, progress
 from tolerance.talk_commands import add_talk
@@ -64,6 +65,7 @@ def _parser() -> argparse.ArgumentParser:
                        help="show charge and current by face, fringe capacitance, and the coupling of pairs")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
+    add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
     add_talk(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")

@@ -79,9 +79,7 @@ def run(
     nested = judge_nesting(sample, draws.lots, verdict_error)
     tested = judge_test(scenario, draws, sample, test_chance)
     by_limit, together = yields_by_limit(
-        LimitSample(sample.impedance, sample.possible, np.array([line.prepared.line.target for line in predicted]),
-                    sample.error, sample.replicates, sample.cluster),
-        limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
+        limit_sample(predicted, draws), limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
         target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
     judged = _with_doubt_of_readings(judged, predicted, draws, sampling_chance, tell)
@@ -115,7 +113,14 @@ def run(
     )
 
 
-def _coupons(predicted: list[PredictedLine], draws: ProcessDraws) -> Coupons:
+def limit_sample(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> LimitSample:
+    """The sample as it is held against one limit and another."""
+    sample = _coupons(predicted, draws)
+    targets = np.array([line.prepared.line.target for line in predicted])
+    return LimitSample(sample.impedance, sample.possible, targets, sample.error, sample.replicates, sample.cluster)
+
+
+def _coupons(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
     """The sample as it is judged."""
     return Coupons(
         np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
