@@ -21,10 +21,11 @@ from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample
 from tolerance.statistics.yields import Limits
+from tolerance.study.cores import Progress, on_all_cores
 from tolerance.study.lines import PreparedLine, prepare
 from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, fit_line, predict_line
-from tolerance.study.run import Progress, limit_sample, on_all_cores
+from tolerance.study.run import limit_sample
 from tolerance.surrogate.coordinates import REACH as DRAWS_REACH
 from tolerance.surrogate.prediction import BLOCK_ROWS, Predictor
 

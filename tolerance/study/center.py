@@ -26,9 +26,9 @@ from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board, fit_wide_board
+from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.decide import basis_of, offer_models, weigh_offers
 from tolerance.study.lines import nominal_impedance, prepare
-from tolerance.study.run import Progress, on_all_cores
 
 REACH = 0.15  # of what is moved, both ways
 CENTRING_ERROR = 0.01  # of the target, one deviation of what is left of a lot's offset: common practice, no source
@@ -58,6 +58,7 @@ class _Placed:
     path: Path | None
 
 
+@plain_algebra
 def center(
     scenario: Scenario, wishes: Wishes | None = None, *, coupons: int | None = None, seed: int | None = None,
     on_progress: Progress | None = None,
@@ -67,7 +68,7 @@ def center(
     Raises InputError where `move` names no thickness of a dielectric layer, and for numbers out of range.
     """
     wishes = wishes or Wishes()
-    tell = on_progress or _silent
+    tell = on_progress or silent
     names, reach = _moves(scenario, wishes)
     own = chosen_seed(scenario, seed)
     fitted = fit_wide_board(scenario, coupons=coupons, seed=own, tell=tell, names=names, reach=reach)
@@ -225,9 +226,5 @@ def _ways(
 
 def _nominal(scenario: Scenario, name: str) -> float:
     return float(scenario.layer(name.rpartition(".")[0]).thickness or 0.0)
-
-
-def _silent(step: str, done: int, total: int) -> None:
-    """Tell nobody."""
 
 

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from threadpoolctl import threadpool_limits
-
 from tolerance.formulas.second_opinion import second_opinions, why_none
 from tolerance.nominal import (
     CheckResult,
@@ -19,15 +17,16 @@ from tolerance.sections.section import Section
 from tolerance.solver.plan import SolverSettings
 from tolerance.solver.shares import coupling, face_shares
 from tolerance.solver.transmission import LineParameters
+from tolerance.study.cores import plain_algebra
 from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
 
 
+@plain_algebra
 def check(scenario: Scenario, *, formulas: bool = False) -> CheckResult:
     """Solve every line of a checked scenario at its nominals; `formulas` sets published formulas beside them."""
     settings = SolverSettings()
-    with threadpool_limits(limits=1, user_api="blas"):  # small matrices: threads would wait for each other
-        prepared = [prepare(scenario, line, settings) for line in scenario.lines]
-        return CheckResult(scenario.title, tuple(_check_line(one, formulas=formulas) for one in prepared))
+    prepared = [prepare(scenario, line, settings) for line in scenario.lines]
+    return CheckResult(scenario.title, tuple(_check_line(one, formulas=formulas) for one in prepared))
 
 
 def _check_line(prepared: PreparedLine, *, formulas: bool) -> NominalLine:

@@ -32,13 +32,14 @@ from tolerance.statistics.against_limit import limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board
-from tolerance.study.run import Progress, on_all_cores
+from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.surrogate.prediction import Predictor
 from tolerance.units import write_quantity
 
 MOST_OFFERS = 20
 
 
+@plain_algebra
 def tighten(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, together: bool = False,
     on_progress: Progress | None = None,
@@ -48,7 +49,7 @@ def tighten(
     together : the yield of all lines together must reach the target; else that of each line.
     coupons, seed, on_progress : as for `run`, whose fits and draws these are.
     """
-    tell = on_progress or _silent
+    tell = on_progress or silent
     offers = offer_models(scenario)
     fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)), tell=tell)
     board, basis = fitted.board, basis_of(scenario, fitted, seed=own, together=together)
@@ -65,12 +66,13 @@ def tighten(
     return TightenResult(basis, judged(board, base), in_order(variations), weighed)
 
 
+@plain_algebra
 def promise(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, on_progress: Progress | None = None,
 ) -> PromiseResult:
     """The tightest limit that meets the target yield, for each line and for all held to one limit."""
     fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)),
-                       tell=on_progress or _silent)
+                       tell=on_progress or silent)
     assert fitted.sample is not None
     widest = max(scenario.limit_of(line) for line in scenario.lines)
     curves, together = yields_by_limit(fitted.sample, limit_grid(widest), target_yield=scenario.evaluation.target_yield)
@@ -79,6 +81,7 @@ def promise(
     return PromiseResult(basis_of(scenario, fitted, seed=own), lines, Promise("", None, None, together))
 
 
+@plain_algebra
 def compare(
     scenarios: Sequence[Scenario], *, coupons: int | None = None, seed: int | None = None, together: bool = False,
     on_progress: Progress | None = None,
@@ -89,7 +92,7 @@ def compare(
     """
     if len(scenarios) < 2:
         raise InputError("compare takes two scenarios or more")
-    tell = on_progress or _silent
+    tell = on_progress or silent
     first = scenarios[0]
     own = chosen_seed(first, seed)
     coupons = first.evaluation.coupons if coupons is None else coupons
@@ -186,7 +189,3 @@ def _drivers(fitted: FittedBoard, seed: int, tell: Progress) -> tuple[tuple[Driv
 
     tasks = list(zip(fitted.predictors, driver_chance.spawn(len(fitted.predictors)), strict=True))
     return tuple(on_all_cores(rank, tasks, "ranking drivers", tell))
-
-
-def _silent(step: str, done: int, total: int) -> None:
-    """Tell nobody."""

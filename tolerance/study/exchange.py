@@ -14,9 +14,11 @@ from tolerance.scenario.tables import Scenario, Variation
 from tolerance.sheet.amending import Amendment, amend, amendment_text
 from tolerance.sheet.layout import name_of
 from tolerance.sheet.reading import Answer, Note, Reply, read_reply
-from tolerance.study.run import Progress, run
+from tolerance.study.cores import Progress, plain_algebra
+from tolerance.study.run import run
 
 
+@plain_algebra
 def ask(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, on_progress: Progress | None = None,
 ) -> Request:
@@ -56,6 +58,7 @@ def _spread(line: LineResult) -> float:
     return (2.0 * line.deviation.value / (line.high_limit - line.low_limit)) ** 2
 
 
+@plain_algebra
 def take(
     scenario: Scenario, reply: str | os.PathLike[str], *, out: str | os.PathLike[str] | None = None,
     coupons: int | None = None, seed: int | None = None, on_progress: Progress | None = None,

@@ -47,11 +47,11 @@ from tolerance.statistics.reconcile import (
     verdict_of,
 )
 from tolerance.statistics.yields import Judgement, Limits, judge
+from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, predict_line
-from tolerance.study.run import Progress, on_all_cores
 
 NINETY = 1.6448536269514722  # deviations of a normal that hold 90 %
 FITS = 0.05  # chance of a larger misfit under which a lot does not fit
@@ -82,6 +82,7 @@ class FittedLines:
         return np.stack([line.predictor.impedance(germ) for line in self.lines], axis=1)
 
 
+@plain_algebra
 def reconcile(
     scenario: Scenario, measured: str | os.PathLike[str], *, sections: str | os.PathLike[str] | None = None,
     repeatability: float | None = None, sheet: str | None = None, coupons: int | None = None, seed: int | None = None,
@@ -109,6 +110,7 @@ def _without_bias(table: CouponTable, bias: float) -> CouponTable:
     return replace(table, values=table.values - bias)
 
 
+@plain_algebra
 def reconciled(
     scenario: Scenario, fitted: FittedLines, table: CouponTable, cuts: Sequence[SectionReading], repeatability: float,
     seed: int, chance: np.random.Generator,
@@ -331,7 +333,3 @@ def _pictures(fitted: FittedLines, readings: Readings, shifts: Shifts, scatter: 
             float(fitted.mean[place]), high, tuple(values.tolist()),
             float(moved[place] + scatter * (fitted.mean[place] - still[place]))))
     return tuple(found)
-
-
-def silent(step: str, done: int, total: int) -> None:
-    """Tell nobody."""

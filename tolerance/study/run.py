@@ -6,18 +6,14 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
-import os
 import platform
 import secrets
 import time
-from collections.abc import Callable, Sequence
-from concurrent.futures import ThreadPoolExecutor
+from collections.abc import Sequence
 from dataclasses import replace
 from importlib.metadata import version
-from typing import TypeVar
 
 import numpy as np
-from threadpoolctl import threadpool_limits
 
 from tolerance.process.draws import REPLICATES, ProcessDraws, process_of
 from tolerance.results import Drawing, LineResult, Record, RunResult, Spread, VarianceShares
@@ -28,6 +24,7 @@ from tolerance.statistics.ranking import model_of
 from tolerance.statistics.reading import Coupons
 from tolerance.statistics.sampling import Figures, widened_by_sampling
 from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
+from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.drawing import draw_line
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
@@ -35,12 +32,10 @@ from tolerance.study.measured import RESAMPLES, has_measured, judged_again, meas
 from tolerance.study.predicting import PredictedLine, predict_line
 from tolerance.study.weighing import Weights, weigh
 
-Progress = Callable[[str, int, int], None]
-Task = TypeVar("Task")
-Done = TypeVar("Done")
 PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
+@plain_algebra
 def run(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, direct: int = 0,
     on_progress: Progress | None = None,
@@ -51,7 +46,7 @@ def run(
     on_progress : called with the step's name, what is done of it, and how much there is.
     Raises UnfinishedError where a line's impedance cannot be predicted.
     """
-    tell = on_progress or _silent
+    tell = on_progress or silent
     coupons = scenario.evaluation.coupons if coupons is None else coupons
     seed = scenario.evaluation.seed if seed is None else seed
     seed = secrets.randbelow(2**31) if seed is None else seed
@@ -147,27 +142,6 @@ def _with_doubt_of_readings(
     return widened_by_sampling(judged, judged_again(lines, limits, draws, None), others)
 
 
-def on_all_cores(
-    work: Callable[[Task], Done], tasks: Sequence[Task], step: str, tell: Progress,
-) -> list[Done]:
-    """`work` done on every task, in threads, results in the order of the tasks.
-
-    Linear algebra is kept to one thread each: its matrices are small, and threads that wait for each other in it
-    cost many times what they save.
-    """
-    results = []
-    with threadpool_limits(limits=1, user_api="blas"), ThreadPoolExecutor(os.cpu_count()) as pool:
-        tell(step, 0, len(tasks))
-        try:
-            for done, result in enumerate(pool.map(work, tasks), start=1):
-                results.append(result)
-                tell(step, done, len(tasks))
-        except BaseException:
-            pool.shutdown(cancel_futures=True)
-            raise
-    return results
-
-
 def _line_result(
     line: PredictedLine, verdict: LineYield, weights: Weights, by_limit: YieldByLimit, drawing: Drawing,
 ) -> LineResult:
@@ -211,7 +185,3 @@ class _Clock:
         now = time.perf_counter()
         self.seconds[step] = now - self._last
         self._last = now
-
-
-def _silent(step: str, done: int, total: int) -> None:
-    """Tell nobody."""
