@@ -9,6 +9,7 @@ import contextlib
 import io
 import os
 import re
+import shlex
 from pathlib import Path
 
 from rich.console import Console
@@ -19,6 +20,7 @@ from tolerance.results import Driver, LineResult, RunResult
 
 ROOT = Path(__file__).parents[1]
 README = ROOT / "README.md"
+_OUTPUT = r"^<!-- (output: (?:last (\d+) lines of )?tolerance (.+)) -->$"
 _NUMBER = r"(\[?[0-9][0-9., ]*\]?)"
 
 
@@ -48,7 +50,22 @@ def refreshed(text: str, result: RunResult) -> str:
     text = text[: block.start("inside")] + terminal_text(result) + text[block.end("inside"):]
     for sentence, numbers in _sentences(result):
         text = _with_numbers(text, sentence, numbers)
+    for mark, last, words in re.findall(_OUTPUT, text, re.MULTILINE):
+        block = _block(text, mark)
+        shown = command_output(shlex.split(words)).splitlines(keepends=True)
+        inside = "".join(shown[-int(last):] if last else shown)
+        text = text[: block.start("inside")] + inside + text[block.end("inside"):]
     return text
+
+
+def command_output(words: list[str]) -> str:
+    """What a command prints where the output is no terminal, run from the root of the repository."""
+    from tolerance.command import main
+
+    written = io.StringIO()
+    with contextlib.chdir(ROOT), contextlib.redirect_stdout(written), contextlib.suppress(SystemExit):
+        main(words)
+    return "\n".join(line.rstrip() for line in written.getvalue().splitlines()) + "\n"
 
 
 def _sentences(result: RunResult) -> list[tuple[str, tuple[str, ...]]]:

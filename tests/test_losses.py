@@ -251,6 +251,12 @@ def test_a_filament_midway_between_planes() -> None:
     assert filament(0.5 * spacing, upper=0.5 * spacing, frequency=frequency).real == pytest.approx(expected, rel=1e-3)
 
 
+def test_a_filament_in_a_slit_in_thick_metal_at_low_frequency() -> None:
+    """Textbook: in metal all round, j omega mu K0(r (1 + j) / depth) / (2 pi), of real part omega mu / 8."""
+    got = filament(1e-4, upper=1e-4, frequency=1.0)
+    assert got.real == pytest.approx(2.0 * math.pi * PERMEABILITY / 8.0, rel=0.02)
+
+
 # --- dielectrics
 
 

@@ -26,7 +26,7 @@ from tolerance.results import Interval
     (Interval(0.97, 0.9681, 0.9719), "97.00 % [96.81, 97.19]"),
     (Interval(0.5, 0.46, 0.54), "50 % [46, 54]"),
     (Interval(1.0, 0.99994, 1.0), "100.000 % [99.994, 100.000]"),
-    (Interval(0.0, 0.0, 0.0000008), "0.0000 % [0.0000, 0.0001]"),
+    (Interval(0.0, 0.0, 0.0000008), "0.000 % [0.000, 0.000]"),  # no wider than a table takes
     (Interval(65535 / 65536, 0.99996, 1.0), "99.998 % [99.996, 100.000]"),  # one coupon of 65,536 fails: not "100 %"
 ])
 def test_a_share_shows_the_digits_that_its_interval_allows(interval: Interval, expected: str) -> None:
@@ -38,6 +38,7 @@ def test_a_share_shows_the_digits_that_its_interval_allows(interval: Interval, e
     (Interval(1.0, 0.99994, 1.0), None, "above 99.99 %"),
     (Interval(0.99998, 0.99991, 1.0), None, "above 99.99 %"),
     (Interval(0.99998, 0.99991, 0.999999), None, "99.998 %"),
+    (Interval(0.99999998, 0.99999997, 0.99999999), None, "above 99.99 %"),  # never "100.000 %"
     (Interval(1.0, 0.9857, 1.0), None, "above 98 %"),
     (Interval(0.98828, 0.97, 1.0), 0.99, "98.8 %"),  # not "99 %", which would miss a target of 99 %
     (Interval(0.5, 0.0, 1.0), None, "50 %"),

@@ -4,6 +4,8 @@
     tolerance.check(scenario)            # nominal impedance of each line
     result = tolerance.run(scenario)     # yield and drivers
     result.line_table                    # a pandas DataFrame
+    tolerance.ask(scenario)              # what to ask the fabricator, the most important first
+    tolerance.take(scenario, "reply.xlsx")  # what the reply changes, old and new yield
 """
 
 from __future__ import annotations
@@ -12,12 +14,26 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from tolerance.scenario import load as load
+    from tolerance.study.center import center as center
     from tolerance.study.check import check as check
+    from tolerance.study.decide import compare as compare
+    from tolerance.study.decide import promise as promise
+    from tolerance.study.decide import tighten as tighten
+    from tolerance.study.exchange import ask as ask
+    from tolerance.study.exchange import take as take
+    from tolerance.study.note import note as note
+    from tolerance.study.reconcile import reconcile as reconcile
     from tolerance.study.run import run as run
 
-__all__ = ["check", "load", "run"]
+__all__ = ["ask", "center", "check", "compare", "load", "note", "promise", "reconcile", "run", "take", "tighten"]
 
-_HOMES = {"load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run"}
+_HOMES = {
+    "load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run",
+    "tighten": "tolerance.study.decide", "promise": "tolerance.study.decide", "compare": "tolerance.study.decide",
+    "center": "tolerance.study.center", "note": "tolerance.study.note",
+    "ask": "tolerance.study.exchange", "take": "tolerance.study.exchange",
+    "reconcile": "tolerance.study.reconcile",
+}
 
 
 def __getattr__(name: str) -> Any:

@@ -8,17 +8,16 @@ from __future__ import annotations
 import argparse
 import os
 import sys
-import time
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
+from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
+from tolerance.screen import console, progress
+from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
-    from rich.console import Console
-
     from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
@@ -26,7 +25,6 @@ if TYPE_CHECKING:
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
-SECONDS_BEFORE_PROGRESS = 1.0
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
@@ -71,7 +69,9 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the pictures")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     check.set_defaults(command=_check)
+    add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
+    add_talk(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -121,7 +121,7 @@ def _fit(options: argparse.Namespace) -> int:
     else:
         from tolerance.report.fit_text import print_fit
 
-        print_fit(result, _console())
+        print_fit(result, console())
     return 0
 
 
@@ -141,10 +141,10 @@ def _check(options: argparse.Namespace) -> int:
     elif not options.quiet:
         from tolerance.report.terminal import print_check
 
-        console = _console()
-        print_check(result, scenario.report.lengths, console, shares=options.shares)
+        screen = console()
+        print_check(result, scenario.report.lengths, screen, shares=options.shares)
         if written:
-            console.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}", highlight=False)
     return 0
 
 
@@ -153,7 +153,7 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
     from tolerance.report.files import remove_earlier
     from tolerance.study.picture import pictures
 
-    with _progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet) as tell:
         found = pictures(scenario, on_progress=tell)
         written = write_pictures(found, folder, scenario.report.lengths, figure_format=options.figures,
                                  on_progress=tell)
@@ -168,7 +168,7 @@ def _run(options: argparse.Namespace) -> int:
     _check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 
-    with _progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
@@ -179,10 +179,10 @@ def _run(options: argparse.Namespace) -> int:
     elif not options.quiet:
         from tolerance.report.terminal import print_run
 
-        console = _console()
-        print_run(result, console)
+        screen = console()
+        print_run(result, screen)
         if written:
-            console.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 
@@ -237,7 +237,7 @@ def _presets(options: argparse.Namespace) -> int:
     if options.json:
         print(presets_json(presets))
     else:
-        print_presets(presets, _console())
+        print_presets(presets, console())
     return 0
 
 
@@ -248,33 +248,3 @@ def _schema(_: argparse.Namespace) -> int:
 
     print(json.dumps(json_schema(), indent=2))
     return 0
-
-
-def _console() -> Console:
-    from rich.console import Console
-
-    return Console(width=None if sys.stdout.isatty() else 80)
-
-
-@contextmanager
-def _progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
-    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal."""
-    if quiet or not sys.stderr.isatty():
-        yield lambda _step, _done, _total: None
-        return
-    from rich.console import Console
-    from rich.progress import Progress
-
-    bar = Progress(console=Console(stderr=True), transient=True)
-    task = bar.add_task("starting")
-    start = time.monotonic()
-
-    def tell(step: str, done: int, total: int) -> None:
-        if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
-            bar.start()
-        bar.update(task, description=step, completed=done, total=total)
-
-    try:
-        yield tell
-    finally:
-        bar.stop()

@@ -17,7 +17,7 @@ Statistics, volume 12, pages 91-96, 1941 (all from memory).
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -69,6 +69,13 @@ class MeasuredLaw:
         """Values [SI] at standard normal draws, same shape."""
         value = _lines(germ, self.germs, self.values)
         return np.asarray(np.exp(value)) if self.method == "lognormal" else value
+
+    def spread_by(self, factor: float) -> MeasuredLaw:
+        """The law with `factor` times the spread about its middle; of a lognormal, of the logarithms."""
+        middle = float(_lines(np.zeros(1), self.germs, self.values)[0])
+        centre = float(np.exp(middle)) if self.method == "lognormal" else middle
+        return replace(self, deviation=factor * self.deviation, values=read_only(middle + factor * (
+            self.values - middle)), knots=read_only(centre + factor * (self.knots - centre)))
 
     def germ(self, value: FloatArray) -> FloatArray:
         """The germs whose values these are; the inverse of `value`."""

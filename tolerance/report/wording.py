@@ -15,7 +15,7 @@ LengthUnit = Literal["um", "mil"]
 
 METRES_IN = {"um": 1e-6, "mil": 25.4e-6}
 LENGTH_DIGITS = {"um": 1, "mil": 2}
-MOST_PERCENT_DIGITS = 4
+MOST_PERCENT_DIGITS = 3  # 10 parts in a million; rarer failures are told in those
 CAUTION = ("A predicted yield is an estimate: it is as good as the tolerances that went in. "
            "The fabricator's process data and measured coupons decide.")
 
@@ -59,8 +59,9 @@ def share_range_text(interval: Interval, *, target: float | None = None) -> str:
 
 
 def headline_text(interval: Interval, *, target: float | None = None) -> str:
-    """The share in percent for a headline: where its interval reaches 100 %, what it lies above, "above 99.99 %"."""
-    if interval.high < 1.0 or (target is not None and interval.value < target):
+    """The share in percent for a headline; where it or its interval reaches 100 %: "above 99.99 %"."""
+    rounded = round(100.0 * interval.value, percent_digits(interval))
+    if (interval.high < 1.0 and rounded < 100.0) or (target is not None and interval.value < target):
         return share_text(interval, target=target)
     digits = max(percent_digits(interval) - 1, 0)
     surely = math.floor(100.0 * interval.low * 10**digits) / 10**digits

@@ -25,9 +25,7 @@ class NotYet(NamedTuple):
     when: Callable[[Any], bool] = _given
 
 
-NOT_YET = (
-    NotYet("offers"),
-)
+NOT_YET: tuple[NotYet, ...] = ()
 
 _REMOVE: Mapping[bool, str] = MappingProxyType({
     True: "is part of the format but not yet acted on by this version; remove it to run",

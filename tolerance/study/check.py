@@ -17,9 +17,11 @@ from tolerance.sections.section import Section
 from tolerance.solver.plan import SolverSettings
 from tolerance.solver.shares import coupling, face_shares
 from tolerance.solver.transmission import LineParameters
+from tolerance.study.cores import plain_algebra
 from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
 
 
+@plain_algebra
 def check(scenario: Scenario, *, formulas: bool = False) -> CheckResult:
     """Solve every line of a checked scenario at its nominals; `formulas` sets published formulas beside them."""
     settings = SolverSettings()

@@ -106,6 +106,18 @@ def predict_line(
     )
 
 
+def fit_line(
+    prepared: PreparedLine, draws: ProcessDraws, *, chance: np.random.Generator,
+) -> tuple[Predictor, float, int]:
+    """Only the fit: the prediction, its root mean square error over coupons [ohm], and the solver runs it took."""
+    possible = prepared.section(draws).possible
+    if not np.any(possible):
+        raise UnfinishedError("no coupon has a section that can exist")
+    training, predictor = _train(prepared, draws, possible, chance)
+    coupons = predictor.leave_one_out[training.coupon_runs] if training.rows.size else np.zeros(1)
+    return predictor, _root_mean_square(coupons), len(training.impedance)
+
+
 def _train(
     prepared: PreparedLine, draws: ProcessDraws, possible: BoolArray, chance: np.random.Generator,
 ) -> tuple[Training, Predictor]:

@@ -6,18 +6,14 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
-import os
 import platform
 import secrets
 import time
-from collections.abc import Callable, Sequence
-from concurrent.futures import ThreadPoolExecutor
+from collections.abc import Sequence
 from dataclasses import replace
 from importlib.metadata import version
-from typing import TypeVar
 
 import numpy as np
-from threadpoolctl import threadpool_limits
 
 from tolerance.process.draws import REPLICATES, ProcessDraws, process_of
 from tolerance.results import Drawing, LineResult, Record, RunResult, Spread, VarianceShares
@@ -28,6 +24,7 @@ from tolerance.statistics.ranking import model_of
 from tolerance.statistics.reading import Coupons
 from tolerance.statistics.sampling import Figures, widened_by_sampling
 from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
+from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.drawing import draw_line
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
@@ -35,12 +32,10 @@ from tolerance.study.measured import RESAMPLES, has_measured, judged_again, meas
 from tolerance.study.predicting import PredictedLine, predict_line
 from tolerance.study.weighing import Weights, weigh
 
-Progress = Callable[[str, int, int], None]
-Task = TypeVar("Task")
-Done = TypeVar("Done")
 PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
+@plain_algebra
 def run(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, direct: int = 0,
     on_progress: Progress | None = None,
@@ -51,7 +46,7 @@ def run(
     on_progress : called with the step's name, what is done of it, and how much there is.
     Raises UnfinishedError where a line's impedance cannot be predicted.
     """
-    tell = on_progress or _silent
+    tell = on_progress or silent
     coupons = scenario.evaluation.coupons if coupons is None else coupons
     seed = scenario.evaluation.seed if seed is None else seed
     seed = secrets.randbelow(2**31) if seed is None else seed
@@ -69,7 +64,7 @@ def run(
         return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1], direct=direct)
 
     tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
-    predicted = _on_all_cores(predict, tasks, "solving lines", tell)
+    predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
     sample = _coupons(predicted, draws)
@@ -79,9 +74,7 @@ def run(
     nested = judge_nesting(sample, draws.lots, verdict_error)
     tested = judge_test(scenario, draws, sample, test_chance)
     by_limit, together = yields_by_limit(
-        LimitSample(sample.impedance, sample.possible, np.array([line.prepared.line.target for line in predicted]),
-                    sample.error, sample.replicates, sample.cluster),
-        limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
+        limit_sample(predicted, draws), limit_grid(max(scenario.limit_of(line) for line in scenario.lines)),
         target_yield=scenario.evaluation.target_yield)
     clock.lap("yield")
     judged = _with_doubt_of_readings(judged, predicted, draws, sampling_chance, tell)
@@ -91,12 +84,12 @@ def run(
         return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
-    weights = _on_all_cores(rank, ranking, "ranking drivers", tell)
+    weights = on_all_cores(rank, ranking, "ranking drivers", tell)
 
     def share_out(task: tuple[PredictedLine, np.random.Generator]) -> VarianceShares | None:
         return variance_by_level(process, model_of(task[0].predictor), task[1])
 
-    variances = _on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
+    variances = on_all_cores(share_out, list(zip(predicted, level_chance.spawn(len(predicted)), strict=True)),
                               "variance by level", tell) if draws.lots else [None] * len(predicted)
     drawings = [draw_line(line.prepared, process) for line in predicted]
     results = [
@@ -115,7 +108,14 @@ def run(
     )
 
 
-def _coupons(predicted: list[PredictedLine], draws: ProcessDraws) -> Coupons:
+def limit_sample(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> LimitSample:
+    """The sample as it is held against one limit and another."""
+    sample = _coupons(predicted, draws)
+    targets = np.array([line.prepared.line.target for line in predicted])
+    return LimitSample(sample.impedance, sample.possible, targets, sample.error, sample.replicates, sample.cluster)
+
+
+def _coupons(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
     """The sample as it is judged."""
     return Coupons(
         np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
@@ -138,29 +138,8 @@ def _with_doubt_of_readings(
     def judge_again(chance_of_law: np.random.Generator) -> Figures:
         return judged_again(lines, limits, draws, chance_of_law)
 
-    others = _on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
+    others = on_all_cores(judge_again, chance.spawn(RESAMPLES), "laws of other readings", tell)
     return widened_by_sampling(judged, judged_again(lines, limits, draws, None), others)
-
-
-def _on_all_cores(
-    work: Callable[[Task], Done], tasks: Sequence[Task], step: str, tell: Progress,
-) -> list[Done]:
-    """`work` done on every task, in threads, results in the order of the tasks.
-
-    Linear algebra is kept to one thread each: its matrices are small, and threads that wait for each other in it
-    cost many times what they save.
-    """
-    results = []
-    with threadpool_limits(limits=1, user_api="blas"), ThreadPoolExecutor(os.cpu_count()) as pool:
-        tell(step, 0, len(tasks))
-        try:
-            for done, result in enumerate(pool.map(work, tasks), start=1):
-                results.append(result)
-                tell(step, done, len(tasks))
-        except BaseException:
-            pool.shutdown(cancel_futures=True)
-            raise
-    return results
 
 
 def _line_result(
@@ -206,7 +185,3 @@ class _Clock:
         now = time.perf_counter()
         self.seconds[step] = now - self._last
         self._last = now
-
-
-def _silent(step: str, done: int, total: int) -> None:
-    """Tell nobody."""

@@ -1,0 +1,46 @@
+"""Where commands print: a console on standard output, and a bar on standard error."""
+
+from __future__ import annotations
+
+import sys
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from rich.console import Console
+
+SECONDS_BEFORE_PROGRESS = 1.0
+COLUMNS = 80  # where the output is no terminal
+
+
+def console() -> Console:
+    """Standard output, 80 columns wide where it is no terminal."""
+    from rich.console import Console
+
+    return Console(width=None if sys.stdout.isatty() else COLUMNS)
+
+
+@contextmanager
+def progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
+    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal."""
+    if quiet or not sys.stderr.isatty():
+        yield lambda _step, _done, _total: None
+        return
+    from rich.console import Console
+    from rich.progress import Progress
+
+    bar = Progress(console=Console(stderr=True), transient=True)
+    task = bar.add_task("starting")
+    start = time.monotonic()
+
+    def tell(step: str, done: int, total: int) -> None:
+        if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
+            bar.start()
+        bar.update(task, description=step, completed=done, total=total)
+
+    try:
+        yield tell
+    finally:
+        bar.stop()
