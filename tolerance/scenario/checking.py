@@ -11,7 +11,6 @@ from tolerance.scenario.documents import Document, Finding
 from tolerance.scenario.drafts import Draft, Drafts, Model, draft_tables
 from tolerance.scenario.entry_rules import entry_findings
 from tolerance.scenario.mixtures import with_mixtures
-from tolerance.scenario.not_yet import not_yet_findings
 from tolerance.scenario.presets import Applied, with_preset
 from tolerance.scenario.reading import document_of, read_document
 from tolerance.scenario.readings import readings_of
@@ -44,7 +43,7 @@ def _checked(document: Document, findings: Sequence[Finding], *, source: str) ->
     problems = [*findings, *found, *unmixed, *unknown, *entry_findings(drafts)]
     readings, unread = readings_of(drafts)
     problems += [*stack_findings(drafts), *variation_findings(drafts), *unread]
-    problems = _one_for_each_key([*problems, *not_yet_findings(document)])
+    problems = _one_for_each_key(problems)
     if problems:
         raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])
     return _scenario(document, drafts, readings, applied, source)
