@@ -15,7 +15,7 @@ from tolerance.results import Certificate, DirectCheck, Prediction
 from tolerance.sections.dimensions import dimensions_like
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.study.lines import PreparedLine
-from tolerance.surrogate.coordinates import BoxValues, training_shares
+from tolerance.surrogate.coordinates import FARTHEST, BoxValues, training_shares
 from tolerance.surrogate.prediction import Predictor, Seen, fit_predictor, see
 
 RUNS = 60  # of the field solver for a line's prediction, the nominal section included; fewer for few variables
@@ -101,7 +101,8 @@ def predict_line(
     checked = _solve_directly(prepared, draws, impedance, possible, direct) if direct else None
     runs = prediction.solver_runs + certificate.solved + (checked.coupons if checked else 0)
     return PredictedLine(
-        prepared, float(training.impedance[0]), predictor, replace(prediction, solver_runs=runs), impedance, possible,
+        prepared, float(prepared.impedance(prepared.nominal)[0]), predictor, replace(prediction, solver_runs=runs),
+        impedance, possible,
         certificate, checked, training,
     )
 
@@ -125,9 +126,7 @@ def _train(
     see_chance, box_chance, coupon_chance = chance.spawn(3)
     columns = columns_moving(draws.process, properties_that_reach(prepared.surroundings, prepared.line))
     seen = _seen(prepared, draws, columns, see_chance)
-    nominal = NominalValues(draws.process.nominals)
-    training = Training(seen.of(nominal), prepared.impedance(prepared.nominal), np.empty(0, dtype=np.int64),
-                         np.empty(0, dtype=np.int64))
+    training = _first_run(prepared, draws, seen, columns)
     wanted = LARGEST_ERROR * (prepared.high_limit - prepared.line.target)
     shares = training_shares(len(columns), runs=MOST_RUNS, chance=box_chance)
     rows = coupon_chance.permutation(np.flatnonzero(possible))[:MOST_RUNS]
@@ -146,6 +145,19 @@ def _train(
         if error <= wanted or 2 * runs > MOST_RUNS:
             return training, predictor
         runs *= 2
+
+
+def _first_run(prepared: PreparedLine, draws: ProcessDraws, seen: Seen, columns: tuple[int, ...]) -> Training:
+    """The nominal section; where the process lies so far from it that the fit cannot see it, the middle of the box."""
+    none = np.empty(0, dtype=np.int64)
+    at = seen.of(NominalValues(draws.process.nominals))
+    if np.all(np.abs(at) < FARTHEST):
+        return Training(at, prepared.impedance(prepared.nominal), none, none)
+    middle = BoxValues(draws.process, columns, prepared.line.width, np.zeros((1, len(columns))))
+    section = prepared.section(middle)
+    possible = bool(section.possible[0])
+    return Training(seen.of(middle)[: int(possible)], prepared.impedance(section)[: int(possible)]
+                    if possible else np.empty(0), none, none)
 
 
 def _seen(

@@ -124,7 +124,8 @@ def fit(coordinates: FloatArray, values: FloatArray, *, prior: Prior | None = No
     mean = float(np.mean(values))
     centred = values - mean
     if dimensions == 0 or not np.any(centred):
-        return polynomial(full_exponents(dimensions, 0), read_only([mean]))
+        return polynomial(full_exponents(dimensions, 0), read_only([mean]), leave_one_out=read_only(np.zeros(points)),
+                          leave_one_out_doubt=read_only(np.ones(points)))
     if points < 2 * dimensions + FEWEST_SPARE_RUNS:
         raise UnfinishedError(f"{points} training runs are too few for {dimensions} coordinates")
     exponents = full_exponents(dimensions, DEGREE)
