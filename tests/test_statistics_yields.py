@@ -10,7 +10,7 @@ from scipy.special import ndtr
 from tests.process_examples import process, variable
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
-from tolerance.process.draws import REPLICATES, draw_process
+from tolerance.process.draws import REPLICATES, draw_process, sobol_uniforms
 from tolerance.statistics.estimates import Interval, interval_of
 from tolerance.statistics.yields import Limits, binomial_interval, histogram, judge, judge_line, share_interval
 
@@ -210,3 +210,11 @@ def test_histogram_counts_every_coupon() -> None:
     assert counts.sum() == 4096
     assert edges.shape == (41,)
     assert (edges[0], edges[-1]) == (impedance.min(), impedance.max())
+
+
+@pytest.mark.parametrize("seed", range(12))
+def test_one_variable_that_decides_alone_leaves_a_doubt_of_one_coupon_in_each_sample(seed: int) -> None:
+    """Exact: the share of uniforms below 0.2444 is 0.2444; Sobol' points of one variable count it almost the same."""
+    draws = [sobol_uniforms(1, 32, chance)[:, 0] for chance in np.random.default_rng(seed).spawn(8)]
+    interval = share_interval(np.concatenate(draws) < 0.2444, replicates=8)
+    assert interval.low < 0.2444 < interval.high

@@ -116,3 +116,27 @@ def test_progress_is_told_to_the_end() -> None:
     run(parse(BOARD), coupons=256, on_progress=lambda *step: told.append(step))
     assert ("solving lines", 2, 2) in told
     assert ("ranking drivers", 2, 2) in told
+
+
+FAR = """
+[[variations]]
+of = "P1.dk"
+shape = "uniform"
+low = 4.40
+high = 4.46
+"""
+
+
+def test_a_process_far_from_the_nominal_is_predicted_as_well_as_one_round_it() -> None:
+    """The reference is the field solver on the same coupons."""
+    for line in run(parse(HEAD + SIX_LAYERS + LINES + FAR), coupons=256, direct=50).lines[:1]:
+        assert line.direct is not None
+        assert line.direct.largest < 1e-4
+        assert line.prediction.held_out_error < 1e-4
+
+
+def test_a_variable_that_does_nothing_is_no_failure() -> None:
+    flat = changed(HEAD + SIX_LAYERS + LINES, ('thickness = "25 um"', 'thickness = "90 um"'))
+    nothing = '\n[[variations]]\nof = "top mask.over_copper"\ntolerance = "3 um"\n'
+    result = run(parse(flat + nothing), coupons=256)
+    assert result.lines[0].deviation.value == 0.0

@@ -140,6 +140,7 @@ def share_interval(
 
     surely, perhaps : verdicts with all doubt counted against and in favour; they move the ends out.
     cluster : see `judge`. What is rare and comes in few clusters counts as fewer trials, by how it crowds.
+    Replicates whose counts differ by one coupon at most leave a doubt of one coupon each.
     Source: E. L. Korn and B. I. Graubard, "Confidence intervals for proportions with small expected number of positive
     counts estimated from survey data", Survey Methodology, volume 24, pages 193-201, 1998.
     """
@@ -149,7 +150,12 @@ def share_interval(
     if crowding is not None:
         interval = binomial_interval(count / crowding, coupons / crowding)
     else:
-        interval = _replicate_interval((count / coupons, np.mean(verdicts.reshape(replicates, -1), axis=1)))
+        each = np.mean(verdicts.reshape(replicates, -1), axis=1)
+        interval = _replicate_interval((count / coupons, each))
+        one = replicates / coupons
+        if cluster == 1 and np.ptp(each) < 1.5 * one:  # one variable decides: Sobol' counts agree, and say too little
+            interval = interval.widened(max(0.0, one - (interval.value - interval.low)),
+                                        max(0.0, one - (interval.high - interval.value)))
     if surely is not None and perhaps is not None:
         interval = interval.widened((count - np.count_nonzero(surely)) / coupons,
                                     (np.count_nonzero(perhaps) - count) / coupons)
@@ -183,6 +189,8 @@ def binomial_interval(count: float, trials: float) -> Interval:
 
 def histogram(impedance: FloatArray, *, bins: int = 60) -> tuple[FloatArray, IntArray]:
     """Edges (bins + 1,) [ohm] and counts (bins,) of impedances (coupons,) [ohm], of the possible coupons only."""
+    if np.ptp(impedance) <= STILL * np.max(np.abs(impedance)):  # nothing moves it: rounding alone makes no bins
+        impedance = np.full_like(impedance, impedance[0])
     counts, edges = np.histogram(impedance, bins=bins)
     return edges.astype(np.float64), counts.astype(np.int64)
 
