@@ -154,10 +154,9 @@ def _first_run(prepared: PreparedLine, draws: ProcessDraws, seen: Seen, columns:
     if np.all(np.abs(at) < FARTHEST):
         return Training(at, prepared.impedance(prepared.nominal), none, none)
     middle = BoxValues(draws.process, columns, prepared.line.width, np.zeros((1, len(columns))))
-    section = prepared.section(middle)
-    possible = bool(section.possible[0])
-    return Training(seen.of(middle)[: int(possible)], prepared.impedance(section)[: int(possible)]
-                    if possible else np.empty(0), none, none)
+    training = Training(at[:0], np.empty(0), none, none)
+    _solve_possible(prepared, seen, middle, training)
+    return training
 
 
 def _seen(
