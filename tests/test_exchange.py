@@ -16,10 +16,10 @@ from tests.sheet_examples import COUPONS, TEXT, address, asked, edited, fill, sc
 from tolerance.command import main
 from tolerance.errors import InputError
 from tolerance.exchanged import Taken
+from tolerance.measurements.archive import safe_content
 from tolerance.report.request import request_workbook
 from tolerance.scenario import Amount, load, parse
 from tolerance.sheet.amending import amend
-from tolerance.sheet.archive import safe_content
 from tolerance.sheet.cells import CellError, SeenCell, basis_named, typed_of
 from tolerance.sheet.reading import read_reply
 from tolerance.study.exchange import request_of, take

@@ -115,5 +115,5 @@ def test_no_formula_is_evaluated(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("content", [b"", b"PK\x03\x04 not a zip", b"P1 um\n98\n"])
 def test_what_is_no_workbook_is_told(content: bytes, tmp_path: Path) -> None:
-    with pytest.raises(TableError, match="is not a readable XLSX file"):
+    with pytest.raises(TableError, match=r"is empty|is not an XLSX workbook, or is damaged"):
         read_table(written(tmp_path, content, "press.xlsx"))

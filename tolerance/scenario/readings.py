@@ -5,7 +5,7 @@ from __future__ import annotations
 import statistics
 from collections.abc import Iterator
 from dataclasses import dataclass
-from pathlib import Path, PurePosixPath, PureWindowsPath
+from pathlib import Path
 
 from tolerance.measurements.readings import numbers_of
 from tolerance.measurements.tables import MeasuredTable, TableError, read_table
@@ -28,24 +28,25 @@ class _Place:
 
 
 def file_finding(draft: Draft[Variation]) -> Finding | None:
-    """What is wrong with `file` itself: it must be a CSV or XLSX that stands beside the scenario."""
+    """What is wrong with `file` itself: it must be a CSV or XLSX in the folder of the scenario, or below it."""
     file = draft.text("file")
     if file is None:
         return None
-    folder, entry = draft.entry.places["file"].folder, draft.entry
+    place, entry = draft.entry.places["file"], draft.entry
     if file.rpartition(".")[2].lower() not in ("csv", "xlsx"):
         return entry.finding("file", "must be the path of a CSV or XLSX file: its name must end in .csv or .xlsx")
-    absolute = PurePosixPath(file).is_absolute() or PureWindowsPath(file).drive or PureWindowsPath(file).root
-    if absolute or ".." in PureWindowsPath(file).parts:
-        return entry.finding("file", "must stand beside the scenario: a relative path without \"..\"")
+    outside = place.trust.why_not(place.folder, file)
+    if outside:
+        return entry.finding("file", outside)
     try:
-        if not (folder / file).is_file():
-            return entry.finding("file", "must be the path of a file, from the folder of "
-                                         f"{draft.entry.places['file'].file}: there is none")
-        inside = (folder / file).resolve().is_relative_to(folder.resolve())
+        path = place.folder / file
+        if path.is_dir():
+            return entry.finding("file", "must be the path of a file; this is a folder")
+        if not path.is_file():
+            return entry.finding("file", f"must be the path of a file, from the folder of {place.file}: there is none")
     except (OSError, RuntimeError, ValueError):
         return entry.finding("file", "must be the path of a file that can be read")
-    return None if inside else entry.finding("file", "must stand beside the scenario; it is a link to somewhere else")
+    return None
 
 
 def readings_of(drafts: Drafts) -> tuple[tuple[Readings, ...], list[Finding]]:

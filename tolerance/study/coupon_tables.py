@@ -16,7 +16,6 @@ from tolerance.process.draws import ETCH, Process
 from tolerance.scenario.keys import close_match
 from tolerance.scenario.properties import MEASURE
 from tolerance.scenario.tables import Scenario
-from tolerance.sheet.archive import safe_content
 
 MOST_TOLD = 6
 
@@ -97,8 +96,6 @@ def _property_of(name: str, scenario: Scenario) -> tuple[str, float]:
 
 
 def _table(path: Path, sheet: str | None) -> MeasuredTable:
-    if path.suffix.lower() == ".xlsx":
-        safe_content(path)
     try:
         return read_table(path, sheet=sheet)
     except TableError as problem:
