@@ -65,7 +65,7 @@ def test_cells_may_have_their_units(tmp_path: Path) -> None:
     ("P1 um;x\n98,4;1\n99.1;1\n", "P1 um", ["row 3 has a decimal point, where rows before it have a decimal comma"]),
     ("P1 um;x\n1.234,5;1\n", "P1 um", ['row 2 holds "1.234,5"']),
     ("P1 um,x\n98,4,1\n", "P1 um", ["row 2 has more cells than there are headings"]),
-    ("P1\n98.4\n", "P1", ["row 2 holds \"98.4\" without a unit, which the heading must end in: um, mm, mil, inch"]),
+    ("P1\n98.4\n", "P1", ["the heading must end in a unit, um, mm, mil, inch, or", "row 2 has none"]),
     ("P1 um\n98.4 kg\n", "P1 um", ['row 2 holds "98.4 kg"']),
     ("P1 um\ninf\nnan\n1e400\n", "P1 um", ['row 2 holds "inf"', 'row 3 holds "nan"', "row 4 holds"]),
     ("P1 um\n" + "x\n" * 40, "P1 um", ["row 2", "row 6", "and 35 more rows"]),

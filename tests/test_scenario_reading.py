@@ -115,7 +115,7 @@ def test_no_file_and_a_folder(tmp_path: Path) -> None:
     with pytest.raises(InputError):
         load("with\0zero.toml")
     write(tmp_path, "large.toml", b"# " + b"x" * 5_000_000)
-    assert "is too large: a scenario is a short text, 500 kB at most" in refusal(tmp_path / "large.toml")
+    assert "is too large: a scenario, with all it extends, holds at most 500 kB" in refusal(tmp_path / "large.toml")
 
 
 def test_extends_merges_entries_of_the_same_name_key_by_key(tmp_path: Path) -> None:

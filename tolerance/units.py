@@ -98,7 +98,7 @@ def read_quantity(text: str, measure: MeasureName) -> float:
     match = _QUANTITY.fullmatch(text) if len(text) <= _LONGEST_QUANTITY else None
     allowed = _listed(unit_names(measure))
     if match is None:
-        raise QuantityError(f"a number and its unit, {allowed}")
+        raise QuantityError(f"it is no number with a unit: {allowed}")
     digits, unit = match.groups()
     unit = _SPELLINGS.get(unit, unit)
     if _COMMA.match(unit):

@@ -20,6 +20,7 @@ Cell = str | float | None
 LARGEST_FILE = 20_000_000  # bytes
 MOST_ROWS, MOST_COLUMNS, MOST_CELLS = 200_000, 1_000, 2_000_000
 _SEPARATOR_LINE = re.compile(r"sep=(.)")
+_EMPTY = "is empty; it needs a row of headings and readings below it"
 _NO_SEPARATOR = "\x1f"  # a table of one column
 
 
@@ -76,7 +77,7 @@ def _table(rows: Iterator[Row]) -> MeasuredTable:
     filled = (row for row in rows if any(not is_blank(cell) for cell in row.cells))
     first = next(filled, None)
     if first is None:
-        raise TableError("is empty; it needs a row of headings and readings below it")
+        raise TableError(_EMPTY)
     headings = tuple("" if is_blank(cell) else str(cell).strip() for cell in first.cells)
     while headings and not headings[-1]:
         headings = headings[:-1]
@@ -105,8 +106,12 @@ def _text_rows(content: bytes) -> Iterator[Row]:
     except UnicodeDecodeError as problem:
         line = content.count(b"\n", 0, problem.start) + 1
         raise TableError(f"must be UTF-8 text: line {line} holds a byte that is not; save it as CSV UTF-8") from None
+    if not text.strip(" ;,\t\r\n\""):
+        raise TableError(_EMPTY)
     if "\0" in text:
         raise TableError("must be text; it holds binary data")
+    if content.count(b"\n") > MOST_ROWS and b'"' not in content:
+        raise TableError(f"has more than {MOST_ROWS} rows")
     separator, skipped = _separator(text)
     reader = csv.reader(io.StringIO(text, newline=""), delimiter=separator, strict=True)
     held = 0

@@ -114,7 +114,7 @@ class Quantity(Kind):
         example = ""
         if is_number(given) and abs(given) < _LARGEST_EXAMPLE:
             meant = 100.0 * given if self.measure == "share" and abs(given) < 1.0 else given
-            example = f', such as "{meant:.6g} {unit_names(self.measure)[0]}"'
+            example = f', such as "{meant:.6g} {self.unit or unit_names(self.measure)[0]}"'
         raise RefusedError(f"{self.allowed}, a text with its unit{example}")
 
     def json_schema(self) -> dict[str, Any]:
@@ -307,8 +307,15 @@ def listed(items: Sequence[str], last: str = "or") -> str:
 
 def meant_by(name: str, known: Iterable[str]) -> str | None:
     """The known name that a misspelled one comes near to."""
-    near = difflib.get_close_matches(name, list(known), n=1, cutoff=0.6)
+    names = list(known)
+    same = [one for one in names if _plain(one) == _plain(name)]
+    near = same or difflib.get_close_matches(name, names, n=1, cutoff=0.6)
     return near[0] if near else None
+
+
+def _plain(name: str) -> str:
+    """Without what people spell differently: capitals, hyphens, underscores, blanks."""
+    return name.casefold().replace("-", "").replace("_", "").replace(" ", "")
 
 
 def close_match(name: str, known: Iterable[str]) -> str:

@@ -80,7 +80,7 @@ def _bytes_of(path: Path, room: int) -> bytes:
         if not path.is_file():
             raise InputError("is not a regular file")
         if path.stat().st_size > room:
-            raise InputError(f"is too large: a scenario is a short text, {_LARGEST // 1000} kB at most with all it extends")
+            raise InputError(f"is too large: a scenario, with all it extends, holds at most {_LARGEST // 1000} kB")
         return path.read_bytes()
     except OSError as problem:
         raise InputError(f"cannot be read: {problem.strerror or problem}") from None

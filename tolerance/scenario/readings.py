@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
-from tolerance.measurements.readings import numbers_of
+from tolerance.measurements.readings import MOST_TOLD, numbers_of
 from tolerance.measurements.tables import MeasuredTable, TableError, read_table
 from tolerance.scenario.documents import Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
@@ -96,9 +96,11 @@ def _finding(draft: Draft[Variation], model: Variation, reason: str) -> Finding:
 def _values(table: MeasuredTable, column: str, item: Property) -> tuple[float, ...]:
     cells = table.column(column)
     values = numbers_of(cells, heading=column, measure=MEASURE[item.property])
-    reasons = list(_range_problems(item, [row for row, _ in cells], values))
-    if reasons:
-        raise TableError("; ".join(reasons[:5]) + (f"; and {len(reasons) - 5} more rows" if len(reasons) > 5 else ""))
+    outside = list(_outside(item, [row for row, _ in cells], values))
+    if outside:
+        more = f" and {len(outside) - MOST_TOLD} more rows" if len(outside) > MOST_TOLD else ""
+        words = _span(item.property).words(lambda end: _write(item, end))
+        raise TableError(f"{item.name} must be {words}; there are {', '.join(outside[:MOST_TOLD])}{more}")
     if len(values) < FEWEST:
         raise TableError(f"has {len(values)} reading{'s' * (len(values) != 1)}; at least {FEWEST} are needed")
     middle = statistics.median(values)
@@ -108,12 +110,11 @@ def _values(table: MeasuredTable, column: str, item: Property) -> tuple[float, .
     return values
 
 
-def _range_problems(item: Property, rows: list[int], values: tuple[float, ...]) -> Iterator[str]:
+def _outside(item: Property, rows: list[int], values: tuple[float, ...]) -> Iterator[str]:
+    """The readings that the property cannot have, each with its row."""
     span = _span(item.property)
-    for row, value in zip(rows, values, strict=True):
-        if not span.holds(value):
-            words = span.words(lambda end: _write(item, end))
-            yield f"row {row} holds {_write(item, value)}; of {item.name} must be {words}"
+    return (f"{_write(item, value)} in row {row}" for row, value in zip(rows, values, strict=True)
+            if not span.holds(value))
 
 
 def _span(name: str) -> Range:

@@ -126,7 +126,9 @@ def _carrier(line: Draft[Line], key: str, layers: Sequence[Draft[Layer]]) -> Ite
         return
     layer = _named(layers, name)
     if layer is None and _all_named(layers):
-        yield line.entry.finding(key, f"must be the name of a layer{close_match(name, _copper(layers, 'signal'))}")
+        known = _copper(layers, "signal")
+        near = close_match(name, known) or '; there is no copper with use = "signal"'
+        yield line.entry.finding(key, f"must be the name of a layer{near}")
     elif layer is None:
         return
     elif _known_not(layer, "kind", COPPER):

@@ -41,6 +41,7 @@ _DK = Number(Range(1.0, 100.0))
 _FREQUENCY = Quantity("frequency", Range(0.0, 1e12, low_in=False), "GHz")
 _LIMIT = Quantity("share", Range(0.0, 1.0, low_in=False, high_in=False))
 _NAME = Text("a name", forbidden="*")
+_LAYER = Text("the name of a layer", forbidden="*")
 _OF = Texts('a LAYER.PROPERTY name or pattern, such as "P1.thickness" or "P*.dk"', single=True)
 _COUNT = Whole(Range(1, 100_000))
 _OPTION = ConfigDict(frozen=True, extra="forbid")
@@ -123,7 +124,7 @@ class Line(Table):
     """One controlled-impedance line, as drawn."""
 
     name: Annotated[str, _NAME] = Field(description="What results call the line")
-    layer: Annotated[str, _NAME] = Field(description="The signal copper that carries it")
+    layer: Annotated[str, _LAYER] = Field(description="The signal copper that carries it")
     width: Annotated[float, _length(20e-3)] = Field(
         description="Finished width at the foot (the face bonded to the laminate), drawn nominal")
     target: Annotated[float, Quantity("resistance", Range(0.0, 1000.0, low_in=False))] = Field(
@@ -132,7 +133,7 @@ class Line(Table):
         default=None, description="Half-width of the impedance limits, of the target; default: evaluation.limit")
     gap: Annotated[float | None, _SPACE] = Field(
         default=None, description="Makes it an edge-coupled pair: foot edge to foot edge")
-    partner: Annotated[str | None, _NAME] = Field(
+    partner: Annotated[str | None, _LAYER] = Field(
         default=None, description="Makes it a broadside pair with an equal trace on that layer")
     offset: Annotated[float, Quantity("length", Range(-5e-3, 5e-3), "um")] = Field(
         default=0.0, description="Broadside pair: sideways shift of the partner")

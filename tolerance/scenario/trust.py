@@ -35,11 +35,11 @@ class Trust:
             return ""
         windows = PureWindowsPath(name)
         if PurePosixPath(name).is_absolute() or windows.drive or windows.root:
-            return f"must be a relative path, in the folder of the scenario or below it ({_OPTION})"
+            return f"must stand beside the scenario: a relative path, in its folder or below ({_OPTION})"
         if target.is_relative_to(self.own):
             return ""
         by = "" if ".." in windows.parts else "; it is a link to somewhere else"
-        return f"must stand in the folder of the scenario or below it{by} ({_OPTION})"
+        return f"must stand beside the scenario, in its folder or below{by} ({_OPTION})"
 
 
 def _resolved(path: Path) -> Path:
