@@ -81,7 +81,7 @@ def _tighten(options: argparse.Namespace) -> int:
     from tolerance.study.decide import tighten
 
     scenario = _load(options, options.file)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = tighten(scenario, coupons=options.coupons, seed=options.seed, together=options.together,
                          on_progress=tell)
     _tell(options, result, scenario, tighten_json(result), lambda: print_tighten(result, console()))
@@ -101,7 +101,7 @@ def _center(options: argparse.Namespace) -> int:
         centring_error=_share("--centring-error", options.centring_error, CENTRING_ERROR), gaps=gaps,
         together=options.together,
     )
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = center(scenario, wishes, coupons=options.coupons, seed=options.seed, on_progress=tell)
     lengths = scenario.report.lengths
     _tell(options, result, scenario, center_json(result), lambda: print_center(result, lengths, console()))
@@ -114,7 +114,7 @@ def _promise(options: argparse.Namespace) -> int:
     from tolerance.study.decide import promise
 
     scenario = _load(options, options.file)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = promise(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell)
     _tell(options, result, scenario, promise_json(result), lambda: print_promise(result, console()))
     return 0
@@ -126,7 +126,7 @@ def _compare(options: argparse.Namespace) -> int:
     from tolerance.study.decide import compare
 
     scenarios = [_load(options, file) for file in options.files]
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = compare(scenarios, coupons=options.coupons, seed=options.seed, together=options.together,
                          on_progress=tell)
     _tell(options, result, scenarios[0], compare_json(result), lambda: print_compare(result, console()))

@@ -11,6 +11,8 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from rich.console import Console
 
+    from tolerance.logbook import Logbook
+
 SECONDS_BEFORE_PROGRESS = 1.0
 COLUMNS = 80  # where the output is no terminal
 
@@ -23,10 +25,14 @@ def console() -> Console:
 
 
 @contextmanager
-def progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
-    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal."""
+def progress(*, quiet: bool, log: Logbook | None = None) -> Iterator[Callable[[str, int, int], None]]:
+    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal.
+
+    log : is told of every step as well.
+    """
+    note = _tell_nobody if log is None else log.tell
     if quiet or not sys.stderr.isatty():
-        yield lambda _step, _done, _total: None
+        yield note
         return
     from rich.console import Console
     from rich.progress import Progress
@@ -38,9 +44,14 @@ def progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
     def tell(step: str, done: int, total: int) -> None:
         if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
             bar.start()
+        note(step, done, total)
         bar.update(task, description=step, completed=done, total=total)
 
     try:
         yield tell
     finally:
         bar.stop()
+
+
+def _tell_nobody(_step: str, _done: int, _total: int) -> None:
+    """Where there is no log."""

@@ -60,7 +60,7 @@ def _ask(options: argparse.Namespace) -> int:
     from tolerance.report.request import write_request
     from tolerance.study.exchange import ask
 
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         request = ask(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell)
     if out is not None:
         write_request(request, out, hide_targets=options.hide == "targets")
@@ -85,7 +85,7 @@ def _take(options: argparse.Namespace) -> int:
     stands = options.out or answered_path(options.file)
     out = None if options.json and options.out is None else stands
     _must_be_new(out, ".toml")
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         taken = take(scenario, options.reply, out=stands, coupons=options.coupons, seed=options.seed, on_progress=tell)
     written = _write_scenario(taken, out)
     if options.json:
@@ -107,7 +107,7 @@ def _reconcile(options: argparse.Namespace) -> int:
     repeatability = _resistance(options.repeatability)
     from tolerance.study.reconcile import reconcile
 
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = reconcile(scenario, options.measured, sections=options.sections, repeatability=repeatability,
                            sheet=options.sheet, coupons=options.coupons, seed=options.seed, on_progress=tell)
     folder = options.out or (None if options.json else Path("out") / options.file.stem)

@@ -6,12 +6,10 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
-import platform
 import secrets
 import time
 from collections.abc import Sequence
 from dataclasses import replace
-from importlib.metadata import version
 
 import numpy as np
 
@@ -30,9 +28,8 @@ from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
 from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
+from tolerance.study.versions import settings_of, versions
 from tolerance.study.weighing import Weights, weigh
-
-PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
 @plain_algebra
@@ -165,12 +162,10 @@ def _line_result(
 def _record(
     scenario: Scenario, settings: SolverSettings, lines: list[LineResult], replicates: int, clock: _Clock,
 ) -> Record:
-    versions = {"python": platform.python_version(), **{package: version(package) for package in PACKAGES}}
-    described = {f"solver {name.replace('_', ' ')}": str(getattr(settings, name)) for name in settings.__slots__}
     return Record(
-        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions, replicates=replicates,
+        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions(), replicates=replicates,
         solver_runs=sum(line.prediction.solver_runs for line in lines),
-        settings={**described, "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
+        settings={**settings_of(settings), "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
     )
 
 
