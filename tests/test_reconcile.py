@@ -31,7 +31,7 @@ from tolerance.statistics.reconcile import (
     single_causes,
     verdict_of,
 )
-from tolerance.study.cores import silent
+from tolerance.cores import silent
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
 from tolerance.study.reconcile import FittedLines, fit_lines, reconcile, reconciled

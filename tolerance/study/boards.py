@@ -21,7 +21,7 @@ from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample
 from tolerance.statistics.yields import Limits
-from tolerance.study.cores import Progress, on_all_cores
+from tolerance.cores import Progress, on_all_cores
 from tolerance.study.lines import PreparedLine, prepare
 from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, fit_line, predict_line

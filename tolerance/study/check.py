@@ -17,7 +17,7 @@ from tolerance.sections.section import Section
 from tolerance.solver.plan import SolverSettings
 from tolerance.solver.shares import coupling, face_shares
 from tolerance.solver.transmission import LineParameters
-from tolerance.study.cores import plain_algebra
+from tolerance.cores import plain_algebra
 from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
 
 

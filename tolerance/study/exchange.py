@@ -14,7 +14,7 @@ from tolerance.scenario.tables import Scenario, Variation
 from tolerance.sheet.amending import Amendment, amend, amendment_text
 from tolerance.sheet.layout import name_of
 from tolerance.sheet.reading import Answer, Note, Reply, read_reply
-from tolerance.study.cores import Progress, plain_algebra
+from tolerance.cores import Progress, plain_algebra
 from tolerance.study.run import run
 
 

@@ -47,7 +47,7 @@ from tolerance.statistics.reconcile import (
     verdict_of,
 )
 from tolerance.statistics.yields import Judgement, Limits, judge
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw
