@@ -10,6 +10,7 @@ import pytest
 from tests.scenario_texts import BOARD
 from tolerance.process.draws import draw_process, process_of
 from tolerance.scenario import parse
+from tolerance.sections.section import Section
 from tolerance.solver.derivatives import parameters
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.lines import prepare, section_parameters
@@ -31,6 +32,7 @@ def test_partial_derivatives_of_a_line_are_those_of_the_impedance_it_shows(numbe
     scenario = parse(BOARD)
     prepared = prepare(scenario, scenario.lines[number], SolverSettings())
     assert prepared.has_gradient
+    assert isinstance(prepared.nominal, Section)
     impedance, gradient = prepared.impedance_and_gradient(prepared.nominal)
     assert impedance == pytest.approx(prepared.impedance(prepared.nominal), rel=1e-12)
     assert len(gradient) == len(section_parameters(prepared.nominal))
