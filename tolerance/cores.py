@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import multiprocessing
 import os
+import signal
 import threading
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import suppress
 from functools import wraps
 from multiprocessing.connection import Connection, wait
 from traceback import format_exc
-from typing import ParamSpec, TypeVar
+from typing import Any, ParamSpec, TypeVar
 
 from threadpoolctl import threadpool_limits
 
@@ -93,20 +95,20 @@ def _in_copies(
     try:
         for _ in range(workers):
             ours, theirs = context.Pipe()
-            copies.append(context.Process(target=_serve, args=(work, tasks, theirs, ours), daemon=True))
+            copies.append(context.Process(
+                target=_serve, args=(work, tasks, theirs, [*busy, ours]), daemon=True, name="tolerance worker"))
             copies[-1].start()
             theirs.close()
             busy[ours] = next(waiting)
             ours.send(busy[ours])
         while busy:
-            for ours in wait(list(busy)):
-                assert isinstance(ours, Connection)
-                number = busy.pop(ours)
-                result = _answer(ours)
-                following = next(waiting, None)
-                ours.send(following)
+            for ready in wait(list(busy)):
+                assert isinstance(ready, Connection)
+                number, following = busy.pop(ready), next(waiting, None)
+                result = _answer(ready)
+                ready.send(following)
                 if following is not None:
-                    busy[ours] = following
+                    busy[ready] = following
                 yield number, result
     finally:
         for copy in copies:
@@ -115,10 +117,17 @@ def _in_copies(
             copy.join()
 
 
-def _serve(work: Callable[[Task], Done], tasks: Sequence[Task], theirs: Connection, ours: Connection) -> None:
-    """What a copy does: tasks by their number until there is none; results and exceptions go back."""
-    ours.close()
-    with threadpool_limits(limits=1, user_api="blas"):
+def _serve(
+    work: Callable[[Task], Done], tasks: Sequence[Task], theirs: Connection, not_ours: Sequence[Connection],
+) -> None:
+    """What a copy does: tasks by their number until there is none, or nobody who asks; results and exceptions go back.
+
+    not_ours : the ends that belong to the original; closed, so that its death is noticed.
+    """
+    signal.signal(signal.SIGINT, signal.SIG_DFL)  # the original tells of an interruption
+    for end in not_ours:
+        end.close()
+    with suppress(EOFError, BrokenPipeError, ConnectionResetError), threadpool_limits(limits=1, user_api="blas"):
         while (number := theirs.recv()) is not None:
             try:
                 theirs.send((work(tasks[number]), None))
@@ -127,10 +136,10 @@ def _serve(work: Callable[[Task], Done], tasks: Sequence[Task], theirs: Connecti
                 theirs.send((None, problem))
 
 
-def _answer(ours: Connection) -> Done:
+def _answer(ours: Connection) -> Any:  # whatever the work gives
     try:
         result, problem = ours.recv()
-    except EOFError as end:
+    except (EOFError, ConnectionResetError) as end:
         raise UnfinishedError("a worker process ended before its work was done (killed, or out of memory)") from end
     if problem is not None:
         raise problem

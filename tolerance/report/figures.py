@@ -79,14 +79,14 @@ def _save(name: str, draw: Callable[[], Figure], folder: Path, figure_format: Fi
 
 
 def run_pages(result: RunResult, lengths: LengthUnit) -> list[Page]:
-    """The pages of a run, those that take longest first."""
+    """The pages of a run, those of all lines first."""
     def page_of(line: LineResult) -> Callable[[], Figure]:
         return lambda: line_page(line, target_yield=result.target_yield, lengths=lengths)
 
     names = file_names([line.name for line in result.lines], taken=(OVERVIEW, AGAINST_LIMIT, LOTS))
     nested = result.nested
     of_lots = [] if nested is None else [(LOTS, lambda: lots_page(result, nested))]
-    return [(AGAINST_LIMIT, lambda: limits_page(result)), (OVERVIEW, lambda: overview_page(result)), *of_lots,
+    return [(OVERVIEW, lambda: overview_page(result)), (AGAINST_LIMIT, lambda: limits_page(result)), *of_lots,
             *((name, page_of(line)) for name, line in zip(names, result.lines, strict=True))]
 
 
