@@ -37,7 +37,7 @@ def progress(*, quiet: bool, log: Logbook | None = None) -> Iterator[Callable[[s
     from rich.console import Console
     from rich.progress import Progress
 
-    bar = Progress(console=Console(stderr=True), transient=True)
+    bar = Progress(console=Console(stderr=True), transient=True, auto_refresh=False)  # no thread of its own beside us
     task = bar.add_task("starting")
     start = time.monotonic()
 
@@ -45,7 +45,7 @@ def progress(*, quiet: bool, log: Logbook | None = None) -> Iterator[Callable[[s
         if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
             bar.start()
         note(step, done, total)
-        bar.update(task, description=step, completed=done, total=total)
+        bar.update(task, description=step, completed=done, total=total, refresh=True)
 
     try:
         yield tell

@@ -11,9 +11,9 @@ from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+from tolerance.cores import Progress, silent
 from tolerance.errors import InputError, ToleranceError
 from tolerance.scenario.checking import Swept, sweep_of
-from tolerance.study.cores import Progress, silent
 from tolerance.sweep.cluster import by_cluster
 from tolerance.sweep.crew import by_processes
 from tolerance.sweep.kept import KeptRows, key_of
