@@ -53,7 +53,12 @@ def write(folder: Path, text: str, name: str = "vane.toml") -> Path:
 
 def start(*arguments: object, cwd: Path, **more: object) -> subprocess.Popen[str]:
     """The command line in a process (group) of its own."""
-    words = [sys.executable, "-m", "tolerance", *(str(one) for one in arguments)]
+    return python("-m", "tolerance", *arguments, cwd=cwd, **more)
+
+
+def python(*arguments: object, cwd: Path, **more: object) -> subprocess.Popen[str]:
+    """Python in a process (group) of its own."""
+    words = [sys.executable, *(str(one) for one in arguments)]
     path = os.pathsep.join([str(Path(__file__).parents[1]), os.environ.get("PYTHONPATH", "")])
     return subprocess.Popen(  # type: ignore[call-overload, no-any-return]
         words, cwd=cwd, env={**os.environ, "PYTHONPATH": path}, text=True, stdout=subprocess.PIPE,

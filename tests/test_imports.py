@@ -33,7 +33,7 @@ ROWS: list[list[str]] = [
     ["exchanged", "reconciled", "swept"],
     ["study"],
     ["report"],
-    ["sweep"],
+    ["sweeps"],
     ["logbook"],
     ["screen"],
     ["decision_commands", "talk_commands"],

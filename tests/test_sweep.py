@@ -15,7 +15,7 @@ import pandas as pd
 import pytest
 from openpyxl import load_workbook
 
-from tests.sweep_examples import LINE, SWEEP, THICKNESSES, VANE, write
+from tests.sweep_examples import LINE, SWEEP, THICKNESSES, VANE, python, write
 from tests.test_command import command
 from tolerance.errors import InputError, UnfinishedError
 from tolerance.report.json_text import run_json
@@ -24,10 +24,10 @@ from tolerance.report.swept_text import sweep_json
 from tolerance.scenario import load
 from tolerance.scenario.checking import sweep_of
 from tolerance.study.run import run
-from tolerance.sweep.crew import by_processes
-from tolerance.sweep.kept import KeptRows
-from tolerance.sweep.sweep import sweep
-from tolerance.sweep.work import Outcome, Task, do, program
+from tolerance.sweeps.crew import by_processes
+from tolerance.sweeps.kept import KeptRows
+from tolerance.sweeps.sweep import sweep
+from tolerance.sweeps.work import Outcome, Task, do, program
 from tolerance.swept import SweepResult, SweptRow
 
 
@@ -120,6 +120,14 @@ def test_a_scenario_that_kills_its_worker_fails_alone(tmp_path: Path) -> None:
     assert "worker process died" in done["deadly"].message
     assert not done["deadly"].lasting
     assert [done[key].result == do(task).result for key, task in zip("012", [first, *rest], strict=True)] == [True] * 3
+
+
+def test_a_script_that_sweeps_is_run_once(tmp_path: Path) -> None:
+    path = write(tmp_path, VANE)
+    script = write(tmp_path, "print('once')\nfrom tolerance.sweeps.sweep import sweep\n"
+                             f"print(sweep([{str(path)!r}], {str(tmp_path / 'out')!r}, workers=2).failed)\n", "job.py")
+    ended = python(script, cwd=tmp_path).communicate()
+    assert ended == ("once\n0\n", "")
 
 
 def test_workers_end_with_the_sweep(tmp_path: Path) -> None:

@@ -14,8 +14,8 @@ from distributed import LocalCluster
 from tests.sweep_examples import SWEEP, write
 from tests.test_command import command
 from tolerance.report.swept_text import sweep_json
-from tolerance.sweep.sweep import sweep
-from tolerance.sweep.work import Outcome
+from tolerance.sweeps.sweep import sweep
+from tolerance.sweeps.work import Outcome
 from tolerance.swept import SweptRow
 
 
@@ -46,7 +46,7 @@ def test_the_cluster_gives_the_same_bits_also_when_a_worker_is_killed(cluster: A
 def test_no_scheduler_is_told(
     tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch,
 ) -> None:
-    monkeypatch.setattr("tolerance.sweep.cluster.SECONDS_TO_ANSWER", 1)
+    monkeypatch.setattr("tolerance.sweeps.cluster.SECONDS_TO_ANSWER", 1)
     path = write(tmp_path, SWEEP)
     assert command("sweep", path, "--out", tmp_path / "out", "--scheduler", "tcp://127.0.0.1:9") == 3
     shown = capsys.readouterr().err

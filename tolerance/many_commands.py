@@ -12,7 +12,7 @@ from tolerance.screen import console, progress
 from tolerance.talk_commands import check_numbers
 
 if TYPE_CHECKING:
-    from tolerance.sweep.work import Outcome
+    from tolerance.sweeps.work import Outcome
     from tolerance.swept import SweptRow
 
 UNFINISHED, INTERRUPTED = 3, 130
@@ -40,7 +40,7 @@ def _sweep(options: argparse.Namespace) -> int:
         raise InputError(f"--workers {options.workers}: must be from 1 to 1000")
     if options.workers is not None and options.scheduler is not None:
         raise InputError("--workers: not with --scheduler, whose workers are its own")
-    from tolerance.sweep.sweep import sweep
+    from tolerance.sweeps.sweep import sweep
 
     folder = options.out or Path("out") / f"{options.paths[0].resolve().stem}-sweep"
     done, failed = 0, 0
@@ -67,7 +67,7 @@ def _sweep(options: argparse.Namespace) -> int:
 
     if result.failed == len(result.rows):
         raise InputError("\n".join(f"{row.source}: {row.message}" for row in result.rows[:20]))
-    written = write_sweep(result, folder)
+    write_sweep(result, folder)
     if options.json:
         from tolerance.report.swept_text import sweep_json
 
@@ -77,5 +77,5 @@ def _sweep(options: argparse.Namespace) -> int:
 
         screen = console()
         print_sweep(result, screen)
-        screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+        screen.print(f"Written to {folder}: tables and finished rows", highlight=False)
     return UNFINISHED if result.failed else 0

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import textwrap
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -16,13 +17,16 @@ from tolerance.results import Interval
 from tolerance.swept import SweptRow, shown_value
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from rich.console import Console
 
     from tolerance.swept import SweepResult
 
 MOST_ROWS = 40  # on the terminal
 MOST_FAILURES = 10
-NAME_WIDTH, VALUES_WIDTH = 22, 26
+NAME_WIDTH, VALUES_WIDTH = 20, 24
+UNBROKEN = "\N{NO-BREAK SPACE}"
 
 
 def sweep_json(result: SweepResult) -> str:
@@ -34,10 +38,15 @@ def sweep_json(result: SweepResult) -> str:
 
 def print_sweep(result: SweepResult, console: Console) -> None:
     """A row a scenario: what was swept, the yield of all lines together, the lowest line."""
-    table = text_table(("scenario", True), ("swept", True), ("all lines\ntogether [%]", False),
+    several = len({row.source for row in result.rows}) > 1
+    if result.names:
+        say(console, f"Swept, in this order: {'; '.join(result.names)}.")
+    heads = (("scenario", several), ("swept values", bool(result.names)))
+    table = text_table(*((head, True) for head, shown in heads if shown), ("all lines\ntogether [%]", False),
                        ("lowest line [%]", True))
     for row in result.rows[:MOST_ROWS]:
-        table.add_row(Text(two_rows(Path(row.source).stem, NAME_WIDTH)), Text(_values(row)), *_figures(row))
+        cells = (two_rows(Path(row.source).stem, NAME_WIDTH), _values(row, result.names))
+        table.add_row(*(Text(cell) for cell, (_, shown) in zip(cells, heads, strict=True) if shown), *_figures(row))
     print_table(console, table)
     if len(result.rows) > MOST_ROWS:
         say(console, f"The first {MOST_ROWS} of {len(result.rows)} scenarios.")
@@ -50,14 +59,10 @@ def print_sweep(result: SweepResult, console: Console) -> None:
     say(console, f"{done} of {len(result.rows)} scenarios done. In brackets: 95 % intervals of the computation alone.")
 
 
-def _values(row: SweptRow) -> str:
-    shown = [f"{_short(name)} {shown_value(value)}" for name, value in row.swept.items()]
-    return "\n".join(two_rows(one, VALUES_WIDTH) for one in shown)
-
-
-def _short(path: str) -> str:
-    """The paths without their tables: entry and key say enough on a screen."""
-    return ", ".join(one.partition(".")[2] or one for one in path.split(", "))
+def _values(row: SweptRow, names: Sequence[str]) -> str:
+    shown = [str(shown_value(row.swept[name])) if name in row.swept else "-" for name in names]
+    text = ", ".join(value.replace(" ", UNBROKEN) for value in shown)
+    return "\n".join(textwrap.wrap(text, VALUES_WIDTH)).replace(UNBROKEN, " ")
 
 
 def _figures(row: SweptRow) -> tuple[str, str]:

@@ -5,17 +5,20 @@ from __future__ import annotations
 import multiprocessing
 import os
 import signal
+import sys
 import threading
 from collections import deque
-from collections.abc import Generator, Iterable
+from collections.abc import Generator, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, wait
 from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
 from multiprocessing.connection import Connection
 from multiprocessing.connection import wait as wait_for
 from multiprocessing.context import BaseContext
+from types import ModuleType
 from typing import Any
 
-from tolerance.sweep.work import Outcome, Task, do
+from tolerance.sweeps.work import Outcome, Task, do
 
 AHEAD = 2  # tasks that each worker has before it, so that it never waits
 DEATHS = 2  # of a worker that had nothing but this task; then the task has failed
@@ -78,7 +81,8 @@ class _Pool:
 
     def submit(self, task: Task) -> Future[Outcome]:
         try:
-            return self._pool.submit(do, task)
+            with _without_main():
+                return self._pool.submit(do, task)
         except BrokenProcessPool as problem:  # it broke since the last result: told as the result of this task
             broken: Future[Outcome] = Future()
             broken.set_exception(problem)
@@ -89,6 +93,18 @@ class _Pool:
         self._ours.close()
         self._pool.shutdown(wait=True, cancel_futures=True)
         self._theirs.close()
+
+
+@contextmanager
+def _without_main() -> Iterator[None]:
+    """While workers are started: they need nothing of the main program, and a script that sweeps would otherwise be run
+    again by each of them."""
+    main = sys.modules["__main__"]
+    sys.modules["__main__"] = ModuleType("__main__")
+    try:
+        yield
+    finally:
+        sys.modules["__main__"] = main
 
 
 def _context() -> BaseContext:

@@ -14,10 +14,10 @@ from pathlib import Path
 from tolerance.cores import Progress, silent
 from tolerance.errors import InputError, ToleranceError
 from tolerance.scenario.checking import Swept, sweep_of
-from tolerance.sweep.cluster import by_cluster
-from tolerance.sweep.crew import by_processes
-from tolerance.sweep.kept import KeptRows, key_of
-from tolerance.sweep.work import Outcome, Task, program
+from tolerance.sweeps.cluster import by_cluster
+from tolerance.sweeps.crew import by_processes
+from tolerance.sweeps.kept import KeptRows, key_of
+from tolerance.sweeps.work import Outcome, Task, program
 from tolerance.swept import SweepResult, SweptRow
 
 STEP = "sweep"

@@ -8,7 +8,7 @@ from collections.abc import Iterable, Iterator
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError, UnfinishedError
-from tolerance.sweep.work import Outcome, Task, do
+from tolerance.sweeps.work import Outcome, Task, do
 
 if TYPE_CHECKING:
     from distributed import Client

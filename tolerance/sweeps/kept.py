@@ -14,7 +14,7 @@ from tolerance.scenario import Scenario
 from tolerance.scenario.fingerprint import fingerprint
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.versions import settings_of
-from tolerance.sweep.work import Outcome
+from tolerance.sweeps.work import Outcome
 from tolerance.swept import SweepResult, SweptRow
 
 RECORD = 1  # version of these files
