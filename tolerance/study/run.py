@@ -67,7 +67,7 @@ def run(
     predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
-    sample = _coupons(predicted, draws)
+    sample = coupons_of(predicted, draws)
     verdict_error = np.array([line.verdict_error for line in predicted])
     judged = judge(sample.impedance, sample.possible, sample.limits, replicates=sample.replicates,
                    impedance_error=sample.error, verdict_error=verdict_error, cluster=sample.cluster)
@@ -110,12 +110,12 @@ def run(
 
 def limit_sample(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> LimitSample:
     """The sample as it is held against one limit and another."""
-    sample = _coupons(predicted, draws)
+    sample = coupons_of(predicted, draws)
     targets = np.array([line.prepared.line.target for line in predicted])
     return LimitSample(sample.impedance, sample.possible, targets, sample.error, sample.replicates, sample.cluster)
 
 
-def _coupons(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
+def coupons_of(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
     """The sample as it is judged."""
     return Coupons(
         np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
