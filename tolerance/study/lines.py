@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -22,6 +22,7 @@ from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, 
 from tolerance.solver.lossy import cross_section, solve_lossy
 from tolerance.solver.plan import SolverSettings
 from tolerance.solver.transmission import LineParameters
+from tolerance.study.solved import SolvedCache, SolvedLine
 
 EVEN, ODD = 1, -1
 
@@ -38,6 +39,7 @@ class PreparedLine:
     high_limit: float
     frequency: float | None = None  # [Hz]; None: lossless and static
     rise: ReadingRise | None = None
+    solved: SolvedLine | None = None  # what was solved before
 
     @property
     def mode(self) -> str:
@@ -71,7 +73,26 @@ class PreparedLine:
 
         At a frequency it is the magnitude of the lossy line's.
         """
-        return self.impedance_of(self.solve(section, modes=(self.shown_mode,)))
+        mode = self.shown_mode
+
+        def solve() -> tuple[FloatArray]:
+            return (self.solve(section, modes=(mode,))[mode].impedance,)
+
+        return np.asarray(self.mode_factor * self._known("impedance", section, solve)[0])
+
+    def _known(
+        self, question: str, section: AnySection, solve: Callable[[], tuple[FloatArray, ...]],
+    ) -> tuple[FloatArray, ...]:
+        """What `solve` gives for the sections in the mode that is meant, from the cache where it is there."""
+        if self.solved is None:
+            return solve()
+        entering = section, self.plan, self.frequency, self.shown_mode
+        return self.solved.arrays(question, entering, solve, sections=section.count)
+
+    @property
+    def from_cache(self) -> int:
+        """How many of its sections were solved before."""
+        return 0 if self.solved is None else self.solved.reused
 
     @property
     def shown_mode(self) -> int:
@@ -96,15 +117,18 @@ class PreparedLine:
         return np.asarray(self.mode_factor * modes[self.shown_mode].impedance)
 
 
-def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> PreparedLine:
-    """Make `line` of a checked scenario ready."""
+def prepare(
+    scenario: Scenario, line: Line, settings: SolverSettings, cache: SolvedCache | None = None,
+) -> PreparedLine:
+    """Make `line` of a checked scenario ready. cache : of sections that were solved before."""
     around = surroundings_of if line.partner is None else broadside_surroundings_of
     surroundings = around(scenario, line)
     nominal = as_built(line, surroundings, NominalValues(nominals_of(scenario)))
     half = line.target * scenario.limit_of(line)
     return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
                         low_limit=line.target - half, high_limit=line.target + half,
-                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal))
+                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal),
+                        solved=None if cache is None else cache.for_line())
 
 
 def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:
