@@ -214,6 +214,17 @@ def test_mode_frequency_and_plan_are_told_apart(tmp_path: Path, number: int) -> 
     assert len(entries(tmp_path)) == 3
 
 
+def test_gradients_are_kept_too(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    scenario = parse(BOARD)
+    prepared = prepare(scenario, scenario.lines[1], SolverSettings(), solved_in(tmp_path))
+    known = replace(prepared, solved=None).impedance_and_gradient(prepared.nominal)
+    first = prepared.impedance_and_gradient(prepared.nominal)
+    monkeypatch.setattr(lines, "solve_with_derivatives", None)
+    second = prepared.impedance_and_gradient(prepared.nominal)
+    assert [part.tobytes() for part in known] == [part.tobytes() for part in first]
+    assert [part.tobytes() for part in known] == [part.tobytes() for part in second]
+
+
 def without_solver(monkeypatch: pytest.MonkeyPatch) -> None:
     """From here on the field solver refuses."""
     def refuse(*_: object, **__: object) -> None:

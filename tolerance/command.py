@@ -9,6 +9,7 @@ import argparse
 import os
 import sys
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
@@ -210,14 +211,15 @@ def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
     tell: Callable[[str, int, int], None],
 ) -> list[Path]:
-    from tolerance.report.figures import write_figures
+    from tolerance.cores import on_all_cores
+    from tolerance.report.figures import page_jobs, run_pages
     from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
 
-    tell("writing the workbook", 0, 1)
-    workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell, figure_format=figure_format)
-    remove_earlier(folder, written := [workbook, *figures], job="run")
+    workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
+    figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
+    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    remove_earlier(folder, written, job="run")
     return written
 
 

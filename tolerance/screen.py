@@ -34,14 +34,14 @@ def progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
     from rich.console import Console
     from rich.progress import Progress
 
-    bar = Progress(console=Console(stderr=True), transient=True)
+    bar = Progress(console=Console(stderr=True), transient=True, auto_refresh=False)  # no thread of its own beside us
     task = bar.add_task("starting")
     start = time.monotonic()
 
     def tell(step: str, done: int, total: int) -> None:
         if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
             bar.start()
-        bar.update(task, description=step, completed=done, total=total)
+        bar.update(task, description=step, completed=done, total=total, refresh=True)
 
     try:
         yield tell

@@ -9,6 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from tolerance.arrays import BoolArray, FloatArray, read_only
+from tolerance.cores import Progress, on_all_cores
 from tolerance.decisions.board import Board, LineModel
 from tolerance.process.draws import ETCH, Process, ProcessDraws, process_of
 from tolerance.process.laws import Law, quantile
@@ -21,7 +22,6 @@ from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample
 from tolerance.statistics.yields import Limits
-from tolerance.study.cores import Progress, on_all_cores
 from tolerance.study.lines import PreparedLine, prepare
 from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, fit_line, predict_line

@@ -9,6 +9,7 @@ import numpy as np
 from scipy.optimize import brentq
 
 from tolerance.arrays import FloatArray
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.decided import Basis, CenterResult, CentredLine, GapWidth, MovedDimension, Way
 from tolerance.decisions.board import Board, LineModel, Side, sides_of
 from tolerance.decisions.centring import (
@@ -26,7 +27,6 @@ from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board, fit_wide_board
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.decide import basis_of, offer_models, weigh_offers
 from tolerance.study.lines import nominal_impedance, prepare
 from tolerance.study.solved import SolvedCache

@@ -8,6 +8,7 @@ from types import MappingProxyType
 
 import numpy as np
 
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.decided import (
     Basis,
     Compared,
@@ -32,7 +33,6 @@ from tolerance.statistics.against_limit import limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.solved import SolvedCache
 from tolerance.surrogate.prediction import Predictor
 from tolerance.units import write_quantity

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 from pathlib import Path
 
+from tolerance.cores import Progress, plain_algebra
 from tolerance.errors import InputError, ScenarioError, as_toml
 from tolerance.exchanged import Request, RequestRow, Taken
 from tolerance.results import LineResult, RunResult
@@ -14,7 +15,6 @@ from tolerance.scenario.tables import Scenario, Variation
 from tolerance.sheet.amending import Amendment, amend, amendment_text
 from tolerance.sheet.layout import name_of
 from tolerance.sheet.reading import Answer, Note, Reply, read_reply
-from tolerance.study.cores import Progress, plain_algebra
 from tolerance.study.run import run
 from tolerance.study.solved import SolvedCache
 

@@ -12,15 +12,17 @@ from tolerance.process.values import NominalValues, ProcessValues, nominals_of
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.as_built import as_built
 from tolerance.sections.reading import ReadingRise, reading_rise
+from tolerance.sections.section import Section
 from tolerance.sections.surroundings import (
     BroadsideSurroundings,
     Surroundings,
     broadside_surroundings_of,
     surroundings_of,
 )
+from tolerance.solver.derivatives import parameters, solve_with_derivatives
 from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, solve_modes
 from tolerance.solver.lossy import cross_section, solve_lossy
-from tolerance.solver.plan import SolverSettings
+from tolerance.solver.plan import Plan, SolverSettings
 from tolerance.solver.transmission import LineParameters
 from tolerance.study.solved import SolvedCache, SolvedLine
 
@@ -95,6 +97,25 @@ class PreparedLine:
         return 0 if self.solved is None else self.solved.reused
 
     @property
+    def has_gradient(self) -> bool:
+        """Whether the solver knows the partial derivatives of this line's impedance."""
+        return isinstance(self.nominal, Section) and self.frequency is None
+
+    def impedance_and_gradient(self, section: AnySection) -> tuple[FloatArray, FloatArray]:
+        """Solved impedance [ohm] (sections,), and its partial derivatives [ohm/m, or ohm] (parameters, sections).
+
+        The parameters are those of `section_parameters`, in its order. Only where `has_gradient`.
+        """
+        def solve() -> tuple[FloatArray, FloatArray]:
+            assert isinstance(section, Section)
+            assert isinstance(self.plan, Plan)
+            solved = solve_with_derivatives(section, self.plan, mode=self.shown_mode)
+            return solved.impedance, np.stack(list(solved.by.values()))
+
+        impedance, slopes = self._known("impedance and gradient", section, solve)
+        return self.mode_factor * impedance, self.mode_factor * slopes
+
+    @property
     def shown_mode(self) -> int:
         """The mode whose impedance is meant."""
         return ODD if self.mode == "differential" else EVEN
@@ -143,6 +164,12 @@ def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | 
     each = [1.0 / (layer.conductivity * float(area[0])) for layer, area in zip(layers, areas, strict=True)]
     return reading_rise(each, position=scenario.test.reading.position,
                         side_by_side=line.is_pair and line.mode == "common")
+
+
+def section_parameters(section: AnySection) -> FloatArray:
+    """All that a section is made of, (parameters, sections): lengths [m] and Dk [-], as the solver names them."""
+    assert isinstance(section, Section)
+    return np.stack([value for _, value, _ in parameters(section)])
 
 
 def nominal_impedance(prepared: PreparedLine) -> float:

@@ -16,6 +16,7 @@ import numpy as np
 from scipy.special import stdtrit
 
 from tolerance.arrays import BoolArray, FloatArray, IntArray
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.process.draws import ETCH, Process, ProcessDraws, Variable, process_of, sobol_normals
 from tolerance.process.laws import Law, quantile
 from tolerance.process.lots import level_shares
@@ -47,7 +48,6 @@ from tolerance.statistics.reconcile import (
     verdict_of,
 )
 from tolerance.statistics.yields import Judgement, Limits, judge
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw

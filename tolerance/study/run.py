@@ -15,6 +15,7 @@ from importlib.metadata import version
 
 import numpy as np
 
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.process.draws import REPLICATES, ProcessDraws, process_of
 from tolerance.results import Drawing, LineResult, Record, RunResult, Spread, VarianceShares
 from tolerance.scenario.tables import Line, Scenario
@@ -24,7 +25,6 @@ from tolerance.statistics.ranking import model_of
 from tolerance.statistics.reading import Coupons
 from tolerance.statistics.sampling import Figures, widened_by_sampling
 from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.drawing import draw_line
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
