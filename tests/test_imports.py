@@ -19,7 +19,7 @@ PACKAGE = Path(__file__).parents[1] / "tolerance"
 ROWS: list[list[str]] = [
     ["errors", "arrays", "hypertext"],
     ["cores"],
-    ["units", "laminate"],
+    ["units", "laminate", "cache"],
     ["measurements"],
     ["scenario"],
     ["process", "sheet"],

@@ -24,10 +24,11 @@ if TYPE_CHECKING:
     from tolerance.study.note import note as note
     from tolerance.study.reconcile import reconcile as reconcile
     from tolerance.study.run import run as run
+    from tolerance.study.solved import user_cache as user_cache
     from tolerance.sweeps.sweep import sweep as sweep
 
 __all__ = ["ask", "center", "check", "compare", "load", "note", "promise", "reconcile", "run", "sweep", "take",
-           "tighten"]
+           "tighten", "user_cache"]
 
 _HOMES = {
     "load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run",
@@ -35,6 +36,7 @@ _HOMES = {
     "center": "tolerance.study.center", "note": "tolerance.study.note",
     "ask": "tolerance.study.exchange", "take": "tolerance.study.exchange",
     "reconcile": "tolerance.study.reconcile", "sweep": "tolerance.sweeps.sweep",
+    "user_cache": "tolerance.study.solved",
 }
 
 

@@ -17,7 +17,7 @@ from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
 from tolerance.logbook import Logbook
 from tolerance.many_commands import add_many
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
@@ -114,6 +114,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--direct", type=int, default=0, metavar="N",
                      help="also solve N coupons of the sample themselves and report the difference")
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
+    add_fresh(run)
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     run.set_defaults(command=_run)
 
@@ -186,8 +187,10 @@ def _run(options: argparse.Namespace) -> int:
     _check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 
+    cache = cache_for(options)
     with progress(quiet=options.quiet, log=options.logbook) as tell:
-        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
+        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell,
+                     cache=cache)
         options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
@@ -202,6 +205,7 @@ def _run(options: argparse.Namespace) -> int:
         print_run(result, screen)
         if written:
             screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+    tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 

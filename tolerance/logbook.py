@@ -68,7 +68,7 @@ class Logbook:
             if line.impossible:
                 self.write("warning", line=line.name, message=f"{line.impossible} coupons cannot exist")
         self.write("result", title=result.title, seed=result.seed, coupons=result.coupons,
-                   solver_runs=result.record.solver_runs, **{"yield": float(result.inside.value)},
+                   solver_runs=result.record.solver_runs, from_cache=result.record.from_cache, **{"yield": float(result.inside.value)},
                    lines_that_miss=[line.name for line in result.lines if line.inside.value < result.target_yield])
 
     def close(self) -> None:

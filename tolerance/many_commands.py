@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError, ToleranceError
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, console, progress
 from tolerance.talk_commands import check_numbers
 
 if TYPE_CHECKING:
@@ -31,6 +31,7 @@ def add_many(commands: Any) -> None:
     sweep.add_argument("--seed", type=int, metavar="N", help="instead of the scenarios'")
     sweep.add_argument("--coupons", type=int, metavar="N", help="instead of the scenarios': a power of two")
     sweep.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_fresh(sweep)
     sweep.set_defaults(command=_sweep)
 
 
@@ -51,13 +52,14 @@ def _sweep(options: argparse.Namespace) -> int:
         options.logbook.write(
             "row", row=number + 1, scenario=row.source, swept=row.swept, failed=row.result is None,
             message=row.message or None, solver_runs=None if row.result is None else row.result["solver_runs"],
-            seconds=round(outcome.seconds, 3), worker=outcome.worker or None,
+            from_cache=outcome.from_cache, seconds=round(outcome.seconds, 3), worker=outcome.worker or None,
             **({"trace": outcome.trace} if outcome.trace else {}))
 
     try:
         with progress(quiet=options.quiet, log=options.logbook) as tell:
             result = sweep(options.paths, folder, workers=options.workers, scheduler=options.scheduler,
-                           seed=options.seed, coupons=options.coupons, on_progress=tell, on_row=note)
+                           fresh=options.fresh, seed=options.seed, coupons=options.coupons, on_progress=tell,
+                           on_row=note)
     except (ToleranceError, KeyboardInterrupt):
         if done:
             print(f"{done - failed} finished rows are kept in {folder}: the same command goes on from there",

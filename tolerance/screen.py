@@ -1,9 +1,10 @@
-"""Where commands print: a console on standard output, and a bar on standard error."""
+"""Where commands print: a console on standard output, a bar on standard error; and the cache that they share."""
 
 from __future__ import annotations
 
 import sys
 import time
+from argparse import ArgumentParser, Namespace
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING
@@ -12,6 +13,7 @@ if TYPE_CHECKING:
     from rich.console import Console
 
     from tolerance.logbook import Logbook
+    from tolerance.study.solved import SolvedCache
 
 SECONDS_BEFORE_PROGRESS = 1.0
 COLUMNS = 80  # where the output is no terminal
@@ -55,3 +57,26 @@ def progress(*, quiet: bool, log: Logbook | None = None) -> Iterator[Callable[[s
 
 def _tell_nobody(_step: str, _done: int, _total: int) -> None:
     """Where there is no log."""
+
+
+def add_fresh(parser: ArgumentParser) -> None:
+    """Add the option that goes round the cache."""
+    parser.add_argument("--fresh", action="store_true",
+                        help="solve everything anew, also what an earlier command has solved")
+
+
+def cache_for(options: Namespace) -> SolvedCache | None:
+    """The user's cache of solved sections; one note where nothing can be kept there."""
+    from tolerance.study.solved import user_cache
+
+    found = user_cache(fresh=options.fresh)
+    if found is not None and not found.cache.is_writable() and not options.quiet:
+        print(f"Note: {found.cache.folder} cannot be written; what is solved is not kept.", file=sys.stderr)
+    return found
+
+
+def tell_from_cache(options: Namespace, from_cache: int, solver_runs: int) -> None:
+    """Say on standard error, where it is a terminal, how much an earlier command had solved already."""
+    options.logbook.write("cache", hits=from_cache, solver_runs=solver_runs)
+    if from_cache and not options.quiet and sys.stderr.isatty():
+        print(f"{from_cache:,} of {solver_runs:,} solver runs came from the cache.", file=sys.stderr)

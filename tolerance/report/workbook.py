@@ -231,6 +231,7 @@ def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
         ("title", result.title), ("scenario file", record.scenario_path), ("seed", result.seed),
         ("coupons", result.coupons), ("independent replicates", record.replicates),
         ("target yield", result.target_yield), ("field solver runs", record.solver_runs),
+        ("of them from the cache", record.from_cache),
         ("largest held-out error [ohm]", max((line.prediction.held_out_largest for line in result.lines), default=0.0)),
         *((f"setting: {name}", value) for name, value in record.settings.items()),
         *((f"version: {name}", value) for name, value in record.versions.items()),

@@ -35,14 +35,15 @@ class _Planned:
 
 def sweep(
     paths: Sequence[str | os.PathLike[str]], folder: str | os.PathLike[str], *, workers: int | None = None,
-    scheduler: str | None = None, seed: int | None = None, coupons: int | None = None,
+    scheduler: str | None = None, fresh: bool = False, seed: int | None = None, coupons: int | None = None,
     on_progress: Progress | None = None, on_row: RowDone | None = None,
 ) -> SweepResult:
     """Run every scenario that the files, and the *.toml of the folders, stand for.
 
     folder : finished rows are kept there and not computed again.  workers : processes; one for each core if left out.
-    scheduler : address of a Dask scheduler whose workers compute the rows instead.  seed, coupons : instead of the
-    scenarios'.  Raises InputError where there is nothing to run, UnfinishedError where the folder takes no files.
+    scheduler : address of a Dask scheduler whose workers compute the rows instead.  fresh : solve anew also what a
+    worker's cache of solved sections holds.  seed, coupons : instead of the scenarios'.
+    Raises InputError where there is nothing to run, UnfinishedError where the folder takes no files.
     """
     plan = _plan(paths)
     kept, rows = KeptRows(Path(folder)), _Rows(plan, on_progress or silent, on_row)
@@ -70,7 +71,7 @@ def sweep(
             else:
                 keys.setdefault(key, []).append(number)
                 if len(keys[key]) == 1:
-                    yield Task(key, scenario, of_row, coupons, here)
+                    yield Task(key, scenario, of_row, coupons, here, fresh)
 
     done = by_processes(tasks(), workers or _cores()) if scheduler is None else by_cluster(tasks(), scheduler)
     for task, outcome in done:
