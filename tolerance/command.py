@@ -42,6 +42,8 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
         sys.stdout.flush()
     except ToleranceError as problem:
         _complain(str(problem))
+        if log is not None:
+            log.write("failed", message=str(problem))
         status = problem.exit_status
     except BrokenPipeError:  # whoever read our output has stopped reading
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

@@ -1,7 +1,7 @@
 """The log of a command: one JSON object a line, written whole, for whoever watches many of them.
 
 Every line has `time` (UTC), `elapsed` [s] since the command began, and `event`; what else stands there goes with the
-event: `began`, `step`, `timing`, `row`, `result`, `warning`, `failed`, `ended`.
+event: `began`, `step`, `timing`, `row`, `cache`, `result`, `warning`, `failed`, `ended`.
 """
 
 from __future__ import annotations
@@ -68,7 +68,7 @@ class Logbook:
             if line.impossible:
                 self.write("warning", line=line.name, message=f"{line.impossible} coupons cannot exist")
         self.write("result", title=result.title, seed=result.seed, coupons=result.coupons,
-                   solver_runs=result.record.solver_runs, from_cache=result.record.from_cache, **{"yield": float(result.inside.value)},
+                   solver_runs=result.record.solver_runs, **{"yield": float(result.inside.value)},
                    lines_that_miss=[line.name for line in result.lines if line.inside.value < result.target_yield])
 
     def close(self) -> None:
