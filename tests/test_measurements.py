@@ -109,7 +109,7 @@ def test_a_workbook(tmp_path: Path) -> None:
 
 def test_no_formula_is_evaluated(tmp_path: Path) -> None:
     path = book(tmp_path, ("press", [["P1 um", "n"], [98.4, 1], ["=A2+1", 2], [True, 3]]))
-    with pytest.raises(TableError, match=r'row 3 is blank; row 4 holds "True"'):
+    with pytest.raises(TableError, match=r'row 3 holds "=A2\+1", which is not a number; row 4 holds "True"'):
         values(path, "P1 um")
 
 

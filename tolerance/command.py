@@ -9,18 +9,24 @@ import argparse
 import os
 import sys
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError, on_one_line
+from tolerance.logbook import Logbook
+from tolerance.many_commands import add_many
 from tolerance.screen import (
     Parser,
     add_allow,
+    add_fresh,
+    cache_for,
     check_folder,
     console,
     progress,
     survive_narrow_encodings,
+    tell_from_cache,
     tell_problem,
 )
 from tolerance.talk_commands import add_talk
@@ -33,17 +39,23 @@ if TYPE_CHECKING:
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
+LOGGED = ("run", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
     """Run one command and exit with its status."""
     survive_narrow_encodings()
     options = _parser().parse_args(arguments)
+    log = None
     try:
+        log = options.logbook = Logbook(getattr(options, "log", None), tell_problem)
+        log.write("began", command=sys.argv[1:] if arguments is None else list(arguments), cores=os.cpu_count())
         status = options.command(options)
         sys.stdout.flush()
     except ToleranceError as problem:
         tell_problem(problem)
+        if log is not None:
+            log.write("failed", message=str(problem))
         status = problem.exit_status
     except BrokenPipeError:  # whoever read our output has stopped reading
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
@@ -52,8 +64,11 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
         tell_problem(f"could not be finished: {problem}")
         status = UNFINISHED
     except KeyboardInterrupt:
-        print("interrupted", file=sys.stderr)
+        tell_problem("interrupted")
         status = INTERRUPTED
+    if log is not None:
+        log.write("ended", status=status)
+        log.close()
     sys.exit(status)
 
 
@@ -82,6 +97,7 @@ def _parser() -> argparse.ArgumentParser:
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
     add_talk(commands)
+    add_many(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -92,6 +108,9 @@ def _parser() -> argparse.ArgumentParser:
     presets.set_defaults(command=_presets)
     schema = commands.add_parser("schema", help="print the JSON Schema of scenario files, for editors")
     schema.set_defaults(command=_schema)
+    for name in LOGGED:
+        commands.choices[name].add_argument("--log", type=Path, metavar="FILE",
+                                            help="add what is done and how long it takes, a JSON object a line")
     return parser
 
 
@@ -106,6 +125,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--direct", type=int, default=0, metavar="N",
                      help="also solve N coupons of the sample themselves and report the difference")
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
+    add_fresh(run)
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     add_allow(run)
     run.set_defaults(command=_run)
@@ -165,7 +185,7 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
     from tolerance.report.files import remove_earlier
     from tolerance.study.picture import pictures
 
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         found = pictures(scenario, on_progress=tell)
         written = write_pictures(found, folder, scenario.report.lengths, figure_format=options.figures,
                                  on_progress=tell)
@@ -181,8 +201,11 @@ def _run(options: argparse.Namespace) -> int:
     _check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 
-    with progress(quiet=options.quiet) as tell:
-        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell,
+                     cache=cache)
+        options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
     if options.json:
@@ -196,6 +219,7 @@ def _run(options: argparse.Namespace) -> int:
         print_run(result, screen)
         if written:
             screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}")
+    tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 
@@ -219,14 +243,15 @@ def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
     tell: Callable[[str, int, int], None],
 ) -> list[Path]:
-    from tolerance.report.figures import write_figures
+    from tolerance.cores import on_all_cores
+    from tolerance.report.figures import page_jobs, run_pages
     from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
 
-    tell("writing the workbook", 0, 1)
-    workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell, figure_format=figure_format)
-    remove_earlier(folder, written := [workbook, *figures], job="run")
+    workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
+    figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
+    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    remove_earlier(folder, written, job="run")
     return written
 
 

@@ -7,6 +7,7 @@ entities), and archives or sheets that would unpack to more than they could hone
 from __future__ import annotations
 
 import io
+import re
 import zipfile
 import zlib
 from dataclasses import dataclass
@@ -26,6 +27,7 @@ _FORBIDDEN = {
     "xl/connections": "has connections to data elsewhere", "xl/querytables": "has connections to data elsewhere",
     "xl/webextensions": "has programs embedded", "customui/": "has programs embedded",
 }
+_FORMULA = re.compile(rb"<(\w+:)?f[\s>/]")
 _NO_WORKBOOK = "is not an XLSX workbook"
 
 
@@ -80,6 +82,13 @@ def why_not(content: bytes, room: Room) -> str:
     except (zipfile.BadZipFile, zipfile.LargeZipFile, zlib.error, NotImplementedError, RuntimeError, EOFError,
             ValueError, OSError):
         return f"{_NO_WORKBOOK}, or is damaged"
+
+
+def has_formulas(content: bytes) -> bool:
+    """Whether a workbook that is safe to read holds formulas."""
+    with zipfile.ZipFile(io.BytesIO(content)) as archive:
+        return any(_FORMULA.search(archive.read(name)) for name in archive.namelist()
+                   if name.casefold().startswith("xl/worksheets/"))
 
 
 def _why_not_archive(archive: zipfile.ZipFile, room: Room) -> str:

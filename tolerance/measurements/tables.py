@@ -1,7 +1,7 @@
 """Tables of measured values, CSV or XLSX: headings in the first row that holds anything, a reading in every row below.
 
 Nothing is guessed silently and nothing is left out: what is not a number is told with its row, as a spreadsheet counts
-rows. Of an XLSX the values are read that were last saved; no formula is evaluated.
+rows. Of an XLSX the values are read that were last saved; no formula is evaluated, one without a saved value is text.
 """
 
 from __future__ import annotations
@@ -14,7 +14,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from tolerance.errors import InputError
-from tolerance.measurements.archive import TABLE, why_not
+from tolerance.measurements.archive import TABLE, has_formulas, why_not
 
 Cell = str | float | None
 LARGEST_FILE = 20_000_000  # bytes
@@ -155,21 +155,22 @@ def _workbook_rows(content: bytes, sheet: str | None) -> Iterator[Row]:
     from openpyxl import load_workbook
 
     unreadable = (KeyError, ValueError, TypeError, AttributeError, SyntaxError, IndexError, OSError, EOFError)
-    try:
-        book = load_workbook(io.BytesIO(content), read_only=True, data_only=True, keep_links=False)
-    except unreadable:
-        raise TableError("is not a readable XLSX file") from None
-    try:
+    def rows(*, stored: bool) -> Iterator[tuple[object, ...]]:
+        book = load_workbook(io.BytesIO(content), read_only=True, data_only=stored, keep_links=False)
         chosen = book[_sheet_name(book.sheetnames, sheet)]
         if not hasattr(chosen, "reset_dimensions"):
             raise TableError("holds a chart where a sheet with cells is wanted")
         chosen.reset_dimensions()  # what the file says of its size is not believed
-        for number, cells in enumerate(chosen.iter_rows(values_only=True), start=1):
-            yield Row(number, tuple(_cell(cell) for cell in cells))
+        yield from chosen.iter_rows(values_only=True)
+
+    try:
+        stored = rows(stored=True)
+        both = zip(stored, rows(stored=False), strict=True) if has_formulas(content) else ((row, row) for row in stored)
+        for number, (values, formulas) in enumerate(both, start=1):
+            yield Row(number, tuple(_cell(formula if value is None else value)
+                                    for value, formula in zip(values, formulas, strict=True)))
     except unreadable:
         raise TableError("is not a readable XLSX file") from None
-    finally:
-        book.close()
 
 
 def _sheet_name(names: Sequence[str], sheet: str | None) -> str:

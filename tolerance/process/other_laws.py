@@ -7,7 +7,6 @@ from __future__ import annotations
 
 from collections.abc import Collection, Mapping
 from dataclasses import replace
-from types import MappingProxyType
 
 import numpy as np
 
@@ -31,7 +30,7 @@ def with_laws(process: Process, laws: Mapping[str, Law]) -> Process:
         replace(variable, members=tuple((member, laws.get(member.name, law)) for member, law in variable.members))
         for variable in process.variables)
     nominals = {**process.nominals, **{name: law.nominal for name, law in laws.items() if name in process.nominals}}
-    return replace(process, variables=variables, nominals=MappingProxyType(nominals))
+    return replace(process, variables=variables, nominals=nominals)
 
 
 def with_variable(process: Process, each: Property) -> Process:

@@ -9,7 +9,6 @@ from __future__ import annotations
 
 from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass
-from types import MappingProxyType
 
 import numpy as np
 
@@ -60,7 +59,7 @@ def resins_of(scenario: Scenario, nominals: Mapping[str, float]) -> Mapping[str,
     for mixture in mixtures_of(scenario):
         thickness, dk = Resin(mixture, 1.0, 1.0)._values(lambda name: np.array([nominals[name]]))
         found[mixture.layer] = Resin(mixture, float(thickness[0]), float(dk[0]))
-    return MappingProxyType(found)
+    return found
 
 
 def through_resin(name: str, drawn: Callable[[str], FloatArray], resins: Mapping[str, Resin]) -> FloatArray:

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from types import MappingProxyType
 from typing import Protocol
 
 import numpy as np
@@ -45,4 +44,4 @@ def nominals_of(scenario: Scenario) -> Mapping[str, float]:
     for layer in scenario.layers:
         if layer.kind == COPPER:
             nominals |= {f"{layer.name}.plating": layer.plating, f"{layer.name}.etch_factor": layer.etch_factor}
-    return MappingProxyType(nominals)
+    return nominals

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -12,16 +12,19 @@ from tolerance.process.values import NominalValues, ProcessValues, nominals_of
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.sections.as_built import as_built
 from tolerance.sections.reading import ReadingRise, reading_rise
+from tolerance.sections.section import Section
 from tolerance.sections.surroundings import (
     BroadsideSurroundings,
     Surroundings,
     broadside_surroundings_of,
     surroundings_of,
 )
+from tolerance.solver.derivatives import parameters, solve_with_derivatives
 from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, solve_modes
 from tolerance.solver.lossy import cross_section, solve_lossy
-from tolerance.solver.plan import SolverSettings
+from tolerance.solver.plan import Plan, SolverSettings
 from tolerance.solver.transmission import LineParameters
+from tolerance.study.solved import SolvedCache, SolvedLine
 
 EVEN, ODD = 1, -1
 
@@ -38,6 +41,7 @@ class PreparedLine:
     high_limit: float
     frequency: float | None = None  # [Hz]; None: lossless and static
     rise: ReadingRise | None = None
+    solved: SolvedLine | None = None  # what was solved before
 
     @property
     def mode(self) -> str:
@@ -71,7 +75,45 @@ class PreparedLine:
 
         At a frequency it is the magnitude of the lossy line's.
         """
-        return self.impedance_of(self.solve(section, modes=(self.shown_mode,)))
+        mode = self.shown_mode
+
+        def solve() -> tuple[FloatArray]:
+            return (self.solve(section, modes=(mode,))[mode].impedance,)
+
+        return np.asarray(self.mode_factor * self._known("impedance", section, solve)[0])
+
+    def _known(
+        self, question: str, section: AnySection, solve: Callable[[], tuple[FloatArray, ...]],
+    ) -> tuple[FloatArray, ...]:
+        """What `solve` gives for the sections in the mode that is meant, from the cache where it is there."""
+        if self.solved is None:
+            return solve()
+        entering = section, self.plan, self.frequency, self.shown_mode
+        return self.solved.arrays(question, entering, solve, sections=section.count)
+
+    @property
+    def from_cache(self) -> int:
+        """How many of its sections were solved before."""
+        return 0 if self.solved is None else self.solved.reused
+
+    @property
+    def has_gradient(self) -> bool:
+        """Whether the solver knows the partial derivatives of this line's impedance."""
+        return isinstance(self.nominal, Section) and self.frequency is None
+
+    def impedance_and_gradient(self, section: AnySection) -> tuple[FloatArray, FloatArray]:
+        """Solved impedance [ohm] (sections,), and its partial derivatives [ohm/m, or ohm] (parameters, sections).
+
+        The parameters are those of `section_parameters`, in its order. Only where `has_gradient`.
+        """
+        def solve() -> tuple[FloatArray, FloatArray]:
+            assert isinstance(section, Section)
+            assert isinstance(self.plan, Plan)
+            solved = solve_with_derivatives(section, self.plan, mode=self.shown_mode)
+            return solved.impedance, np.stack(list(solved.by.values()))
+
+        impedance, slopes = self._known("impedance and gradient", section, solve)
+        return self.mode_factor * impedance, self.mode_factor * slopes
 
     @property
     def shown_mode(self) -> int:
@@ -96,15 +138,18 @@ class PreparedLine:
         return np.asarray(self.mode_factor * modes[self.shown_mode].impedance)
 
 
-def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> PreparedLine:
-    """Make `line` of a checked scenario ready."""
+def prepare(
+    scenario: Scenario, line: Line, settings: SolverSettings, cache: SolvedCache | None = None,
+) -> PreparedLine:
+    """Make `line` of a checked scenario ready. cache : of sections that were solved before."""
     around = surroundings_of if line.partner is None else broadside_surroundings_of
     surroundings = around(scenario, line)
     nominal = as_built(line, surroundings, NominalValues(nominals_of(scenario)))
     half = line.target * scenario.limit_of(line)
     return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
                         low_limit=line.target - half, high_limit=line.target + half,
-                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal))
+                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal),
+                        solved=None if cache is None else cache.for_line())
 
 
 def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:
@@ -119,6 +164,12 @@ def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | 
     each = [1.0 / (layer.conductivity * float(area[0])) for layer, area in zip(layers, areas, strict=True)]
     return reading_rise(each, position=scenario.test.reading.position,
                         side_by_side=line.is_pair and line.mode == "common")
+
+
+def section_parameters(section: AnySection) -> FloatArray:
+    """All that a section is made of, (parameters, sections): lengths [m] and Dk [-], as the solver names them."""
+    assert isinstance(section, Section)
+    return np.stack([value for _, value, _ in parameters(section)])
 
 
 def nominal_impedance(prepared: PreparedLine) -> float:

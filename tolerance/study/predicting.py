@@ -12,7 +12,7 @@ from tolerance.errors import UnfinishedError
 from tolerance.process.draws import ProcessDraws, columns_moving
 from tolerance.process.values import NominalValues, ProcessValues
 from tolerance.results import Certificate, DirectCheck, Prediction
-from tolerance.sections.dimensions import dimensions_like
+from tolerance.sections.dimensions import Dimensions, dimensions_like
 from tolerance.sections.surroundings import properties_that_reach
 from tolerance.study.lines import PreparedLine
 from tolerance.surrogate.coordinates import FARTHEST, BoxValues, training_shares
@@ -31,6 +31,17 @@ WORTH_A_REFIT = 160  # coupons within the band: with more, some are solved for a
 REFIT_RUNS = 48
 REFITS = 3
 WIDEST = 30.0  # root mean square errors from a limit beyond which no coupon is looked at
+
+
+@dataclass(frozen=True, slots=True)
+class SectionLogarithms:
+    """From process values to the logarithms of the dimensions of a line's sections, (dimensions, points)."""
+
+    prepared: PreparedLine
+    dimensions: Dimensions
+
+    def __call__(self, values: ProcessValues) -> FloatArray:
+        return self.dimensions.logarithms(self.prepared.section(values))
 
 
 @dataclass(slots=True)
@@ -165,11 +176,7 @@ def _seen(
     own_chance, chance = chance.spawn(2)
     shares = training_shares(len(columns), runs=UNLIKE, chance=own_chance)
     unlike = prepared.section(BoxValues(draws.process, columns, prepared.line.width, shares))
-    dimensions = dimensions_like(unlike, scale_free=prepared.frequency is None)
-
-    def logarithms(values: ProcessValues) -> FloatArray:
-        return dimensions.logarithms(prepared.section(values))
-
+    logarithms = SectionLogarithms(prepared, dimensions_like(unlike, scale_free=prepared.frequency is None))
     return see(draws.process, columns, logarithms, width=prepared.line.width, chance=chance)
 
 
