@@ -20,7 +20,7 @@ from tolerance.decisions.centring import (
     on_grid,
     path_of_moves,
 )
-from tolerance.decisions.interpolation import Path
+from tolerance.decisions.interpolation import SMALLEST_IMPEDANCE, Path
 from tolerance.decisions.tightening import Judged, base_sides, judged
 from tolerance.errors import InputError, UnfinishedError
 from tolerance.process.other_laws import laws_of, moved, with_laws
@@ -157,8 +157,8 @@ def _centred_line(
 
 def _to_impedance(board: Board, line: LineModel, wishes: Wishes) -> FloatArray:
     """Chance (coupons,) of a line when each lot is brought to its target."""
-    impedance = np.maximum(line.impedance(line.process, board.germ), 1e-6)
-    return chance_when_centred(impedance, line.possible(line.process, board.germ), line, error=wishes.centring_error,
+    impedance, possible = line.answers(line.process, board.germ)
+    return chance_when_centred(np.maximum(impedance, SMALLEST_IMPEDANCE), possible, line, error=wishes.centring_error,
                              lot_coupons=None if board.cluster == 1 else board.cluster)
 
 
