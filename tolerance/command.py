@@ -15,6 +15,8 @@ from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
+from tolerance.logbook import Logbook
+from tolerance.many_commands import add_many
 from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 from tolerance.talk_commands import add_talk
 
@@ -26,16 +28,22 @@ if TYPE_CHECKING:
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
+LOGGED = ("run", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
     """Run one command and exit with its status."""
     options = _parser().parse_args(arguments)
+    log = None
     try:
+        log = options.logbook = Logbook(getattr(options, "log", None), _complain)
+        log.write("began", command=sys.argv[1:] if arguments is None else list(arguments), cores=os.cpu_count())
         status = options.command(options)
         sys.stdout.flush()
     except ToleranceError as problem:
-        print(problem, file=sys.stderr)
+        _complain(str(problem))
+        if log is not None:
+            log.write("failed", message=str(problem))
         status = problem.exit_status
     except BrokenPipeError:  # whoever read our output has stopped reading
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
@@ -44,9 +52,16 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
         print(f"could not be finished: {problem}", file=sys.stderr)
         status = UNFINISHED
     except KeyboardInterrupt:
-        print("interrupted", file=sys.stderr)
+        _complain("interrupted")
         status = INTERRUPTED
+    if log is not None:
+        log.write("ended", status=status)
+        log.close()
     sys.exit(status)
+
+
+def _complain(words: str) -> None:
+    print(words, file=sys.stderr)
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -73,6 +88,7 @@ def _parser() -> argparse.ArgumentParser:
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
     add_talk(commands)
+    add_many(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -83,6 +99,9 @@ def _parser() -> argparse.ArgumentParser:
     presets.set_defaults(command=_presets)
     schema = commands.add_parser("schema", help="print the JSON Schema of scenario files, for editors")
     schema.set_defaults(command=_schema)
+    for name in LOGGED:
+        commands.choices[name].add_argument("--log", type=Path, metavar="FILE",
+                                            help="add what is done and how long it takes, a JSON object a line")
     return parser
 
 
@@ -155,7 +174,7 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
     from tolerance.report.files import remove_earlier
     from tolerance.study.picture import pictures
 
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         found = pictures(scenario, on_progress=tell)
         written = write_pictures(found, folder, scenario.report.lengths, figure_format=options.figures,
                                  on_progress=tell)
@@ -171,9 +190,10 @@ def _run(options: argparse.Namespace) -> int:
     from tolerance.study.run import run
 
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell,
                      cache=cache)
+        options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
     if options.json:

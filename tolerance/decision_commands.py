@@ -83,7 +83,7 @@ def _tighten(options: argparse.Namespace) -> int:
 
     scenario = _load(options, options.file)
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = tighten(scenario, coupons=options.coupons, seed=options.seed, together=options.together,
                          on_progress=tell, cache=cache)
     _tell(options, result, scenario, tighten_json(result), lambda: print_tighten(result, console()))
@@ -105,7 +105,7 @@ def _center(options: argparse.Namespace) -> int:
         together=options.together,
     )
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = center(scenario, wishes, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     lengths = scenario.report.lengths
     _tell(options, result, scenario, center_json(result), lambda: print_center(result, lengths, console()))
@@ -120,7 +120,7 @@ def _promise(options: argparse.Namespace) -> int:
 
     scenario = _load(options, options.file)
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = promise(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     _tell(options, result, scenario, promise_json(result), lambda: print_promise(result, console()))
     tell_from_cache(options, result.basis.from_cache, result.basis.solver_runs)
@@ -134,7 +134,7 @@ def _compare(options: argparse.Namespace) -> int:
 
     scenarios = [_load(options, file) for file in options.files]
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = compare(scenarios, coupons=options.coupons, seed=options.seed, together=options.together,
                          on_progress=tell, cache=cache)
     _tell(options, result, scenarios[0], compare_json(result), lambda: print_compare(result, console()))

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from rich.console import Console
 
+    from tolerance.logbook import Logbook
     from tolerance.study.solved import SolvedCache
 
 SECONDS_BEFORE_PROGRESS = 1.0
@@ -26,10 +27,14 @@ def console() -> Console:
 
 
 @contextmanager
-def progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
-    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal."""
+def progress(*, quiet: bool, log: Logbook | None = None) -> Iterator[Callable[[str, int, int], None]]:
+    """A bar on standard error for work of more than a second; silent with `quiet` and when it is no terminal.
+
+    log : is told of every step as well.
+    """
+    note = _tell_nobody if log is None else log.tell
     if quiet or not sys.stderr.isatty():
-        yield lambda _step, _done, _total: None
+        yield note
         return
     from rich.console import Console
     from rich.progress import Progress
@@ -41,12 +46,17 @@ def progress(*, quiet: bool) -> Iterator[Callable[[str, int, int], None]]:
     def tell(step: str, done: int, total: int) -> None:
         if time.monotonic() - start > SECONDS_BEFORE_PROGRESS:
             bar.start()
+        note(step, done, total)
         bar.update(task, description=step, completed=done, total=total, refresh=True)
 
     try:
         yield tell
     finally:
         bar.stop()
+
+
+def _tell_nobody(_step: str, _done: int, _total: int) -> None:
+    """Where there is no log."""
 
 
 def add_fresh(parser: ArgumentParser) -> None:
@@ -67,5 +77,6 @@ def cache_for(options: Namespace) -> SolvedCache | None:
 
 def tell_from_cache(options: Namespace, from_cache: int, solver_runs: int) -> None:
     """Say on standard error, where it is a terminal, how much an earlier command had solved already."""
+    options.logbook.write("cache", hits=from_cache, solver_runs=solver_runs)
     if from_cache and not options.quiet and sys.stderr.isatty():
         print(f"{from_cache:,} of {solver_runs:,} solver runs came from the cache.", file=sys.stderr)

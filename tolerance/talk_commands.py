@@ -62,7 +62,7 @@ def _ask(options: argparse.Namespace) -> int:
     from tolerance.study.exchange import ask
 
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         request = ask(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     if out is not None:
         write_request(request, out, hide_targets=options.hide == "targets")
@@ -89,7 +89,7 @@ def _take(options: argparse.Namespace) -> int:
     out = None if options.json and options.out is None else stands
     _must_be_new(out, ".toml")
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         taken = take(scenario, options.reply, out=stands, coupons=options.coupons, seed=options.seed, on_progress=tell,
                      cache=cache)
     written = _write_scenario(taken, out)
@@ -116,7 +116,7 @@ def _reconcile(options: argparse.Namespace) -> int:
     from tolerance.study.reconcile import reconcile
 
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = reconcile(scenario, options.measured, sections=options.sections, repeatability=repeatability,
                            sheet=options.sheet, coupons=options.coupons, seed=options.seed, on_progress=tell,
                            cache=cache)

@@ -6,12 +6,10 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
-import platform
 import secrets
 import time
 from collections.abc import Sequence
 from dataclasses import replace
-from importlib.metadata import version
 
 import numpy as np
 
@@ -31,9 +29,8 @@ from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_le
 from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
 from tolerance.study.solved import SolvedCache
+from tolerance.study.versions import settings_of, versions
 from tolerance.study.weighing import Weights, weigh
-
-PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
 @plain_algebra
@@ -70,7 +67,7 @@ def run(
     predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
-    sample = _coupons(predicted, draws)
+    sample = coupons_of(predicted, draws)
     verdict_error = np.array([line.verdict_error for line in predicted])
     judged = judge(sample.impedance, sample.possible, sample.limits, replicates=sample.replicates,
                    impedance_error=sample.error, verdict_error=verdict_error, cluster=sample.cluster)
@@ -115,12 +112,12 @@ def run(
 
 def limit_sample(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> LimitSample:
     """The sample as it is held against one limit and another."""
-    sample = _coupons(predicted, draws)
+    sample = coupons_of(predicted, draws)
     targets = np.array([line.prepared.line.target for line in predicted])
     return LimitSample(sample.impedance, sample.possible, targets, sample.error, sample.replicates, sample.cluster)
 
 
-def _coupons(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
+def coupons_of(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
     """The sample as it is judged."""
     return Coupons(
         np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
@@ -170,12 +167,10 @@ def _line_result(
 def _record(
     scenario: Scenario, settings: SolverSettings, lines: list[LineResult], replicates: int, clock: _Clock,
 ) -> Record:
-    versions = {"python": platform.python_version(), **{package: version(package) for package in PACKAGES}}
-    described = {f"solver {name.replace('_', ' ')}": str(getattr(settings, name)) for name in settings.__slots__}
     return Record(
-        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions, replicates=replicates,
+        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions(), replicates=replicates,
         solver_runs=sum(line.prediction.solver_runs for line in lines),
-        settings={**described, "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
+        settings={**settings_of(settings), "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
     )
 
 
