@@ -7,10 +7,7 @@ from typing import TYPE_CHECKING
 
 from rich.text import Text
 
-from tolerance.report.terminal import _name_width as name_width
-from tolerance.report.terminal import _print_table as print_table
-from tolerance.report.terminal import _say as say
-from tolerance.report.terminal import _table as table_of
+from tolerance.report.printed import name_width, print_table, say, text_table
 from tolerance.report.wording import (
     LengthUnit,
     fixed,
@@ -57,7 +54,7 @@ def print_tighten(result: TightenResult, console: Console) -> None:
     basis = result.basis
     say(console, basis.title, style="bold")
     say(console, f"{_yields_words(basis, result.now)} {_aim_words(basis)}")
-    table = table_of(("half-widths of", True), ("if halved:\nyield\ngain [%]", False),
+    table = text_table(("half-widths of", True), ("if halved:\nyield\ngain [%]", False),
                      ("at nought:\nyield\n[%]", False), ("to the\ntarget\nalone", False),
                      ("if doubled:\nyield\nloss [%]", False), ("may\ngrow\nto", False))
     for one in result.variations:
@@ -79,7 +76,7 @@ def print_center(result: CenterResult, lengths: LengthUnit, console: Console) ->
     basis = result.basis
     say(console, basis.title, style="bold")
     say(console, f"{_yields_words(basis, result.now)} {_aim_words(basis)}")
-    table = table_of(("line", True), (f"drawn\nwidth\ngap [{lengths}]", False), (f"best\nwidth\n[{lengths}]", False),
+    table = text_table(("line", True), (f"drawn\nwidth\ngap [{lengths}]", False), (f"best\nwidth\n[{lengths}]", False),
                      (f"mean on\ntarget\n[{lengths}]", False), ("yield\nnow\n[%]", False),
                      ("at the\nbest\n[%]", False), ("gain\n\n[%]", False), ("to im-\npedance\n[%]", False))
     for one in result.lines:
@@ -101,7 +98,7 @@ def print_promise(result: PromiseResult, console: Console) -> None:
     basis = result.basis
     aim = f"{trimmed(100.0 * basis.target_yield, 3)} %"
     say(console, basis.title, style="bold")
-    table = table_of(("line", True), ("target\n[ohm]", False), ("limit\nnow [%]", False),
+    table = text_table(("line", True), ("target\n[ohm]", False), ("limit\nnow [%]", False),
                      (f"tightest limit\nfor {aim} [%]", False), ("95 %\ninterval [%]", False), ("", True))
     for one in (*result.lines, result.together):
         needed = one.curve.needed
@@ -125,7 +122,7 @@ def print_compare(result: CompareResult, console: Console) -> None:
     """Scenarios side by side, and which differences are real."""
     for number, one in enumerate(result.scenarios, start=1):
         say(console, f"{number}: {one.title} ({one.file})", style="bold")
-    table = table_of(("line", True), *((f"{number}\nyield [%]\n" + ("" if number == 1 else "less 1"), False)
+    table = text_table(("line", True), *((f"{number}\nyield [%]\n" + ("" if number == 1 else "less 1"), False)
                                        for number in range(1, len(result.scenarios) + 1)))
     names = dict.fromkeys(name for one in result.scenarios for name in one.line_names)
     for name in (*names, ""):
@@ -175,13 +172,13 @@ def _note_row(one: NotedLine, lengths: LengthUnit) -> tuple[str, str, str, str, 
 
 
 def _print_offers(basis: Basis, offers: Offers, console: Console) -> None:
-    table = table_of(("offer, taken alone", True), ("cost", False), ("yield\n[%]", False), ("gain\n[%]", False),
+    table = text_table(("offer, taken alone", True), ("cost", False), ("yield\n[%]", False), ("gain\n[%]", False),
                      ("lowest\nline [%]", False))
     for one in offers.offers:
         table.add_row(Text(two_rows(f"{one.name} {one.tolerance}", 34)), f"{one.cost:g}", _bare(one.yields.together),
                       _signed(one.gain), _bare(basis.lowest(one.yields)[1]))
     print_table(console, table)
-    front = table_of(("no better set for the money", True), ("cost", False), ("yield\n[%]", False),
+    front = text_table(("no better set for the money", True), ("cost", False), ("yield\n[%]", False),
                      ("lowest\nline [%]", False), ("", True))
     for each in offers.front:
         words = textwrap.fill(", ".join(offers.names(each)) or "as it is", LONGEST_SET)

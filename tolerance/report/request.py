@@ -11,9 +11,9 @@ from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.files import put_in_place
+from tolerance.report.sheet_tables import put
 from tolerance.report.sheet_text import clean_text
 from tolerance.report.wording import LengthUnit, length_text, percent, trimmed
-from tolerance.report.workbook import _put as put
 from tolerance.scenario.amounts import Amount
 from tolerance.scenario.properties import MEASURE
 from tolerance.sheet.layout import (
