@@ -251,7 +251,7 @@ def _lines_sheet(sheet: Worksheet, scenario: Scenario) -> None:
         cell.fill = PatternFill("solid", start_color=HEAD_FILL)
         cell.alignment = Alignment(wrap_text=True, vertical="top")
         cell.border = _line()
-        sheet.column_dimensions[get_column_letter(column)].width = 30 if column == 1 else 14
+        sheet.column_dimensions[get_column_letter(column)].width = 30 if column == 1 else 20
     for number, line in enumerate(scenario.lines, start=2):
         for column, value in enumerate(_line_cells(scenario, line), start=1):
             put(sheet, number, column, value).border = _line()

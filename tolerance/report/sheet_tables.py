@@ -100,7 +100,7 @@ def _width(table: Table, column: int) -> float:
     heading = table.columns[column]
     longest_word = max(len(word) for word in heading.head.split())
     cells = max((len(_shown(heading, row[column])) for row in table.rows), default=0)
-    return min(max(NARROWEST, len(heading.head) / 2.0, longest_word + 4, cells + 3), WIDEST)
+    return min(max(NARROWEST, len(heading.head) / 2.0 + 2, longest_word + 4, cells + 3), WIDEST)
 
 
 def _rows_of(value: Cell, width: float) -> int:

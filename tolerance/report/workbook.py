@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 from openpyxl import Workbook
 from openpyxl.formatting.rule import Rule
-from openpyxl.styles import Font, PatternFill
+from openpyxl.styles import Alignment, Font, PatternFill
 from openpyxl.styles.differential import DifferentialStyle
 from openpyxl.utils import get_column_letter
 
@@ -21,6 +21,7 @@ from tolerance.report.lots_tables import (
     reading_table,
 )
 from tolerance.report.measured import intervals_of, measured_table
+from tolerance.report.note_text import note_table
 from tolerance.report.sheet_tables import INK, ROW, lettering, put, write_table
 from tolerance.report.sheet_text import clean_text
 from tolerance.report.tables import (
@@ -35,28 +36,31 @@ from tolerance.report.tables import (
 )
 from tolerance.report.understood import board_thickness, correlation_table, drawn_table, stackup_table, variation_table
 from tolerance.report.weights import group_table, lever_table
-from tolerance.report.wording import CAUTION, headline_text, length_text, share_range_text, trimmed
+from tolerance.report.wording import CAUTION, LengthUnit, headline_text, length_text, share_range_text, trimmed
 
 if TYPE_CHECKING:
     from pathlib import Path
 
     from openpyxl.worksheet.worksheet import Worksheet
 
+    from tolerance.decided import NoteResult
     from tolerance.results import RunResult
     from tolerance.scenario.tables import Scenario
 
 FAIL, FAIL_FILL = "A3184B", "F3D5DF"
+NOTE_SHEET = "Drawing note"
+NOTE_COLUMNS = 9  # of the impedance table, over which the notes go
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 RECORD_WIDTH = 120  # letters, of the values of the run record: whole lines of a scenario
 
 
-def write_workbook(result: RunResult, scenario: Scenario, path: Path) -> Path:
+def write_workbook(result: RunResult, scenario: Scenario, path: Path, note: NoteResult | None = None) -> Path:
     """Write the workbook, whole or not at all. Raises UnfinishedError where it cannot be written."""
-    return put_in_place(path, workbook(result, scenario).save)
+    return put_in_place(path, workbook(result, scenario, note).save)
 
 
-def workbook(result: RunResult, scenario: Scenario) -> Workbook:
-    """The workbook, not yet written."""
+def workbook(result: RunResult, scenario: Scenario, note: NoteResult | None = None) -> Workbook:
+    """The workbook, not yet written. note : for the fabrication drawing, which gets a sheet of its own."""
     book = Workbook()
     book.properties.creator = "tolerance"
     book.properties.title = clean_text(result.title)
@@ -70,6 +74,8 @@ def workbook(result: RunResult, scenario: Scenario) -> Workbook:
         write_table(placed[name].sheet, table, top=1)
         placed[name].sheet.freeze_panes = "B2"
     _acceptance_sheet(book, result)
+    if note is not None:
+        _note_sheet(book.create_sheet(NOTE_SHEET, book.sheetnames.index("Stackup")), note, scenario.report.lengths)
     _mark_misses(placed["Lines"], target_yield=result.target_yield)
     draw_charts(charts, summary=placed["Summary"], drivers=placed["Drivers"], by_limit=placed["Yield by limit"],
                 target=f"{trimmed(100.0 * result.target_yield, 3)} %")
@@ -102,6 +108,23 @@ def _acceptance_sheet(book: Workbook, result: RunResult) -> None:
         put(sheet, 1, 1, acceptance_sentence(result.acceptance)).font = lettering(12, bold=True)
         write_table(sheet, acceptance_table(result.acceptance), top=3)
         sheet.freeze_panes = "A4"
+
+
+def _note_sheet(sheet: Worksheet, note: NoteResult, lengths: LengthUnit) -> None:
+    """The impedance table for the fabrication drawing, and the notes below it."""
+    table = note_table(note, lengths)
+    put(sheet, 1, 1, f"Impedance table: {note.title}").font = lettering(14, bold=True)
+    sheet.row_dimensions[1].height = 1.5 * 14
+    write_table(sheet, table, top=3)
+    sheet.auto_filter.ref = None
+    across = min(len(table.columns), NOTE_COLUMNS)
+    letters = sum(sheet.column_dimensions[get_column_letter(column)].width for column in range(1, across + 1))
+    for row, text in enumerate(note.notes, start=len(table.rows) + 5):
+        words = f"{row - len(table.rows) - 4}. {text}"
+        put(sheet, row, 1, words).alignment = Alignment(vertical="top", wrap_text=True)
+        sheet.merge_cells(start_row=row, start_column=1, end_row=row, end_column=across)
+        sheet.row_dimensions[row].height = ROW * (len(textwrap.wrap(words, int(0.95 * letters))) + 0.5)
+    sheet.freeze_panes = "B4"
 
 
 def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> Placed:
