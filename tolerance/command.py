@@ -233,12 +233,16 @@ def _write_files(
 ) -> list[Path]:
     from tolerance.cores import on_all_cores
     from tolerance.report.figures import page_jobs, run_pages
-    from tolerance.report.files import remove_earlier
+    from tolerance.report.files import remove_earlier, remove_left_over
     from tolerance.report.workbook import write_workbook
 
     workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
     figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
-    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    try:
+        written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    except BaseException:
+        remove_left_over(folder)
+        raise
     remove_earlier(folder, written, job="run")
     return written
 

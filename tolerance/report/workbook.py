@@ -15,7 +15,7 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.charts import Placed, draw_charts
-from tolerance.report.files import put_in_place
+from tolerance.report.files import put_workbook_in_place
 from tolerance.report.lots_tables import (
     acceptance_sentence,
     acceptance_table,
@@ -58,7 +58,7 @@ ROW = 15.0  # points, one row of letters of the usual size
 
 def write_workbook(result: RunResult, scenario: Scenario, path: Path) -> Path:
     """Write the workbook, whole or not at all. Raises UnfinishedError where it cannot be written."""
-    return put_in_place(path, workbook(result, scenario).save)
+    return put_workbook_in_place(path, workbook(result, scenario))
 
 
 def workbook(result: RunResult, scenario: Scenario) -> Workbook:
