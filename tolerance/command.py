@@ -24,11 +24,12 @@ if TYPE_CHECKING:
     from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
+    from tolerance.scenario.entered import EnteredFile
 
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
-LOGGED = ("run", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
+LOGGED = ("run", "sweep", "again", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
@@ -184,9 +185,11 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
 
 def _run(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
+    from tolerance.scenario.entered import entered_files
 
     scenario = load(options.file)
     _check_numbers(options, in_lots=scenario.has_levels)
+    entered = entered_files(options.file)
     from tolerance.study.run import run
 
     cache = cache_for(options)
@@ -195,7 +198,8 @@ def _run(options: argparse.Namespace) -> int:
                      cache=cache)
         options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
-        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
+        record = partial(_write_record, result, scenario, entered, direct=options.direct)
+        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell, record)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -229,7 +233,7 @@ def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
 
 def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
-    tell: Callable[[str, int, int], None],
+    tell: Callable[[str, int, int], None], record: Callable[[Path], Path],
 ) -> list[Path]:
     from tolerance.cores import on_all_cores
     from tolerance.report.figures import page_jobs, run_pages
@@ -243,8 +247,17 @@ def _write_files(
     except BaseException:
         remove_left_over(folder)
         raise
+    written.append(record(folder))
     remove_earlier(folder, written, job="run")
     return written
+
+
+def _write_record(
+    result: RunResult, scenario: Scenario, entered: tuple[EnteredFile, ...], folder: Path, *, direct: int,
+) -> Path:
+    from tolerance.records.record import write_record
+
+    return write_record(result, scenario, entered, folder, direct=direct)
 
 
 def _new(options: argparse.Namespace) -> int:

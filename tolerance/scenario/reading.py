@@ -21,7 +21,7 @@ def read_document(path: Path) -> tuple[Document, list[Finding]]:
 
     Raises InputError when the file cannot be read, ScenarioError when it, or one it extends, is not UTF-8 TOML.
     """
-    return document_of(_bytes_of(path), name=path.name, folder=path.parent, path=path)
+    return document_of(bytes_of(path), name=path.name, folder=path.parent, path=path)
 
 
 def document_of(
@@ -42,7 +42,7 @@ def document_of(
         seen.append(_resolved(base))
         place = Place(depth=len(chain), line=0, number=0, file=_shown(base, folder), folder=base.parent)
         try:
-            content = _bytes_of(base)
+            content = bytes_of(base)
         except InputError as problem:
             raise _refused(document, str(problem), findings) from None
     merged = chain.pop()
@@ -51,7 +51,8 @@ def document_of(
     return merged, findings
 
 
-def _bytes_of(path: Path) -> bytes:
+def bytes_of(path: Path) -> bytes:
+    """The content of a scenario file. Raises InputError."""
     try:
         if path.is_dir():
             raise InputError(f"{path}: is a folder; a scenario is a TOML file")
@@ -71,7 +72,7 @@ def _bytes_of(path: Path) -> bytes:
 def _parsed(content: bytes, place: Place, findings: list[Finding]) -> Document:
     """The outline of one file. Raises ScenarioError, with the findings so far, when it is not UTF-8 TOML."""
     try:
-        text = _text_of(content)
+        text = text_of(content)
         raw = _toml(text)
     except InputError as problem:
         told = Problem(file=place.file, table="", allowed=str(problem))
@@ -81,7 +82,8 @@ def _parsed(content: bytes, place: Place, findings: list[Finding]) -> Document:
     return document
 
 
-def _text_of(content: bytes) -> str:
+def text_of(content: bytes) -> str:
+    """The content as text, with plain line ends. Raises InputError where it is not UTF-8."""
     if content.startswith((b"\xff\xfe", b"\xfe\xff")):
         raise InputError("must be UTF-8 text: it begins as UTF-16 does; save it as UTF-8")
     try:
