@@ -34,8 +34,8 @@ def made(tmp_path_factory: pytest.TempPathFactory) -> Path:
     (folder / "press.csv").write_text(f"P1 thickness\n{readings}\n", encoding="utf-8")
     write(folder, 'format = 1\nextends = "../base.toml"\n[[variations]]\nof = "P1.thickness"\nshape = "measured"\n'
                   'file = "press.csv"\ncolumn = "P1 thickness"\n', "vane.toml")
-    assert command("run", folder / "vane.toml", "--out", root / "out", "--seed", 5, "--coupons", 512, "--direct", 3,
-                   "--quiet") == 0
+    assert command("run", folder / "vane.toml", "--allow", root, "--out", root / "out", "--seed", 5, "--coupons", 512,
+                   "--direct", 3, "--quiet") == 0
     return root
 
 
@@ -52,7 +52,7 @@ def changed(made: Path, tmp_path: Path) -> Changed:
 
 
 def test_what_entered_is_in_the_record(made: Path) -> None:
-    found = entered_files(made / "boards" / "vane.toml")
+    found = entered_files(made / "boards" / "vane.toml", allow=[made])
     assert [one.name for one in found] == ["vane.toml", "../base.toml", "press.csv"]
     record = read_record(made / "out")
     assert [one.name for one in record.files] == ["vane.toml", "../base.toml", "press.csv"]
@@ -61,7 +61,8 @@ def test_what_entered_is_in_the_record(made: Path) -> None:
 
 
 def test_the_same_bits_from_the_record_alone(made: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    assert command("run", made / "boards" / "vane.toml", "--seed", 5, "--coupons", 512, "--direct", 3, "--json") == 0
+    assert command("run", made / "boards" / "vane.toml", "--seed", 5, "--coupons", 512, "--direct", 3, "--json",
+                   "--allow", made) == 0
     expected = capsys.readouterr().out
     (tmp_path / NAME).write_bytes((made / "out" / NAME).read_bytes())
     assert command("again", tmp_path, "--json") == 0

@@ -16,10 +16,10 @@ from tests.sheet_examples import COUPONS, TEXT, address, asked, edited, fill, sc
 from tolerance.command import main
 from tolerance.errors import InputError
 from tolerance.exchanged import Taken
+from tolerance.measurements.archive import safe_content
 from tolerance.report.request import request_workbook
 from tolerance.scenario import Amount, load, parse
 from tolerance.sheet.amending import amend
-from tolerance.sheet.archive import safe_content
 from tolerance.sheet.cells import CellError, SeenCell, basis_named, typed_of
 from tolerance.sheet.reading import read_reply
 from tolerance.study.exchange import ask, request_of, take
@@ -270,7 +270,7 @@ def test_the_commands_there_and_back(
     said = capsys.readouterr().out
     assert "Not taken: Tolerances!" in said
     assert "yield before" in said
-    assert load(tmp_path / "there" / "new.toml").variations[2].tolerance == Amount(12e-6, False)
+    assert load(tmp_path / "there" / "new.toml", allow=[tmp_path]).variations[2].tolerance == Amount(12e-6, False)
     assert command("take", "orchard.toml", reply, "--out", "there/new.toml", *options) == 2
     assert command("take", "orchard.toml", reply, "--json", *options) == 0
     answer = json.loads(capsys.readouterr().out)

@@ -70,7 +70,7 @@ def again(path: Path, *, on_progress: Progress | None = None, cache: SolvedCache
 def _scenario(record: RunRecord) -> Scenario:
     with tempfile.TemporaryDirectory(prefix="tolerance-") as folder:
         try:
-            scenario = load(lay_out(record, Path(folder)))
+            scenario = load(lay_out(record, Path(folder)), allow=[folder])
         except ScenarioError as problem:
             raise InputError(f"the scenario in the run record cannot be read by this version:\n{problem}") from None
         except OSError as problem:

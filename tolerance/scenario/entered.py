@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import os
-import tomllib
+from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
 
 from tolerance.errors import InputError
-from tolerance.scenario.reading import bytes_of, read_document, text_of
+from tolerance.scenario.reading import read_document
 
 _WITH_FILES = ("variations", "sweep")
 
@@ -22,17 +22,12 @@ class EnteredFile:
     content: bytes
 
 
-def entered_files(path: Path) -> tuple[EnteredFile, ...]:
-    """Every file that `load(path)` has just read. Raises InputError where one cannot be read any more."""
-    chain = [path]
-    while (base := _extended(bytes_of(chain[-1]))) is not None:
-        if len(chain) > 100:
-            raise InputError(f"{path}: has changed while it was read")
-        chain.append(chain[-1].parent / base)
-    document, _ = read_document(path)
+def entered_files(path: Path, *, allow: Iterable[Path] = ()) -> tuple[EnteredFile, ...]:
+    """Every file that `load` has just read. Raises InputError where one cannot be read any more."""
+    document, _ = read_document(path, allow=allow)
     tables = [entry.places["file"].folder / str(entry.values["file"])
               for table in _WITH_FILES for entry in document.entries.get(table, ()) if "file" in entry.values]
-    return tuple(_entered(one, path.parent) for one in dict.fromkeys([*chain, *tables]))
+    return tuple(_entered(one, path.parent) for one in dict.fromkeys([*document.files, *tables]))
 
 
 def _entered(path: Path, folder: Path) -> EnteredFile:
@@ -45,11 +40,3 @@ def _entered(path: Path, folder: Path) -> EnteredFile:
     except ValueError:  # another drive
         name = path.as_posix()
     return EnteredFile(name, path, content)
-
-
-def _extended(content: bytes) -> str | None:
-    try:
-        base = tomllib.loads(text_of(content)).get("extends")
-    except ValueError as problem:
-        raise InputError(f"has changed while it was read: {problem}") from None
-    return base if isinstance(base, str) else None

@@ -104,7 +104,8 @@ def _checked(
     while amendment.changes:
         try:
             text = _text(scenario, amendment, out, reply)
-            return amendment, parse(text, name=out.name, folder=out.parent), notes
+            allow = (Path(scenario.source).parent, *map(Path, scenario.allowed))
+            return amendment, parse(text, name=out.name, folder=out.parent, allow=allow), notes
         except ScenarioError as error:
             refused = {(problem.table, problem.entry) for problem in error.problems}
             found = [(answer, table) for answer in read.answers for table in ("variations", "offers")
