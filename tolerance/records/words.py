@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from tolerance.report.terminal import _say as say
+from tolerance.report.printed import say
 
 if TYPE_CHECKING:
     from rich.console import Console

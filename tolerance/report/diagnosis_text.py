@@ -8,9 +8,7 @@ from typing import TYPE_CHECKING
 
 from rich.text import Text
 
-from tolerance.report.terminal import _print_table as print_table
-from tolerance.report.terminal import _say as say
-from tolerance.report.terminal import _table as text_table
+from tolerance.report.printed import print_table, say, text_table
 
 if TYPE_CHECKING:
     from rich.console import Console
