@@ -106,7 +106,8 @@ def _sweep(options: argparse.Namespace) -> int:
         options.logbook.write(
             "row", row=number + 1, scenario=row.source, swept=row.swept, failed=row.result is None,
             message=row.message or None, solver_runs=None if row.result is None else row.result["solver_runs"],
-            from_cache=outcome.from_cache, seconds=round(outcome.seconds, 3), worker=outcome.worker or None,
+            from_cache=outcome.from_cache, seconds=round(outcome.seconds, 3),
+            processor_seconds=round(outcome.of_processor, 3), worker=outcome.worker or None,
             **({"trace": outcome.trace} if outcome.trace else {}))
 
     try:
