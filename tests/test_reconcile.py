@@ -123,11 +123,11 @@ def test_a_linear_normal_case_is_the_conditional_normal() -> None:
 def test_the_search_settles_where_the_response_bends_over() -> None:
     """Towards the end of a uniform law nothing more follows; the mode is that of scipy's search along a line."""
     def response(germ: FloatArray) -> FloatArray:
-        return 0.05 * erf(germ * np.sqrt(0.5))
+        return np.asarray(0.05 * erf(germ * np.sqrt(0.5)))
 
     for seen in (0.1, 0.45, 0.7):
         found = most_plausible(response, Observed(np.array([seen]), np.array([[0.01]])), np.eye(1))
-        exact = minimize_scalar(lambda germ: (seen - 0.05 * erf(germ * np.sqrt(0.5))) ** 2 / 0.01 + germ**2,
+        exact = minimize_scalar(lambda germ, seen=seen: (seen - 0.05 * erf(germ * np.sqrt(0.5))) ** 2 / 0.01 + germ**2,
                                 bounds=(0.0, 6.0), method="bounded", options={"xatol": 1e-10})
         assert found.mean[0] == pytest.approx(exact.x, abs=1e-4), "slopes are differences over a tenth of a germ"
 
