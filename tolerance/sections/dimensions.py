@@ -46,7 +46,8 @@ class Dimensions:
                 dks.append(side.dks[run[0]])
                 dfs += [DF_SCALE * side.dfs[run[0]]] if side.dfs else []
         if isinstance(section, Section) and section.mask is not None:
-            lengths += [section.mask.on_laminate, section.mask.over_copper]
+            lengths += [section.mask.on_laminate + 0.5 * section.foot_width,
+                        section.mask.over_copper + section.thickness]
             dks.append(section.mask.dk)
             dfs += [] if section.mask.df is None else [DF_SCALE * section.mask.df]
         if isinstance(section, Section) and section.band_dk is not None:
