@@ -11,7 +11,7 @@ from tests.section_examples import EVEN, ODD, microstrip, stripline
 from tests.test_solver_reference import REFERENCE, SECTIONS, SOURCE, section_of
 from tolerance.arrays import FloatArray
 from tolerance.sections.section import Section
-from tolerance.solver.derivatives import parameters, solve_with_derivatives
+from tolerance.solver.derivatives import impedance_slopes, parameters, solve_with_derivatives
 from tolerance.solver.line import solve_modes
 from tolerance.solver.plan import SolverSettings, plan_for
 
@@ -61,6 +61,18 @@ def test_scaling_every_length_changes_nothing(kind: str) -> None:
     solved = solve_with_derivatives(section, plan_for(section, SolverSettings()), mode=mode)
     total = sum(value * solved.by[name] for name, value, _ in parameters(section) if not name.endswith("dk"))
     assert np.asarray(total) == pytest.approx(0.0, abs=1e-5 * float(solved.impedance[0]))
+
+
+def test_slopes_are_the_derivatives_of_the_logarithm() -> None:
+    """Exact: d ln Z = dZ / Z, one column for each dimension."""
+    section, mode = KINDS["mask pair, odd"]
+    plan = plan_for(section, SolverSettings())
+    slopes, solved = impedance_slopes(section, plan, mode=mode), solve_with_derivatives(section, plan, mode=mode)
+    assert slopes.names == tuple(solved.by)
+    assert slopes.slopes.shape == slopes.values.shape == (1, len(slopes.names))
+    for column, (name, value, _) in enumerate(parameters(section)):
+        assert slopes.values[:, column] == pytest.approx(value, rel=1e-15)
+        assert slopes.slopes[:, column] * slopes.impedance == pytest.approx(solved.by[name], rel=1e-12)
 
 
 def test_dk_of_a_homogeneous_line_acts_with_the_power_minus_a_half() -> None:

@@ -9,12 +9,13 @@ import argparse
 import os
 import sys
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
@@ -96,6 +97,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--direct", type=int, default=0, metavar="N",
                      help="also solve N coupons of the sample themselves and report the difference")
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
+    add_fresh(run)
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     run.set_defaults(command=_run)
 
@@ -168,8 +170,10 @@ def _run(options: argparse.Namespace) -> int:
     _check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 
+    cache = cache_for(options)
     with progress(quiet=options.quiet) as tell:
-        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
+        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell,
+                     cache=cache)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
     if options.json:
@@ -183,6 +187,7 @@ def _run(options: argparse.Namespace) -> int:
         print_run(result, screen)
         if written:
             screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+    tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 
@@ -206,14 +211,15 @@ def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
     tell: Callable[[str, int, int], None],
 ) -> list[Path]:
-    from tolerance.report.figures import write_figures
+    from tolerance.cores import on_all_cores
+    from tolerance.report.figures import page_jobs, run_pages
     from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
 
-    tell("writing the workbook", 0, 1)
-    workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell, figure_format=figure_format)
-    remove_earlier(folder, written := [workbook, *figures], job="run")
+    workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
+    figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
+    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    remove_earlier(folder, written, job="run")
     return written
 
 

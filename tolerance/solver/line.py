@@ -75,12 +75,15 @@ def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -
     return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
 
 
-def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
-    """Rows that are solved together: of one topology, and so few that a matrix of them stays in cache."""
+def batches(section: Section, plan: Plan, *, largest: int | None = None) -> Iterator[IntArray]:
+    """Rows that are solved together: of one topology, and so few that a matrix of them stays in cache.
+
+    largest : no more rows than this at a time.
+    """
     kinds = topology(section)
     for kind in np.unique(kinds):
         rows = np.flatnonzero(kinds == kind)
-        size = _batch_size(section.rows(rows[:1]), plan)
+        size = min(_batch_size(section.rows(rows[:1]), plan), largest or rows.size)
         for start in range(0, rows.size, size):
             yield rows[start : start + size]
 
