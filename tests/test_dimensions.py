@@ -74,7 +74,7 @@ def test_every_part_of_a_section_shows(name: str) -> None:
     seen = dimensions_like(PAIR)
     for changed in changes:
         moved = seen.logarithms(replace(PAIR, **{name: changed})) - seen.logarithms(PAIR)
-        assert np.max(np.abs(moved)) > 0.05
+        assert np.max(np.abs(moved)) > 0.02  # a tenth of the mask is less of the outline that it makes
 
 
 def test_loss_tangents_show_where_there_is_a_frequency_and_part_plies_of_one_dk() -> None:

@@ -12,6 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from scipy.linalg import qr
+from scipy.special import ndtr, ndtri
 
 from tolerance.arrays import FloatArray
 from tolerance.process.draws import ETCH, Process, Variable, sobol_uniforms
@@ -23,6 +24,7 @@ REACH = 3.0  # germs from minus to plus this span the tolerance; uniform laws: f
 WIDER = 1.25  # the box over that span
 LEAST_OF_LOW_END = 0.5  # what a low end above nought keeps at least when the box is made wider
 LEAST_OF_NOMINAL = 0.05  # where the low end is not above nought itself
+GATHERED = 0.35  # deviation of training runs over half the width of the box: 1.3 of that of a normal law
 SMALL_STEP = 1e-4  # of the box, for derivatives
 DEPENDENT = 1e-4  # of a direction's length that must be its own
 FARTHEST = 2.0  # coordinates are held within, far outside every draw of a section that can exist
@@ -133,6 +135,17 @@ def training_shares(dimensions: int, *, runs: int, chance: np.random.Generator) 
     """
     points = 1 << max(runs - 1, 1).bit_length()
     return 2.0 * sobol_uniforms(dimensions, points, chance)[:runs] - 1.0
+
+
+def gathered(process: Process, columns: tuple[int, ...], shares: FloatArray) -> FloatArray:
+    """Shares of the box (points, columns) gathered towards its middle where the draws of a law do: a normal one cut at
+    the ends of the box. The draws of a uniform law do not."""
+    result = shares.copy()
+    for position, column in enumerate(columns):
+        if any(law.shape != "uniform" for _, law in process.variables[column].members):
+            lowest = ndtr(-1.0 / GATHERED)
+            result[:, position] = GATHERED * ndtri(lowest + (1.0 - 2.0 * lowest) * 0.5 * (1.0 + shares[:, position]))
+    return result
 
 
 def small_steps(dimensions: int) -> FloatArray:
