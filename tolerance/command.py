@@ -14,8 +14,21 @@ from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
-from tolerance.errors import InputError, ToleranceError
-from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
+from tolerance.errors import InputError, ToleranceError, on_one_line
+from tolerance.logbook import Logbook
+from tolerance.many_commands import add_many
+from tolerance.screen import (
+    Parser,
+    add_allow,
+    add_fresh,
+    cache_for,
+    check_folder,
+    console,
+    progress,
+    survive_narrow_encodings,
+    tell_from_cache,
+    tell_problem,
+)
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
@@ -26,31 +39,41 @@ if TYPE_CHECKING:
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
+LOGGED = ("run", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
     """Run one command and exit with its status."""
+    survive_narrow_encodings()
     options = _parser().parse_args(arguments)
+    log = None
     try:
+        log = options.logbook = Logbook(getattr(options, "log", None), tell_problem)
+        log.write("began", command=sys.argv[1:] if arguments is None else list(arguments), cores=os.cpu_count())
         status = options.command(options)
         sys.stdout.flush()
     except ToleranceError as problem:
-        print(problem, file=sys.stderr)
+        tell_problem(problem)
+        if log is not None:
+            log.write("failed", message=str(problem))
         status = problem.exit_status
     except BrokenPipeError:  # whoever read our output has stopped reading
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         status = 0
     except OSError as problem:
-        print(f"could not be finished: {problem}", file=sys.stderr)
+        tell_problem(f"could not be finished: {problem}")
         status = UNFINISHED
     except KeyboardInterrupt:
-        print("interrupted", file=sys.stderr)
+        tell_problem("interrupted")
         status = INTERRUPTED
+    if log is not None:
+        log.write("ended", status=status)
+        log.close()
     sys.exit(status)
 
 
 def _parser() -> argparse.ArgumentParser:
-    parser = argparse.ArgumentParser(
+    parser = Parser(
         prog="tolerance",
         description="Will the coupons pass? Fabrication tolerances of controlled-impedance lines, through a field "
                     "solver, to yield and what drives it.",
@@ -69,10 +92,12 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("--out", type=Path, metavar="DIR", help="folder for the pictures; default out/<file stem>")
     check.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the pictures")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(check)
     check.set_defaults(command=_check)
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
     add_talk(commands)
+    add_many(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -83,6 +108,9 @@ def _parser() -> argparse.ArgumentParser:
     presets.set_defaults(command=_presets)
     schema = commands.add_parser("schema", help="print the JSON Schema of scenario files, for editors")
     schema.set_defaults(command=_schema)
+    for name in LOGGED:
+        commands.choices[name].add_argument("--log", type=Path, metavar="FILE",
+                                            help="add what is done and how long it takes, a JSON object a line")
     return parser
 
 
@@ -99,6 +127,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
     add_fresh(run)
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(run)
     run.set_defaults(command=_run)
 
 
@@ -134,7 +163,8 @@ def _check(options: argparse.Namespace) -> int:
 
     if options.out is not None and not options.picture:
         raise InputError(f"--out {options.out}: only with --picture")
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     result = check(scenario, formulas=options.formulas)
     folder = options.out or Path("out") / options.file.stem
     written = _write_pictures(scenario, folder, options) if options.picture else []
@@ -146,7 +176,7 @@ def _check(options: argparse.Namespace) -> int:
         screen = console()
         print_check(result, scenario.report.lengths, screen, shares=options.shares)
         if written:
-            screen.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}")
     return 0
 
 
@@ -155,7 +185,7 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
     from tolerance.report.files import remove_earlier
     from tolerance.study.picture import pictures
 
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         found = pictures(scenario, on_progress=tell)
         written = write_pictures(found, folder, scenario.report.lengths, figure_format=options.figures,
                                  on_progress=tell)
@@ -166,14 +196,16 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
 def _run(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     _check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell,
                      cache=cache)
+        options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
     if options.json:
@@ -186,7 +218,7 @@ def _run(options: argparse.Namespace) -> int:
         screen = console()
         print_run(result, screen)
         if written:
-            screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}")
     tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
@@ -228,7 +260,7 @@ def _new(options: argparse.Namespace) -> int:
 
     write_starter(options.file)
     if not options.quiet:
-        print(f"Wrote {options.file}. Run it: tolerance run {options.file}")
+        print(on_one_line(f"Wrote {options.file}. Run it: tolerance run {options.file}"))
     return 0
 
 

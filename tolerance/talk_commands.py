@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError
-from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
+from tolerance.screen import add_allow, add_fresh, cache_for, check_folder, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.exchanged import Taken
@@ -47,6 +47,7 @@ def _add_common(parser: argparse.ArgumentParser, command: Callable[[argparse.Nam
     parser.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     parser.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(parser)
     add_fresh(parser)
     parser.set_defaults(command=command)
 
@@ -54,7 +55,7 @@ def _add_common(parser: argparse.ArgumentParser, command: Callable[[argparse.Nam
 def _ask(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    scenario = load(options.file, allow=options.allow)
     check_numbers(options)
     out = options.out or (None if options.json else Path(f"{options.file.stem}-ask.xlsx"))
     _must_be_new(out, ".xlsx")
@@ -62,7 +63,7 @@ def _ask(options: argparse.Namespace) -> int:
     from tolerance.study.exchange import ask
 
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         request = ask(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     if out is not None:
         write_request(request, out, hide_targets=options.hide == "targets")
@@ -81,7 +82,7 @@ def _ask(options: argparse.Namespace) -> int:
 def _take(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    scenario = load(options.file, allow=options.allow)
     check_numbers(options)
     from tolerance.study.exchange import answered_path, take
 
@@ -89,7 +90,7 @@ def _take(options: argparse.Namespace) -> int:
     out = None if options.json and options.out is None else stands
     _must_be_new(out, ".toml")
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         taken = take(scenario, options.reply, out=stands, coupons=options.coupons, seed=options.seed, on_progress=tell,
                      cache=cache)
     written = _write_scenario(taken, out)
@@ -101,6 +102,8 @@ def _take(options: argparse.Namespace) -> int:
         from tolerance.report.talk_terminal import print_taken
 
         print_taken(taken, console(), written)
+        if written is not None and not options.file.resolve().is_relative_to(written.parent.resolve()):
+            console().print(f"It extends a scenario in another folder: give it --allow {options.file.parent}.")
     records = [run.record for run in (taken.before, taken.after) if run is not None]
     tell_from_cache(options, sum(record.from_cache for record in records),
                     sum(record.solver_runs for record in records))
@@ -110,13 +113,14 @@ def _take(options: argparse.Namespace) -> int:
 def _reconcile(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     check_numbers(options)
     repeatability = _resistance(options.repeatability)
     from tolerance.study.reconcile import reconcile
 
     cache = cache_for(options)
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = reconcile(scenario, options.measured, sections=options.sections, repeatability=repeatability,
                            sheet=options.sheet, coupons=options.coupons, seed=options.seed, on_progress=tell,
                            cache=cache)

@@ -17,10 +17,13 @@ from typing import Any, TypeVar
 import numpy as np
 
 from tolerance.arrays import FloatArray, NumberArray
+from tolerance.sections.layered import LayeredSection, PlacedTrace
 from tolerance.sections.section import Mask, Ply, Section
 from tolerance.solver.assembly import Medium, System, full_matrix, near_system
 from tolerance.solver.gradient import Excited, Gradient, gradient
-from tolerance.solver.line import FREE_SPACE_IMPEDANCE, batches
+from tolerance.solver.layered import LayeredPlan
+from tolerance.solver.layered_gradient import layered_coordinates, solve_layered_mode
+from tolerance.solver.line import FREE_SPACE_IMPEDANCE, AnyPlan, AnySection, batches, layered_batches
 from tolerance.solver.media_gradient import media_gradient
 from tolerance.solver.plan import Plan
 from tolerance.solver.structure import Structure, media, structure, topology
@@ -37,7 +40,9 @@ class ModeDerivatives:
     """Impedance [ohm] of a mode and its derivatives, all (sections,), by name of what changes [ohm/m, or ohm].
 
     Names: foot_width, crest_width, thickness, gap, ground_gap, band_dk, foot_side.0.thickness, foot_side.0.dk, ...,
-    crest_side.0.thickness, ..., mask.on_laminate, mask.over_copper, mask.dk. Each is with all others held.
+    crest_side.0.thickness, ..., mask.on_laminate, mask.over_copper, mask.dk. Of a broadside pair:
+    traces.0.foot_width, traces.0.crest_width, traces.0.thickness, traces.0.centre, traces.1..., layers.0.thickness,
+    layers.0.dk, .... Each is with all others held.
     """
 
     impedance: FloatArray
@@ -58,46 +63,79 @@ class Slopes:
     slopes: FloatArray
 
 
-def impedance_slopes(section: Section, plan: Plan, *, mode: int) -> Slopes:
+def impedance_slopes(section: AnySection, plan: AnyPlan, *, mode: int) -> Slopes:
     """Solve one mode (1 even or single, -1 odd) of all sections with the slopes of ln Z: what a fit with gradients
     calls. Twice the odd or half the even mode's impedance has the same slopes."""
     found = parameters(section)
     impedance, slopes = np.empty(section.count), np.empty((section.count, len(found)))
+    values = np.stack([value for _, value, _ in found], axis=1)
+    if isinstance(section, LayeredSection):
+        assert isinstance(plan, LayeredPlan)
+        of_names = _shares(section)
+        for chosen in layered_batches(section, plan):
+            capacitances, gradients = solve_layered_mode(section.rows(chosen), plan, mode)
+            impedance[chosen] = FREE_SPACE_IMPEDANCE / np.sqrt(capacitances[0] * capacitances[1])
+            slopes[chosen] = gradients @ of_names
+        return Slopes(tuple(name for name, _, _ in found), impedance, values, slopes)
+    assert isinstance(plan, Plan)
     kinds = topology(section)
     shares = {kind: _shares(section.rows(np.flatnonzero(kinds == kind)[:1])) for kind in np.unique(kinds)}
     for rows in batches(section, plan, largest=LARGEST_BATCH):
         impedance[rows], gradients = _solve_batch(section.rows(rows), plan, mode)
         slopes[rows] = gradients @ shares[kinds[rows[0]]]
-    return Slopes(tuple(name for name, _, _ in found), impedance, np.stack([value for _, value, _ in found], axis=1),
-                  slopes)
+    return Slopes(tuple(name for name, _, _ in found), impedance, values, slopes)
 
 
-def solve_with_derivatives(section: Section, plan: Plan, *, mode: int) -> ModeDerivatives:
+def solve_with_derivatives(section: AnySection, plan: AnyPlan, *, mode: int) -> ModeDerivatives:
     """Solve one mode (1 even or single, -1 odd) with all partial derivatives."""
     found = impedance_slopes(section, plan, mode=mode)
     return ModeDerivatives(found.impedance, dict(zip(found.names, (found.impedance[:, None] * found.slopes).T,
                                                      strict=True)))
 
 
-_Setter = Callable[[Section, FloatArray], Section]
+_Setter = Callable[[AnySection, FloatArray], AnySection]
 
 
-def parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
+def parameters(section: AnySection) -> list[tuple[str, FloatArray, _Setter]]:
     """Name, value and how to set it, of all that a section is made of."""
+    return _layered_parameters(section) if isinstance(section, LayeredSection) else _plain_parameters(section)
+
+
+def _layered_parameters(section: LayeredSection) -> list[tuple[str, FloatArray, _Setter]]:
+    found: list[tuple[str, FloatArray, _Setter]] = []
+
+    def of_part(part: str, number: int, name: str) -> _Setter:
+        def put(one: AnySection, value: FloatArray) -> AnySection:
+            parts = list(getattr(one, part))
+            parts[number] = _with(parts[number], name, value) if name else value
+            return _with(one, part, tuple(parts))
+        return put
+
+    for number, trace in enumerate(section.traces):
+        found += [(f"traces.{number}.{name}", getattr(trace, name), of_part("traces", number, name))
+                  for name in ("foot_width", "crest_width", "thickness", "centre")]
+    for number, (thickness, dk) in enumerate(zip(section.thicknesses, section.dks, strict=True)):
+        found += [(f"layers.{number}.thickness", thickness, of_part("thicknesses", number, "")),
+                  (f"layers.{number}.dk", dk, of_part("dks", number, ""))]
+    return found
+
+
+def _plain_parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
     found: list[tuple[str, FloatArray, _Setter]] = []
 
     def plain(name: str) -> _Setter:
         return lambda one, value: _with(one, name, value)
 
     def of_ply(side: str, number: int, name: str) -> _Setter:
-        def put(one: Section, value: FloatArray) -> Section:
+        def put(one: AnySection, value: FloatArray) -> AnySection:
             plies: list[Ply] = list(getattr(one, side))
             plies[number] = _with(plies[number], name, value)
             return _with(one, side, tuple(plies))
         return put
 
     def of_mask(name: str) -> _Setter:
-        def put(one: Section, value: FloatArray) -> Section:
+        def put(one: AnySection, value: FloatArray) -> AnySection:
+            assert isinstance(one, Section)
             assert one.mask is not None
             return _with(one, "mask", _with(one.mask, name, value))
         return put
@@ -116,7 +154,7 @@ def parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
     return found
 
 
-Part = TypeVar("Part", Section, Ply, Mask)
+Part = TypeVar("Part", bound=Section | LayeredSection | Ply | Mask | PlacedTrace)
 
 
 def _with(part: Part, name: str, value: object) -> Part:
@@ -124,21 +162,21 @@ def _with(part: Part, name: str, value: object) -> Part:
     return replace(part, **changes)
 
 
-def _shares(section: Section) -> FloatArray:
-    """How all that a structure is told in moves with each parameter of `section`: (coordinates, parameters).
+def _shares(section: AnySection) -> FloatArray:
+    """How all that a solution is told in moves with each parameter of `section`: (coordinates, parameters).
 
-    `section` holds one; every row of a batch has it with another parameter moved. All is linear, so that one
-    section of a topology stands for all.
+    Every row of a batch has the first of `section` with another parameter moved. All is linear, so that one section of
+    a topology stands for all.
     """
     found = parameters(section)
-    rows = section.rows(np.zeros(len(found) + 1, dtype=np.int64))
+    rows: AnySection = section.rows(np.zeros(len(found) + 1, dtype=np.int64))
     steps = []
     for number, (_, value, put) in enumerate(found, start=1):
-        moved = np.repeat(value, len(found) + 1)
-        steps.append(STEP * (float(value[0]) or float(section.foot_width[0])))
+        moved = np.repeat(value[:1], len(found) + 1)
+        steps.append(STEP * (float(value[0]) or float(found[0][1][0])))
         moved[number] += steps[-1]
         rows = put(rows, moved)
-    told = _coordinates(structure(rows))
+    told = layered_coordinates(rows) if isinstance(rows, LayeredSection) else _coordinates(structure(rows))
     return np.asarray((told[1:] - told[0]).T / np.array(steps))
 
 

@@ -9,7 +9,7 @@ the gradient with respect to the ends of the edges.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 
@@ -78,7 +78,7 @@ class _Sheet:
     """Sources of one image: where they are seen (sections, sources), and their charges with the factor of the image,
     for each medium; None where they do not reach.
 
-    side, up : -1 where x, y run against those of the edges.  shares : see _shares_of_ends.
+    side, up : -1 where x, y run against those of the edges.  shares : see shares_of_ends.
     blank : blocks of the kernel to leave out.
     """
 
@@ -99,9 +99,9 @@ class _Places:
         self.system = system
         self.across, self.height = (np.zeros((count, 2 * edges)) for _ in range(2))
         self.levels = np.zeros((count, images))
-        self.at_nodes = _shares_of_ends([nodes.share for nodes in system.nodes])
-        self.at_fine = _shares_of_ends([nodes.fine_share for nodes in system.nodes])
-        self.at_far = _shares_of_ends([nodes.fine_share if nodes.edge.tail else nodes.share
+        self.at_nodes = shares_of_ends([nodes.share for nodes in system.nodes])
+        self.at_fine = shares_of_ends([nodes.fine_share for nodes in system.nodes])
+        self.at_far = shares_of_ends([nodes.fine_share if nodes.edge.tail else nodes.share
                                        for nodes in system.nodes])
 
     def add(self, across: FloatArray, height: FloatArray, shares: FloatArray) -> None:
@@ -128,7 +128,10 @@ class _Places:
 
 
 def gradient(system: System, images: Sequence[NearImage], solved: Sequence[Excited], *, sign: int) -> Gradient:
-    """The gradient of a batch; `solved`: the medium as built, then that of the copper in air."""
+    """The gradient of a batch; `solved`: the medium as built, then that of the copper in air.
+
+    sign : even (1), odd (-1), or 0 for a section that is not mirrored.
+    """
     sums = _Places(system, len(images))
     weighted = [_weighted(system, one.adjoint) for one in solved]
     _add_near(sums, images, solved, weighted, sign)
@@ -136,8 +139,11 @@ def gradient(system: System, images: Sequence[NearImage], solved: Sequence[Excit
     all_shifts = _add_far(sums, solved, weighted, sign)
     for one, rows, shifts in zip(solved, weighted, all_shifts, strict=True):
         rest = None
-        if one.medium.rest is not None:
+        if one.medium.rest is not None and sign:
             rest = _add_rest(sums, one.medium.rest, rows, one.charges, sign)
+        elif one.medium.rest is not None:  # a section that is not mirrored: half the sum of even and odd
+            even, odd = (_add_rest(sums, one.medium.rest, 0.5 * rows, one.charges, way) for way in (1, -1))
+            rest = RestGradient(*(getattr(even, part.name) + getattr(odd, part.name) for part in fields(RestGradient)))
         media.append(MediumGradient(_near_factors(system, rows, one, sign), _far_factors(rows, one), shifts, rest))
     left, right = _add_interfaces(sums, solved[0])
     return Gradient(sums.ends, sums.levels, left, right, tuple(media))
@@ -159,7 +165,7 @@ def _parts(system: System) -> list[tuple[Nodes, slice]]:
     return [(nodes, slice(start, stop)) for nodes, start, stop in zip(system.nodes, ends[:-1], ends[1:], strict=True)]
 
 
-def _shares_of_ends(shares: Sequence[FloatArray]) -> FloatArray:
+def shares_of_ends(shares: Sequence[FloatArray]) -> FloatArray:
     """Where places lie between the ends of their edges: (places, 2 edges), shares of starts, then of stops."""
     sizes = [share.size for share in shares]
     result = np.zeros((sum(sizes), 2 * len(shares)))

@@ -6,12 +6,10 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
-import platform
 import secrets
 import time
 from collections.abc import Sequence
 from dataclasses import replace
-from importlib.metadata import version
 
 import numpy as np
 
@@ -31,21 +29,21 @@ from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_le
 from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
 from tolerance.study.solved import SolvedCache
+from tolerance.study.versions import settings_of, versions
 from tolerance.study.weighing import Weights, weigh
-
-PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
 @plain_algebra
 def run(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, direct: int = 0,
-    on_progress: Progress | None = None, cache: SolvedCache | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None, brief: bool = False,
 ) -> RunResult:
     """Yield and drivers of every line of a checked scenario.
 
     coupons, seed : instead of the scenario's.  direct : solve that many coupons themselves and report the difference.
     on_progress : called with the step's name, what is done of it, and how much there is.
     cache : of solved sections, such as tolerance.user_cache(); none is used if left out.
+    brief : without the groups of drivers and without what would raise the yield; all else is the same.
     Raises UnfinishedError where a line's impedance cannot be predicted.
     """
     tell = on_progress or silent
@@ -83,7 +81,7 @@ def run(
     clock.lap("doubt of readings")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> Weights:
-        return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated)
+        return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated, brief=brief)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
     weights = on_all_cores(rank, ranking, "ranking drivers", tell)
@@ -169,12 +167,10 @@ def _line_result(
 def _record(
     scenario: Scenario, settings: SolverSettings, lines: list[LineResult], replicates: int, clock: _Clock,
 ) -> Record:
-    versions = {"python": platform.python_version(), **{package: version(package) for package in PACKAGES}}
-    described = {f"solver {name.replace('_', ' ')}": str(getattr(settings, name)) for name in settings.__slots__}
     return Record(
-        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions, replicates=replicates,
+        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions(), replicates=replicates,
         solver_runs=sum(line.prediction.solver_runs for line in lines),
-        settings={**described, "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
+        settings={**settings_of(settings), "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
     )
 
 
