@@ -102,3 +102,20 @@ def test_a_coated_line_that_often_fails_takes_250_solver_runs_in_all(file: str, 
     doubtful = np.flatnonzero(np.abs(predicted.impedance - prepared.high_limit) < 0.1)[::8]
     solved = prepared.impedance(prepared.section(draws.rows(doubtful)))
     assert np.array_equal(inside(predicted, predicted.impedance[doubtful]), inside(predicted, solved))
+
+
+@pytest.mark.parametrize(("registration", "limit"), [("75 um", "5 %"), ("150 um", "15 %")])
+def test_a_broadside_pair_under_wide_registration_is_certified_and_right(registration: str, limit: str) -> None:
+    """The traces of 102 um lie up to four widths apart; mean and deviation are those of the solver on every coupon."""
+    text = (SCENARIOS / "ferry-beacon-6-layer.toml").read_text(encoding="utf-8")
+    scenario = parse(text.replace('tolerance = "50 um"', f'tolerance = "{registration}"')
+                     .replace('limit   = "5 %"', f'limit = "{limit}"'))
+    prepared = ready(scenario, scenario.lines[1])
+    draws = sample(scenario)
+    predicted = predict_line(prepared, draws, chance=np.random.default_rng(1))
+    solved = prepared.impedance(prepared.section(draws))
+    assert predicted.certificate.certified
+    assert np.array_equal(inside(predicted, predicted.impedance), inside(predicted, solved))
+    error = predicted.predictor.impedance(draws.germ) - solved
+    assert np.sqrt(np.mean(error**2)) < 0.005 * np.std(solved)
+    assert np.mean(error) == pytest.approx(0.0, abs=0.002 * float(np.std(solved)))

@@ -25,6 +25,7 @@ WIDER = 1.25  # the box over that span
 LEAST_OF_LOW_END = 0.5  # what a low end above nought keeps at least when the box is made wider
 LEAST_OF_NOMINAL = 0.05  # where the low end is not above nought itself
 GATHERED = 0.35  # deviation of training runs over half the width of the box: 1.3 of that of a normal law
+OFF_MIDDLE = 0.15  # of the box: where the directions of the coordinates are found
 SMALL_STEP = 1e-4  # of the box, for derivatives
 DEPENDENT = 1e-4  # of a direction's length that must be its own
 FARTHEST = 2.0  # coordinates are held within, far outside every draw of a section that can exist
@@ -149,9 +150,15 @@ def gathered(process: Process, columns: tuple[int, ...], shares: FloatArray) -> 
 
 
 def small_steps(dimensions: int) -> FloatArray:
-    """The middle of the box, and small steps from it to both sides in each variable: for `coordinates_of`."""
+    """A place near the middle of the box, and small steps from it to both sides in each variable.
+
+    For `coordinates_of`. The place is the middle in no variable, nor are two variables alike there: what the impedance
+    is even in (two registrations that make one distance) is level in the very middle.
+    """
+    order = np.arange(dimensions)
+    place = OFF_MIDDLE * (1.0 + order / max(dimensions, 1)) * (-1.0) ** order
     step = SMALL_STEP * np.eye(dimensions)
-    return np.concatenate([np.zeros((1, dimensions)), step, -step])
+    return np.asarray(place + np.concatenate([np.zeros((1, dimensions)), step, -step]), dtype=np.float64)
 
 
 @dataclass(frozen=True, slots=True)
