@@ -38,6 +38,7 @@ class Outcome:
     """What came of a task: a result, or a message why there is none.
 
     lasting : the same would come of it again; what is not lasting is tried anew by the next sweep.
+    bad_input : the scenario could not be read, and nothing was computed.
     trace : where a defect of the program arose.  from_cache (solver runs), seconds, of_processor [s], worker : for
     the log only.
     """
@@ -45,6 +46,7 @@ class Outcome:
     result: Mapping[str, Any] | None
     message: str = ""
     lasting: bool = True
+    bad_input: bool = False
     trace: str = ""
     from_cache: int = 0
     seconds: float = 0.0
