@@ -176,7 +176,7 @@ def test_drivers_of_a_predicted_line_are_the_closed_form_ones() -> None:
 
 
 def test_indices_keep_the_order_that_holds_exactly() -> None:
-    """Of a sum first order and total are the same, 1 and 0 here: estimates lie to either side, what is told does not."""
+    """Of a sum first order and total are the same, 1 and 0 here: estimates lie to either side, those told do not."""
     model = Model(("one", "other"), germ_itself, lambda x: 50.0 + x[:, 0] + 1e-4 * x[:, 1], np.eye(2))
     for seed in range(8):
         for driver in rank_drivers(model, chance=np.random.default_rng(seed), with_shapley=False):
