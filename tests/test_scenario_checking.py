@@ -109,7 +109,7 @@ ONE_MISTAKE = [
     ('layer = "L2": must be a layer with use = "signal"; this one is a plane', ('layer = "L3"', 'layer = "L2"')),
     ('width = "20 um": must be above 28.6667 um, which an etch factor of 3 takes off the crest of 43 um copper',
      ('width = "180 um"', 'width = "20 um"')),
-    ('width = "19 mm": must be up to 12000 um, 400 times what "P1" is thick',
+    ('width = "19 mm": must be up to 6000 um, 200 times what "P1" is thick',
      ('width = "180 um"', 'width = "19 mm"'), ('"100 um"', '"30 um"')),
     ('width = "19 mm": must be up to 4000 um, 2000 times what "top mask" is thick over copper',
      ('width = "180 um"', 'width = "19 mm"'), ('over_copper = "15 um"', 'over_copper = "2 um"')),

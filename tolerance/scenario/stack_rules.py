@@ -12,9 +12,8 @@ from tolerance.scenario.stackup import LAMINATES, decided_foot, span
 from tolerance.scenario.tables import COPPER, MASK, Foot, Layer, Line
 from tolerance.units import write_quantity
 
-
 #: How many times wider than the laminate next to it, and than its copper or the mask on it, a trace may be.
-WIDEST_OVER_LAMINATE, WIDEST_OVER_COPPER = 400.0, 2000.0
+WIDEST_OVER_LAMINATE, WIDEST_OVER_COPPER = 200.0, 2000.0
 
 
 @dataclass(frozen=True, slots=True)

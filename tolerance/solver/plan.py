@@ -153,7 +153,7 @@ def edge_counts(
         length = float(edge.length[0])
         flat = min((float(np.abs(points[:, 1] - level).min()) for level in levels), default=np.inf)
         beside = [_way(points, there, float(other.length[0])) for other, there in outlines if other is not edge]
-        partner = min((_way(points, there, np.inf) for other, there in outlines
+        partner = min((_way(points, there, 0.0) for other, there in outlines
                        if other.name.split()[0] != edge.name.split()[0]), default=np.inf)
         breadth = length / max(min(flat, 0.5 * partner), length / LONGEST)
         counts[edge.name] = _counts(edge, length / max(min(flat, *beside), length / LONGEST), settings, breadth=breadth)
