@@ -45,7 +45,7 @@ class SolverSettings:
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """Nodes (unknowns, quadrature places) by edge name, image places, and nodes over the wavenumber.
+    """Node counts by edge name, image places, and nodes over the wavenumber.
 
     plane_wavenumbers : those for the currents in the planes.
     """
@@ -62,7 +62,7 @@ class Plan:
 
     def serving(self, other: Plan) -> Plan:
         """This plan with so many nodes on every edge that it serves sections of the other plan too."""
-        counts = {name: (max(own[0], more[0]), max(own[1], more[1]))
+        counts = {name: (max(own[0], more[0]), max(own[1], more[1]), max(own[2], more[2]))
                   for name, own in self.counts.items() for more in [other.counts.get(name, own)]}
         return replace(self, counts={**other.counts, **counts})
 
