@@ -252,6 +252,7 @@ def test_decisions_after_a_run_ask_the_solver_nothing(tmp_path: Path, monkeypatc
     again = center(scenario, Wishes(), coupons=COUPONS, cache=cache)
     assert center_json(again) == center_json(moved)
     assert moved.basis.from_cache == len(scenario.lines)  # the nominal sections
+    assert moved.basis.solver_runs <= before.record.solver_runs
     assert again.basis.from_cache == moved.basis.solver_runs
 
 
