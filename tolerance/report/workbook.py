@@ -48,6 +48,7 @@ if TYPE_CHECKING:
     from tolerance.scenario.tables import Scenario
 
 INK, FAIL, FAIL_FILL, HEAD_FILL, HAIRLINE = "1D2433", "A3184B", "F3D5DF", "DBE3EC", "B4BAC8"
+LARGEST_EXACT = 10**15  # a cell holds 15 digits
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 LONGEST_TEXT = 32_000  # letters that a cell takes, with some room
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
@@ -251,8 +252,10 @@ def _pieces(line: str) -> list[str]:
 
 
 def _put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
-    """Write one cell. Text stays text, also where it begins like a formula."""
+    """Write one cell. Text stays text, also where it begins like a formula; numbers of too many digits become text."""
     cell = sheet.cell(row=row, column=column)
+    if isinstance(value, int) and abs(value) > LARGEST_EXACT:
+        value = str(value)
     assert isinstance(cell, SheetCell)
     if isinstance(value, str):
         cell.value = clean_text(value)
