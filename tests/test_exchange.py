@@ -270,7 +270,7 @@ def test_the_commands_there_and_back(
     said = capsys.readouterr().out
     assert "Not taken: Tolerances!" in said
     assert "yield before" in said
-    assert load(tmp_path / "there" / "new.toml", allow=[tmp_path]).variations[2].tolerance == Amount(12e-6, False)
+    assert load(tmp_path / "there" / "new.toml").variations[2].tolerance == Amount(12e-6, False)
     assert command("take", "orchard.toml", reply, "--out", "there/new.toml", *options) == 2
     assert command("take", "orchard.toml", reply, "--json", *options) == 0
     answer = json.loads(capsys.readouterr().out)

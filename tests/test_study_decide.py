@@ -133,11 +133,12 @@ def test_a_moved_thickness_yields_what_a_run_of_it_yields(board: Scenario) -> No
     assert result.lines[1].best == result.lines[1].width, "the widths stay"
 
 
-def test_other_gaps_yield_what_a_run_of_them_yields(board: Scenario) -> None:
-    result = center(board, Wishes(gaps=(130e-6, 170e-6)), coupons=COUPONS)
-    alone = center(board, Wishes(), coupons=COUPONS)
+def test_other_gaps_yield_what_a_run_of_them_yields() -> None:
+    close = changed(BOARD, ('limit = "10 %"', 'limit = "5 %"'))
+    result = center(parse(close), Wishes(gaps=(130e-6, 170e-6)), coupons=COUPONS)
+    alone = center(parse(close), Wishes(), coupons=COUPONS)
     for each in result.lines[1].gaps:
-        text = changed(BOARD, ('width = "100 um"\ngap = "150 um"',
+        text = changed(close, ('width = "100 um"\ngap = "150 um"',
                                f'width = "{each.width * 1e6:.9g} um"\ngap = "{each.gap * 1e6:.9g} um"'))
         known = run(parse(text), coupons=COUPONS)
         assert known.lines[1].nominal == pytest.approx(100.0, abs=0.01)

@@ -111,11 +111,9 @@ def test_what_stands_beside_or_below_a_scenario_is_read(path: str, ending: str, 
     assert load(written(folders, name + ending)).title == "Orchard gateway"
 
 
-@pytest.mark.parametrize("ending", [".toml", ".csv"])
 @pytest.mark.parametrize("path", OUTSIDE)
-def test_nothing_leads_out_of_the_folder_of_a_scenario_unless_allowed(path: str, ending: str, folders: Path) -> None:
-    name = path.format(there=folders).replace("base", "press") if ending == ".csv" else path.format(there=folders)
-    scenario = written(folders, name + ending)
+def test_no_table_is_read_outside_the_folder_of_a_scenario_unless_allowed(path: str, folders: Path) -> None:
+    scenario = written(folders, path.format(there=folders).replace("base", "press") + ".csv")
     with pytest.raises(ScenarioError) as told:
         load(scenario)
     assert len(told.value.problems) == 1
@@ -128,22 +126,42 @@ def test_nothing_leads_out_of_the_folder_of_a_scenario_unless_allowed(path: str,
 
 def test_an_allowed_folder_allows_no_other(folders: Path) -> None:
     with pytest.raises(ScenarioError, match="must stand beside the scenario"):
-        load(written(folders, "../base.toml"), allow=[folders / "library", folders / "board" / "data"])
+        load(written(folders, "../press.csv"), allow=[folders / "library", folders / "board" / "data"])
 
 
-def test_a_base_below_may_name_what_stands_in_the_folder_of_the_scenario(folders: Path) -> None:
-    (folders / "board" / "data" / "middle.toml").write_text('extends = "../common.toml"\n', encoding="utf-8")
-    (folders / "board" / "common.toml").write_text(BOARD, encoding="utf-8")
-    assert load(written(folders, "data/middle.toml")).title == "Orchard gateway"
-    (folders / "board" / "data" / "middle.toml").write_text('extends = "../../base.toml"\n', encoding="utf-8")
-    with pytest.raises(ScenarioError, match=r"^data/middle.toml: extends = .* must stand beside the scenario"):
-        load(written(folders, "data/middle.toml"))
+@pytest.mark.parametrize("path", OUTSIDE)
+def test_a_scenario_may_extend_one_that_stands_anywhere(path: str, folders: Path) -> None:
+    assert load(written(folders, path.format(there=folders) + ".toml")).title == "Orchard gateway"
+
+
+def test_nothing_is_told_of_what_stands_elsewhere_and_is_no_scenario(folders: Path) -> None:
+    (folders / "base.toml").write_text('[registry]\ntoken = "secret"\n', encoding="utf-8")
+    (folders / "library" / "base.toml").write_text('token = "secret"\n', encoding="utf-8")
+    for path in ("../base.toml", "../library/base.toml", "away/base.toml", "out.toml", str(folders / "base.toml")):
+        scenario = written(folders, path)
+        with pytest.raises(ScenarioError, match=r"^board.toml: extends = .*: must be a scenario; ") as told:
+            load(scenario)
+        assert "secret" not in str(told.value)
+        assert "token" not in str(told.value)
+        with pytest.raises(ScenarioError, match=r"unknown (key|table)"):
+            load(scenario, allow=[folders])
+
+
+def test_a_base_names_tables_beside_itself_and_beside_the_scenario(folders: Path) -> None:
+    (folders / "library" / "base.toml").write_text(MEASURED.replace("FILE", "press.csv"), encoding="utf-8")
+    assert load(written(folders, "../library/base.toml")).title == "Orchard gateway"
+    (folders / "board" / "press.csv").write_text(READINGS, encoding="utf-8")
+    (folders / "library" / "base.toml").write_text(MEASURED.replace("FILE", "../board/press.csv"), encoding="utf-8")
+    assert load(written(folders, "../library/base.toml")).title == "Orchard gateway"
+    (folders / "library" / "base.toml").write_text(MEASURED.replace("FILE", "../press.csv"), encoding="utf-8")
+    with pytest.raises(ScenarioError, match=r"^\.\./library/base.toml: .* must stand beside the scenario"):
+        load(written(folders, "../library/base.toml"))
 
 
 def test_every_command_that_reads_a_scenario_takes_the_folder(
     folders: Path, capsys: pytest.CaptureFixture[str],
 ) -> None:
-    path = written(folders, "../base.toml")
+    path = written(folders, "../press.csv")
     assert command("check", path, "--quiet") == 2
     assert command("check", path, "--quiet", "--allow", folders / "library", "--allow", folders) == 0
     for name in ["run", "check", "tighten", "center", "promise", "compare", "note", "ask", "take", "reconcile",

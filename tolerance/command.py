@@ -247,8 +247,10 @@ def _write_files(
     from tolerance.report.figures import page_jobs, run_pages
     from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
+    from tolerance.study.note import note
 
-    workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
+    workbook: Callable[[], Path] = partial(
+        write_workbook, result, scenario, folder / "tolerance.xlsx", note(scenario))
     figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
     written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
     remove_earlier(folder, written, job="run")

@@ -146,8 +146,8 @@ def _compare(options: argparse.Namespace) -> int:
 
 def _note(options: argparse.Namespace) -> int:
     from tolerance.report.decisions_json import note_json
-    from tolerance.report.decisions_terminal import note_text
     from tolerance.report.files import put_in_place
+    from tolerance.report.note_text import note_text
     from tolerance.scenario import load
     from tolerance.study.note import THICKNESS_CHANGE, WIDTH_CHANGE, Allowance, note
 

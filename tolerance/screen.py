@@ -69,7 +69,7 @@ def survive_narrow_encodings() -> None:
 def add_allow(parser: ArgumentParser) -> None:
     """The option for files that stand elsewhere."""
     parser.add_argument("--allow", type=Path, action="append", default=[], metavar="DIR",
-                        help="a folder in which, too, files may stand that the scenario names (may be repeated)")
+                        help="a folder in which tables of readings may stand, too (may be repeated)")
 
 
 def check_folder(path: Path | None) -> None:

@@ -102,8 +102,6 @@ def _take(options: argparse.Namespace) -> int:
         from tolerance.report.talk_terminal import print_taken
 
         print_taken(taken, console(), written)
-        if written is not None and not options.file.resolve().is_relative_to(written.parent.resolve()):
-            console().print(f"It extends a scenario in another folder: give it --allow {options.file.parent}.")
     records = [run.record for run in (taken.before, taken.after) if run is not None]
     tell_from_cache(options, sum(record.from_cache for record in records),
                     sum(record.solver_runs for record in records))

@@ -15,6 +15,8 @@ from tolerance.scenario.toml_text import MOST_ITEMS, read_toml
 from tolerance.scenario.trust import Trust
 
 _LARGEST = 500_000  # bytes, with all it extends; a scenario is a short text
+_NO_SCENARIO = ("must be a scenario; what stands there has tables or keys of its own, and nothing is told of it "
+                "(to be told, allow its folder: --allow DIR)")
 _LONGEST_CHAIN = 20  # scenarios that extend each other
 _NOT_TEXT = ((b"PK\x03\x04", "is a workbook or an archive"), (b"\xd0\xcf\x11\xe0", "is an office document"),
              (b"%PDF", "is a PDF"), (b"\x89PNG", "is a picture"), (b"\x1f\x8b", "is an archive"))
@@ -23,7 +25,7 @@ _NOT_TEXT = ((b"PK\x03\x04", "is a workbook or an archive"), (b"\xd0\xcf\x11\xe0
 def read_document(path: Path, *, allow: Iterable[Path] = ()) -> tuple[Document, list[Finding]]:
     """The scenario at `path` merged with all it extends, and what is wrong with the outlines.
 
-    allow : folders besides its own in which the files may stand that it names.
+    allow : folders in which tables of readings may stand, besides those of the scenarios that name them.
     Raises InputError when the file cannot be read, ScenarioError when it, or one it extends, is not UTF-8 TOML.
     """
     try:
@@ -43,7 +45,10 @@ def document_of(
     findings: list[Finding] = []
     place = Place(depth=0, line=0, number=0, file=name, folder=folder, trust=Trust.around(folder, allow))
     while True:
+        before = len(findings)
         document = _parsed(content, place, findings)
+        if chain and len(findings) > before and place.trust.why_not(folder, place.file):
+            raise _refused(chain[-1], _NO_SCENARIO, findings[:before])
         chain.append(document)
         findings += _format_findings(document)
         if "extends" not in document.top.values:
@@ -132,13 +137,9 @@ def _base_path(document: Document, seen: list[Path], findings: list[Finding]) ->
     value = document.top.values["extends"]
     if not isinstance(value, str) or not value.strip() or "\0" in value:
         raise _refused(document, "must be the path of another scenario, relative to this one", findings)
-    place = document.top.place
-    outside = place.trust.why_not(place.folder, value)
-    if outside:
-        raise _refused(document, outside, findings)
     if len(seen) > _LONGEST_CHAIN:
         raise _refused(document, f"must not go on: more than {_LONGEST_CHAIN} scenarios extend each other", findings)
-    base = place.folder / value
+    base = document.top.place.folder / value
     if _resolved(base) in seen:
         raise _refused(document, "must not lead back to a scenario that extends this one, or to itself", findings)
     return base

@@ -1,7 +1,8 @@
-"""Which files a scenario may name: those in the folder of the scenario that was asked for, and below it.
+"""Which tables a scenario may name: those in its own folder, or in that of the scenario that was asked for, and below.
 
-A scenario may come from a stranger, and what it names is read, and in part told. So a path may not lead out of that
-folder, neither by `..`, nor from the root, nor by a link, unless whoever runs it allows another folder.
+A scenario may come from a stranger, and a table that it names is read, and in part told. So its path may not lead out
+of these folders, neither by `..`, nor from the root, nor by a link, unless whoever runs it allows another folder. What
+it extends may stand anywhere: only a scenario is accepted there, and of anything else nothing is told.
 """
 
 from __future__ import annotations
@@ -15,7 +16,7 @@ _OPTION = "to read from another folder, allow it: --allow DIR"
 
 @dataclass(frozen=True, slots=True)
 class Trust:
-    """Folders, resolved: that of the scenario, and those allowed besides."""
+    """Folders, resolved: that of the scenario that was asked for, and those allowed besides."""
 
     own: Path
     allowed: tuple[Path, ...] = ()
@@ -36,7 +37,7 @@ class Trust:
         windows = PureWindowsPath(name)
         if PurePosixPath(name).is_absolute() or windows.drive or windows.root:
             return f"must stand beside the scenario: a relative path, in its folder or below ({_OPTION})"
-        if target.is_relative_to(self.own):
+        if target.is_relative_to(self.own) or target.is_relative_to(_resolved(folder)):
             return ""
         by = "" if ".." in windows.parts else "; it is a link to somewhere else"
         return f"must stand beside the scenario, in its folder or below{by} ({_OPTION})"

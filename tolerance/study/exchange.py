@@ -104,7 +104,7 @@ def _checked(
     while amendment.changes:
         try:
             text = _text(scenario, amendment, out, reply)
-            allow = (Path(scenario.source).parent, *map(Path, scenario.allowed))
+            allow = map(Path, scenario.allowed)
             return amendment, parse(text, name=out.name, folder=out.parent, allow=allow), notes
         except ScenarioError as error:
             refused = {(problem.table, problem.entry) for problem in error.problems}
