@@ -58,7 +58,7 @@ def fuzz(reader: str, folder: Path, seconds: float, slowest: int) -> None:
     words = sorted({word for text in texts for word in text if 2 < len(word) < 20 and word.isascii()
                     and word.isprintable()})
     quoted = (word.replace("\\", "\\\\").replace('"', '\\"') for word in words)
-    (folder / "words").write_text("".join(f'"{word}"\n' for word in quoted), encoding="ascii")
+    (folder / "words").write_text('"P1 um"\n' + "".join(f'"{word}"\n' for word in quoted), encoding="ascii")
     tally = Tally(reader, work, folder / f"{reader}.json")
     atheris.Setup([sys.argv[0], str(corpus), f"-max_total_time={int(seconds)}", "-max_len=20000",
                    f"-timeout={slowest}", f"-rss_limit_mb={MOST_MEMORY}", f"-dict={folder / 'words'}",
@@ -84,7 +84,8 @@ def main() -> None:
                  "--slowest", str(options.slowest)]
         done = subprocess.run([sys.executable, "-m", "tests.benchmarks.fuzz", *words], capture_output=True, text=True,
                               check=False)
-        noted = json.loads((folder / f"{reader}.json").read_text(encoding="ascii"))
+        note = folder / f"{reader}.json"
+        noted = json.loads(note.read_text(encoding="ascii")) if note.exists() else {}
         total.update({key: noted.get(key, 0) for key in (fuzzing.ACCEPTED, fuzzing.REFUSED, "seconds")})
         ended = "" if done.returncode == 0 else f" BROKEN, see {folder}\n{done.stderr[-2000:]}"
         print(f"{reader}: {noted}{ended}", flush=True)
