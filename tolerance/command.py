@@ -35,11 +35,12 @@ if TYPE_CHECKING:
     from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
+    from tolerance.scenario.entered import EnteredFile
 
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
-LOGGED = ("run", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
+LOGGED = ("run", "sweep", "again", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
@@ -195,10 +196,12 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
 
 def _run(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
+    from tolerance.scenario.entered import entered_files
 
     check_folder(options.out)
     scenario = load(options.file, allow=options.allow)
     _check_numbers(options, in_lots=scenario.has_levels)
+    entered = entered_files(options.file, allow=options.allow)
     from tolerance.study.run import run
 
     cache = cache_for(options)
@@ -207,7 +210,8 @@ def _run(options: argparse.Namespace) -> int:
                      cache=cache)
         options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
-        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
+        record = partial(_write_record, result, scenario, entered, direct=options.direct)
+        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell, record)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -241,20 +245,33 @@ def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
 
 def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
-    tell: Callable[[str, int, int], None],
+    tell: Callable[[str, int, int], None], record: Callable[[Path], Path],
 ) -> list[Path]:
     from tolerance.cores import on_all_cores
     from tolerance.report.figures import page_jobs, run_pages
-    from tolerance.report.files import remove_earlier
+    from tolerance.report.files import remove_earlier, remove_left_over
     from tolerance.report.workbook import write_workbook
     from tolerance.study.note import note
 
     workbook: Callable[[], Path] = partial(
         write_workbook, result, scenario, folder / "tolerance.xlsx", note(scenario))
     figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
-    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    try:
+        written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    except BaseException:
+        remove_left_over(folder)
+        raise
+    written.append(record(folder))
     remove_earlier(folder, written, job="run")
     return written
+
+
+def _write_record(
+    result: RunResult, scenario: Scenario, entered: tuple[EnteredFile, ...], folder: Path, *, direct: int,
+) -> Path:
+    from tolerance.records.record import write_record
+
+    return write_record(result, scenario, entered, folder, direct=direct)
 
 
 def _new(options: argparse.Namespace) -> int:
