@@ -150,7 +150,7 @@ def test_everything_of_a_section_enters_the_key() -> None:
     changed_ones = [replace(section(), **{name: value}) for name, value in changes_of(section())]  # type: ignore[arg-type]
     assert len(changed_ones) == len(fields(Section))
     entering: list[object] = [(one, plan, None, 1) for one in (section(), *changed_ones)]
-    entering += [(section(), replace(plan, counts={**plan.counts, "foot": (10, 20)}), None, 1),
+    entering += [(section(), replace(plan, counts={**plan.counts, "foot": (10, 20, 10)}), None, 1),
                  (section(), replace(plan, settings=SolverSettings(copper_nodes=10)), None, 1),
                  (section(), plan, 1e9, 1), (section(), plan, None, -1), (section().rows(slice(0, 2)), plan, None, 1)]
     assert len({key_of(one) for one in entering}) == len(entering)
@@ -252,6 +252,7 @@ def test_decisions_after_a_run_ask_the_solver_nothing(tmp_path: Path, monkeypatc
     again = center(scenario, Wishes(), coupons=COUPONS, cache=cache)
     assert center_json(again) == center_json(moved)
     assert moved.basis.from_cache == len(scenario.lines)  # the nominal sections
+    assert moved.basis.solver_runs <= before.record.solver_runs
     assert again.basis.from_cache == moved.basis.solver_runs
 
 
@@ -309,6 +310,14 @@ def test_where_the_users_cache_is(tmp_path: Path, monkeypatch: pytest.MonkeyPatc
     assert found.cache.folder.parts[-2:] == ("tolerance", "solved-sections")
     if sys.platform.startswith("linux"):  # freedesktop.org, XDG Base Directory Specification
         assert found.cache.folder.parent.parent == tmp_path
+
+
+def test_a_user_without_a_home_has_no_cache(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.delenv(solved.FOLDER_VARIABLE)
+    monkeypatch.setattr("platformdirs.user_cache_path", lambda *_, **__: Path("~") / ".cache" / "tolerance")
+    monkeypatch.chdir(tmp_path)
+    assert user_cache() is None
+    assert list(tmp_path.iterdir()) == []
 
 
 @pytest.fixture
