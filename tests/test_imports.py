@@ -29,11 +29,11 @@ ROWS: list[list[str]] = [
     ["statistics"],
     ["decisions"],
     ["nominal", "results", "fitted", "decided", "pictures"],
-    ["exchanged", "reconciled"],
+    ["exchanged", "reconciled", "paged"],
     ["study"],
     ["report"],
     ["screen"],
-    ["decision_commands", "talk_commands"],
+    ["decision_commands", "talk_commands", "page_command"],
     ["command"],
     ["__main__"],
 ]

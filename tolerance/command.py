@@ -14,11 +14,11 @@ from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
+from tolerance.page_command import add_page, write_the_page
 from tolerance.screen import console, progress
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
-    from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
 
@@ -71,6 +71,7 @@ def _parser() -> argparse.ArgumentParser:
     check.set_defaults(command=_check)
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
+    add_page(commands, _check_numbers)
     add_talk(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
@@ -91,6 +92,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--json", action="store_true",
                      help="the result as one JSON object on standard output; no files unless --out is given")
     run.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the figures")
+    run.add_argument("--page", action="store_true", help="also write page.html, which can be moved: see `page`")
     run.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     run.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     run.add_argument("--direct", type=int, default=0, metavar="N",
@@ -166,12 +168,14 @@ def _run(options: argparse.Namespace) -> int:
 
     scenario = load(options.file)
     _check_numbers(options, in_lots=scenario.has_levels)
+    if options.page and options.json and options.out is None:
+        raise InputError("--page: with --json only where --out says where it goes")
     from tolerance.study.run import run
 
     with progress(quiet=options.quiet) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
-        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell)
+        written = [] if folder is None else _write_files(result, scenario, folder, options, tell)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -203,7 +207,7 @@ def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
 
 
 def _write_files(
-    result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
+    result: RunResult, scenario: Scenario, folder: Path, options: argparse.Namespace,
     tell: Callable[[str, int, int], None],
 ) -> list[Path]:
     from tolerance.report.figures import write_figures
@@ -212,8 +216,10 @@ def _write_files(
 
     tell("writing the workbook", 0, 1)
     workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell, figure_format=figure_format)
-    remove_earlier(folder, written := [workbook, *figures], job="run")
+    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell,
+                            figure_format=options.figures)
+    pages = [write_the_page(scenario, result, folder, tell)] if options.page else []
+    remove_earlier(folder, written := [workbook, *figures, *pages], job="run")
     return written
 
 
