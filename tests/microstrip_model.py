@@ -10,6 +10,8 @@ expansion of degree 5 whose largest error is 4e-6 ohm; limits 45 and 55 ohm.
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from tolerance.arrays import FloatArray
@@ -33,7 +35,7 @@ def impedance(inputs: FloatArray) -> FloatArray:
     height, width, thickness = one + two, drawn - etch, foil + plating
     dk = height / (one / dk_one + two / dk_two)
     u, t = width / height, thickness / height
-    wider = t / np.pi * np.log1p(4.0 * np.e / (t / np.tanh(np.sqrt(6.517 * u)) ** 2))
+    wider = t / np.pi * np.log1p(4.0 * math.e / (t / np.tanh(np.sqrt(6.517 * u)) ** 2))
     u = u + 0.5 * (1.0 + 1.0 / np.cosh(np.sqrt(dk - 1.0))) * wider
     f = 6.0 + (2.0 * np.pi - 6.0) * np.exp(-((30.666 / u) ** 0.7528))
     in_air = 376.730313668 / (2.0 * np.pi) * np.log(f / u + np.sqrt(1.0 + 4.0 / u**2))

@@ -18,7 +18,8 @@ PACKAGE = Path(__file__).parents[1] / "tolerance"
 #: The rooms from first to last step; what shares a row may import each other only inside the same room.
 ROWS: list[list[str]] = [
     ["errors", "arrays", "hypertext"],
-    ["units", "laminate"],
+    ["cores"],
+    ["units", "laminate", "cache"],
     ["measurements"],
     ["scenario"],
     ["process", "sheet"],
@@ -29,11 +30,14 @@ ROWS: list[list[str]] = [
     ["statistics"],
     ["decisions"],
     ["nominal", "results", "fitted", "decided", "pictures"],
-    ["exchanged", "reconciled", "paged"],
+    ["exchanged", "reconciled", "swept", "paged"],
     ["study"],
     ["report"],
+    ["sweeps"],
+    ["logbook"],
     ["screen"],
     ["decision_commands", "talk_commands", "page_command"],
+    ["many_commands"],
     ["command"],
     ["__main__"],
 ]

@@ -78,7 +78,7 @@ def test_every_scenario_is_in_the_table() -> None:
 
 @pytest.mark.parametrize("words", [[word] for word in (
     "run", "check", "fit", "new", "presets", "schema", "tighten", "center", "promise", "compare", "note", "ask",
-    "take", "reconcile")])
+    "take", "reconcile", "sweep")])
 def test_every_option_is_told(words: list[str], capsys: pytest.CaptureFixture[str]) -> None:
     from tolerance.command import main
 

@@ -17,6 +17,7 @@ from openpyxl import Workbook
 from tests.scenario_texts import HEAD, LINES, SIX_LAYERS
 from tolerance.arrays import FloatArray
 from tolerance.command import main
+from tolerance.cores import silent
 from tolerance.errors import InputError
 from tolerance.process.draws import ProcessDraws, process_of
 from tolerance.reconciled import Reconciled
@@ -31,7 +32,6 @@ from tolerance.statistics.reconcile import (
     single_causes,
     verdict_of,
 )
-from tolerance.study.cores import silent
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
 from tolerance.study.reconcile import FittedLines, fit_lines, reconcile, reconciled

@@ -125,5 +125,5 @@ def test_schema_and_checks_refuse_the_same(changes: tuple[str, str]) -> None:
 def test_schema_and_models_have_the_same_keys() -> None:
     definitions: dict[str, Any] = json_schema()["$defs"]
     assert set(definitions) == {
-        "layers", "lines", "variations", "correlations", "offers", "evaluation", "test", "report"}
+        "layers", "lines", "variations", "correlations", "offers", "sweep", "evaluation", "test", "report"}
     assert definitions["lines"]["additionalProperties"] is False

@@ -24,15 +24,19 @@ if TYPE_CHECKING:
     from tolerance.study.note import note as note
     from tolerance.study.reconcile import reconcile as reconcile
     from tolerance.study.run import run as run
+    from tolerance.study.solved import user_cache as user_cache
+    from tolerance.sweeps.sweep import sweep as sweep
 
-__all__ = ["ask", "center", "check", "compare", "load", "note", "promise", "reconcile", "run", "take", "tighten"]
+__all__ = ["ask", "center", "check", "compare", "load", "note", "promise", "reconcile", "run", "sweep", "take",
+           "tighten", "user_cache"]
 
 _HOMES = {
     "load": "tolerance.scenario", "check": "tolerance.study.check", "run": "tolerance.study.run",
     "tighten": "tolerance.study.decide", "promise": "tolerance.study.decide", "compare": "tolerance.study.decide",
     "center": "tolerance.study.center", "note": "tolerance.study.note",
     "ask": "tolerance.study.exchange", "take": "tolerance.study.exchange",
-    "reconcile": "tolerance.study.reconcile",
+    "reconcile": "tolerance.study.reconcile", "sweep": "tolerance.sweeps.sweep",
+    "user_cache": "tolerance.study.solved",
 }
 
 

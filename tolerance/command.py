@@ -9,32 +9,42 @@ import argparse
 import os
 import sys
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError
+from tolerance.logbook import Logbook
+from tolerance.many_commands import add_many
 from tolerance.page_command import add_page, write_the_page
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
+    from tolerance.study.solved import SolvedCache
 
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
+LOGGED = ("run", "page", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
     """Run one command and exit with its status."""
     options = _parser().parse_args(arguments)
+    log = None
     try:
+        log = options.logbook = Logbook(getattr(options, "log", None), _complain)
+        log.write("began", command=sys.argv[1:] if arguments is None else list(arguments), cores=os.cpu_count())
         status = options.command(options)
         sys.stdout.flush()
     except ToleranceError as problem:
-        print(problem, file=sys.stderr)
+        _complain(str(problem))
+        if log is not None:
+            log.write("failed", message=str(problem))
         status = problem.exit_status
     except BrokenPipeError:  # whoever read our output has stopped reading
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
@@ -43,9 +53,16 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
         print(f"could not be finished: {problem}", file=sys.stderr)
         status = UNFINISHED
     except KeyboardInterrupt:
-        print("interrupted", file=sys.stderr)
+        _complain("interrupted")
         status = INTERRUPTED
+    if log is not None:
+        log.write("ended", status=status)
+        log.close()
     sys.exit(status)
+
+
+def _complain(words: str) -> None:
+    print(words, file=sys.stderr)
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -73,6 +90,7 @@ def _parser() -> argparse.ArgumentParser:
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
     add_page(commands, _check_numbers)
     add_talk(commands)
+    add_many(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
     new.add_argument("file", type=Path, metavar="FILE", help="where to write it; an existing file is left alone")
     new.add_argument("--quiet", action="store_true", help="do not say what was written")
@@ -83,6 +101,9 @@ def _parser() -> argparse.ArgumentParser:
     presets.set_defaults(command=_presets)
     schema = commands.add_parser("schema", help="print the JSON Schema of scenario files, for editors")
     schema.set_defaults(command=_schema)
+    for name in LOGGED:
+        commands.choices[name].add_argument("--log", type=Path, metavar="FILE",
+                                            help="add what is done and how long it takes, a JSON object a line")
     return parser
 
 
@@ -98,6 +119,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--direct", type=int, default=0, metavar="N",
                      help="also solve N coupons of the sample themselves and report the difference")
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
+    add_fresh(run)
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     run.set_defaults(command=_run)
 
@@ -155,7 +177,7 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
     from tolerance.report.files import remove_earlier
     from tolerance.study.picture import pictures
 
-    with progress(quiet=options.quiet) as tell:
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         found = pictures(scenario, on_progress=tell)
         written = write_pictures(found, folder, scenario.report.lengths, figure_format=options.figures,
                                  on_progress=tell)
@@ -172,10 +194,14 @@ def _run(options: argparse.Namespace) -> int:
         raise InputError("--page: with --json only where --out says where it goes")
     from tolerance.study.run import run
 
-    with progress(quiet=options.quiet) as tell:
-        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        result = run(scenario, coupons=options.coupons, seed=options.seed, direct=options.direct, on_progress=tell,
+                     cache=cache)
+        options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
-        written = [] if folder is None else _write_files(result, scenario, folder, options, tell)
+        written = [] if folder is None else _write_files(result, scenario, folder, options, tell,
+                                                             cache)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -187,6 +213,7 @@ def _run(options: argparse.Namespace) -> int:
         print_run(result, screen)
         if written:
             screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+    tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
 
@@ -208,18 +235,18 @@ def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
 
 def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, options: argparse.Namespace,
-    tell: Callable[[str, int, int], None],
+    tell: Callable[[str, int, int], None], cache: SolvedCache | None,
 ) -> list[Path]:
-    from tolerance.report.figures import write_figures
+    from tolerance.cores import on_all_cores
+    from tolerance.report.figures import page_jobs, run_pages
     from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
 
-    tell("writing the workbook", 0, 1)
-    workbook = write_workbook(result, scenario, folder / "tolerance.xlsx")
-    figures = write_figures(result, folder, scenario.report.lengths, on_progress=tell,
-                            figure_format=options.figures)
-    pages = [write_the_page(scenario, result, folder, tell)] if options.page else []
-    remove_earlier(folder, written := [workbook, *figures, *pages], job="run")
+    workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
+    figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=options.figures)
+    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    written += [write_the_page(scenario, result, folder, tell, cache)] if options.page else []
+    remove_earlier(folder, written, job="run")
     return written
 
 

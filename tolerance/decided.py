@@ -19,7 +19,10 @@ from tolerance.statistics.estimates import Interval as Interval
 
 @dataclass(frozen=True, slots=True)
 class Basis:
-    """What a decision rests on. `aim`: which yield must reach `target_yield`, of each line or of all together."""
+    """What a decision rests on. `aim`: which yield must reach `target_yield`, of each line or of all together.
+
+    from_cache : of the solver runs, those that an earlier command had done.
+    """
 
     title: str
     seed: int
@@ -28,6 +31,7 @@ class Basis:
     aim: Aim
     line_names: tuple[str, ...]
     solver_runs: int
+    from_cache: int = 0
 
     def reaches(self, yields: Judged) -> bool:
         return yields.aimed(self.aim) >= self.target_yield
@@ -265,6 +269,7 @@ class CompareResult:
     aim: Aim
     scenarios: tuple[Compared, ...]
     solver_runs: int
+    from_cache: int = 0  # of the solver runs
 
     @property
     def table(self) -> pd.DataFrame:

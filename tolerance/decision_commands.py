@@ -9,7 +9,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.report.decisions_files import Decision
@@ -67,6 +67,7 @@ def _add_options(
     parser.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_fresh(parser)
     parser.set_defaults(command=command, direct=0, check_numbers=check_numbers)
 
 
@@ -81,10 +82,12 @@ def _tighten(options: argparse.Namespace) -> int:
     from tolerance.study.decide import tighten
 
     scenario = _load(options, options.file)
-    with progress(quiet=options.quiet) as tell:
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = tighten(scenario, coupons=options.coupons, seed=options.seed, together=options.together,
-                         on_progress=tell)
+                         on_progress=tell, cache=cache)
     _tell(options, result, scenario, tighten_json(result), lambda: print_tighten(result, console()))
+    tell_from_cache(options, result.basis.from_cache, result.basis.solver_runs)
     return 0
 
 
@@ -101,10 +104,12 @@ def _center(options: argparse.Namespace) -> int:
         centring_error=_share("--centring-error", options.centring_error, CENTRING_ERROR), gaps=gaps,
         together=options.together,
     )
-    with progress(quiet=options.quiet) as tell:
-        result = center(scenario, wishes, coupons=options.coupons, seed=options.seed, on_progress=tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        result = center(scenario, wishes, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     lengths = scenario.report.lengths
     _tell(options, result, scenario, center_json(result), lambda: print_center(result, lengths, console()))
+    tell_from_cache(options, result.basis.from_cache, result.basis.solver_runs)
     return 0
 
 
@@ -114,9 +119,11 @@ def _promise(options: argparse.Namespace) -> int:
     from tolerance.study.decide import promise
 
     scenario = _load(options, options.file)
-    with progress(quiet=options.quiet) as tell:
-        result = promise(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        result = promise(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     _tell(options, result, scenario, promise_json(result), lambda: print_promise(result, console()))
+    tell_from_cache(options, result.basis.from_cache, result.basis.solver_runs)
     return 0
 
 
@@ -126,10 +133,12 @@ def _compare(options: argparse.Namespace) -> int:
     from tolerance.study.decide import compare
 
     scenarios = [_load(options, file) for file in options.files]
-    with progress(quiet=options.quiet) as tell:
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = compare(scenarios, coupons=options.coupons, seed=options.seed, together=options.together,
-                         on_progress=tell)
+                         on_progress=tell, cache=cache)
     _tell(options, result, scenarios[0], compare_json(result), lambda: print_compare(result, console()))
+    tell_from_cache(options, result.from_cache, result.solver_runs)
     return 0
 
 

@@ -7,11 +7,12 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
+    from tolerance.study.solved import SolvedCache
 
 PAGE = "page.html"
 Checked = Callable[..., None]  # that --coupons and --seed may be what they are
@@ -25,6 +26,7 @@ def add_page(commands: argparse._SubParsersAction[argparse.ArgumentParser], chec
     page.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     page.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     page.add_argument("--quiet", action="store_true", help="do not say what was written")
+    add_fresh(page)
     page.set_defaults(command=lambda options: _page(options, checked), direct=0)
 
 
@@ -36,19 +38,23 @@ def _page(options: argparse.Namespace, checked: Checked) -> int:
     from tolerance.study.run import run
 
     folder = options.out or Path("out") / options.file.stem
-    with progress(quiet=options.quiet) as tell:
-        result = run(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell)
-        written = write_the_page(scenario, result, folder, tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        result = run(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
+        options.logbook.run(result)
+        written = write_the_page(scenario, result, folder, tell, cache)
     if not options.quiet:
         console().print(f"Written: {written}. Open it in a browser.", highlight=False)
+    tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return 0
 
 
 def write_the_page(
     scenario: Scenario, result: RunResult, folder: Path, tell: Callable[[str, int, int], None],
+    cache: SolvedCache | None,
 ) -> Path:
     """Fit what the page needs and write it to the folder."""
     from tolerance.report.page.document import write_page
     from tolerance.study.page import page
 
-    return write_page(page(scenario, result, on_progress=tell), folder / PAGE)
+    return write_page(page(scenario, result, on_progress=tell, cache=cache), folder / PAGE)

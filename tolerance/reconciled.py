@@ -124,6 +124,8 @@ class Reconciled:
     yields: tuple[LineYields, ...]
     pictures: tuple[LinePicture, ...]
     notes: tuple[str, ...] = ()
+    solver_runs: int = 0
+    from_cache: int = 0  # of the solver runs
 
     @property
     def line_table(self) -> pd.DataFrame:

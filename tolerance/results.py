@@ -197,6 +197,7 @@ class Record:
     solver_runs: int
     settings: Mapping[str, str]
     seconds: Mapping[str, float]  # per step; never in the JSON, which is the same for every run
+    from_cache: int = 0  # of the solver runs: solved by an earlier run; never in the JSON either
 
 
 @dataclass(frozen=True, slots=True)

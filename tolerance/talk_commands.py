@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError
-from tolerance.screen import console, progress
+from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.exchanged import Taken
@@ -47,6 +47,7 @@ def _add_common(parser: argparse.ArgumentParser, command: Callable[[argparse.Nam
     parser.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     parser.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_fresh(parser)
     parser.set_defaults(command=command)
 
 
@@ -60,8 +61,9 @@ def _ask(options: argparse.Namespace) -> int:
     from tolerance.report.request import write_request
     from tolerance.study.exchange import ask
 
-    with progress(quiet=options.quiet) as tell:
-        request = ask(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        request = ask(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
     if out is not None:
         write_request(request, out, hide_targets=options.hide == "targets")
     if options.json:
@@ -72,6 +74,7 @@ def _ask(options: argparse.Namespace) -> int:
         from tolerance.report.talk_terminal import print_request
 
         print_request(request, console(), out)
+    tell_from_cache(options, request.result.record.from_cache, request.result.record.solver_runs)
     return 0
 
 
@@ -85,8 +88,10 @@ def _take(options: argparse.Namespace) -> int:
     stands = options.out or answered_path(options.file)
     out = None if options.json and options.out is None else stands
     _must_be_new(out, ".toml")
-    with progress(quiet=options.quiet) as tell:
-        taken = take(scenario, options.reply, out=stands, coupons=options.coupons, seed=options.seed, on_progress=tell)
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        taken = take(scenario, options.reply, out=stands, coupons=options.coupons, seed=options.seed, on_progress=tell,
+                     cache=cache)
     written = _write_scenario(taken, out)
     if options.json:
         from tolerance.report.talk_json import taken_json
@@ -96,6 +101,9 @@ def _take(options: argparse.Namespace) -> int:
         from tolerance.report.talk_terminal import print_taken
 
         print_taken(taken, console(), written)
+    records = [run.record for run in (taken.before, taken.after) if run is not None]
+    tell_from_cache(options, sum(record.from_cache for record in records),
+                    sum(record.solver_runs for record in records))
     return 0
 
 
@@ -107,9 +115,11 @@ def _reconcile(options: argparse.Namespace) -> int:
     repeatability = _resistance(options.repeatability)
     from tolerance.study.reconcile import reconcile
 
-    with progress(quiet=options.quiet) as tell:
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = reconcile(scenario, options.measured, sections=options.sections, repeatability=repeatability,
-                           sheet=options.sheet, coupons=options.coupons, seed=options.seed, on_progress=tell)
+                           sheet=options.sheet, coupons=options.coupons, seed=options.seed, on_progress=tell,
+                           cache=cache)
     folder = options.out or (None if options.json else Path("out") / options.file.stem)
     written = None
     if folder is not None:
@@ -124,6 +134,7 @@ def _reconcile(options: argparse.Namespace) -> int:
         from tolerance.report.reconcile_terminal import print_reconciled
 
         print_reconciled(result, scenario.report.lengths, console(), written)
+    tell_from_cache(options, result.from_cache, result.solver_runs)
     return 0
 
 

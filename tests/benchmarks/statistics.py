@@ -17,6 +17,7 @@ from pathlib import Path
 import numpy as np
 from scipy.special import ndtri
 
+from tests.benchmarks.others import chaos_and_indices, sampled_indices
 from tests.process_examples import predictor_of, process, variable
 from tolerance.process.draws import draw_process, process_of, sobol_uniforms
 from tolerance.process.values import ProcessValues
@@ -73,6 +74,16 @@ def fit_and_indices() -> None:
     indices = best_of(lambda: sobol_indices(model_of(predictor), chance=np.random.default_rng(1)))
     print(f"eight inputs: fit of {predictor.polynomial.terms} terms to 60 runs {1e3 * fitted:.0f} ms, "
           f"indices (8 x 2048 x 10 points) {1e3 * indices:.0f} ms")
+    work, totals = sampled_indices(predictor.polynomial.evaluate, at.count, 8 * 2048)
+    print(f"    beside it: SALib's own sample of the same size and its analysis of the same polynomial "
+          f"{1e3 * best_of(work, repeats=2):.0f} ms")
+    if (chaos := chaos_and_indices(coordinates, values)) is None:
+        print("    beside it: OpenTURNS is not installed")
+        return
+    work, chaotic = chaos
+    print(f"    beside it: OpenTURNS, polynomial chaos of degree 3 from the same runs and its indices "
+          f"{1e3 * best_of(work, repeats=2):.0f} ms; largest difference of a total index to SALib's "
+          f"{np.max(np.abs(chaotic - totals)):.4f}")
 
 
 def verdicts(file: str, name: str, coupons: int) -> None:

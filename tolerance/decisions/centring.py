@@ -7,8 +7,9 @@ yields that are told are those of the sample itself.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 from scipy.optimize import brentq, minimize_scalar
@@ -17,6 +18,8 @@ from scipy.special import log_ndtr, logsumexp, ndtr
 from tolerance.arrays import BoolArray, FloatArray
 from tolerance.decisions.board import LineModel
 from tolerance.decisions.interpolation import Path, path_of
+from tolerance.process.draws import Process
+from tolerance.process.laws import Law
 from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.statistics.estimates import Interval, interval_of
 
@@ -49,8 +52,11 @@ def path_of_moves(
     nominal : the nominal moves along, and relative tolerances with it; else only the centre.
     """
     laws = {name: law for name, law in laws_of(line.process).items() if name in names}
-    return path_of(line, germ, _nodes(low, high), lambda by: with_laws(
-        line.process, {name: moved(law, by, nominal=nominal) for name, law in laws.items()}))
+    return path_of(line, germ, _nodes(low, high), partial(_process_moved, line.process, laws, nominal))
+
+
+def _process_moved(process: Process, laws: Mapping[str, Law], nominal: bool, by: float) -> Process:
+    return with_laws(process, {name: moved(law, by, nominal=nominal) for name, law in laws.items()})
 
 
 def centre_of(paths: Sequence[Path]) -> Centre:

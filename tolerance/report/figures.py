@@ -5,7 +5,7 @@ PNG by default; SVG and PDF hold the same pages as curves and letters that a dra
 
 from __future__ import annotations
 
-from concurrent.futures import ThreadPoolExecutor
+from functools import partial
 from io import BytesIO
 from typing import TYPE_CHECKING, Any, Literal
 
@@ -15,6 +15,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.image import imsave
 
+from tolerance.cores import on_all_cores, silent
 from tolerance.report.files import file_names, put_in_place
 from tolerance.report.letters import fitted, missing_glyphs_allowed, width_of
 from tolerance.report.limit_plot import draw_yield_by_limit
@@ -30,6 +31,8 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from tolerance.results import Interval, LineResult, NestedYield, RunResult
+
+    Page = tuple[str, Callable[[], Figure]]  # its file name and what draws it
 
 FigureFormat = Literal["png", "svg", "pdf"]
 
@@ -54,25 +57,29 @@ def write_figures(result: RunResult, folder: Path, lengths: LengthUnit,
 
     Raises UnfinishedError where a file cannot be written.
     """
-    return save_pages(_pages(result, lengths), folder, figure_format=figure_format, on_progress=on_progress)
+    return save_pages(run_pages(result, lengths), folder, figure_format=figure_format, on_progress=on_progress)
 
 
-def save_pages(pages: Sequence[tuple[str, Callable[[], Figure]]], folder: Path, *, figure_format: FigureFormat,
+def save_pages(pages: Sequence[Page], folder: Path, *, figure_format: FigureFormat,
                on_progress: Callable[[str, int, int], None] | None = None) -> list[Path]:
     """Draw each page and write it under its name; see write_figures."""
-    jobs = []
-    with ThreadPoolExecutor(max_workers=1) as writer:  # packs one picture while the next is drawn
-        for number, (name, draw) in enumerate(pages, start=1):
-            page = draw()
-            content = _picture(page) if figure_format == "png" else _curves(page, figure_format, name)
-            jobs.append(writer.submit(put_in_place, folder / f"{name}.{figure_format}", content))
-            if on_progress is not None:
-                on_progress("figures", number, len(pages))
-        return [job.result() for job in jobs]
+    jobs = page_jobs(pages, folder, figure_format=figure_format)
+    return on_all_cores(lambda job: job(), jobs, "figures", on_progress or silent)
 
 
-def _pages(result: RunResult, lengths: LengthUnit) -> list[tuple[str, Callable[[], Figure]]]:
-    """File name and drawing of each page."""
+def page_jobs(pages: Sequence[Page], folder: Path, *, figure_format: FigureFormat) -> list[Callable[[], Path]]:
+    """For each page what draws it, writes it under its name and returns the path; see write_figures."""
+    return [partial(_save, name, draw, folder, figure_format) for name, draw in pages]
+
+
+def _save(name: str, draw: Callable[[], Figure], folder: Path, figure_format: FigureFormat) -> Path:
+    page = draw()
+    content = _picture(page) if figure_format == "png" else _curves(page, figure_format, name)
+    return put_in_place(folder / f"{name}.{figure_format}", content)
+
+
+def run_pages(result: RunResult, lengths: LengthUnit) -> list[Page]:
+    """The pages of a run, those of all lines first."""
     def page_of(line: LineResult) -> Callable[[], Figure]:
         return lambda: line_page(line, target_yield=result.target_yield, lengths=lengths)
 

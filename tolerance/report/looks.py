@@ -40,7 +40,7 @@ def our_looks() -> AbstractContextManager[None]:
     """A context in which figures get our looks; the settings of whoever calls come back after it."""
     return mpl.rc_context({
         "font.family": "sans-serif", "font.sans-serif": ["DejaVu Sans"], "font.size": MEDIUM,
-        "text.parse_math": False, "text.usetex": False, "axes.unicode_minus": False,
+        "text.hinting": "no_hinting", "text.parse_math": False, "text.usetex": False, "axes.unicode_minus": False,
         "figure.facecolor": PAPER, "savefig.facecolor": PAPER, "axes.facecolor": PAPER, "savefig.bbox": None,
         "axes.edgecolor": FAINT_INK, "axes.labelcolor": INK, "axes.linewidth": 0.8, "axes.spines.top": False,
         "axes.spines.right": False, "axes.grid": False, "axes.labelsize": MEDIUM, "axes.titlesize": LARGE,

@@ -139,22 +139,24 @@ def _summary_sheet(sheet: Worksheet, result: RunResult, scenario: Scenario) -> P
 
 def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     """Headings in row `top`, filterable, and the rows below them."""
+    widths = [_width(table, column) for column in range(len(table.columns))]
     for column, heading in enumerate(table.columns, start=1):
         cell = _put(sheet, top, column, heading.head)
         cell.font = _font(bold=True)
         cell.fill = PatternFill("solid", start_color=HEAD_FILL)
         cell.border = Border(bottom=Side(style="thin", color=HAIRLINE))
-        cell.alignment = _alignment(table, column - 1, heading=True)
-        sheet.column_dimensions[get_column_letter(column)].width = _width(table, column - 1)
-    sheet.row_dimensions[top].height = ROW * max(_head_rows(table, column) for column in range(len(table.columns)))
-    alignments = [_alignment(table, column) for column in range(len(table.columns))]
+        cell.alignment = _alignment(table, column - 1, widths[column - 1], heading=True)
+        sheet.column_dimensions[get_column_letter(column)].width = widths[column - 1]
+    sheet.row_dimensions[top].height = ROW * max(
+        _head_rows(heading, width) for heading, width in zip(table.columns, widths, strict=True))
+    alignments = [_alignment(table, column, width) for column, width in enumerate(widths)]
     for row, cells in enumerate(table.rows, start=top + 1):
         for column, (heading, value) in enumerate(zip(table.columns, cells, strict=True), start=1):
             cell = _put(sheet, row, column, value)
             cell.alignment = alignments[column - 1]
             if isinstance(value, int | float):
                 cell.number_format = number_format(heading)
-        lines = max(_rows_of(table, column, value) for column, value in enumerate(cells))
+        lines = max(_rows_of(value, width) for value, width in zip(cells, widths, strict=True))
         if lines > 1:
             sheet.row_dimensions[row].height = ROW * lines
     last = get_column_letter(len(table.columns))
@@ -162,13 +164,13 @@ def _write_table(sheet: Worksheet, table: Table, *, top: int) -> None:
     sheet.sheet_view.showGridLines = False
     sheet.page_setup.orientation = "landscape"
     sheet.page_setup.fitToHeight = 0
-    sheet.page_setup.fitToWidth = math.ceil(sum(_width(table, column) for column in range(len(table.columns))) / PAGE)
+    sheet.page_setup.fitToWidth = math.ceil(sum(widths) / PAGE)
     sheet.print_title_cols = "A:A"
     sheet.sheet_properties.pageSetUpPr = PageSetupProperties(fitToPage=True)
     sheet.print_title_rows = f"{top}:{top}"
 
 
-def _alignment(table: Table, column: int, *, heading: bool = False) -> Alignment:
+def _alignment(table: Table, column: int, width: float, *, heading: bool = False) -> Alignment:
     """Columns of numbers stand on the right, heading included; text on the left, away from the numbers before it.
 
     Headings, and texts too long for the widest column, go on in further rows of their cell.
@@ -176,7 +178,7 @@ def _alignment(table: Table, column: int, *, heading: bool = False) -> Alignment
     numbers = any(isinstance(row[column], int | float) for row in table.rows)
     numbers = numbers and not any(isinstance(row[column], str) for row in table.rows)
     return Alignment(vertical="top", horizontal="right" if numbers else "left", indent=0 if numbers else 1,
-                     wrap_text=heading or _width(table, column) >= WIDEST)
+                     wrap_text=heading or width >= WIDEST)
 
 
 def number_format(column: Column) -> str:
@@ -195,15 +197,14 @@ def _width(table: Table, column: int) -> float:
     return min(max(NARROWEST, len(heading.head) / 2.0, longest_word + 4, cells + 3), WIDEST)
 
 
-def _rows_of(table: Table, column: int, value: Cell) -> int:
-    """Rows that a text takes in its column; only the widest columns go on in further ones."""
-    width = _width(table, column)
+def _rows_of(value: Cell, width: float) -> int:
+    """Rows that a text takes in a column of that width; only the widest columns go on in further ones."""
     return len(textwrap.wrap(value, int(width) - 3)) if isinstance(value, str) and width >= WIDEST else 1
 
 
-def _head_rows(table: Table, column: int) -> int:
+def _head_rows(column: Column, width: float) -> int:
     """Rows that a heading takes when it is wrapped into its column."""
-    return len(textwrap.wrap(table.columns[column].head, max(int(_width(table, column)) - 3, 1)))
+    return len(textwrap.wrap(column.head, max(int(width) - 3, 1)))
 
 
 def _shown(column: Column, value: Cell) -> str:
@@ -230,6 +231,7 @@ def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
         ("title", result.title), ("scenario file", record.scenario_path), ("seed", result.seed),
         ("coupons", result.coupons), ("independent replicates", record.replicates),
         ("target yield", result.target_yield), ("field solver runs", record.solver_runs),
+        ("of them from the cache", record.from_cache),
         ("largest held-out error [ohm]", max((line.prediction.held_out_largest for line in result.lines), default=0.0)),
         *((f"setting: {name}", value) for name, value in record.settings.items()),
         *((f"version: {name}", value) for name, value in record.versions.items()),
@@ -259,7 +261,6 @@ def _put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
             cell.quotePrefix = True
     elif value is not None:
         cell.value = value
-    cell.font = _font()
     return cell
 
 

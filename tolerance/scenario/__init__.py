@@ -17,11 +17,12 @@ from tolerance.scenario.tables import (
     Offer,
     Report,
     Scenario,
+    Sweep,
     Variation,
 )
 
 __all__ = [
     "Amount", "Correlation", "Evaluation", "ImpedanceTest", "Layer", "LevelShares", "Line", "Offer", "Planes",
-    "Property", "Report", "Scenario", "Variation", "foot_side", "json_schema", "load", "members", "parse",
+    "Property", "Report", "Scenario", "Sweep", "Variation", "foot_side", "json_schema", "load", "members", "parse",
     "properties", "reference_planes", "starter_text", "write_starter",
 ]

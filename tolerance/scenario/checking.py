@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import math
 import os
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from tolerance.errors import ScenarioError
@@ -15,6 +17,7 @@ from tolerance.scenario.presets import Applied, with_preset
 from tolerance.scenario.reading import document_of, read_document
 from tolerance.scenario.readings import readings_of
 from tolerance.scenario.stack_rules import stack_findings
+from tolerance.scenario.sweeping import axes_of, swept_documents
 from tolerance.scenario.tables import FORMAT, Readings, Report, Scenario
 from tolerance.scenario.variation_rules import variation_findings
 
@@ -26,6 +29,34 @@ def load(path: str | os.PathLike[str]) -> Scenario:
     """
     document, findings = read_document(Path(path))
     return _checked(document, findings, source=str(path))
+
+
+@dataclass(frozen=True, slots=True)
+class Swept:
+    """One scenario of a sweep: values by the paths of their keys, and the scenario, checked when it is asked for."""
+
+    swept: dict[str, object]
+    source: str
+    _document: Document = field(repr=False)
+
+    def scenario(self) -> Scenario:
+        """Raises ScenarioError with every problem that these values bring."""
+        return _checked(self._document, [], source=self.source)
+
+
+def sweep_of(path: str | os.PathLike[str]) -> tuple[int, Iterator[Swept]]:
+    """How many scenarios the file stands for, and each of them: one without values where it has no [[sweep]].
+
+    Raises InputError when there is no such file to read; ScenarioError when its outline or its [[sweep]] is bad, with
+    every other problem of its text besides.
+    """
+    document, findings = read_document(Path(path))
+    drafts, _ = draft_tables(document)
+    axes, wrong = axes_of(document, drafts.sweep)
+    if findings or wrong or any(draft.model is None for draft in drafts.sweep):
+        _checked(document, findings, source=str(path))
+    count = math.prod(len(axis.rows) for axis in axes)
+    return count, (Swept(swept, str(path), one) for swept, one in swept_documents(document, axes))
 
 
 def parse(text: str, *, name: str = "scenario.toml", folder: str | os.PathLike[str] = ".") -> Scenario:
@@ -42,7 +73,8 @@ def _checked(document: Document, findings: Sequence[Finding], *, source: str) ->
     drafts, applied, unknown = with_preset(document, drafts)
     problems = [*findings, *found, *unmixed, *unknown, *entry_findings(drafts)]
     readings, unread = readings_of(drafts)
-    problems += [*stack_findings(drafts), *variation_findings(drafts), *unread]
+    problems += [*stack_findings(drafts), *variation_findings(drafts), *unread,
+                 *axes_of(document, drafts.sweep)[1]]
     problems = _one_for_each_key(problems)
     if problems:
         raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])
@@ -54,7 +86,7 @@ def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
     kept: dict[tuple[object, ...], Finding] = {}
     for finding in findings:
         problem = finding.problem
-        several = problem.allowed if problem.key in ("of", "between", "references") else ""
+        several = problem.allowed if problem.key in ("of", "between", "references", "file") else ""
         kept.setdefault((finding.place, problem.table, problem.entry, problem.key, several), finding)
     return list(kept.values())
 
@@ -65,7 +97,7 @@ def _scenario(
     return Scenario(
         format=FORMAT, title=document.top.values["title"], evaluation=_model(drafts.evaluation),
         layers=_models(drafts.layers), lines=_models(drafts.lines), variations=_models(drafts.variations),
-        correlations=_models(drafts.correlations), offers=_models(drafts.offers),
+        correlations=_models(drafts.correlations), offers=_models(drafts.offers), sweep=_models(drafts.sweep),
         test=None if drafts.test is None else _model(drafts.test),
         report=_model(drafts.report) if "report" in document.tables else Report(),
         readings=readings, source=source,

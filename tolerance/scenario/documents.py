@@ -15,10 +15,11 @@ from tolerance.scenario.places import Lines
 
 TOP_KEYS = ("format", "title", "extends", "preset")
 SINGLE_TABLES = ("evaluation", "test", "report")
-ENTRY_TABLES = ("layers", "lines", "variations", "correlations", "offers")
+ENTRY_TABLES = ("layers", "lines", "variations", "correlations", "offers", "sweep")
 _KNOWN = (*TOP_KEYS, *SINGLE_TABLES, *ENTRY_TABLES)
 LABEL_KEYS: Mapping[str, str] = MappingProxyType({
     "layers": "name", "lines": "name", "variations": "of", "correlations": "between", "offers": "of",
+    "sweep": "of",
 })
 
 

@@ -19,6 +19,7 @@ from tolerance.scenario.tables import (
     Line,
     Offer,
     Report,
+    Sweep,
     Table,
     Variation,
 )
@@ -54,6 +55,7 @@ class Drafts:
     variations: tuple[Draft[Variation], ...]
     correlations: tuple[Draft[Correlation], ...]
     offers: tuple[Draft[Offer], ...]
+    sweep: tuple[Draft[Sweep], ...]
     test: Draft[ImpedanceTest] | None
     report: Draft[Report]
 
@@ -72,7 +74,7 @@ def draft_tables(document: Document) -> tuple[Drafts, list[Finding]]:
     drafts = Drafts(
         evaluation=single("evaluation", Evaluation), layers=several("layers", Layer), lines=several("lines", Line),
         variations=several("variations", Variation), correlations=several("correlations", Correlation),
-        offers=several("offers", Offer),
+        offers=several("offers", Offer), sweep=several("sweep", Sweep),
         test=single("test", ImpedanceTest) if "test" in document.tables else None,
         report=single("report", Report),
     )

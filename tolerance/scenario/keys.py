@@ -255,6 +255,28 @@ class Texts(Kind):
         return {"anyOf": [text, many]} if self.single else many
 
 
+@dataclass(frozen=True, slots=True)
+class Values(Kind):
+    """A list of values, each as it would stand in the scenario."""
+
+    most: int
+
+    @property
+    def allowed(self) -> str:
+        return f"a list of 1 to {self.most} values, each as it would stand in the scenario"
+
+    def read(self, given: object, *, from_file: bool) -> tuple[object, ...]:
+        del from_file
+        if not isinstance(given, (list, tuple)) or not 1 <= len(given) <= self.most:
+            raise RefusedError(self.allowed)
+        if not all(isinstance(one, (str, int, float, list, tuple, dict)) for one in given):
+            raise RefusedError(self.allowed)
+        return tuple(given)
+
+    def json_schema(self) -> dict[str, Any]:
+        return {"type": "array", "minItems": 1, "maxItems": self.most}
+
+
 def is_number(given: object) -> TypeGuard[float]:
     """Whether the value is a number; true and false are none."""
     return isinstance(given, (int, float)) and not isinstance(given, bool)

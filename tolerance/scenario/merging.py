@@ -46,7 +46,7 @@ _SHAPE_GIVES_WAY: Mapping[str, frozenset[str]] = MappingProxyType({
 def merge(base: Document, extension: Document) -> Document:
     """The extension laid over the base; neither is changed."""
     tables = {
-        name: _merge_entry(base.tables.get(name), extension.tables.get(name))
+        name: merge_entry(base.tables.get(name), extension.tables.get(name))
         for name in SINGLE_TABLES if name in base.tables or name in extension.tables
     }
     entries = {
@@ -54,7 +54,7 @@ def merge(base: Document, extension: Document) -> Document:
         for name in ENTRY_TABLES if name in base.entries or name in extension.entries
     }
     text = f"{extension.text.rstrip()}\n\n# ---- extends {base.top.place.file} ----\n{base.text}"
-    return Document(top=_merge_entry(base.top, extension.top), tables=tables, entries=entries, text=text)
+    return Document(top=merge_entry(base.top, extension.top), tables=tables, entries=entries, text=text)
 
 
 def identity(entry: Entry) -> object:
@@ -86,11 +86,12 @@ def _merge_entries(base: tuple[Entry, ...], extension: tuple[Entry, ...]) -> tup
             added.append(entry)
     merged: list[Entry] = []
     for entry in base:
-        merged.append(_merge_entry(entry, over.pop(identity(entry), None)))
+        merged.append(merge_entry(entry, over.pop(identity(entry), None)))
     return (*merged, *added)
 
 
-def _merge_entry(base: Entry | None, extension: Entry | None) -> Entry:
+def merge_entry(base: Entry | None, extension: Entry | None) -> Entry:
+    """The keys of the extension laid over those of the base; one of the two may be missing."""
     if base is None or extension is None:
         entry = base or extension
         assert entry is not None  # the caller has at least one of the two

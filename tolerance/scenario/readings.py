@@ -13,7 +13,7 @@ from tolerance.scenario.documents import Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
 from tolerance.scenario.keys import Number, Quantity, Range
 from tolerance.scenario.properties import MEASURE, Property, matching, properties_of
-from tolerance.scenario.tables import Layer, Readings, Variation
+from tolerance.scenario.tables import Layer, Readings, Sweep, Variation
 from tolerance.units import write_quantity
 
 FEWEST = 5  # readings of a column
@@ -27,7 +27,7 @@ class _Place:
     sheet: str | None
 
 
-def file_finding(draft: Draft[Variation]) -> Finding | None:
+def file_finding(draft: Draft[Variation] | Draft[Sweep]) -> Finding | None:
     """What is wrong with `file` itself: it must be a CSV or XLSX that stands beside the scenario."""
     file = draft.text("file")
     if file is None:

@@ -26,6 +26,7 @@ from tolerance.scenario.tables import (
     Line,
     Offer,
     Report,
+    Sweep,
     Table,
     Variation,
 )
@@ -41,6 +42,7 @@ def json_schema() -> Schema:
         "variations": (Variation, "What varies in the process, and how"),
         "correlations": (Correlation, "Variables that go together"),
         "offers": (Offer, "What a fabricator would tighten, and its price"),
+        "sweep": (Sweep, "What `tolerance sweep` varies from one scenario to the next"),
     }
     single: dict[str, type[Table]] = {"evaluation": Evaluation, "test": ImpedanceTest, "report": Report}
     lists = {name: {"type": "array", "items": {"$ref": f"#/$defs/{name}"}, "description": words}
@@ -93,10 +95,11 @@ def _complete() -> Schema:
             {"not": {"required": ["partner", "gap"]}}, {"not": {"required": ["partner", "ground_gap"]}},
         ], "dependentRequired": {"offset": ["partner"]}, "dependentSchemas": {"mode": _any_of("gap", "partner")}},
         "variations": {"allOf": [*(_shape_of(shape) for shape in SHAPE_KEYS), _measured()]},
-        "correlations": {}, "offers": {},
+        "correlations": {}, "offers": {}, "sweep": _of_or_file(),
     }
     models: dict[str, type[Table]] = {
         "layers": Layer, "lines": Line, "variations": Variation, "correlations": Correlation, "offers": Offer,
+        "sweep": Sweep,
     }
     lists: dict[str, Schema] = {
         name: {"items": {"required": _required(model), **conditions[name]}} for name, model in models.items()}
@@ -146,6 +149,11 @@ def _measured() -> Schema:
     named = {"properties": {"shape": {"const": "measured"}}, "required": ["shape"]}
     barred = _none_of(("tolerance", "low", "high", "sigmas", "cpk"))
     return {"if": named, "then": {"required": ["file", "column"], **barred}}
+
+
+def _of_or_file() -> Schema:
+    listed: Schema = {"required": ["of", "values"], **_none_of(("file", "sheet"))}
+    return {"anyOf": [listed, {"required": ["file"], **_none_of(("of", "values"))}]}
 
 
 def _none_of(keys: Iterable[str]) -> Schema:

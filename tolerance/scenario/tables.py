@@ -16,11 +16,12 @@ from tolerance.scenario.amounts import Amount as Amount
 from tolerance.scenario.amounts import AmountOf, EndOf, Level, ReadingAt
 from tolerance.scenario.amounts import LevelShares as LevelShares
 from tolerance.scenario.amounts import Reading as Reading
-from tolerance.scenario.keys import Flag, Number, Quantity, Range, Text, Texts, Whole, Word
+from tolerance.scenario.keys import Flag, Number, Quantity, Range, Text, Texts, Values, Whole, Word
 
 FORMAT = 1
 COPPER_CONDUCTIVITY = 58e6  # [S/m] annealed copper, the format's default
 SMALLEST_COUPONS, LARGEST_COUPONS = 256, 2**24
+MOST_SWEPT = 10_000  # values of one entry, and scenarios of one file
 
 MASK, COPPER, PREPREG, CORE = "mask", "copper", "prepreg", "core"
 Foot = Literal["up", "down"]
@@ -226,6 +227,22 @@ class Report(Table):
         default="um", description="Unit of lengths in tables and figures; default um")
 
 
+class Sweep(Table):
+    """Values that `tolerance sweep` puts in the place of a key, one scenario for each; entries multiply out."""
+
+    of: Annotated[tuple[str, ...] | None, Texts(
+        'paths of keys (such as "layers.P1.thickness" or "evaluation.limit")', single=True)] = Field(
+        default=None, description='TABLE.KEY or TABLE.ENTRY.KEY, such as "lines.radio feed.width"; of a list all '
+                                  "have the same value")
+    values: Annotated[tuple[object, ...] | None, Values(MOST_SWEPT)] = Field(
+        default=None, description="What the key holds, one after the other")
+    file: Annotated[str | None, Text("the path of a CSV or XLSX file")] = Field(
+        default=None, description="Instead of of and values: a table beside the scenario, headed by paths of keys, a "
+                                  "scenario for each row")
+    sheet: Annotated[str | None, Text("the name of a sheet")] = Field(
+        default=None, description="Sheet of the XLSX")
+
+
 @dataclass(frozen=True, slots=True)
 class Readings:
     """Measured values of one property, in the order of their rows; SI."""
@@ -250,6 +267,7 @@ class Scenario(BaseModel):
     variations: tuple[Variation, ...] = ()
     correlations: tuple[Correlation, ...] = ()
     offers: tuple[Offer, ...] = ()
+    sweep: tuple[Sweep, ...] = ()
     test: ImpedanceTest | None = None
     report: Report = Report()
     readings: tuple[Readings, ...] = ()  # of measured variations, one for each property

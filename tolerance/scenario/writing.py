@@ -91,7 +91,8 @@ class _Writer:
         entries: tuple[Correlation | Offer, ...]
         for table, entries in (("correlations", scenario.correlations), ("offers", scenario.offers)):
             for entry in entries:
-                yield Piece(f"\n[[{table}]]\n" + self.keys(entry, type(entry).model_fields, _measure_of(scenario, entry)))
+                measure = _measure_of(scenario, entry)
+                yield Piece(f"\n[[{table}]]\n" + self.keys(entry, type(entry).model_fields, measure))
         for name, single in (("test", scenario.test), ("report", scenario.report)):
             text = "" if single is None else self.keys(single, type(single).model_fields)
             if text:

@@ -1,10 +1,9 @@
 """Partial derivatives of the impedance with respect to every dimension and Dk, from one solution more.
 
-With charges q from A q = b and C = w . q, the adjoint A' s = w gives dC = s . (db - dA q) for any change of A. The
-entries of A depend on places of nodes, on levels and factors of images and on the smooth rest. Their derivatives are
-summed once into gradients with respect to places, levels and factors (matrix-vector products with the derivative of
-the logarithm); every dimension and Dk then takes its share by how it moves them, which is told by differences of the
-nodes' places and of the kernel's factors alone. The result is the derivative of the discrete solution itself.
+With charges q from A q = b and C = w . q, the adjoint A' s = w gives dC = s . (db - dA q) for any change of A. What A
+is made of, places of edges and what dielectrics make of images, gets its gradient once (gradient, media_gradient). All
+that a structure is told in is linear in the dimensions and Dk of a section, so that every one of them takes its share
+by constant factors. The result is the derivative of the discrete solution itself.
 Adjoint sensitivities: standard; see for instance M. B. Giles, N. A. Pierce, "An introduction to the adjoint approach
 to design", Flow, Turbulence and Combustion 65 (2000), pages 393-415.
 """
@@ -17,17 +16,23 @@ from typing import Any, TypeVar
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.arrays import FloatArray, NumberArray
+from tolerance.sections.layered import LayeredSection, PlacedTrace
 from tolerance.sections.section import Mask, Ply, Section
-from tolerance.solver.assembly import Medium
-from tolerance.solver.edges import Edge, Places, edge_places
-from tolerance.solver.gradient import Sensitivity, joined, sensitivities
-from tolerance.solver.line import FREE_SPACE_IMPEDANCE, batches
+from tolerance.solver.assembly import Medium, System, full_matrix, near_system
+from tolerance.solver.gradient import Excited, Gradient, gradient
+from tolerance.solver.layered import LayeredPlan
+from tolerance.solver.layered_gradient import layered_coordinates, solve_layered_mode
+from tolerance.solver.line import FREE_SPACE_IMPEDANCE, AnyPlan, AnySection, batches, layered_batches
+from tolerance.solver.media_gradient import media_gradient
 from tolerance.solver.plan import Plan
-from tolerance.solver.structure import Structure, media, shortest_remaining_way, structure, topology
+from tolerance.solver.structure import Structure, media, structure, topology
 
-#: Relative step by which places and factors are differenced: they are smooth and cheap, so central differences do.
-STEP = 1e-4
+#: Relative step that tells the constant factors between a section and its structure.
+STEP = 1e-3
+
+#: Sections at a time: the gradient of more leaves the cache.
+LARGEST_BATCH = 64
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,7 +40,9 @@ class ModeDerivatives:
     """Impedance [ohm] of a mode and its derivatives, all (sections,), by name of what changes [ohm/m, or ohm].
 
     Names: foot_width, crest_width, thickness, gap, ground_gap, band_dk, foot_side.0.thickness, foot_side.0.dk, ...,
-    crest_side.0.thickness, ..., mask.on_laminate, mask.over_copper, mask.dk. Each is with all others held.
+    crest_side.0.thickness, ..., mask.on_laminate, mask.over_copper, mask.dk. Of a broadside pair:
+    traces.0.foot_width, traces.0.crest_width, traces.0.thickness, traces.0.centre, traces.1..., layers.0.thickness,
+    layers.0.dk, .... Each is with all others held.
     """
 
     impedance: FloatArray
@@ -56,47 +63,79 @@ class Slopes:
     slopes: FloatArray
 
 
-def impedance_slopes(section: Section, plan: Plan, *, mode: int) -> Slopes:
+def impedance_slopes(section: AnySection, plan: AnyPlan, *, mode: int) -> Slopes:
     """Solve one mode (1 even or single, -1 odd) of all sections with the slopes of ln Z: what a fit with gradients
     calls. Twice the odd or half the even mode's impedance has the same slopes."""
-    solved = solve_with_derivatives(section, plan, mode=mode)
-    values = np.stack([value for _, value, _ in parameters(section)], axis=1)
-    slopes = np.stack(list(solved.by.values()), axis=1) / solved.impedance[:, None]
-    return Slopes(tuple(solved.by), solved.impedance, values, slopes)
-
-
-def solve_with_derivatives(section: Section, plan: Plan, *, mode: int) -> ModeDerivatives:
-    """Solve one mode (1 even or single, -1 odd) with all partial derivatives."""
-    impedance = np.empty(section.count)
-    by = {name: np.empty(section.count) for name, _, _ in parameters(section)}
+    found = parameters(section)
+    impedance, slopes = np.empty(section.count), np.empty((section.count, len(found)))
+    values = np.stack([value for _, value, _ in found], axis=1)
+    if isinstance(section, LayeredSection):
+        assert isinstance(plan, LayeredPlan)
+        of_names = _shares(section)
+        for chosen in layered_batches(section, plan):
+            capacitances, gradients = solve_layered_mode(section.rows(chosen), plan, mode)
+            impedance[chosen] = FREE_SPACE_IMPEDANCE / np.sqrt(capacitances[0] * capacitances[1])
+            slopes[chosen] = gradients @ of_names
+        return Slopes(tuple(name for name, _, _ in found), impedance, values, slopes)
+    assert isinstance(plan, Plan)
     kinds = topology(section)
-    for kind in np.unique(kinds):
-        rows = np.flatnonzero(kinds == kind)
-        impedance[rows], derivatives = _solve_alike(section.rows(rows), plan, mode)
-        for name, values in derivatives.items():
-            by[name][rows] = values
-    return ModeDerivatives(impedance, by)
+    shares = {kind: _shares(section.rows(np.flatnonzero(kinds == kind)[:1])) for kind in np.unique(kinds)}
+    for rows in batches(section, plan, largest=LARGEST_BATCH):
+        impedance[rows], gradients = _solve_batch(section.rows(rows), plan, mode)
+        slopes[rows] = gradients @ shares[kinds[rows[0]]]
+    return Slopes(tuple(name for name, _, _ in found), impedance, values, slopes)
 
 
-_Setter = Callable[[Section, FloatArray], Section]
+def solve_with_derivatives(section: AnySection, plan: AnyPlan, *, mode: int) -> ModeDerivatives:
+    """Solve one mode (1 even or single, -1 odd) with all partial derivatives."""
+    found = impedance_slopes(section, plan, mode=mode)
+    return ModeDerivatives(found.impedance, dict(zip(found.names, (found.impedance[:, None] * found.slopes).T,
+                                                     strict=True)))
 
 
-def parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
+_Setter = Callable[[AnySection, FloatArray], AnySection]
+
+
+def parameters(section: AnySection) -> list[tuple[str, FloatArray, _Setter]]:
     """Name, value and how to set it, of all that a section is made of."""
+    return _layered_parameters(section) if isinstance(section, LayeredSection) else _plain_parameters(section)
+
+
+def _layered_parameters(section: LayeredSection) -> list[tuple[str, FloatArray, _Setter]]:
+    found: list[tuple[str, FloatArray, _Setter]] = []
+
+    def of_part(part: str, number: int, name: str) -> _Setter:
+        def put(one: AnySection, value: FloatArray) -> AnySection:
+            parts = list(getattr(one, part))
+            parts[number] = _with(parts[number], name, value) if name else value
+            return _with(one, part, tuple(parts))
+        return put
+
+    for number, trace in enumerate(section.traces):
+        found += [(f"traces.{number}.{name}", getattr(trace, name), of_part("traces", number, name))
+                  for name in ("foot_width", "crest_width", "thickness", "centre")]
+    for number, (thickness, dk) in enumerate(zip(section.thicknesses, section.dks, strict=True)):
+        found += [(f"layers.{number}.thickness", thickness, of_part("thicknesses", number, "")),
+                  (f"layers.{number}.dk", dk, of_part("dks", number, ""))]
+    return found
+
+
+def _plain_parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
     found: list[tuple[str, FloatArray, _Setter]] = []
 
     def plain(name: str) -> _Setter:
         return lambda one, value: _with(one, name, value)
 
     def of_ply(side: str, number: int, name: str) -> _Setter:
-        def put(one: Section, value: FloatArray) -> Section:
+        def put(one: AnySection, value: FloatArray) -> AnySection:
             plies: list[Ply] = list(getattr(one, side))
             plies[number] = _with(plies[number], name, value)
             return _with(one, side, tuple(plies))
         return put
 
     def of_mask(name: str) -> _Setter:
-        def put(one: Section, value: FloatArray) -> Section:
+        def put(one: AnySection, value: FloatArray) -> AnySection:
+            assert isinstance(one, Section)
             assert one.mask is not None
             return _with(one, "mask", _with(one.mask, name, value))
         return put
@@ -115,7 +154,7 @@ def parameters(section: Section) -> list[tuple[str, FloatArray, _Setter]]:
     return found
 
 
-Part = TypeVar("Part", Section, Ply, Mask)
+Part = TypeVar("Part", bound=Section | LayeredSection | Ply | Mask | PlacedTrace)
 
 
 def _with(part: Part, name: str, value: object) -> Part:
@@ -123,121 +162,77 @@ def _with(part: Part, name: str, value: object) -> Part:
     return replace(part, **changes)
 
 
-@dataclass(frozen=True, slots=True)
-class _State:
-    """Where the nodes of sections are, and their media: what a parameter can move."""
+def _shares(section: AnySection) -> FloatArray:
+    """How all that a solution is told in moves with each parameter of `section`: (coordinates, parameters).
 
-    parts: Structure
-    places: tuple[Places, ...]
-    media: tuple[Medium, Medium]  # filled, air
+    Every row of a batch has the first of `section` with another parameter moved. All is linear, so that one section of
+    a topology stands for all.
+    """
+    found = parameters(section)
+    rows: AnySection = section.rows(np.zeros(len(found) + 1, dtype=np.int64))
+    steps = []
+    for number, (_, value, put) in enumerate(found, start=1):
+        moved = np.repeat(value[:1], len(found) + 1)
+        steps.append(STEP * (float(value[0]) or float(found[0][1][0])))
+        moved[number] += steps[-1]
+        rows = put(rows, moved)
+    told = layered_coordinates(rows) if isinstance(rows, LayeredSection) else _coordinates(structure(rows))
+    return np.asarray((told[1:] - told[0]).T / np.array(steps))
 
-    @staticmethod
-    def of(section: Section, plan: Plan, *, distance: FloatArray | None, media_of: _State | None = None) -> _State:
-        """The state of `section`; `media_of`: a state whose media are the same."""
-        parts = structure(section)
-        places = tuple(edge_places(edge, unknowns=count[0], fine=count[1])
-                       for edge, count in ((edge, plan.count(edge)) for edge in parts.edges))
-        same = media_of.media if media_of is not None else media(
-            parts, multiples=plan.multiples, wavenumbers=plan.wavenumbers, distance=distance)
-        return _State(parts, places, same)
+
+def _coordinates(parts: Structure) -> FloatArray:
+    """All that a structure is told in: (sections, coordinates), in the order of _gradients."""
+    zero = np.zeros(parts.body_dk.shape)
+    values = [end[axis] for pick in (0, 1) for axis in (0, 1) for end in (
+        (edge.start, edge.stop)[pick] for edge in parts.edges)]
+    values += [zero if image.level is None else image.level for image in parts.images]
+    values += [zero if edge.left_dk is None else edge.left_dk for edge in parts.edges]
+    values += [zero if edge.right_dk is None else edge.right_dk for edge in parts.edges]
+    values += [parts.body_dk, *parts.below.thicknesses, *parts.below.dks]
+    if parts.above is not None:
+        values += [*parts.above.thicknesses, *parts.above.dks, zero if parts.body_thickness is None
+                   else parts.body_thickness]
+    return np.stack(values, axis=1)
 
 
-def _solve_alike(section: Section, plan: Plan, mode: int) -> tuple[FloatArray, dict[str, FloatArray]]:
-    """Sections of one topology."""
+def _solve_batch(section: Section, plan: Plan, mode: int) -> tuple[FloatArray, NumberArray]:
+    """Impedance, and the gradient of its logarithm with respect to _coordinates."""
     parts = structure(section)
-    distance = None if parts.above is None else shortest_remaining_way(parts)
-    base = _State.of(section, plan, distance=distance)
-    pieces = [sensitivities(section.rows(rows), plan, mode) for rows in batches(section, plan)]
-    filled, air = (joined([piece[number] for piece in pieces]) for number in (0, 1))
+    system = near_system(parts.edges, parts.images, counts=[plan.count(edge) for edge in parts.edges])
+    both = media(parts, multiples=plan.multiples, wavenumbers=plan.wavenumbers)
+    one = np.ones(section.count)
+    solved, capacitances = [], []
+    for medium, dk, air in zip(both, (parts.body_dk, one), (False, True), strict=True):
+        excited, capacitance = _excited(system, medium, dk, mode, air=air)
+        solved.append(excited)
+        capacitances.append(capacitance)
     halves = 2.0 if section.gap is None else 1.0
-    capacitances = halves * filled.charge, halves * air.charge
-    impedance = FREE_SPACE_IMPEDANCE / np.sqrt(capacitances[0] * capacitances[1])
-    derivatives = {}
-    for name, value, put in parameters(section):
-        step = STEP * value
-        same = base if not _moves_media(name, base.parts) else None
-        up, down = (_State.of(put(section, value + way * step), plan, distance=distance, media_of=same)
-                    for way in (1.0, -1.0))
-        change = sum(
-            halves * _change(base, up, down, number, known) / (2.0 * step * capacitance)
-            for number, (known, capacitance) in enumerate(zip((filled, air), capacitances, strict=True)))
-        derivatives[name] = -0.5 * impedance * np.asarray(change)
-    return impedance, derivatives
+    impedance = FREE_SPACE_IMPEDANCE / np.sqrt(halves**2 * capacitances[0] * capacitances[1])
+    found = gradient(system, parts.images, solved, sign=mode)
+    charged = 2.0 * np.pi * solved[0].adjoint[:, : system.trace].sum(axis=1)
+    return np.asarray(impedance), _gradients(parts, plan, found, charged)
 
 
-def _moves_media(name: str, parts: Structure) -> bool:
-    """Whether a dimension or Dk changes factors and shifts of images, not only places."""
-    return name.startswith(("foot_side", "crest_side")) or name in ("mask.dk", "band_dk") or (
-        parts.above is not None and name in ("thickness", "mask.on_laminate"))
+def _excited(
+    system: System, medium: Medium, body_dk: NumberArray, mode: int, *, air: bool,
+) -> tuple[Excited, NumberArray]:
+    """The solution with the adjoint of -ln C / 2, and C over the halves of a trace."""
+    kept: list[FloatArray] = []
+    matrix = full_matrix(system, medium, sign=mode, air=air, kept=kept)
+    wanted = np.zeros((*matrix.shape[:2], 1))
+    wanted[:, : system.trace] = 1.0
+    charges = (-2.0 * np.pi * body_dk)[:, None] * np.linalg.solve(matrix, wanted)[:, :, 0]
+    capacitance = charges[:, : system.trace].sum(axis=1)
+    adjoint = np.linalg.solve(matrix.transpose(0, 2, 1), wanted)[:, :, 0] * (0.5 / capacitance)[:, None]
+    return Excited(medium, charges, adjoint, kept), capacitance
 
 
-def _change(base: _State, up: _State, down: _State, number: int, known: Sensitivity) -> FloatArray:
-    """Difference of the charge between the states `up` and `down`, to first order; number 0: filled, 1: air."""
-    count = known.charges.shape[0]
-    total = np.zeros(count)
-    start = fine_start = 0
-    for place, (edge, a, b) in enumerate(zip(base.parts.edges, up.places, down.places, strict=True)):
-        if number and not edge.conducts:
-            break
-        part = slice(start, start + a.across.shape[1])
-        fine = slice(fine_start, fine_start + a.fine_across.shape[1])
-        start, fine_start = part.stop, fine.stop
-        for gradient, one, other in (
-                (known.across[:, part], a.across, b.across), (known.height[:, part], a.height, b.height),
-                (known.fine_across[:, fine], a.fine_across, b.fine_across),
-                (known.fine_height[:, fine], a.fine_height, b.fine_height)):
-            total += (gradient * (one - other)).sum(axis=1)
-        total += known.lengths[:, place] * np.log(a.length / b.length)
-        if not edge.conducts:
-            edges = (edge, up.parts.edges[place], down.parts.edges[place])
-            total += _interface_change(
-                edges, (base.places[place], a, b), known.charges[:, part], known.adjoint[:, part])
-    for image, (a_image, b_image) in enumerate(zip(up.parts.images, down.parts.images, strict=True)):
-        if a_image.level is not None and b_image.level is not None:
-            total += known.levels[:, image] * (a_image.level - b_image.level)
-    total += _medium_change(up.media[number], down.media[number], base.media[number], known)
-    if number:
-        return -total
-    trace = sum(a.across.shape[1] for edge, a in zip(base.parts.edges, base.places, strict=True)
-                if edge.conducts and edge.role != "ground")
-    bodies = up.parts.body_dk - down.parts.body_dk
-    return np.asarray(-2.0 * np.pi * bodies * known.adjoint[:, :trace].sum(axis=1) - total)
-
-
-def _medium_change(up: Medium, down: Medium, base: Medium, known: Sensitivity) -> FloatArray:
-    total = np.zeros(known.charge.shape)
-    if up is down:
-        return total
-    for image, (a, b) in enumerate(zip(up.factors, down.factors, strict=True)):
-        total += known.near[:, image] * (a - b)
-    if up.far is not None and down.far is not None:
-        total += (known.far * (up.far.factors - down.far.factors)).sum(axis=1)
-        total += (known.shifts * (up.far.shifts - down.far.shifts)).sum(axis=1)
-    if up.rest is not None and down.rest is not None and base.rest is not None:
-        taken, sent = known.taken, known.sent
-        forms = ((up.rest.lower - down.rest.lower) * taken[:, 0] * sent[:, 0]
-                 + (up.rest.upper - down.rest.upper) * taken[:, 1] * sent[:, 1]
-                 + (up.rest.cross - down.rest.cross) * (taken[:, 0] * sent[:, 1] + taken[:, 1] * sent[:, 0])
-                 + (up.rest.level - down.rest.level) * taken[:, 2] * sent[:, 2])
-        total -= 2.0 * forms.sum(axis=1)
-        total += known.thickness * (up.rest.body_thickness - down.rest.body_thickness)
-        total += known.logarithm * (up.rest.compensation - down.rest.compensation)
-    return total
-
-
-def _interface_change(
-    edges: tuple[Edge, Edge, Edge], places: tuple[Places, Places, Places], charges: FloatArray, adjoint: FloatArray,
-) -> FloatArray:
-    """What the factors of the interface conditions add: rows (l - r) / (2 pi) M + (l + r) / (2 jacobian)."""
-    (left, right), (left_up, right_up), (left_down, right_down) = (_dks(edge) for edge in edges)
-    here, up, down = (place.jacobian for place in places)
-    field = -(0.5 * (left + right))[:, None] / here * charges / ((left - right) / (2.0 * np.pi))[:, None]
-    steps = (left_up - right_up - left_down + right_down) / (2.0 * np.pi)
-    diagonal = 0.5 * ((left_up + right_up)[:, None] / up - (left_down + right_down)[:, None] / down)
-    return np.asarray((adjoint * (steps[:, None] * field + diagonal * charges)).sum(axis=1))
-
-
-def _dks(edge: Edge) -> tuple[FloatArray, FloatArray]:
-    assert edge.left_dk is not None
-    assert edge.right_dk is not None
-    return edge.left_dk, edge.right_dk
+def _gradients(parts: Structure, plan: Plan, found: Gradient, charged: NumberArray) -> NumberArray:
+    """The gradient with respect to _coordinates: (sections, coordinates); `charged`: what the Dk of the body has on
+    the right-hand side."""
+    of_media = media_gradient(parts, found.media, multiples=plan.multiples, wavenumbers=plan.wavenumbers)
+    columns = [*found.ends.reshape(len(charged), -1).T, *found.levels.T, *found.left.T, *found.right.T,
+               of_media.body_dk + charged, *of_media.below]
+    if parts.above is not None:
+        columns += [*of_media.above, of_media.body_thickness]
+    return np.stack(columns, axis=1)

@@ -83,6 +83,7 @@ class Nodes:
     alone  : (sections, unknowns, unknowns) logarithmic potential of the edge on itself; None on dielectric.
     mirrored : the same of the mirror image of a folded edge, else None.
     normal : (x, y) of the unit normal to the left, arrays (sections,).
+    share, fine_share : (unknowns,), (fine,) how far along from start to stop the places lie, in every section.
     """
 
     edge: Edge
@@ -91,6 +92,8 @@ class Nodes:
     alone: FloatArray | None
     mirrored: FloatArray | None
     normal: tuple[FloatArray, FloatArray]
+    share: FloatArray
+    fine_share: FloatArray
 
     @property
     def across(self) -> FloatArray:
@@ -146,13 +149,19 @@ def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
         refine = refine[keep_fine, keep] + refine[keep_fine, : unknowns // 2][:, ::-1]
     direction = ((edge.stop[0] - edge.start[0]) / length, (edge.stop[1] - edge.start[1]) / length)
     return Nodes(edge=edge, places=places, refine=refine, alone=alone, mirrored=mirrored,
-                 normal=(-direction[1], direction[0]))
+                 normal=(-direction[1], direction[0]), share=_share(edge, unknowns)[keep],
+                 fine_share=_share(edge, fine)[keep_fine])
 
 
 def _rule(edge: Edge, count: int) -> Rule:
     if not edge.tail:
         return graded_rule(count, GRADING[edge.role])
     return ground_rule(count) if edge.conducts else tail_rule(count)
+
+
+def _share(edge: Edge, count: int) -> FloatArray:
+    position = _rule(edge, count).position
+    return position if edge.tail else 0.5 * (1.0 + position)
 
 
 def _along(edge: Edge, length: FloatArray, rule: Rule, keep: slice) -> tuple[FloatArray, FloatArray]:

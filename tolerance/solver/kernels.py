@@ -22,6 +22,7 @@ from functools import lru_cache
 import numpy as np
 
 from tolerance.arrays import FloatArray, NumberArray, read_only
+from tolerance.solver.rules import legendre
 
 #: Where exp(-k * distance) counts as nought in the spectral rest.
 LAST_EXPONENT = 17.0
@@ -147,7 +148,7 @@ def far_images(stack: FlatStack, body_dk: NumberArray, *, multiples: Sequence[fl
     carries the whole opposite charge): a fixed linear map of the reflection, hence smooth in every dimension.
     """
     scale = 2.0 * stack.thicknesses[0]
-    wavenumber, solve = _image_fit(tuple(multiples))
+    wavenumber, solve = image_fit(tuple(multiples))
     wanted = stack.reflection(wavenumber / scale[:, None], body_dk) - stack.first_reflection(body_dk)[:, None]
     at_nought = -1.0 - stack.first_reflection(body_dk)
     spread = np.exp(-wavenumber * multiples[-1])
@@ -171,10 +172,7 @@ def spectral_rest(
 
     distance : (sections,) [m], the shortest way of any ray that the near images leave out.  count : nodes over k.
     """
-    nodes, weights = np.polynomial.legendre.leggauss(count)
-    last = LAST_EXPONENT / distance
-    wavenumber = last[:, None] * (0.5 * (1.0 + nodes)) ** 2
-    weight = weights * 2.0 / (1.0 + nodes)  # over the wavenumber: d k / k
+    wavenumber, weight = spectral_quadrature(distance, count)
     down, up = below.reflection(wavenumber, body_dk), above.reflection(wavenumber, body_dk)
     first_down, first_up = below.first_reflection(body_dk), above.first_reflection(body_dk)
     crossing = np.exp(-wavenumber * body_thickness[:, None])
@@ -190,8 +188,14 @@ def spectral_rest(
     )
 
 
+def spectral_quadrature(distance: FloatArray, count: int) -> tuple[FloatArray, FloatArray]:
+    """Wavenumbers (sections, count) [1/m], crowded towards nought, and their weights over d k / k: (count,)."""
+    nodes, weights = legendre(count)
+    return LAST_EXPONENT / distance[:, None] * (0.5 * (1.0 + nodes)) ** 2, weights * 2.0 / (1.0 + nodes)
+
+
 @lru_cache(maxsize=64)
-def _image_fit(multiples: tuple[float, ...]) -> tuple[FloatArray, FloatArray]:
+def image_fit(multiples: tuple[float, ...]) -> tuple[FloatArray, FloatArray]:
     """Wavenumbers (in units of 1 / scale) and the least-squares map from the reflection there to image factors."""
     wavenumber = np.logspace(-3.0, 1.3, FIT_PLACES) / max(1.0, multiples[-1] / 60.0)
     images = np.exp(-np.outer(wavenumber, multiples))

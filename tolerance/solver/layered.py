@@ -15,9 +15,9 @@ import numpy as np
 
 from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.layered import LayeredSection
-from tolerance.solver.assembly import NearImage, near_system
-from tolerance.solver.edges import Edge, Nodes
-from tolerance.solver.kernels import LAST_EXPONENT, FlatStack, spectral_rest
+from tolerance.solver.assembly import Medium, NearImage, System, near_system
+from tolerance.solver.edges import Edge
+from tolerance.solver.kernels import LAST_EXPONENT, FlatStack, spectral_quadrature, spectral_rest
 from tolerance.solver.plan import PLANE_WAVENUMBERS, SolverSettings, edge_counts
 
 
@@ -47,7 +47,7 @@ def plan_layered(section: LayeredSection, settings: SolverSettings) -> LayeredPl
     wavenumbers = {}
     for number, low in enumerate(layers):
         for high in layers[number:]:
-            way = float((_way_left(section, low) if low == high else _way_between(section, low, high))[0])
+            way = float((way_left(section, low) if low == high else way_between(section, low, high))[0])
             wavenumbers[low, high] = math.ceil(16.0 + 0.5 * LAST_EXPONENT * reach / way + 4.0 * math.sqrt(depth / way))
     ways = [abs(bases[edge.name] + float(end[1][0]) - plane) for edge in edges for end in (edge.start, edge.stop)
             for plane in planes]
@@ -86,24 +86,18 @@ def capacitance_matrix(section: LayeredSection, plan: LayeredPlan) -> NumberArra
     return trace_charges(section, plan).matrix
 
 
-def trace_charges(section: LayeredSection, plan: LayeredPlan) -> TraceCharges:
-    """Solve for 1 V on each trace in turn, the others at nought; complex where a Dk is."""
-    layers = sorted({trace.layer for trace in section.traces})
-    blocks = {layer: _Block.of(section, plan, layer) for layer in layers}
-    rows = []
-    for row in layers:
-        cells = []
-        for column in layers:
-            if row == column:
-                cells.append(blocks[row].matrix)
-            elif row < column:
-                cells.append(_between(section, plan, blocks[row], blocks[column]))
-            else:
-                cells.append(_between(section, plan, blocks[column], blocks[row]).transpose(0, 2, 1))
-        rows.append(np.concatenate(cells, axis=2))
-    matrix = np.concatenate(rows, axis=1)
-    edges = [nodes.edge.name for layer in layers for nodes in blocks[layer].nodes]
-    sizes = [nodes.across.shape[1] for layer in layers for nodes in blocks[layer].nodes]
+def trace_charges(
+    section: LayeredSection, plan: LayeredPlan, systems: Mapping[int, System] | None = None,
+) -> TraceCharges:
+    """Solve for 1 V on each trace in turn, the others at nought; complex where a Dk is.
+
+    systems : layer_systems of the section, where they are at hand.
+    """
+    systems = systems or layer_systems(section, plan)
+    layers = list(systems)
+    matrix = whole_matrix(section, plan, systems)
+    edges = [nodes.edge.name for system in systems.values() for nodes in system.nodes]
+    sizes = [nodes.across.shape[1] for system in systems.values() for nodes in system.nodes]
     owner = np.repeat([int(name.split()[0]) for name in edges], sizes)
     order = np.array([number for layer in layers for number, trace in enumerate(section.traces)
                       if trace.layer == layer])
@@ -111,39 +105,63 @@ def trace_charges(section: LayeredSection, plan: LayeredPlan) -> TraceCharges:
     charges = np.linalg.solve(matrix, np.broadcast_to(wanted, (section.count, *wanted.shape)))[:, :, np.argsort(order)]
     bases = {layer: np.asarray(sum(section.thicknesses[:layer], start=np.zeros(section.count))) for layer in layers}
     return TraceCharges(
-        charges=charges, across=np.concatenate([blocks[layer].across for layer in layers], axis=1),
-        height=np.concatenate([blocks[layer].height + bases[layer][:, None] for layer in layers], axis=1),
-        jacobian=np.concatenate([nodes.jacobian for layer in layers for nodes in blocks[layer].nodes], axis=1),
+        charges=charges, across=np.concatenate([system.across for system in systems.values()], axis=1),
+        height=np.concatenate([system.height + bases[layer][:, None] for layer, system in systems.items()], axis=1),
+        jacobian=np.concatenate([nodes.jacobian for system in systems.values() for nodes in system.nodes], axis=1),
         owner=owner, edge_names=tuple(edges), edge=np.repeat(np.arange(len(edges)), sizes),
     )
 
 
-@dataclass(frozen=True, slots=True)
-class _Block:
-    """The traces of one layer: M over Dk among themselves, and their nodes; heights from the layer's lower face."""
+def layer_systems(section: LayeredSection, plan: LayeredPlan) -> dict[int, System]:
+    """The near images of the traces of each layer that holds any, from the bottom up; no Dk enters."""
+    result = {}
+    for layer in sorted({trace.layer for trace in section.traces}):
+        edges = [edge for number, trace in enumerate(section.traces) if trace.layer == layer
+                 for edge in trace_faces(section, number)]
+        result[layer] = near_system(edges, layer_images(section, layer), counts=[
+            plan.counts[edge.name] for edge in edges], mirror=False)
+    return result
 
-    layer: int
-    matrix: NumberArray
-    across: FloatArray
-    height: FloatArray
-    nodes: tuple[Nodes, ...]
 
-    @staticmethod
-    def of(section: LayeredSection, plan: LayeredPlan, layer: int) -> _Block:
-        numbers = [number for number, trace in enumerate(section.traces) if trace.layer == layer]
-        edges = [edge for number in numbers for edge in trace_faces(section, number)]
-        dk, thickness = section.dks[layer], section.thicknesses[layer]
-        below, above = _below(section, layer), _above(section, layer)
-        images = (NearImage(None), NearImage(np.zeros(section.count), touching=_touching(section, numbers, up=False)),
-                  NearImage(thickness, touching=_touching(section, numbers, up=True)))
-        system = near_system(edges, images, counts=[plan.counts[edge.name] for edge in edges], mirror=False)
-        factors = (np.ones(section.count), below.first_reflection(dk), above.first_reflection(dk))
-        matrix = sum((factor[:, None, None] * own for factor, own in zip(factors, system.own, strict=True)),
-                     start=np.zeros((section.count, 1, 1)))
-        rest = spectral_rest(below=below, above=above, body_dk=dk, body_thickness=thickness,
-                             distance=_way_left(section, layer), count=plan.wavenumbers[layer, layer])
-        matrix = matrix + rest.whole_matrix(system.across, system.height)
-        return _Block(layer, matrix / dk[:, None, None], system.across, system.height, system.nodes)
+def whole_matrix(section: LayeredSection, plan: LayeredPlan, systems: Mapping[int, System]) -> NumberArray:
+    """The matrix of all conditions, M over Dk: (sections, unknowns, unknowns), layer by layer."""
+    ends = np.cumsum([0] + [system.across.shape[1] for system in systems.values()])
+    parts = {layer: slice(start, stop) for layer, start, stop in zip(systems, ends[:-1], ends[1:], strict=True)}
+    result = np.empty((section.count, ends[-1], ends[-1]), dtype=np.result_type(*section.dks))
+    for low in systems:
+        result[:, parts[low], parts[low]] = _within(section, plan, low, systems[low])
+        for high in systems:
+            if high > low:
+                between = _between(section, plan, (low, systems[low]), (high, systems[high]))
+                result[:, parts[low], parts[high]] = between
+                result[:, parts[high], parts[low]] = between.transpose(0, 2, 1)
+    return result
+
+
+def layer_images(section: LayeredSection, layer: int) -> tuple[NearImage, ...]:
+    """The near images of a layer, heights from its lower face: the traces themselves, and at both of its faces."""
+    numbers = [number for number, trace in enumerate(section.traces) if trace.layer == layer]
+    return (NearImage(None), NearImage(np.zeros(section.count), touching=_touching(section, numbers, up=False)),
+            NearImage(section.thicknesses[layer], touching=_touching(section, numbers, up=True)))
+
+
+def layer_medium(section: LayeredSection, plan: LayeredPlan, layer: int) -> Medium:
+    """What the dielectrics make of the images of a layer."""
+    below, above, dk = stack_below(section, layer), stack_above(section, layer), section.dks[layer]
+    rest = spectral_rest(below=below, above=above, body_dk=dk, body_thickness=section.thicknesses[layer],
+                         distance=way_left(section, layer), count=plan.wavenumbers[layer, layer])
+    return Medium((np.ones(section.count), below.first_reflection(dk), above.first_reflection(dk)), rest=rest)
+
+
+def _within(section: LayeredSection, plan: LayeredPlan, layer: int, system: System) -> NumberArray:
+    """M over Dk of the traces of one layer among themselves."""
+    medium = layer_medium(section, plan, layer)
+    assert medium.rest is not None
+    matrix = medium.rest.whole_matrix(system.across, system.height)
+    for factor, own in zip(medium.factors, system.own, strict=True):
+        if np.any(factor):
+            matrix += factor[:, None, None] * own
+    return np.asarray(matrix / section.dks[layer][:, None, None])
 
 
 def _touching(section: LayeredSection, numbers: Sequence[int], *, up: bool) -> tuple[str, ...]:
@@ -154,47 +172,67 @@ def _touching(section: LayeredSection, numbers: Sequence[int], *, up: bool) -> t
     return (*feet, *crests)
 
 
-def _between(section: LayeredSection, plan: LayeredPlan, low: _Block, high: _Block) -> NumberArray:
-    """M over Dk of points in the lower and charges in the upper layer: (sections, lower nodes, upper nodes).
+@dataclass(frozen=True, slots=True)
+class Waves:
+    """How charges of an upper layer are taken up in a lower one, by wavenumber: arrays (sections, k).
 
-    The wave of a charge in the upper layer goes down through every layer between, each with what comes back from
-    further below, and is taken up in the lower one.
+    wavenumber [1/m].  weight : (k,) of the quadrature.  down, up : reflections seen from the upper layer; back : seen
+    downwards from the layers from the upper one (excluded) to the lower one.  factor : of the whole way.
     """
-    nodes, weights = np.polynomial.legendre.leggauss(plan.wavenumbers[low.layer, high.layer])
-    last = LAST_EXPONENT / _way_between(section, low.layer, high.layer)
-    wavenumber = last[:, None] * (0.5 * (1.0 + nodes)) ** 2
-    weight = weights * 2.0 / (1.0 + nodes)
 
-    def through(layer: int) -> FloatArray:
-        return np.exp(-wavenumber * section.thicknesses[layer][:, None])
+    wavenumber: FloatArray
+    weight: FloatArray
+    down: NumberArray
+    up: NumberArray
+    back: Mapping[int, NumberArray]
+    factor: NumberArray
 
-    down = _below(section, high.layer).reflection(wavenumber, section.dks[high.layer])
-    up = _above(section, high.layer).reflection(wavenumber, section.dks[high.layer])
-    factor = (1.0 + down) / (1.0 - down * up * through(high.layer) ** 2)
-    for layer in range(high.layer - 1, low.layer, -1):
-        back = _below(section, layer).reflection(wavenumber, section.dks[layer])
-        factor = factor * through(layer) * (1.0 + back) / (1.0 + back * through(layer) ** 2)
-    back = _below(section, low.layer).reflection(wavenumber, section.dks[low.layer])
-    factor = factor / (1.0 + back * through(low.layer) ** 2)
-    low_thickness, high_thickness = section.thicknesses[low.layer], section.thicknesses[high.layer]
-    k = wavenumber[:, None, :]
-    taken = np.exp(-k * (low_thickness[:, None] - low.height)[:, :, None]) + (back * through(low.layer))[
-        :, None, :] * np.exp(-k * low.height[:, :, None])
-    sent = np.exp(-k * high.height[:, :, None]) + (up * through(high.layer))[:, None, :] * np.exp(
-        -k * (high_thickness[:, None] - high.height)[:, :, None])
-    taken = taken * (weight * factor / section.dks[high.layer][:, None])[:, None, :]
-    phase_low, phase_high = k * low.across[:, :, None], k * high.across[:, :, None]
+
+def waves_between(section: LayeredSection, plan: LayeredPlan, low: int, high: int) -> Waves:
+    """The wave of a charge in the upper layer goes down through every layer between, each with what comes back from
+    further below, and is taken up in the lower one."""
+    wavenumber, weight = spectral_quadrature(way_between(section, low, high), plan.wavenumbers[low, high])
+    down = stack_below(section, high).reflection(wavenumber, section.dks[high])
+    up = stack_above(section, high).reflection(wavenumber, section.dks[high])
+    factor = (1.0 + down) / (1.0 - down * up * through(section, high, wavenumber) ** 2)
+    back = {}
+    for layer in range(high - 1, low - 1, -1):
+        back[layer] = stack_below(section, layer).reflection(wavenumber, section.dks[layer])
+        way = through(section, layer, wavenumber)
+        factor = factor * ((way * (1.0 + back[layer])) if layer > low else 1.0) / (1.0 + back[layer] * way**2)
+    return Waves(wavenumber, weight, down, up, back, factor)
+
+
+def through(section: LayeredSection, layer: int, wavenumber: FloatArray) -> FloatArray:
+    """What is left of a wave that has gone through a layer."""
+    return np.asarray(np.exp(-wavenumber * section.thicknesses[layer][:, None]))
+
+
+def _between(
+    section: LayeredSection, plan: LayeredPlan, lower: tuple[int, System], upper: tuple[int, System],
+) -> NumberArray:
+    """M over Dk of points in the lower and charges in the upper layer: (sections, lower nodes, upper nodes)."""
+    (low, at_low), (high, at_high) = lower, upper
+    waves = waves_between(section, plan, low, high)
+    k = waves.wavenumber[:, None, :]
+    low_thickness, high_thickness = section.thicknesses[low], section.thicknesses[high]
+    taken = np.exp(-k * (low_thickness[:, None] - at_low.height)[:, :, None]) + (
+        waves.back[low] * through(section, low, waves.wavenumber))[:, None, :] * np.exp(-k * at_low.height[:, :, None])
+    sent = np.exp(-k * at_high.height[:, :, None]) + (waves.up * through(section, high, waves.wavenumber))[
+        :, None, :] * np.exp(-k * (high_thickness[:, None] - at_high.height)[:, :, None])
+    taken = taken * (waves.weight * waves.factor / section.dks[high][:, None])[:, None, :]
+    phase_low, phase_high = k * at_low.across[:, :, None], k * at_high.across[:, :, None]
     left = np.concatenate([taken * np.cos(phase_low), taken * np.sin(phase_low)], axis=2)
     right = np.concatenate([sent * np.cos(phase_high), sent * np.sin(phase_high)], axis=2)
     return np.asarray(-(left @ right.transpose(0, 2, 1)))
 
 
-def _below(section: LayeredSection, layer: int) -> FlatStack:
+def stack_below(section: LayeredSection, layer: int) -> FlatStack:
     """What lies below a layer, outwards."""
     return FlatStack(section.thicknesses[:layer][::-1], section.dks[:layer][::-1], section.bottom_plane)
 
 
-def _above(section: LayeredSection, layer: int) -> FlatStack:
+def stack_above(section: LayeredSection, layer: int) -> FlatStack:
     """What lies above a layer, outwards."""
     return FlatStack(section.thicknesses[layer + 1 :], section.dks[layer + 1 :], section.top_plane)
 
@@ -227,7 +265,7 @@ def _extent(section: LayeredSection, layer: int) -> tuple[FloatArray, FloatArray
     return np.minimum.reduce(lows), np.maximum.reduce(highs)
 
 
-def _way_left(section: LayeredSection, layer: int) -> FloatArray:
+def way_left(section: LayeredSection, layer: int) -> FloatArray:
     """Shortest ray within one layer that its near images leave out [m]."""
     low, high = _extent(section, layer)
     thickness = section.thicknesses[layer]
@@ -239,7 +277,7 @@ def _way_left(section: LayeredSection, layer: int) -> FloatArray:
     return np.asarray(np.minimum.reduce(ways))
 
 
-def _way_between(section: LayeredSection, low: int, high: int) -> FloatArray:
+def way_between(section: LayeredSection, low: int, high: int) -> FloatArray:
     """Shortest upright way from the copper of one layer to that of another [m]."""
     between: Sequence[FloatArray] = section.thicknesses[low + 1 : high]
     top = section.thicknesses[low] - _extent(section, low)[1]

@@ -11,7 +11,7 @@ from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.layered import LayeredSection
 from tolerance.sections.section import Section
 from tolerance.solver.assembly import charge, near_system
-from tolerance.solver.layered import LayeredPlan, capacitance_matrix, plan_layered
+from tolerance.solver.layered import LayeredPlan, layer_systems, plan_layered, trace_charges
 from tolerance.solver.plan import Plan, SolverSettings, plan_for
 from tolerance.solver.structure import media, structure, topology
 from tolerance.solver.transmission import SPEED_OF_LIGHT
@@ -75,12 +75,15 @@ def solve_modes(section: AnySection, plan: AnyPlan, *, modes: tuple[int, ...]) -
     return {mode: ModeSolution(filled[mode], air[mode]) for mode in modes}
 
 
-def batches(section: Section, plan: Plan) -> Iterator[IntArray]:
-    """Rows that are solved together: of one topology, and so few that a matrix of them stays in cache."""
+def batches(section: Section, plan: Plan, *, largest: int | None = None) -> Iterator[IntArray]:
+    """Rows that are solved together: of one topology, and so few that a matrix of them stays in cache.
+
+    largest : no more rows than this at a time.
+    """
     kinds = topology(section)
     for kind in np.unique(kinds):
         rows = np.flatnonzero(kinds == kind)
-        size = _batch_size(section.rows(rows[:1]), plan)
+        size = min(_batch_size(section.rows(rows[:1]), plan), largest or rows.size)
         for start in range(0, rows.size, size):
             yield rows[start : start + size]
 
@@ -89,7 +92,8 @@ def _solve_layered(section: LayeredSection, plan: LayeredPlan, modes: tuple[int,
     parts: dict[int, list[tuple[FloatArray, FloatArray]]] = {mode: [] for mode in modes}
     for rows in layered_batches(section, plan):
         batch = section.rows(rows)
-        matrices = capacitance_matrix(batch, plan), capacitance_matrix(batch.in_air(), plan)
+        systems = layer_systems(batch, plan)
+        matrices = [trace_charges(one, plan, systems).matrix for one in (batch, batch.in_air())]
         for mode in modes:
             parts[mode].append((mode_capacitance(matrices[0], mode), mode_capacitance(matrices[1], mode)))
     return {mode: ModeSolution(*(np.concatenate(column) for column in zip(*parts[mode], strict=True)))

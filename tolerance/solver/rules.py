@@ -36,6 +36,13 @@ class Rule:
 
 
 @lru_cache(maxsize=256)
+def legendre(count: int) -> tuple[FloatArray, FloatArray]:
+    """Nodes and weights of the Gauss-Legendre rule on -1..1: (count,)."""
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    return read_only(nodes), read_only(weights)
+
+
+@lru_cache(maxsize=256)
 def graded_rule(count: int, power: int) -> Rule:
     """The rule with `count` nodes for an edge with a corner at both ends."""
     nodes, weights = np.polynomial.legendre.leggauss(count)

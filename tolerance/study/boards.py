@@ -9,6 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from tolerance.arrays import BoolArray, FloatArray, read_only
+from tolerance.cores import Progress, on_all_cores
 from tolerance.decisions.board import Board, LineModel
 from tolerance.process.draws import ETCH, Process, ProcessDraws, process_of
 from tolerance.process.laws import Law, quantile
@@ -21,11 +22,11 @@ from tolerance.sections.surroundings import properties_that_reach
 from tolerance.solver.plan import SolverSettings
 from tolerance.statistics.against_limit import LimitSample
 from tolerance.statistics.yields import Limits
-from tolerance.study.cores import Progress, on_all_cores
 from tolerance.study.lines import PreparedLine, prepare
 from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, fit_line, predict_line
 from tolerance.study.run import limit_sample
+from tolerance.study.solved import SolvedCache
 from tolerance.surrogate.coordinates import REACH as DRAWS_REACH
 from tolerance.surrogate.prediction import BLOCK_ROWS, Predictor
 
@@ -37,8 +38,8 @@ FEWEST_REMEMBERED = 4096  # coupons for which it is worth it to remember what un
 class FittedBoard:
     """A board with how it was come by, a fit for each line.
 
-    draws : the sample.  prepared, predictors : one a line.  sample : impedances as `run` has them, with what was
-    solved; None where nothing was.
+    draws : the sample.  prepared, predictors : one a line.  from_cache : of the solver runs.
+    sample : impedances as `run` has them, with what was solved; None where nothing was.
     """
 
     board: Board
@@ -46,6 +47,7 @@ class FittedBoard:
     prepared: tuple[PreparedLine, ...]
     predictors: tuple[Predictor, ...]
     solver_runs: int
+    from_cache: int
     sample: LimitSample | None = None
 
 
@@ -57,6 +59,7 @@ def chosen_seed(scenario: Scenario, seed: int | None) -> int:
 
 def fit_board(
     scenario: Scenario, *, coupons: int | None, seed: int, tell: Progress, process: Process | None = None,
+    cache: SolvedCache | None = None,
 ) -> FittedBoard:
     """Fit every line as `run` does, with the same draws and the same solver runs.
 
@@ -68,7 +71,7 @@ def fit_board(
     settings = SolverSettings()
 
     def fit(task: tuple[Line, np.random.Generator]) -> PredictedLine:
-        return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1])
+        return predict_line(prepare(scenario, task[0], settings, cache), draws, chance=task[1])
 
     tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
     found = on_all_cores(fit, tasks, STEP, tell)
@@ -79,7 +82,7 @@ def fit_board(
 
 def fit_wide_board(
     scenario: Scenario, *, coupons: int | None, seed: int, tell: Progress, names: Sequence[Sequence[str]],
-    reach: Sequence[float],
+    reach: Sequence[float], cache: SolvedCache | None = None,
 ) -> FittedBoard:
     """Fit every line over moves of the centres of properties too; no verdicts are solved.
 
@@ -98,7 +101,7 @@ def fit_wide_board(
 
     def fit(task: tuple[Line, Sequence[str], float, np.random.Generator]) -> tuple[PreparedLine, Predictor, float, int]:
         line, moving, far, chance = task
-        prepared = prepare(scenario, line, settings)
+        prepared = prepare(scenario, line, settings, cache)
         wide = replace(draws, process=widened(known, moving, far, width=line.width))
         return prepared, *fit_line(prepared, wide, chance=chance)
 
@@ -124,7 +127,8 @@ def _board(
     lines = tuple(_model(prepared, predictor, process, error) for prepared, predictor, error, _ in fits)
     cluster = 1 if draws.lots is None else draws.lots.coupons
     return FittedBoard(Board(lines, draws.germ, draws.replicates, cluster), draws, tuple(fit[0] for fit in fits),
-                       tuple(fit[1] for fit in fits), sum(fit[3] for fit in fits))
+                       tuple(fit[1] for fit in fits), solver_runs=sum(fit[3] for fit in fits),
+                       from_cache=sum(fit[0].from_cache for fit in fits))
 
 
 def _model(prepared: PreparedLine, predictor: Predictor, process: Process, error: float) -> LineModel:

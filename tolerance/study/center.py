@@ -9,6 +9,7 @@ import numpy as np
 from scipy.optimize import brentq
 
 from tolerance.arrays import FloatArray
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.decided import Basis, CenterResult, CentredLine, GapWidth, MovedDimension, Way
 from tolerance.decisions.board import Board, LineModel, Side, sides_of
 from tolerance.decisions.centring import (
@@ -26,9 +27,9 @@ from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board, fit_wide_board
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.decide import basis_of, offer_models, weigh_offers
 from tolerance.study.lines import nominal_impedance, prepare
+from tolerance.study.solved import SolvedCache
 
 REACH = 0.15  # of what is moved, both ways
 CENTRING_ERROR = 0.01  # of the target, one deviation of what is left of a lot's offset: common practice, no source
@@ -61,7 +62,7 @@ class _Placed:
 @plain_algebra
 def center(
     scenario: Scenario, wishes: Wishes | None = None, *, coupons: int | None = None, seed: int | None = None,
-    on_progress: Progress | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None,
 ) -> CenterResult:
     """Where to centre each line, or one thickness for all, and what that is worth beside tightening.
 
@@ -71,7 +72,8 @@ def center(
     tell = on_progress or silent
     names, reach = _moves(scenario, wishes)
     own = chosen_seed(scenario, seed)
-    fitted = fit_wide_board(scenario, coupons=coupons, seed=own, tell=tell, names=names, reach=reach)
+    fitted = fit_wide_board(scenario, coupons=coupons, seed=own, tell=tell, names=names, reach=reach,
+                            cache=cache)
     board, basis = fitted.board, basis_of(scenario, fitted, seed=own, together=wishes.together)
 
     def follow(task: tuple[LineModel, Line, Sequence[str], float]) -> Path | None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from tolerance.cores import plain_algebra
 from tolerance.formulas.second_opinion import second_opinions, why_none
 from tolerance.nominal import (
     CheckResult,
@@ -17,7 +18,6 @@ from tolerance.sections.section import Section
 from tolerance.solver.plan import SolverSettings
 from tolerance.solver.shares import coupling, face_shares
 from tolerance.solver.transmission import LineParameters
-from tolerance.study.cores import plain_algebra
 from tolerance.study.lines import EVEN, ODD, PreparedLine, prepare
 
 

@@ -8,6 +8,7 @@ from types import MappingProxyType
 
 import numpy as np
 
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.decided import (
     Basis,
     Compared,
@@ -32,7 +33,7 @@ from tolerance.statistics.against_limit import limit_grid, yields_by_limit
 from tolerance.statistics.estimates import Driver
 from tolerance.statistics.ranking import model_of, rank_drivers
 from tolerance.study.boards import FittedBoard, chosen_seed, fit_board
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
+from tolerance.study.solved import SolvedCache
 from tolerance.surrogate.prediction import Predictor
 from tolerance.units import write_quantity
 
@@ -42,16 +43,16 @@ MOST_OFFERS = 20
 @plain_algebra
 def tighten(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, together: bool = False,
-    on_progress: Progress | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None,
 ) -> TightenResult:
     """What each variation's tolerance is worth, and what the offers come to.
 
     together : the yield of all lines together must reach the target; else that of each line.
-    coupons, seed, on_progress : as for `run`, whose fits and draws these are.
+    coupons, seed, on_progress, cache : as for `run`, whose fits and draws these are.
     """
     tell = on_progress or silent
     offers = offer_models(scenario)
-    fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)), tell=tell)
+    fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)), tell=tell, cache=cache)
     board, basis = fitted.board, basis_of(scenario, fitted, seed=own, together=together)
     base, logarithms = base_sides(board), base_logarithms(board)
 
@@ -69,10 +70,11 @@ def tighten(
 @plain_algebra
 def promise(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, on_progress: Progress | None = None,
+    cache: SolvedCache | None = None,
 ) -> PromiseResult:
     """The tightest limit that meets the target yield, for each line and for all held to one limit."""
     fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)),
-                       tell=on_progress or silent)
+                       tell=on_progress or silent, cache=cache)
     assert fitted.sample is not None
     widest = max(scenario.limit_of(line) for line in scenario.lines)
     curves, together = yields_by_limit(fitted.sample, limit_grid(widest), target_yield=scenario.evaluation.target_yield)
@@ -84,7 +86,7 @@ def promise(
 @plain_algebra
 def compare(
     scenarios: Sequence[Scenario], *, coupons: int | None = None, seed: int | None = None, together: bool = False,
-    on_progress: Progress | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None,
 ) -> CompareResult:
     """Scenarios side by side on the same draws; differences are against the first.
 
@@ -99,20 +101,21 @@ def compare(
     processes = on_common_columns([process_of(scenario) for scenario in scenarios])
     found: list[tuple[FittedBoard, tuple[Side, ...]]] = []
     for scenario, process in zip(scenarios, processes, strict=True):
-        fitted = fit_board(scenario, coupons=coupons, seed=own, tell=tell, process=process)
+        fitted = fit_board(scenario, coupons=coupons, seed=own, tell=tell, process=process, cache=cache)
         found.append((fitted, base_sides(fitted.board)))
     aim: Aim = "together" if together else "each line"
     compared = tuple(
         _compared(scenario, fitted, sides, None if number == 0 else found[0], aim=aim, seed=own, tell=tell)
         for number, (scenario, (fitted, sides)) in enumerate(zip(scenarios, found, strict=True)))
-    return CompareResult(own, coupons, aim, compared, sum(fitted.solver_runs for fitted, _ in found))
+    return CompareResult(own, coupons, aim, compared, sum(fitted.solver_runs for fitted, _ in found),
+                         sum(fitted.from_cache for fitted, _ in found))
 
 
 def basis_of(scenario: Scenario, fitted: FittedBoard, *, seed: int, together: bool = False) -> Basis:
     """What the decision rests on."""
     return Basis(scenario.title, seed, fitted.board.coupons, scenario.evaluation.target_yield,
                  "together" if together else "each line", tuple(line.name for line in scenario.lines),
-                 fitted.solver_runs)
+                 fitted.solver_runs, fitted.from_cache)
 
 
 def offer_models(scenario: Scenario) -> tuple[OfferModel, ...]:

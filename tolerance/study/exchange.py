@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 from pathlib import Path
 
+from tolerance.cores import Progress, plain_algebra
 from tolerance.errors import InputError, ScenarioError, as_toml
 from tolerance.exchanged import Request, RequestRow, Taken
 from tolerance.results import LineResult, RunResult
@@ -14,19 +15,20 @@ from tolerance.scenario.tables import Scenario, Variation
 from tolerance.sheet.amending import Amendment, amend, amendment_text
 from tolerance.sheet.layout import name_of
 from tolerance.sheet.reading import Answer, Note, Reply, read_reply
-from tolerance.study.cores import Progress, plain_algebra
 from tolerance.study.run import run
+from tolerance.study.solved import SolvedCache
 
 
 @plain_algebra
 def ask(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, on_progress: Progress | None = None,
+    cache: SolvedCache | None = None,
 ) -> Request:
     """What to ask the fabricator, the most important first: the run's own drivers, line by line.
 
     A line's variance counts in units of its own limit, so that the lines that fail most decide the order.
     """
-    result = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress)
+    result = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress, cache=cache)
     return request_of(scenario, result)
 
 
@@ -62,6 +64,7 @@ def _spread(line: LineResult) -> float:
 def take(
     scenario: Scenario, reply: str | os.PathLike[str], *, out: str | os.PathLike[str] | None = None,
     coupons: int | None = None, seed: int | None = None, on_progress: Progress | None = None,
+    cache: SolvedCache | None = None,
 ) -> Taken:
     """What a filled sheet changes, and the yield before and after, with the same draws.
 
@@ -74,12 +77,13 @@ def take(
     out = answered_path(base) if out is None else Path(out)
     read = read_reply(Path(reply), scenario)
     amendment, amended, notes = _checked(scenario, amend(scenario, read.answers), read, out, Path(reply).name)
-    before = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress)
+    before = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress, cache=cache)
     asked = request_of(scenario, before).rows
     missing = [row.variation for row in asked if row.variation not in read.rows]
     notes += [Note(read.sheet, f"the row {as_toml(name_of(variation.of))} is missing; nothing is changed there")
               for variation in missing]
-    after = None if amended is None else run(amended, coupons=coupons, seed=before.seed, on_progress=on_progress)
+    after = None if amended is None else run(amended, coupons=coupons, seed=before.seed, on_progress=on_progress,
+                                             cache=cache)
     return Taken(
         title=scenario.title, changes=amendment.changes, notes=tuple(notes), remarks=amendment.remarks,
         text="" if amended is None else _text(scenario, amendment, out, Path(reply).name), before=before,

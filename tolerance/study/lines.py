@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -24,6 +24,7 @@ from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, 
 from tolerance.solver.lossy import cross_section, solve_lossy
 from tolerance.solver.plan import Plan, SolverSettings
 from tolerance.solver.transmission import LineParameters
+from tolerance.study.solved import SolvedCache, SolvedLine
 
 EVEN, ODD = 1, -1
 
@@ -40,6 +41,7 @@ class PreparedLine:
     high_limit: float
     frequency: float | None = None  # [Hz]; None: lossless and static
     rise: ReadingRise | None = None
+    solved: SolvedLine | None = None  # what was solved before
 
     @property
     def mode(self) -> str:
@@ -73,7 +75,26 @@ class PreparedLine:
 
         At a frequency it is the magnitude of the lossy line's.
         """
-        return self.impedance_of(self.solve(section, modes=(self.shown_mode,)))
+        mode = self.shown_mode
+
+        def solve() -> tuple[FloatArray]:
+            return (self.solve(section, modes=(mode,))[mode].impedance,)
+
+        return np.asarray(self.mode_factor * self._known("impedance", section, solve)[0])
+
+    def _known(
+        self, question: str, section: AnySection, solve: Callable[[], tuple[FloatArray, ...]],
+    ) -> tuple[FloatArray, ...]:
+        """What `solve` gives for the sections in the mode that is meant, from the cache where it is there."""
+        if self.solved is None:
+            return solve()
+        entering = section, self.plan, self.frequency, self.shown_mode
+        return self.solved.arrays(question, entering, solve, sections=section.count)
+
+    @property
+    def from_cache(self) -> int:
+        """How many of its sections were solved before."""
+        return 0 if self.solved is None else self.solved.reused
 
     @property
     def has_gradient(self) -> bool:
@@ -85,10 +106,14 @@ class PreparedLine:
 
         The parameters are those of `section_parameters`, in its order. Only where `has_gradient`.
         """
-        assert isinstance(section, Section)
-        assert isinstance(self.plan, Plan)
-        solved = solve_with_derivatives(section, self.plan, mode=self.shown_mode)
-        return self.mode_factor * solved.impedance, self.mode_factor * np.stack(list(solved.by.values()))
+        def solve() -> tuple[FloatArray, FloatArray]:
+            assert isinstance(section, Section)
+            assert isinstance(self.plan, Plan)
+            solved = solve_with_derivatives(section, self.plan, mode=self.shown_mode)
+            return solved.impedance, np.stack(list(solved.by.values()))
+
+        impedance, slopes = self._known("impedance and gradient", section, solve)
+        return self.mode_factor * impedance, self.mode_factor * slopes
 
     @property
     def shown_mode(self) -> int:
@@ -113,15 +138,18 @@ class PreparedLine:
         return np.asarray(self.mode_factor * modes[self.shown_mode].impedance)
 
 
-def prepare(scenario: Scenario, line: Line, settings: SolverSettings) -> PreparedLine:
-    """Make `line` of a checked scenario ready."""
+def prepare(
+    scenario: Scenario, line: Line, settings: SolverSettings, cache: SolvedCache | None = None,
+) -> PreparedLine:
+    """Make `line` of a checked scenario ready. cache : of sections that were solved before."""
     around = surroundings_of if line.partner is None else broadside_surroundings_of
     surroundings = around(scenario, line)
     nominal = as_built(line, surroundings, NominalValues(nominals_of(scenario)))
     half = line.target * scenario.limit_of(line)
     return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
                         low_limit=line.target - half, high_limit=line.target + half,
-                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal))
+                        frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal),
+                        solved=None if cache is None else cache.for_line())
 
 
 def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:

@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
-from tolerance.arrays import FloatArray
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.paged import (
     MeasuredTable,
     Page,
@@ -17,29 +17,32 @@ from tolerance.paged import (
     PagedVariation,
 )
 from tolerance.process.draws import ETCH, Process, process_of
-from tolerance.process.laws import Law
-from tolerance.process.other_laws import DEFAULT_SIGMAS, laws_of
+from tolerance.process.laws import DEFAULT_SIGMAS, Law
+from tolerance.process.other_laws import laws_of
 from tolerance.process.resin import Resin
 from tolerance.results import RunResult
 from tolerance.scenario.properties import MEASURE, members
 from tolerance.scenario.tables import Line, Scenario, Variation
 from tolerance.scenario.writing import kept_keys, scenario_pieces
 from tolerance.solver.plan import SolverSettings
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.decide import offer_models, tolerance_words
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw
 from tolerance.study.page_draws import paged_draws
-from tolerance.study.page_fit import FARTHEST, evaluate_forms, fit_wide, paged_line
+from tolerance.study.page_fit import fit_wide, paged_line
+from tolerance.study.solved import SolvedCache
 
 STREAM = 6_000_006  # of chance, apart from those of the run
 ONE_HALF = 0.5  # resin content of which a mixture's resin is told
 
 
 @plain_algebra
-def page(scenario: Scenario, result: RunResult, *, on_progress: Progress | None = None) -> Page:
+def page(
+    scenario: Scenario, result: RunResult, *, on_progress: Progress | None = None, cache: SolvedCache | None = None,
+) -> Page:
     """What a page needs beside the run's own result: fits over a wider range, and the run's own draws.
 
+    cache : as for `run`.
     Raises UnfinishedError where a line cannot be predicted.
     """
     process = process_of(scenario)
@@ -48,7 +51,7 @@ def page(scenario: Scenario, result: RunResult, *, on_progress: Progress | None 
     settings = SolverSettings()
 
     def fit(task: tuple[Line, np.random.Generator]) -> PagedLine:
-        prepared = prepare(scenario, task[0], settings)
+        prepared = prepare(scenario, task[0], settings, cache)
         return paged_line(prepared, fit_wide(prepared, process, chance=task[1]), properties, process)
 
     chance = np.random.default_rng(np.random.SeedSequence(result.seed, spawn_key=(STREAM,)))
@@ -92,8 +95,8 @@ def _variation(scenario: Scenario, process: Process, variation: Variation) -> Pa
     peaks = {law.centre(reference=law.nominal) for _, law in own}
     anchor = peaks.pop() if len(peaks) == 1 and variation.low is not None and variation.shape != "uniform" else None
     return PagedVariation(
-        variation.of, variation.together, variation.shape, variation.tolerance, variation.shift, variation.sigmas, variation.cpk,
-        variation.low, variation.high, MEASURE[own[0][0].property], relative, reach, anchor,
+        variation.of, variation.together, variation.shape, variation.tolerance, variation.shift, variation.sigmas,
+        variation.cpk, variation.low, variation.high, MEASURE[own[0][0].property], relative, reach, anchor,
         kept_keys(scenario, variation))
 
 
@@ -136,17 +139,3 @@ def _offers(scenario: Scenario, properties: Sequence[PagedProperty]) -> tuple[Pa
         PagedOffer(f"{model.name} {tolerance_words(scenario, offer)}", model.cost,
                    {number[name]: amount for name, amount in model.tolerances.items()})
         for model, offer in zip(offer_models(scenario), scenario.offers, strict=True))
-
-
-def impedance_of(line: PagedLine, inputs: Sequence[FloatArray]) -> FloatArray:
-    """What the page's arithmetic makes of values of the inputs, [ohm] (coupons,); nought where the section cannot be."""
-    rows = evaluate_forms(line.forms, inputs)
-    possible = np.ones(len(rows[0]), dtype=np.bool_)
-    for form, row in zip(line.forms, rows, strict=True):
-        if form.least is not None:
-            possible &= (row >= form.least) if form.least_in else (row > form.least)
-    dimensions = line.matrix.shape[1]
-    logs = np.stack([np.log(np.where(possible, row, 1.0)) if form.logarithm else row
-                     for form, row in zip(line.forms[:dimensions], rows, strict=False)])
-    at = np.clip(line.matrix @ logs - line.origin[:, np.newaxis], -FARTHEST, FARTHEST).T
-    return np.where(possible, np.exp(line.powers.evaluate(at)), 0.0)

@@ -6,7 +6,7 @@ import numpy as np
 
 from tolerance.arrays import FloatArray, IntArray, read_only
 from tolerance.paged import PagedDraws, SobolDraws
-from tolerance.process.draws import SOBOL_BITS, ProcessDraws, correlated_groups, sobol_normals, sobol_uniforms
+from tolerance.process.draws import SOBOL_BITS, ProcessDraws, correlated_groups, sobol_uniforms
 
 MOST_COUPONS = 65536  # that a page computes with
 MOST_STORED = 900_000  # germs that a page carries as they are
@@ -50,23 +50,3 @@ def _sobol(draws: ProcessDraws, block: int, chance: np.random.Generator) -> Sobo
 
 def _whole(uniforms: FloatArray) -> IntArray:
     return np.asarray(np.floor(uniforms * 2.0**SOBOL_BITS), dtype=np.int64)
-
-
-def germs_of(draws: PagedDraws) -> FloatArray:
-    """The standard normals (coupons, variables) that a page comes to, replicate by replicate."""
-    from scipy.special import ndtri
-
-    if draws.sobol is None:
-        assert draws.stored is not None
-        return draws.stored
-    sobol = draws.sobol
-    number = np.arange(draws.block)
-    gray = number ^ (number >> 1)
-    points = np.repeat(sobol.shifts[:, np.newaxis, :], draws.block, axis=1)
-    for bit in range(sobol.directions.shape[2]):
-        points ^= np.where(((gray >> bit) & 1)[np.newaxis, :, np.newaxis] == 1, sobol.directions[:, np.newaxis, :, bit],
-                           0)
-    germ = np.asarray(ndtri((points + 0.5) / 2.0**sobol.bits_of_a_number)).reshape(-1, draws.variables)
-    for columns, root in draws.roots:
-        germ[:, columns] = germ[:, columns] @ root.T
-    return germ

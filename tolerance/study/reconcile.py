@@ -16,6 +16,7 @@ import numpy as np
 from scipy.special import stdtrit
 
 from tolerance.arrays import BoolArray, FloatArray, IntArray
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.process.draws import ETCH, Process, ProcessDraws, Variable, process_of, sobol_normals
 from tolerance.process.laws import Law, quantile
 from tolerance.process.lots import level_shares
@@ -47,11 +48,11 @@ from tolerance.statistics.reconcile import (
     verdict_of,
 )
 from tolerance.statistics.yields import Judgement, Limits, judge
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.coupon_tables import CouponTable, SectionReading, read_coupons, read_sections
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw
 from tolerance.study.predicting import PredictedLine, predict_line
+from tolerance.study.solved import SolvedCache
 
 NINETY = 1.6448536269514722  # deviations of a normal that hold 90 %
 FITS = 0.05  # chance of a larger misfit under which a lot does not fit
@@ -86,7 +87,7 @@ class FittedLines:
 def reconcile(
     scenario: Scenario, measured: str | os.PathLike[str], *, sections: str | os.PathLike[str] | None = None,
     repeatability: float | None = None, sheet: str | None = None, coupons: int | None = None, seed: int | None = None,
-    on_progress: Progress | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None,
 ) -> Reconciled:
     """Measured coupons against the prediction of a checked scenario.
 
@@ -101,8 +102,10 @@ def reconcile(
     process = process_of(scenario)
     table = read_coupons(Path(measured), scenario, sheet=sheet)
     cuts = () if sections is None else read_sections(Path(sections), scenario, process, sheet=sheet)
-    fitted, chance = fit_lines(scenario, process, coupons, seed, on_progress or silent)
-    return reconciled(scenario, fitted, _without_bias(table, test.bias), cuts, repeatability, seed, chance)
+    fitted, chance = fit_lines(scenario, process, coupons, seed, on_progress or silent, cache)
+    found = reconciled(scenario, fitted, _without_bias(table, test.bias), cuts, repeatability, seed, chance)
+    return replace(found, solver_runs=sum(line.prediction.solver_runs for line in fitted.lines),
+                   from_cache=sum(line.prepared.from_cache for line in fitted.lines))
 
 
 def _without_bias(table: CouponTable, bias: float) -> CouponTable:
@@ -145,6 +148,7 @@ def reconciled(
 
 def fit_lines(
     scenario: Scenario, process: Process, coupons: int | None, seed: int, tell: Progress,
+    cache: SolvedCache | None = None,
 ) -> tuple[FittedLines, np.random.Generator]:
     """Every line fitted as `run` does it, with the same draws; and a stream of chance for what comes after."""
     process_chance, training_chance, yield_chance = np.random.default_rng(seed).spawn(3)
@@ -152,7 +156,7 @@ def fit_lines(
     settings = SolverSettings()
 
     def fit(task: tuple[Line, np.random.Generator]) -> PredictedLine:
-        return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1])
+        return predict_line(prepare(scenario, task[0], settings, cache), draws, chance=task[1])
 
     tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
     lines = tuple(on_all_cores(fit, tasks, "solving lines", tell))

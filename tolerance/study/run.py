@@ -6,15 +6,14 @@ drivers -> result. Each step has a stream of chance of its own, so that no step 
 
 from __future__ import annotations
 
-import platform
 import secrets
 import time
 from collections.abc import Sequence
 from dataclasses import replace
-from importlib.metadata import version
 
 import numpy as np
 
+from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.process.draws import REPLICATES, ProcessDraws, process_of
 from tolerance.results import Drawing, LineResult, Record, RunResult, Spread, VarianceShares
 from tolerance.scenario.tables import Line, Scenario
@@ -24,26 +23,26 @@ from tolerance.statistics.ranking import model_of
 from tolerance.statistics.reading import Coupons
 from tolerance.statistics.sampling import Figures, widened_by_sampling
 from tolerance.statistics.yields import Judgement, Limits, LineYield, histogram, judge
-from tolerance.study.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.study.drawing import draw_line
 from tolerance.study.lines import prepare
 from tolerance.study.lots import draw, judge_nesting, judge_test, variance_by_level
 from tolerance.study.measured import RESAMPLES, has_measured, judged_again, measured_inputs
 from tolerance.study.predicting import PredictedLine, predict_line
+from tolerance.study.solved import SolvedCache
+from tolerance.study.versions import settings_of, versions
 from tolerance.study.weighing import Weights, weigh
-
-PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
 
 
 @plain_algebra
 def run(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, direct: int = 0,
-    on_progress: Progress | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None,
 ) -> RunResult:
     """Yield and drivers of every line of a checked scenario.
 
     coupons, seed : instead of the scenario's.  direct : solve that many coupons themselves and report the difference.
     on_progress : called with the step's name, what is done of it, and how much there is.
+    cache : of solved sections, such as tolerance.user_cache(); none is used if left out.
     Raises UnfinishedError where a line's impedance cannot be predicted.
     """
     tell = on_progress or silent
@@ -61,13 +60,13 @@ def run(
     settings = SolverSettings()
 
     def predict(task: tuple[Line, np.random.Generator]) -> PredictedLine:
-        return predict_line(prepare(scenario, task[0], settings), draws, chance=task[1], direct=direct)
+        return predict_line(prepare(scenario, task[0], settings, cache), draws, chance=task[1], direct=direct)
 
     tasks = list(zip(scenario.lines, training_chance.spawn(len(scenario.lines)), strict=True))
     predicted = on_all_cores(predict, tasks, "solving lines", tell)
     clock.lap("solving and prediction")
 
-    sample = _coupons(predicted, draws)
+    sample = coupons_of(predicted, draws)
     verdict_error = np.array([line.verdict_error for line in predicted])
     judged = judge(sample.impedance, sample.possible, sample.limits, replicates=sample.replicates,
                    impedance_error=sample.error, verdict_error=verdict_error, cluster=sample.cluster)
@@ -102,7 +101,9 @@ def run(
         title=scenario.title, seed=seed, coupons=draws.coupons, target_yield=scenario.evaluation.target_yield,
         inside=judged.inside.at_most(min(line.inside.value for line in results)), impossible=judged.impossible,
         lines=tuple(results), by_limit=together,
-        record=_record(scenario, settings, results, draws.replicates, clock), frequency=scenario.evaluation.frequency,
+        record=replace(_record(scenario, settings, results, draws.replicates, clock),
+                       from_cache=sum(weight.from_cache for weight in weights)),
+        frequency=scenario.evaluation.frequency,
         lots=nested.lots, nested=nested.every, reading=tested.every, acceptance=tested.acceptance,
         measured=measured_inputs(scenario, process),
     )
@@ -110,12 +111,12 @@ def run(
 
 def limit_sample(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> LimitSample:
     """The sample as it is held against one limit and another."""
-    sample = _coupons(predicted, draws)
+    sample = coupons_of(predicted, draws)
     targets = np.array([line.prepared.line.target for line in predicted])
     return LimitSample(sample.impedance, sample.possible, targets, sample.error, sample.replicates, sample.cluster)
 
 
-def _coupons(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
+def coupons_of(predicted: Sequence[PredictedLine], draws: ProcessDraws) -> Coupons:
     """The sample as it is judged."""
     return Coupons(
         np.stack([line.impedance for line in predicted]), np.stack([line.possible for line in predicted]),
@@ -165,12 +166,10 @@ def _line_result(
 def _record(
     scenario: Scenario, settings: SolverSettings, lines: list[LineResult], replicates: int, clock: _Clock,
 ) -> Record:
-    versions = {"python": platform.python_version(), **{package: version(package) for package in PACKAGES}}
-    described = {f"solver {name.replace('_', ' ')}": str(getattr(settings, name)) for name in settings.__slots__}
     return Record(
-        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions, replicates=replicates,
+        scenario_text=scenario.text, scenario_path=scenario.source, versions=versions(), replicates=replicates,
         solver_runs=sum(line.prediction.solver_runs for line in lines),
-        settings={**described, "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
+        settings={**settings_of(settings), "replicates of the sample": str(REPLICATES)}, seconds=dict(clock.seconds),
     )
 
 

@@ -24,12 +24,13 @@ from tolerance.study.rare import is_rare, tail_of
 
 @dataclass(frozen=True, slots=True)
 class Weights:
-    """All that weighs on a line."""
+    """All that weighs on a line. from_cache : of all its solver runs so far, those that were solved before."""
 
     drivers: tuple[Driver, ...]
     groups: tuple[Group, ...]
     levers: Levers | None
     tail: Tail | None
+    from_cache: int = 0
 
 
 def weigh(
@@ -40,13 +41,12 @@ def weigh(
     model = model_of(line.predictor)
     drivers = rank_drivers(model, chance=driver_chance, with_shapley=with_shapley)
     if not model.names:
-        return Weights(drivers, (), None, None)
+        return Weights(drivers, (), None, None, line.prepared.from_cache)
     seen = line.predictor.seen
     variables = [seen.process.variables[column] for column in seen.columns]
-    return Weights(
-        drivers, _groups(scenario, model, variables, drivers, group_chance), _levers(line, lever_chance),
-        tail_of(line, chance=tail_chance) if is_rare(line) else None,
-    )
+    groups, levers = _groups(scenario, model, variables, drivers, group_chance), _levers(line, lever_chance)
+    tail = tail_of(line, chance=tail_chance) if is_rare(line) else None
+    return Weights(drivers, groups, levers, tail, line.prepared.from_cache)
 
 
 def _levers(line: PredictedLine, chance: np.random.Generator) -> Levers | None:

@@ -54,8 +54,8 @@ def _stays(result: RunResult) -> list[str]:
         reading = result.reading
         told.append(f"The test, as run: read as inside {share_with_range(reading.as_read)}, accepted "
                     f"{share_with_range(reading.accepted)}, false accepts {share_text(reading.false_accepts)}, false "
-                    f"rejects {share_text(reading.false_rejects)}. Yields that follow the sliders are those of the true "
-                    "impedance, without reading and guard band.")
+                    f"rejects {share_text(reading.false_rejects)}. Yields that follow the sliders are those of the "
+                    "true impedance, without reading and guard band.")
     if result.acceptance is not None:
         told.append("The chance that a lot is accepted stands in the workbook of the run; no slider moves it.")
     if result.measured:

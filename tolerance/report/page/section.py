@@ -42,7 +42,7 @@ class SectionPicture:
 
 def section_picture(drawing: Drawing, lengths: LengthUnit) -> SectionPicture:
     """The nominal section of a line."""
-    corners = np.vstack([part.outline for part in (*drawing.regions, *drawing.conductors)])
+    corners = np.vstack([each.outline for each in drawing.regions] + [each.outline for each in drawing.conductors])
     bottom, top = float(corners[:, 1].min()), float(corners[:, 1].max())
     left, right = _view(drawing, ROOM_UPRIGHT * (top - bottom))
     middle, high = 0.5 * (bottom + top), max(ROOM_UPRIGHT * (top - bottom), (right - left) / WIDEST)

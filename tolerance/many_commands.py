@@ -1,0 +1,83 @@
+"""The command for many scenarios: sweep."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from tolerance.errors import InputError, ToleranceError
+from tolerance.screen import add_fresh, console, progress
+from tolerance.talk_commands import check_numbers
+
+if TYPE_CHECKING:
+    from tolerance.sweeps.work import Outcome
+    from tolerance.swept import SweptRow
+
+UNFINISHED, INTERRUPTED = 3, 130
+
+
+def add_many(commands: Any) -> None:
+    """Add the commands to those of `tolerance`."""
+    sweep = commands.add_parser("sweep", help="many scenarios, or one with [[sweep]]: a table with a row each")
+    sweep.add_argument("paths", type=Path, nargs="+", metavar="FILE|FOLDER",
+                       help="scenarios (TOML); of a folder all *.toml in it")
+    sweep.add_argument("--out", type=Path, metavar="DIR",
+                       help="folder for tables and finished rows; default out/<stem of the first>-sweep")
+    sweep.add_argument("--json", action="store_true", help="all rows as one JSON object on standard output as well")
+    sweep.add_argument("--workers", type=int, metavar="N", help="processes; one for each core if left out")
+    sweep.add_argument("--scheduler", metavar="ADDRESS", help="compute on the workers of this Dask scheduler instead")
+    sweep.add_argument("--seed", type=int, metavar="N", help="instead of the scenarios'")
+    sweep.add_argument("--coupons", type=int, metavar="N", help="instead of the scenarios': a power of two")
+    sweep.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_fresh(sweep)
+    sweep.set_defaults(command=_sweep)
+
+
+def _sweep(options: argparse.Namespace) -> int:
+    check_numbers(options)
+    if options.workers is not None and not 1 <= options.workers <= 1000:
+        raise InputError(f"--workers {options.workers}: must be from 1 to 1000")
+    if options.workers is not None and options.scheduler is not None:
+        raise InputError("--workers: not with --scheduler, whose workers are its own")
+    from tolerance.sweeps.sweep import sweep
+
+    folder = options.out or Path("out") / f"{options.paths[0].resolve().stem}-sweep"
+    done, failed = 0, 0
+
+    def note(number: int, row: SweptRow, outcome: Outcome) -> None:
+        nonlocal done, failed
+        done, failed = done + 1, failed + (row.result is None)
+        options.logbook.write(
+            "row", row=number + 1, scenario=row.source, swept=row.swept, failed=row.result is None,
+            message=row.message or None, solver_runs=None if row.result is None else row.result["solver_runs"],
+            from_cache=outcome.from_cache, seconds=round(outcome.seconds, 3), worker=outcome.worker or None,
+            **({"trace": outcome.trace} if outcome.trace else {}))
+
+    try:
+        with progress(quiet=options.quiet, log=options.logbook) as tell:
+            result = sweep(options.paths, folder, workers=options.workers, scheduler=options.scheduler,
+                           fresh=options.fresh, seed=options.seed, coupons=options.coupons, on_progress=tell,
+                           on_row=note)
+    except (ToleranceError, KeyboardInterrupt):
+        if done:
+            print(f"{done - failed} finished rows are kept in {folder}: the same command goes on from there",
+                  file=sys.stderr)
+        raise
+    from tolerance.report.swept_files import write_sweep
+
+    if result.failed == len(result.rows):
+        raise InputError("\n".join(f"{row.source}: {row.message}" for row in result.rows[:20]))
+    write_sweep(result, folder)
+    if options.json:
+        from tolerance.report.swept_text import sweep_json
+
+        print(sweep_json(result))
+    elif not options.quiet:
+        from tolerance.report.swept_text import print_sweep
+
+        screen = console()
+        print_sweep(result, screen)
+        screen.print(f"Written to {folder}: tables and finished rows", highlight=False)
+    return UNFINISHED if result.failed else 0
