@@ -110,27 +110,33 @@ const Judging = (() => {
 
     taken(mask) { return this.board.data.offers.map((_, place) => place).filter(place => mask >> place & 1); }
 
-    line(number, mask) {
+    // A line's coupons with these offers; null where time ran out before all of them were judged.
+    line(number, mask, until = Infinity) {
       const own = mask & this.relevant[number], known = this.passing[number];
-      if (!known.has(own)) {
-        const view = this.board.laws(this.state, number, this.entries, this.taken(own));
-        const [low, high] = this.board.limits(this.state, number), flags = [];
-        let share = 0, count = 0;
-        for (let block = 0; block < this.blocks; block++) {
-          const ohms = this.board.impedances(number, view, block), passes = new Uint8Array(ohms.length);
-          for (let k = 0; k < ohms.length; k++)
-            if (ohms[k] >= low && ohms[k] <= high) { passes[k] = 1; share += 1; }
-          count += ohms.length;
-          flags.push(passes);
-        }
-        known.set(own, {share: share / count, flags});
+      if (!known.has(own)) known.set(own, {flags: [], passes: 0, count: 0, share: 0,
+        view: this.board.laws(this.state, number, this.entries, this.taken(own))});
+      const told = known.get(own), [low, high] = this.board.limits(this.state, number);
+      while (told.flags.length < this.blocks) {
+        if (performance.now() > until) return null;
+        const ohms = this.board.impedances(number, told.view, told.flags.length), flags = new Uint8Array(ohms.length);
+        for (let k = 0; k < ohms.length; k++)
+          if (ohms[k] >= low && ohms[k] <= high) { flags[k] = 1; told.passes += 1; }
+        told.count += ohms.length;
+        told.share = told.passes / told.count;
+        told.flags.push(flags);
       }
-      return known.get(own);
+      return told;
     }
 
-    reached(mask) { // the yield that is aimed at
-      const lines = this.board.data.lines.map((_, number) => this.line(number, mask));
-      if (this.aim === "each line") return Math.min(...lines.map((line, number) =>
+    reached(mask, until) { // the yield that is aimed at; null where time ran out
+      const lines = [];
+      for (const set of [0, mask]) for (let number = 0; number < this.board.data.lines.length; number++) {
+        const line = this.line(number, set, until);
+        if (line === null) return null;
+        if (set === mask) lines.push(line);
+      }
+      const own = lines.slice(-this.board.data.lines.length);
+      if (this.aim === "each line") return Math.min(...own.map((line, number) =>
         Math.min(this.judged.lines[number].yield.value + line.share - this.line(number, 0).share, 1)));
       return Math.min(this.judged.together.value + this.together(mask) - this.together(0), 1);
     }
@@ -153,7 +159,8 @@ const Judging = (() => {
     work(until) { // true when it is done
       while (!this.done && performance.now() < until) {
         const set = this.sets[this.next];
-        const reached = this.reached(set.mask);
+        const reached = this.reached(set.mask, until);
+        if (reached === null) break;
         if (this.best === null || reached > this.best.reached) this.best = {...set, reached};
         if (this.found === null && reached >= this.board.data.targetYield) this.found = {...set, reached};
         else if (this.found !== null && set.cost === this.found.cost && reached > this.found.reached

@@ -3,7 +3,9 @@
 
 const Pictures = (() => {
   const NAME = "http://www.w3.org/2000/svg";
-  const WIDE = 640, HIGH = 210, FOOT = 172, ROOF = 34;
+  const WORDS = 128; // room for what stands beside a limit
+  const SEEN = 5e-6; // a smaller share is nought in what is written
+  const WIDE = 480, HIGH = 210, FOOT = 172, ROOF = 34;
 
   function element(name, attributes, text) {
     const made = document.createElementNS(NAME, name);
@@ -59,10 +61,10 @@ const Pictures = (() => {
     }
     parts.push(element("text", {x: WIDE, y: HIGH - 1, "text-anchor": "end", class: "faint"}, "ohm"));
     const words = (share, name) => `${Words.percent(share, share > 0 && share < 0.0005 ? 3 : 2)} ${name}`;
-    parts.push(element("text", {x: Math.max(first - 8, 0), y: 16, "text-anchor": first > 130 ? "end" : "start",
-      class: told.below > 0 ? "fail-words" : "faint"}, words(told.below, "below")));
-    parts.push(element("text", {x: Math.min(last + 8, WIDE), y: 16, "text-anchor": last < WIDE - 130 ? "start" : "end",
-      class: told.above > 0 ? "fail-words" : "faint"}, words(told.above, "above")));
+    parts.push(element("text", {x: first > WORDS ? first - 6 : 0, y: 16, "text-anchor": first > WORDS ? "end" : "start",
+      class: told.below >= SEEN ? "fail-words" : "faint"}, words(told.below, "below")));
+    parts.push(element("text", {x: last < WIDE - WORDS ? last + 6 : WIDE, y: 16, "text-anchor": last < WIDE - WORDS ? "start" : "end",
+      class: told.above >= SEEN ? "fail-words" : "faint"}, words(told.above, "above")));
     svg.replaceChildren(...parts);
     svg.setAttribute("aria-label", `Spread of the impedance of ${line.name}: mean ${Words.fixed(told.mean, 2)} ohm, `
       + `deviation ${Words.fixed(told.deviation, 2)} ohm, limits ${told.limits.map(each => Words.trimmed(each, 2))

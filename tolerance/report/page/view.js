@@ -5,7 +5,7 @@ const tolerancePage = (() => {
   const AT_ONCE = 45; // milliseconds of arithmetic before the first answer
   const OFFERS_BY = 85; // milliseconds after a move when the weighing of offers leaves the screen to others
   const SLICE = 14; // milliseconds of work at a time afterwards
-  const OFFER_BLOCKS = 4;
+  const OFFER_BLOCKS = 16; // of coupons, on which offers are weighed in the end
   const SPOKEN_AFTER = 600; // milliseconds without a move
   const ROUGH = 0.06; // of the limits' half-width: an error above it is told
 
@@ -140,7 +140,7 @@ const tolerancePage = (() => {
     share.textContent = Words.share(told.yield, target);
     range.textContent = Words.range(told.yield, target);
     range.className = "remark";
-    row.querySelector('[data-cell="yield"]').replaceChildren(share, " ", range);
+    row.querySelector('[data-cell="yield"]').replaceChildren(share, document.createElement("br"), range);
     const most = Math.max(Words.percentDigits(told.yield, target), 2);
     cell("below", Words.percent(told.below, Math.min(most, 3)));
     cell("above", Words.percent(told.above, Math.min(most, 3)));
