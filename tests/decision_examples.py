@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 
 from tests.process_examples import process, variable
@@ -11,6 +13,8 @@ from tolerance.process.draws import Process, ProcessDraws, draw_process
 from tolerance.process.other_laws import seen_by_line
 from tolerance.scenario.amounts import Amount
 from tolerance.statistics.yields import Limits
+
+Answers = Callable[[Process, FloatArray], tuple[FloatArray, BoolArray]]
 
 COUPONS = 65536
 ETCH_HALF_WIDTH = 12e-6
@@ -35,7 +39,7 @@ def product_line(
         return np.asarray(target * off * np.exp(logarithm), dtype=np.float64)
 
     return LineModel(name, target, Limits(target * (1.0 - limit), target * (1.0 + limit)), 0.0, 1e-4, names,
-                     seen_by_line(known, names, width=1e-4), impedance, all_possible)
+                     seen_by_line(known, names, width=1e-4), all_possible(impedance))
 
 
 def sum_line(known: Process, *, slope: float, start: float, target: float = 50.0, limit: float = 0.1) -> LineModel:
@@ -46,7 +50,7 @@ def sum_line(known: Process, *, slope: float, start: float, target: float = 50.0
         return start + slope * ProcessDraws(changed, germ).etch("L1", width=1e-4)
 
     return LineModel("line", target, Limits(target * (1.0 - limit), target * (1.0 + limit)), 0.0, 1e-4, names,
-                     seen_by_line(known, names, width=1e-4), impedance, all_possible)
+                     seen_by_line(known, names, width=1e-4), all_possible(impedance))
 
 
 def normal_etch() -> Process:
@@ -54,9 +58,9 @@ def normal_etch() -> Process:
     return process(variable("L1.etch", 0.0, tolerance=Amount(ETCH_HALF_WIDTH, relative=False)))
 
 
-def all_possible(_changed: Process, germ: FloatArray) -> BoolArray:
-    """Every section exists."""
-    return np.ones(len(germ), dtype=np.bool_)
+def all_possible(impedance: Callable[[Process, FloatArray], FloatArray]) -> Answers:
+    """Answers of a line whose every section exists."""
+    return lambda changed, germ: (impedance(changed, germ), np.ones(len(germ), dtype=np.bool_))
 
 
 def board_of(known: Process, *lines: LineModel, coupons: int = COUPONS, seed: int = 0) -> Board:

@@ -28,6 +28,7 @@ from tolerance.solver.plan import SolverSettings, plan_for
 from tolerance.study import lines, solved
 from tolerance.study.center import Wishes, center
 from tolerance.study.decide import promise, tighten
+from tolerance.study.exchange import ask
 from tolerance.study.lines import prepare
 from tolerance.study.run import run
 from tolerance.study.solved import SolvedCache, key_of, solved_in, solver_digest, user_cache
@@ -246,6 +247,8 @@ def test_decisions_after_a_run_ask_the_solver_nothing(tmp_path: Path, monkeypatc
     tails = sum(line.tail.solver_runs for line in before.lines if line.tail)
     for one in found:
         assert one.basis.from_cache == one.basis.solver_runs == before.record.solver_runs - tails
+    asked = ask(scenario, coupons=COUPONS, cache=cache).result.record
+    assert asked.from_cache == asked.solver_runs == before.record.solver_runs
     again = center(scenario, Wishes(), coupons=COUPONS, cache=cache)
     assert center_json(again) == center_json(moved)
     assert moved.basis.from_cache == len(scenario.lines)  # the nominal sections

@@ -94,3 +94,20 @@ def test_pairs_get_a_width_for_each_gap(board: Path, capsys: pytest.CaptureFixtu
     assert feed["gaps"] == []
     assert [each["gap_um"] for each in pair["gaps"]] == pytest.approx([130.0, 170.0])
     assert pair["gaps"][0]["width_um"] < pair["gaps"][1]["width_um"], "a wider gap takes a wider trace"
+
+
+def test_the_drawing_note_is_in_the_report_of_a_run(
+    board: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str],
+) -> None:
+    assert command("run", board, "--coupons", 256, "--out", tmp_path / "out", "--quiet") == 0
+    assert command("note", board) == 0
+    text = " ".join(capsys.readouterr().out.split())
+    sheet = load_workbook(tmp_path / "out" / "tolerance.xlsx")["Drawing note"]
+    rows = [[cell for cell in row if cell is not None] for row in sheet.iter_rows(values_only=True)]
+    assert rows[2][:3] == ["line", "target [ohm]", "of a pair"]
+    assert rows[3] == ["radio feed", 50, 0.1, 45, 55, "L1", "L2", pytest.approx(180), pytest.approx(18)]
+    assert rows[4] == ["clock pair", 100, "differential", 0.1, 90, pytest.approx(110), "L3", "L2, L4",
+                       pytest.approx(100), pytest.approx(150), pytest.approx(10)]
+    notes = [str(row[0]) for row in rows[5:] if row]
+    assert len(notes) == 5
+    assert all(note in text for note in notes), "word for word what `note` prints"

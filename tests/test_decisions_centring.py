@@ -76,7 +76,7 @@ def test_a_lot_that_is_brought_to_the_target_keeps_its_spread_and_what_is_left_o
     known = lognormals(P1=0.15)
     line = product_line(known, {"P1": 0.8}, off=1.2)  # 20 % off: nothing passes as it is
     board = board_of(known, line)
-    impedance = line.impedance(line.process, board.germ)
+    impedance = line.answers(line.process, board.germ)[0]
     possible = np.ones(board.coupons, dtype=np.bool_)
     for error in (0.0, 0.01, 0.03):
         chance = chance_when_centred(impedance, possible, line, error=error, lot_coupons=None)

@@ -122,10 +122,10 @@ def test_coupons_that_cannot_exist_fail_where_that_is_and_nowhere_else() -> None
     known = lognormals(P1=0.12)
     line = product_line(known, {"P1": 0.5}, limit=0.5)
 
-    def possible(changed: Process, germ: FloatArray) -> BoolArray:
-        return ProcessDraws(changed, germ).value("P1.dk") < 4.4
+    def answers(changed: Process, germ: FloatArray) -> tuple[FloatArray, BoolArray]:
+        return line.answers(changed, germ)[0], ProcessDraws(changed, germ).value("P1.dk") < 4.4
 
-    bounded = board_of(known, replace(line, possible=possible))
+    bounded = board_of(known, replace(line, answers=answers))
     one = tightened(bounded, 0.99)
     exact = [ndtr(math.log(1.1) / (math.log1p(factor * 0.12) / 3.0)) if factor else 1.0 for factor in one.factors]
     assert one.together == pytest.approx(np.array(exact), abs=4.0 / COUPONS)

@@ -16,13 +16,14 @@ from tests.sheet_examples import COUPONS, TEXT, address, asked, edited, fill, sc
 from tolerance.command import main
 from tolerance.errors import InputError
 from tolerance.exchanged import Taken
+from tolerance.measurements.archive import safe_content
 from tolerance.report.request import request_workbook
 from tolerance.scenario import Amount, load, parse
 from tolerance.sheet.amending import amend
-from tolerance.sheet.archive import safe_content
 from tolerance.sheet.cells import CellError, SeenCell, basis_named, typed_of
 from tolerance.sheet.reading import read_reply
-from tolerance.study.exchange import request_of, take
+from tolerance.study.exchange import ask, request_of, take
+from tolerance.study.run import run
 
 ETCH, PRESSED, DK, CORE = "L1.etch, L3.etch", "P1.thickness", "P*.dk", "C1.thickness"
 
@@ -278,3 +279,13 @@ def test_the_commands_there_and_back(
     assert not (tmp_path / "orchard-answered.toml").exists()
     assert command("ask", "orchard.toml", "--json", *options) == 0
     assert json.loads(capsys.readouterr().out)["rows"][0]["weight"] > 0.0
+
+
+def test_what_is_asked_rests_on_the_run_itself() -> None:
+    scenario = parse(TEXT)
+    found, known = ask(scenario, coupons=COUPONS).result, run(scenario, coupons=COUPONS)
+    assert [line.inside for line in found.lines] == [line.inside for line in known.lines]
+    assert [line.drivers for line in found.lines] == [line.drivers for line in known.lines]
+    assert [line.tail for line in found.lines] == [line.tail for line in known.lines]
+    assert all(line.levers is None and line.groups == () for line in found.lines), "nobody asks for them here"
+    assert all(line.levers is not None and line.groups for line in known.lines)

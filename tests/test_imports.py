@@ -87,6 +87,13 @@ def test_a_module_imports_only_from_earlier_steps(path: Path) -> None:
         assert other not in FORBIDDEN.get(room, set()), f"{room} must not know {other}"
 
 
+@pytest.mark.parametrize("path", modules(), ids=lambda path: str(path.relative_to(PACKAGE)))
+def test_a_module_takes_nothing_private_of_another(path: Path) -> None:
+    taken = [node for node in ast.walk(ast.parse(path.read_text(encoding="utf-8")))
+             if isinstance(node, ast.ImportFrom) and (node.module or "").startswith("tolerance")]
+    assert [alias.name for node in taken for alias in node.names if alias.name.startswith("_")] == []
+
+
 def test_every_room_stands_in_the_table() -> None:
     assert {room_of(path) for path in modules()} <= set(ROW_OF)
 

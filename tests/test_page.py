@@ -166,7 +166,8 @@ def test_the_polynomial_of_degree_four_is_exact_for_one() -> None:
     at = chance.uniform(-1.0, 1.0, (120, 3))
 
     def truth(x: FloatArray) -> FloatArray:
-        return np.asarray(3.9 + 0.2 * x[:, 0] - 0.1 * x[:, 1] * x[:, 2] + 0.05 * x[:, 0] ** 3 * x[:, 1] - 0.03 * x[:, 2] ** 4)
+        return np.asarray(3.9 + 0.2 * x[:, 0] - 0.1 * x[:, 1] * x[:, 2]
+                          + 0.05 * x[:, 0] ** 3 * x[:, 1] - 0.03 * x[:, 2] ** 4)
 
     fitted = fit_wide(at, truth(at))
     fresh = chance.uniform(-1.0, 1.0, (50, 3))

@@ -2,14 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from typing import Any
+
 import numpy as np
 import pytest
 
 from tests.process_examples import process, variable
+from tolerance.arrays import FloatArray
+from tolerance.process import remembered as module
 from tolerance.process.draws import Process, ProcessDraws, draw_process
 from tolerance.process.laws import Law, quantile
 from tolerance.process.other_laws import moved, narrowed, scaled, seen_by_line, with_laws, with_variable
-from tolerance.process.remembered import RememberedDraws, remember
+from tolerance.process.remembered import FEWEST, Remembered
 from tolerance.scenario.amounts import Amount
 from tolerance.scenario.properties import Property
 
@@ -85,13 +90,37 @@ def replace_nominals(known: Process, more: dict[str, float]) -> Process:
     return Process(known.variables, {**known.nominals, **more}, known.correlation)
 
 
-def test_remembered_draws_are_the_draws() -> None:
-    known = known_process()
-    draws = draw_process(known, coupons=256, chance=np.random.default_rng(0))
-    changed = with_laws(known, {"P1.dk": scaled(known.variables[1].members[0][1], 0.5)})
-    plain = ProcessDraws(changed, draws.germ)
-    quick = RememberedDraws(changed, draws.germ, known=remember(known, draws.germ, width=1e-4))
-    for name in ("P1.dk", "P2.dk"):
-        assert np.array_equal(plain.value(name), quick.value(name))
-    for width in (1e-4, 2e-4):
-        assert np.array_equal(plain.etch("L1", width=width), quick.etch("L1", width=width))
+@pytest.mark.parametrize("shape", [
+    {}, {"shape": "lognormal"}, {"shape": "uniform"}, {"shape": "triangular"}, {"shape": "truncated_normal"},
+    {"shape": "truncated_normal", "sigmas": 2.0, "shift": Amount(0.05, relative=False)},
+    {"shape": "triangular", "tolerance": None, "low": 3.9, "high": 4.2}, {"cpk": 1.33},
+], ids=str)
+def test_remembered_draws_are_the_draws(shape: dict[str, Any], monkeypatch: pytest.MonkeyPatch) -> None:
+    tolerance = Amount(0.2, relative=False)
+    law = Law(**{"shape": "normal", "nominal": 4.0, "tolerance": tolerance, **shape})
+    known = process(variable("L1.etch", 0.0, tolerance=Amount(0.1, relative=True)))
+    known = with_laws(with_variable(known, Property("P1.dk", "P1", "dk", 4.0)), {"P1.dk": law})
+    known = replace_nominals(known, {"P1.dk": 4.0, "P2.dk": 3.0})
+    germ = draw_process(known, coupons=FEWEST, chance=np.random.default_rng(0)).germ
+    remembered, asked = Remembered(germ), list[str]()
+    for name in ("triangular", "cut_normal"):
+        monkeypatch.setattr(module, name, counted(getattr(module, name), asked))
+    for other in (law, scaled(law, 0.5), moved(law, 0.1, nominal=True), scaled(law, 0.0), scaled(law, 2.0)):
+        changed = with_laws(known, {"P1.dk": other})
+        plain = ProcessDraws(changed, germ)
+        for rows in (slice(0, 1000), slice(1000, FEWEST)):
+            quick = remembered.draws(changed, rows)
+            assert quick.value("P1.dk") == pytest.approx(plain.value("P1.dk")[rows], rel=1e-11)
+            assert np.array_equal(plain.value("P2.dk")[rows], quick.value("P2.dk"))
+            for width in (1e-4, 2e-4):
+                assert np.array_equal(plain.etch("L1", width=width)[rows], quick.etch("L1", width=width))
+    assert len(asked) == (1 if law.shape in ("triangular", "truncated_normal") else 0)
+
+
+def counted(made: Callable[..., FloatArray], asked: list[str]) -> Callable[..., FloatArray]:
+    """`made` that notes down each time that it is asked."""
+    def noting(germ: FloatArray, **ends: float) -> FloatArray:
+        asked.append(f"{ends}")
+        return made(germ, **ends)
+
+    return noting

@@ -126,7 +126,7 @@ ONE_MISTAKE = [
     ('of = "L2.etch_factor": "L2" gives no etch_factor', ('"P1.thickness"', '"L2.etch_factor"')),
     ('of = "X*.dk": must match at least one property that varies', ('"P*.dk"', '"X*.dk"')),
     ('of = "thickness": must be LAYER.PROPERTY', ('"P1.thickness"', '"thickness"')),
-    ("of = 3: must be LAYER.PROPERTY names or patterns", ('"P1.thickness"', "3")),
+    ("of = 3: must be a LAYER.PROPERTY name or pattern", ('"P1.thickness"', "3")),
     ('"L2.ech": copper varies in', ('"L3.etch"]', '"L2.ech"]')),
     ('of = "P1.dk": must not name what another variation names: "P1.dk" (also in "P*.dk")',
      ("together = true", 'together = true\n[[variations]]\nof = "P1.dk"\ntolerance = "1 %"')),

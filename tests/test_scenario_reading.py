@@ -94,7 +94,7 @@ def test_ways_to_save_a_text(tmp_path: Path, content: bytes) -> None:
     (b"format = 1\nformat = 1\n", "is not valid TOML: a key or table stands twice (at line 2, column 11)"),
     (b"a = " + b"[" * 20_000, "nested too deeply"),
     (b"seed = " + b"9" * 5000, "orchard.toml: is not valid TOML: "),
-    (b"\0", "orchard.toml: is not valid TOML: "),
+    (b"\0", "orchard.toml: must be UTF-8 text: it holds binary data"),
 ])
 def test_what_is_not_toml(tmp_path: Path, content: bytes, part: str) -> None:
     told = refusal(write(tmp_path, "orchard.toml", content))
@@ -115,7 +115,7 @@ def test_no_file_and_a_folder(tmp_path: Path) -> None:
     with pytest.raises(InputError):
         load("with\0zero.toml")
     write(tmp_path, "large.toml", b"# " + b"x" * 5_000_000)
-    assert "is larger than 4 MB" in refusal(tmp_path / "large.toml")
+    assert "is too large: a scenario, with all it extends, holds at most 500 kB" in refusal(tmp_path / "large.toml")
 
 
 def test_extends_merges_entries_of_the_same_name_key_by_key(tmp_path: Path) -> None:

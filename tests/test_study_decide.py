@@ -133,6 +133,20 @@ def test_a_moved_thickness_yields_what_a_run_of_it_yields(board: Scenario) -> No
     assert result.lines[1].best == result.lines[1].width, "the widths stay"
 
 
+def test_other_gaps_yield_what_a_run_of_them_yields() -> None:
+    close = changed(BOARD, ('limit = "10 %"', 'limit = "5 %"'))
+    result = center(parse(close), Wishes(gaps=(130e-6, 170e-6)), coupons=COUPONS)
+    alone = center(parse(close), Wishes(), coupons=COUPONS)
+    for each in result.lines[1].gaps:
+        text = changed(close, ('width = "100 um"\ngap = "150 um"',
+                               f'width = "{each.width * 1e6:.9g} um"\ngap = "{each.gap * 1e6:.9g} um"'))
+        known = run(parse(text), coupons=COUPONS)
+        assert known.lines[1].nominal == pytest.approx(100.0, abs=0.01)
+        assert each.inside.value == pytest.approx(known.lines[1].inside.value, abs=2.0 * SAME)
+    runs = result.basis.solver_runs - alone.basis.solver_runs
+    assert 0 < runs <= 2 * (60 + 15), "two fits without certificates, and a width each"
+
+
 def test_ways_name_a_price_only_for_what_is_bought(centred: CenterResult) -> None:
     assert [way.name for way in centred.ways] == ["as it is", "center", "tighten", "both"]
     assert centred.ways[1].cost == 0.0

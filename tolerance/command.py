@@ -14,11 +14,22 @@ from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
 from tolerance.decision_commands import add_decisions
-from tolerance.errors import InputError, ToleranceError
+from tolerance.errors import InputError, ToleranceError, on_one_line
 from tolerance.logbook import Logbook
 from tolerance.many_commands import add_many
 from tolerance.page_command import add_page, write_the_page
-from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
+from tolerance.screen import (
+    Parser,
+    add_allow,
+    add_fresh,
+    cache_for,
+    check_folder,
+    console,
+    progress,
+    survive_narrow_encodings,
+    tell_from_cache,
+    tell_problem,
+)
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
@@ -34,15 +45,16 @@ LOGGED = ("run", "page", "sweep", "tighten", "center", "promise", "compare", "as
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
     """Run one command and exit with its status."""
+    survive_narrow_encodings()
     options = _parser().parse_args(arguments)
     log = None
     try:
-        log = options.logbook = Logbook(getattr(options, "log", None), _complain)
+        log = options.logbook = Logbook(getattr(options, "log", None), tell_problem)
         log.write("began", command=sys.argv[1:] if arguments is None else list(arguments), cores=os.cpu_count())
         status = options.command(options)
         sys.stdout.flush()
     except ToleranceError as problem:
-        _complain(str(problem))
+        tell_problem(problem)
         if log is not None:
             log.write("failed", message=str(problem))
         status = problem.exit_status
@@ -50,10 +62,10 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         status = 0
     except OSError as problem:
-        print(f"could not be finished: {problem}", file=sys.stderr)
+        tell_problem(f"could not be finished: {problem}")
         status = UNFINISHED
     except KeyboardInterrupt:
-        _complain("interrupted")
+        tell_problem("interrupted")
         status = INTERRUPTED
     if log is not None:
         log.write("ended", status=status)
@@ -61,12 +73,8 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
     sys.exit(status)
 
 
-def _complain(words: str) -> None:
-    print(words, file=sys.stderr)
-
-
 def _parser() -> argparse.ArgumentParser:
-    parser = argparse.ArgumentParser(
+    parser = Parser(
         prog="tolerance",
         description="Will the coupons pass? Fabrication tolerances of controlled-impedance lines, through a field "
                     "solver, to yield and what drives it.",
@@ -85,6 +93,7 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("--out", type=Path, metavar="DIR", help="folder for the pictures; default out/<file stem>")
     check.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the pictures")
     check.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(check)
     check.set_defaults(command=_check)
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
@@ -121,6 +130,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--strict", action="store_true", help="exit with status 1 if a line misses its target yield")
     add_fresh(run)
     run.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(run)
     run.set_defaults(command=_run)
 
 
@@ -156,7 +166,8 @@ def _check(options: argparse.Namespace) -> int:
 
     if options.out is not None and not options.picture:
         raise InputError(f"--out {options.out}: only with --picture")
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     result = check(scenario, formulas=options.formulas)
     folder = options.out or Path("out") / options.file.stem
     written = _write_pictures(scenario, folder, options) if options.picture else []
@@ -168,7 +179,7 @@ def _check(options: argparse.Namespace) -> int:
         screen = console()
         print_check(result, scenario.report.lengths, screen, shares=options.shares)
         if written:
-            screen.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} pictures, first {written[0].name}")
     return 0
 
 
@@ -188,7 +199,8 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
 def _run(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     _check_numbers(options, in_lots=scenario.has_levels)
     if options.page and options.json and options.out is None:
         raise InputError("--page: with --json only where --out says where it goes")
@@ -212,7 +224,7 @@ def _run(options: argparse.Namespace) -> int:
         screen = console()
         print_run(result, screen)
         if written:
-            screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}", highlight=False)
+            screen.print(f"Written to {folder}: {len(written)} files, first {written[0].name}")
     tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return MISSED_TARGET if options.strict and result.misses_target else 0
 
@@ -241,8 +253,10 @@ def _write_files(
     from tolerance.report.figures import page_jobs, run_pages
     from tolerance.report.files import remove_earlier
     from tolerance.report.workbook import write_workbook
+    from tolerance.study.note import note
 
-    workbook: Callable[[], Path] = partial(write_workbook, result, scenario, folder / "tolerance.xlsx")
+    workbook: Callable[[], Path] = partial(
+        write_workbook, result, scenario, folder / "tolerance.xlsx", note(scenario))
     figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=options.figures)
     written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
     written += [write_the_page(scenario, result, folder, tell, cache)] if options.page else []
@@ -255,7 +269,7 @@ def _new(options: argparse.Namespace) -> int:
 
     write_starter(options.file)
     if not options.quiet:
-        print(f"Wrote {options.file}. Run it: tolerance run {options.file}")
+        print(on_one_line(f"Wrote {options.file}. Run it: tolerance run {options.file}"))
     return 0
 
 

@@ -9,7 +9,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError
-from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
+from tolerance.screen import add_allow, add_fresh, cache_for, check_folder, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.report.decisions_files import Decision
@@ -49,6 +49,7 @@ def add_decisions(commands: Any, check_numbers: NumberCheck) -> None:
                       help='what the fabricator may alter of a width; "10 %%" if left out')
     note.add_argument("--thickness-change", metavar="SHARE",
                       help='what the fabricator may alter of a dielectric thickness; "10 %%" if left out')
+    add_allow(note)
     note.set_defaults(command=_note)
 
 
@@ -67,6 +68,7 @@ def _add_options(
     parser.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(parser)
     add_fresh(parser)
     parser.set_defaults(command=command, direct=0, check_numbers=check_numbers)
 
@@ -144,12 +146,13 @@ def _compare(options: argparse.Namespace) -> int:
 
 def _note(options: argparse.Namespace) -> int:
     from tolerance.report.decisions_json import note_json
-    from tolerance.report.decisions_terminal import note_text
     from tolerance.report.files import put_in_place
+    from tolerance.report.note_text import note_text
     from tolerance.scenario import load
     from tolerance.study.note import THICKNESS_CHANGE, WIDTH_CHANGE, Allowance, note
 
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     result = note(scenario, Allowance(
         width=_share("--width-change", options.width_change, WIDTH_CHANGE),
         thickness=_share("--thickness-change", options.thickness_change, THICKNESS_CHANGE)))
@@ -174,13 +177,14 @@ def _tell(
     elif not options.quiet:
         show()
         if written:
-            console().print(f"Written to {options.out}: {', '.join(path.name for path in written)}", highlight=False)
+            console().print(f"Written to {options.out}: {', '.join(path.name for path in written)}")
 
 
 def _load(options: argparse.Namespace, file: Path) -> Scenario:
     from tolerance.scenario import load
 
-    scenario = load(file)
+    check_folder(options.out)
+    scenario = load(file, allow=options.allow)
     options.check_numbers(options, in_lots=scenario.has_levels)
     return scenario
 

@@ -51,7 +51,7 @@ class Problem:
         elif self.number:
             place += f" number {self.number}"
         value = f" = {as_toml(self.given)}" if self.given is not None else ""
-        parts = [self.file, place, self.key + value if self.key else "", self.allowed]
+        parts = [self.file, place, _cut(self.key) + value if self.key else "", self.allowed]
         return on_one_line(": ".join(part for part in parts if part))
 
 
@@ -76,7 +76,11 @@ _LONGEST_SHOWN = 80
 def as_toml(value: object) -> str:
     """The value as it would stand in the scenario, on one line, cut where it is long."""
     text = _toml_text(value)
-    return text if len(text) <= _LONGEST_SHOWN else text[: _LONGEST_SHOWN - 3] + "..."
+    return f'{_cut(text[:-1], _LONGEST_SHOWN - 1)}"' if isinstance(value, str) else _cut(text)
+
+
+def _cut(text: str, longest: int = _LONGEST_SHOWN) -> str:
+    return text if len(text) <= longest else text[: longest - 3] + "..."
 
 
 def _toml_text(value: object) -> str:

@@ -30,7 +30,10 @@ class RequestRow:
 
 @dataclass(frozen=True, slots=True)
 class Request:
-    """What `tolerance ask` sends: rows in order of what they do to the yield; what moves no line is left out."""
+    """What `tolerance ask` sends: rows in order of what they do to the yield; what moves no line is left out.
+
+    result : the run, without groups of drivers and levers.
+    """
 
     scenario: Scenario
     rows: tuple[RequestRow, ...]
@@ -50,7 +53,7 @@ class Taken:
 
     changes : every key that changes, with the cell it comes from.  notes : every cell that could not be used.
     text : the scenario that extends the first, as TOML; "" where nothing changes.
-    scenario, after : that scenario and its run; None where nothing changes.
+    scenario, after : that scenario and its run; None where nothing changes.  Runs are without groups and levers.
     """
 
     title: str

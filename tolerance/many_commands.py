@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError, ToleranceError
-from tolerance.screen import add_fresh, console, progress
+from tolerance.screen import add_allow, add_fresh, check_folder, console, progress
 from tolerance.talk_commands import check_numbers
 
 if TYPE_CHECKING:
@@ -32,11 +32,13 @@ def add_many(commands: Any) -> None:
     sweep.add_argument("--coupons", type=int, metavar="N", help="instead of the scenarios': a power of two")
     sweep.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
     add_fresh(sweep)
+    add_allow(sweep)
     sweep.set_defaults(command=_sweep)
 
 
 def _sweep(options: argparse.Namespace) -> int:
     check_numbers(options)
+    check_folder(options.out)
     if options.workers is not None and not 1 <= options.workers <= 1000:
         raise InputError(f"--workers {options.workers}: must be from 1 to 1000")
     if options.workers is not None and options.scheduler is not None:
@@ -58,8 +60,8 @@ def _sweep(options: argparse.Namespace) -> int:
     try:
         with progress(quiet=options.quiet, log=options.logbook) as tell:
             result = sweep(options.paths, folder, workers=options.workers, scheduler=options.scheduler,
-                           fresh=options.fresh, seed=options.seed, coupons=options.coupons, on_progress=tell,
-                           on_row=note)
+                           fresh=options.fresh, seed=options.seed, coupons=options.coupons, allow=options.allow,
+                           on_progress=tell, on_row=note)
     except (ToleranceError, KeyboardInterrupt):
         if done:
             print(f"{done - failed} finished rows are kept in {folder}: the same command goes on from there",
@@ -79,5 +81,5 @@ def _sweep(options: argparse.Namespace) -> int:
 
         screen = console()
         print_sweep(result, screen)
-        screen.print(f"Written to {folder}: tables and finished rows", highlight=False)
+        screen.print(f"Written to {folder}: tables and finished rows")
     return UNFINISHED if result.failed else 0

@@ -7,7 +7,7 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
+from tolerance.screen import add_allow, add_fresh, cache_for, check_folder, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.results import RunResult
@@ -27,13 +27,15 @@ def add_page(commands: argparse._SubParsersAction[argparse.ArgumentParser], chec
     page.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     page.add_argument("--quiet", action="store_true", help="do not say what was written")
     add_fresh(page)
+    add_allow(page)
     page.set_defaults(command=lambda options: _page(options, checked), direct=0)
 
 
 def _page(options: argparse.Namespace, checked: Checked) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     checked(options, in_lots=scenario.has_levels)
     from tolerance.study.run import run
 

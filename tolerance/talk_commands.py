@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError
-from tolerance.screen import add_fresh, cache_for, console, progress, tell_from_cache
+from tolerance.screen import add_allow, add_fresh, cache_for, check_folder, console, progress, tell_from_cache
 
 if TYPE_CHECKING:
     from tolerance.exchanged import Taken
@@ -47,6 +47,7 @@ def _add_common(parser: argparse.ArgumentParser, command: Callable[[argparse.Nam
     parser.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     parser.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     parser.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_allow(parser)
     add_fresh(parser)
     parser.set_defaults(command=command)
 
@@ -54,7 +55,7 @@ def _add_common(parser: argparse.ArgumentParser, command: Callable[[argparse.Nam
 def _ask(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    scenario = load(options.file, allow=options.allow)
     check_numbers(options)
     out = options.out or (None if options.json else Path(f"{options.file.stem}-ask.xlsx"))
     _must_be_new(out, ".xlsx")
@@ -81,7 +82,7 @@ def _ask(options: argparse.Namespace) -> int:
 def _take(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    scenario = load(options.file, allow=options.allow)
     check_numbers(options)
     from tolerance.study.exchange import answered_path, take
 
@@ -110,7 +111,8 @@ def _take(options: argparse.Namespace) -> int:
 def _reconcile(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
-    scenario = load(options.file)
+    check_folder(options.out)
+    scenario = load(options.file, allow=options.allow)
     check_numbers(options)
     repeatability = _resistance(options.repeatability)
     from tolerance.study.reconcile import reconcile

@@ -75,6 +75,7 @@ MEASURES: Mapping[str, Measure] = MappingProxyType({
 
 _NUMBER = r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]{1,3})?"
 _QUANTITY = re.compile(rf"\s*({_NUMBER})\s*(.*?)\s*", re.DOTALL)
+_COMMA = re.compile(r"[.,]?,\s*[0-9]")
 _SPELLINGS = MappingProxyType({"µm": "um", "μm": "um", "g/m2": "g/m^2", "g/m²": "g/m^2"})  # micro sign, Greek mu
 _LONGEST_QUANTITY = 60
 
@@ -97,9 +98,11 @@ def read_quantity(text: str, measure: MeasureName) -> float:
     match = _QUANTITY.fullmatch(text) if len(text) <= _LONGEST_QUANTITY else None
     allowed = _listed(unit_names(measure))
     if match is None:
-        raise QuantityError(f"a number and its unit, {allowed}")
+        raise QuantityError(f"it is no number with a unit: {allowed}")
     digits, unit = match.groups()
     unit = _SPELLINGS.get(unit, unit)
+    if _COMMA.match(unit):
+        raise QuantityError("a number is written with a decimal point and without commas")
     if not unit:
         raise QuantityError(f"the unit is missing: {allowed}")
     if unit not in MEASURES[measure].units:

@@ -22,7 +22,8 @@ Side = tuple[BoolArray, BoolArray, BoolArray]  # passes; surely passes; perhaps 
 
 @dataclass(frozen=True, slots=True)
 class LineModel:
-    """One line: `impedance` [ohm] and `possible` (coupons,) for a process and germs (coupons, variables).
+    """One line: what it `answers` for a process and germs (coupons, variables): impedances [ohm] and whether sections
+    can exist, (coupons,) each.
 
     width : drawn width [m], what a percentage of etch is of.
     process : as this line sees it.  reaching : names of the properties that reach it.
@@ -36,8 +37,7 @@ class LineModel:
     width: float
     reaching: frozenset[str]
     process: Process
-    impedance: Callable[[Process, FloatArray], FloatArray]
-    possible: Callable[[Process, FloatArray], BoolArray]
+    answers: Callable[[Process, FloatArray], tuple[FloatArray, BoolArray]]
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,11 +60,9 @@ class Board:
         rows = (np.arange(self.replicates)[:, np.newaxis] * block + np.arange(kept)).ravel()
         return replace(self, germ=read_only(self.germ[rows]))
 
-    def sides(self, line: LineModel, process: Process, *, always_possible: bool = False) -> Side:
+    def sides(self, line: LineModel, process: Process) -> Side:
         """Verdicts (coupons,) on a line under a process: as predicted, and with its error against and in favour."""
-        impedance = line.impedance(process, self.germ)
-        possible = None if always_possible else line.possible(process, self.germ)
-        return sides_of(impedance, possible, line)
+        return sides_of(*line.answers(process, self.germ), line)
 
     def share(self, sides: Side) -> Interval:
         """The share of coupons that pass, with its interval."""

@@ -24,7 +24,7 @@ SMALLEST_IMPEDANCE = 1e-6  # [ohm] what stands for an impedance of a section tha
 class Path:
     """One line along a quantity: places rising, logarithm (places, coupons) of the impedance in ohm there.
 
-    process_at : the process at a place.  in_doubt : rows of the coupons that cannot exist at one of the ends, and
+    process_at : the process at a place.  in_doubt : rows of the coupons that cannot exist at one of the places, and
     germ_in_doubt, theirs (rows, variables); all others can exist everywhere.
     """
 
@@ -39,7 +39,7 @@ class Path:
         """ln of the impedance in ohm (coupons,) at a place between the first and the last."""
         found = np.asarray(lagrange_weights(self.places, place) @ self.logarithm, dtype=np.float64)
         if self.in_doubt.size and place not in self.places:
-            found[self.in_doubt] = logarithm_of(self.line, self.process_at(place), self.germ_in_doubt)
+            found[self.in_doubt] = logarithm_of(self.line.answers(self.process_at(place), self.germ_in_doubt)[0])
         return found
 
     def impedance(self, place: float) -> FloatArray:
@@ -62,13 +62,13 @@ class Path:
         if not self.in_doubt.size:
             return None
         possible = np.ones(self.logarithm.shape[1], dtype=np.bool_)
-        possible[self.in_doubt] = self.line.possible(self.process_at(place), self.germ_in_doubt)
+        possible[self.in_doubt] = self.line.answers(self.process_at(place), self.germ_in_doubt)[1]
         return possible
 
 
-def logarithm_of(line: LineModel, process: Process, germ: FloatArray) -> FloatArray:
-    """ln of the impedance in ohm (coupons,)."""
-    return np.log(np.maximum(line.impedance(process, germ), SMALLEST_IMPEDANCE))
+def logarithm_of(impedance: FloatArray) -> FloatArray:
+    """ln of impedances in ohm (coupons,), where nought stands for a section that cannot exist."""
+    return np.asarray(np.log(np.maximum(impedance, SMALLEST_IMPEDANCE)), dtype=np.float64)
 
 
 def path_of(
@@ -77,13 +77,19 @@ def path_of(
 ) -> Path:
     """A line along a quantity whose process at a place is `process_at`; germ (coupons, variables).
 
-    known : logarithms (coupons,) at places where they need not be predicted again.
+    known : logarithms (coupons,) at places other than the ends, where they need not be predicted again.
     Sections lie between those of the two ends in every dimension, so that what can exist at both can exist between.
     """
-    logarithm = np.stack([
-        known[place] if place in known else logarithm_of(line, process_at(place), germ) for place in places.tolist()])
-    ends = [line.possible(process_at(float(place)), germ) for place in (places[0], places[-1])]
-    in_doubt = np.flatnonzero(~(ends[0] & ends[1]))
+    logarithm = np.empty((places.size, len(germ)))
+    everywhere = np.ones(len(germ), dtype=np.bool_)
+    for number, place in enumerate(places.tolist()):
+        if place in known:
+            logarithm[number] = known[place]
+            continue
+        impedance, possible = line.answers(process_at(place), germ)
+        logarithm[number] = logarithm_of(impedance)
+        everywhere &= possible
+    in_doubt = np.flatnonzero(~everywhere)
     return Path(line, places, logarithm, process_at, in_doubt, germ[in_doubt])
 
 

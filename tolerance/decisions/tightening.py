@@ -12,7 +12,7 @@ from functools import partial
 import numpy as np
 
 from tolerance.arrays import FloatArray, read_only
-from tolerance.decisions.board import Aim, Board, Side, aimed, every
+from tolerance.decisions.board import Aim, Board, Side, aimed, every, sides_of
 from tolerance.decisions.interpolation import Path, logarithm_of, path_of
 from tolerance.process.draws import Process
 from tolerance.process.other_laws import laws_of, scaled, with_laws
@@ -86,14 +86,16 @@ def base_sides(board: Board) -> tuple[Side, ...]:
     return tuple(board.sides(line, line.process) for line in board.lines)
 
 
+def base_of(board: Board) -> tuple[tuple[Side, ...], tuple[FloatArray, ...]]:
+    """The same, and ln of the impedance in ohm of every line as it is, (coupons,) each."""
+    found = [line.answers(line.process, board.germ) for line in board.lines]
+    sides = tuple(sides_of(*one, line) for one, line in zip(found, board.lines, strict=True))
+    return sides, tuple(logarithm_of(impedance) for impedance, _ in found)
+
+
 def judged(board: Board, sides: Sequence[Side]) -> Judged:
     """Yields with their intervals."""
     return Judged(tuple(board.share(side) for side in sides), board.share(every(sides, board.coupons)))
-
-
-def base_logarithms(board: Board) -> tuple[FloatArray, ...]:
-    """ln of the impedance in ohm of every line as it is, (coupons,) each."""
-    return tuple(logarithm_of(line, line.process, board.germ) for line in board.lines)
 
 
 def alone(
@@ -101,7 +103,7 @@ def alone(
 ) -> Alone:
     """Follow the properties `names`, all scaled together, on the lines that they reach.
 
-    logarithms : `base_logarithms` of the board, where they are at hand.
+    logarithms : of every line as it is, see `base_of`, where they are at hand.
     """
     factors = np.array(FACTORS)
     paths = {}

@@ -13,6 +13,7 @@ from tolerance.units import MeasureName, QuantityError, read_quantity, unit_fact
 MOST_TOLD = 5  # rows named in one message
 ANY_MEASURE: tuple[MeasureName, ...] = ("length", "share", "resistance", "frequency")
 
+_NO_UNIT = "has no unit"
 _LAST_WORD = re.compile(r"(?:(?P<name>.*?)[\s_/,([]+)?(?P<unit>[^\s_/,()\[\]]+)[)\]]?", re.DOTALL)
 _SPELLINGS = {"µm": "um", "μm": "um", "Ω": "ohm", "Ohm": "ohm", "ohms": "ohm"}
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:[.,][0-9]*)?|[.,][0-9]+)(?:[eE][+-]?[0-9]{1,3})?")
@@ -47,6 +48,7 @@ def numbers_of(column: Sequence[tuple[int, Cell]], *, heading: str, measure: Mea
     values: list[float] = []
     wrong: list[str] = []
     mark = ""
+    unitless: list[int] = []
     for row, cell in column:
         reason, value, used = _read(cell, factor, measure, bare=bare)
         if not reason and mark and used and used != mark:
@@ -54,8 +56,14 @@ def numbers_of(column: Sequence[tuple[int, Cell]], *, heading: str, measure: Mea
             reason = f"has a decimal {names[used]}, where rows before it have a decimal {names[mark]}"
         mark = mark or used
         values.append(value)
-        if reason:
+        if reason == _NO_UNIT:
+            unitless.append(row)
+        elif reason:
             wrong.append(f"row {row} {reason}")
+    if unitless:
+        also = f", and {len(unitless) - 1} more rows" if len(unitless) > 1 else ""
+        wrong.insert(0, f"the heading must end in a unit, {', '.join(unit_names(measure))}, or every reading have its "
+                        f"own: row {unitless[0]} has none{also}")
     if wrong:
         more = f"; and {len(wrong) - MOST_TOLD} more rows" if len(wrong) > MOST_TOLD else ""
         raise TableError("; ".join(wrong[:MOST_TOLD]) + more)
@@ -75,8 +83,7 @@ def _read(cell: Cell, factor: float, measure: MeasureName, *, bare: bool) -> tup
     else:
         number, mark = float(cell or 0.0), ""
     if not bare:
-        allowed = ", ".join(unit_names(measure))
-        return f"holds {as_toml(cell)} without a unit, which the heading must end in: {allowed}", 0.0, mark
+        return _NO_UNIT, 0.0, mark
     value = number * factor
     return ("" if math.isfinite(value) else f"holds {as_toml(cell)}, which is not a finite number"), value, mark
 

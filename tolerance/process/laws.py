@@ -99,19 +99,19 @@ def quantile(law: Law, germ: FloatArray, *, reference: float) -> FloatArray:
     if law.shape == "triangular":
         if not low <= centre <= high:
             raise InputError("a triangular law needs its peak, nominal + shift, between its ends")
-        return low + (high - low) * _triangular(germ, peak=(centre - low) / (high - low))
+        return low + (high - low) * triangular(germ, peak=(centre - low) / (high - low))
     deviation = law.deviation(reference=reference)
-    cut = _cut_normal(germ, low=(low - centre) / deviation, high=(high - centre) / deviation)
+    cut = cut_normal(germ, low=(low - centre) / deviation, high=(high - centre) / deviation)
     return np.asarray(np.clip(centre + deviation * cut, low, high), dtype=np.float64)  # only rounding can lie outside
 
 
-def _triangular(germ: FloatArray, *, peak: float) -> FloatArray:
+def triangular(germ: FloatArray, *, peak: float) -> FloatArray:
     """Triangular quantile on [0, 1] with its peak at `peak`, an end included."""
     below, above = ndtr(germ), ndtr(-germ)
     return np.where(below <= peak, np.sqrt(below * peak), 1.0 - np.sqrt(above * (1.0 - peak)))
 
 
-def _cut_normal(germ: FloatArray, *, low: float, high: float) -> FloatArray:
+def cut_normal(germ: FloatArray, *, low: float, high: float) -> FloatArray:
     """Quantile of a standard normal cut at `low` and `high`; both tail masses are sums of positive terms."""
     if low > FARTHEST_CUT or high < -FARTHEST_CUT:
         raise InputError("a truncated normal law needs its mean, nominal + shift, nearer to its ends")

@@ -11,11 +11,11 @@ from openpyxl import Workbook
 
 from tolerance.decided import CenterResult, CompareResult, PromiseResult, TightenResult
 from tolerance.report.decisions_plot import compare_page, front_page, promise_page, tighten_page, widths_page
-from tolerance.report.figures import _picture as picture
+from tolerance.report.figures import picture
 from tolerance.report.files import put_in_place, remove_earlier
+from tolerance.report.sheet_tables import write_table
 from tolerance.report.tables import Cell, Column, Table
 from tolerance.report.wording import METRES_IN, LengthUnit
-from tolerance.report.workbook import _write_table as write_table
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure

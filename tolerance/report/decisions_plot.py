@@ -26,7 +26,7 @@ from tolerance.report.looks import (
     our_looks,
     quiet_axes,
 )
-from tolerance.report.wording import METRES_IN, LengthUnit, shorten, trimmed
+from tolerance.report.wording import METRES_IN, LengthUnit, shorten, trimmed, two_rows
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -49,6 +49,7 @@ def tighten_page(result: TightenResult) -> Figure:
                              len(result.variations))
         for axes, one in zip(grid, result.variations, strict=True):
             draw_tightening(axes, one, result.basis)
+        _key(page)
     return page
 
 
@@ -61,7 +62,15 @@ def front_page(result: TightenResult) -> Figure:
         grid = page.add_gridspec(2, 3, left=0.55, right=0.98, top=0.79, bottom=0.11, wspace=0.5, hspace=0.75)
         for number, one in enumerate(result.variations[:6]):
             draw_tightening(page.add_subplot(grid[number // 3, number % 3]), one, result.basis, name_length=17)
+        _key(page)
     return page
+
+
+def _key(page: Figure) -> None:
+    """What the two curves of a tolerance are, at the upper right."""
+    handles, labels = page.axes[-1].get_legend_handles_labels()
+    page.legend(handles, labels, loc="upper right", bbox_to_anchor=(1.0 - MARGIN, 1.0 - MARGIN), ncols=2, frameon=False,
+                title="yield [%]")
 
 
 def promise_page(result: PromiseResult) -> Figure:
@@ -69,20 +78,22 @@ def promise_page(result: PromiseResult) -> Figure:
     curves = [result.together, *result.lines]
     with our_looks():
         page, grid = _panels(result.basis.title, "yield against the limit", len(curves))
-        for axes, one in zip(grid, curves, strict=True):
+        for number, (axes, one) in enumerate(zip(grid, curves, strict=True)):
             draw_yield_by_limit(axes, one.curve, name=one.name or "all lines held to one limit",
                                 target_yield=result.basis.target_yield)
             if one.limit is not None:
                 axes.axvline(100.0 * one.limit, color=INK, linestyle=(0, (5, 3)), linewidth=1.4)
+            if number % ABREAST:
+                axes.set_ylabel("")  # the panel on the left has it
     return page
 
 
 def widths_page(result: CenterResult, lengths: LengthUnit) -> Figure:
     """Yield of every line as drawn, centred, and built to impedance, on a scale of what fails."""
-    height = max(PAGE[1], 2.2 + 0.55 * len(result.lines))
+    height = max(0.6 * PAGE[1], 2.2 + 0.65 * len(result.lines))
     with our_looks():
         page = _page(result.basis.title, "as drawn, centred, and built to impedance", height)
-        axes = page.add_axes((0.32, 0.75 / height, 0.64, 1.0 - 2.0 / height))
+        axes = page.add_axes((0.25, 0.75 / height, 0.71, 1.0 - 2.2 / height))
         places = np.arange(len(result.lines))[::-1]
         for label, marker, color, values in (
             ("as drawn", "s", FAIL, [one.now for one in result.lines]),
@@ -93,6 +104,7 @@ def widths_page(result: CenterResult, lengths: LengthUnit) -> Figure:
                       markersize=8, label=label, clip_on=False)
         _failing_scale(axes, "x")
         axes.axvline(_failing(result.basis.target_yield), color=FAIL, linewidth=1.0, linestyle=(0, (2, 2)))
+        axes.set_ylim(-0.5, len(places) - 0.5)
         axes.set_yticks(places, [_moved_words(one.name, one.width, one.best, lengths) for one in result.lines])
         axes.set_xlabel("yield [%]")
         axes.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=3, frameon=False)
@@ -104,10 +116,12 @@ def widths_page(result: CenterResult, lengths: LengthUnit) -> Figure:
 def compare_page(result: CompareResult) -> Figure:
     """Yield of every line in every scenario, on a scale of what fails."""
     names = list(dict.fromkeys(name for one in result.scenarios for name in one.line_names))
-    height = max(PAGE[1], 2.2 + 0.55 * (len(names) + 1))
+    columns = 2 if all(len(one.title) <= 45 for one in result.scenarios) else 1
+    head = 1.25 + 0.28 * -(-len(result.scenarios) // columns)
+    height = max(0.7 * PAGE[1], 0.75 + head + 0.5 * (len(names) + 1))
     with our_looks():
         page = _page("Compared", f"{len(result.scenarios)} scenarios on the same {result.coupons:,} draws", height)
-        axes = page.add_axes((0.25, 0.75 / height, 0.71, 1.0 - 2.2 / height))
+        axes = page.add_axes((0.25, 0.75 / height, 0.71, 1.0 - (0.75 + head) / height))
         for number, one in enumerate(result.scenarios):
             yields = {**dict(zip(one.line_names, one.yields.lines, strict=True)), "all lines together":
                       one.yields.together}
@@ -115,11 +129,12 @@ def compare_page(result: CompareResult) -> Figure:
                      for place, name in enumerate(reversed([*names, "all lines together"])) if name in yields]
             axes.plot([value for _, value in shown], [place for place, _ in shown], marker="osD^v"[number % 5],
                       color=SCENARIOS[number % 4], linestyle="none", markersize=8, clip_on=False,
-                      label=f"{number + 1}: {shorten(one.title, 40)}")
+                      label=f"{number + 1}: {shorten(one.title, 60 if columns == 2 else 110)}")
+        axes.set_ylim(-0.5, len(names) + 0.5)
         axes.set_yticks(range(len(names) + 1), [shorten(name, NAME) for name in reversed([*names,
                                                                                          "all lines together"])])
         axes.set_xlabel("yield [%]")
-        axes.legend(loc="lower center", bbox_to_anchor=(0.4, 1.0), ncols=2, frameon=False)
+        axes.legend(loc="lower left", bbox_to_anchor=(-0.02, 1.0), ncols=columns, frameon=False)
         quiet_axes(axes, grid="x")
         _failing_scale(axes, "x")
     return page
@@ -136,7 +151,7 @@ def draw_tightening(axes: Axes, one: Tightening, basis: Basis, *, name_length: i
     axes.axhspan(1.25, _failing(basis.target_yield), facecolor=FAIL_FILL, edgecolor="none", alpha=0.35, zorder=0)
     axes.axvline(1.0, color=FAINT_INK, linewidth=0.8)
     axes.set_xlim(0.0, float(one.factors[-1]))
-    axes.set_title(shorten(one.name, name_length), fontsize=SMALL, weight="bold")
+    axes.set_title(two_rows(one.name, name_length), fontsize=SMALL, weight="bold")
     axes.set_xlabel("times half-width", fontsize=SMALL)
     quiet_axes(axes, grid="y")
     _failing_scale(axes, "y")

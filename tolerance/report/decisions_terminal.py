@@ -7,10 +7,7 @@ from typing import TYPE_CHECKING
 
 from rich.text import Text
 
-from tolerance.report.terminal import _name_width as name_width
-from tolerance.report.terminal import _print_table as print_table
-from tolerance.report.terminal import _say as say
-from tolerance.report.terminal import _table as table_of
+from tolerance.report.printed import name_width, print_table, say, text_table
 from tolerance.report.wording import (
     LengthUnit,
     fixed,
@@ -18,7 +15,6 @@ from tolerance.report.wording import (
     length_text,
     percent,
     percent_digits,
-    place_words,
     share_range_text,
     share_text,
     shorten,
@@ -38,8 +34,6 @@ if TYPE_CHECKING:
         CompareResult,
         Interval,
         Judged,
-        NotedLine,
-        NoteResult,
         Offers,
         PromiseResult,
         Tightening,
@@ -47,7 +41,6 @@ if TYPE_CHECKING:
         Way,
     )
 
-NOTE_WIDTH = 80
 LONGEST_SET = 44
 OF_COMPUTATION = "In brackets: 95 % intervals of the computation alone."
 
@@ -57,9 +50,9 @@ def print_tighten(result: TightenResult, console: Console) -> None:
     basis = result.basis
     say(console, basis.title, style="bold")
     say(console, f"{_yields_words(basis, result.now)} {_aim_words(basis)}")
-    table = table_of(("half-widths of", True), ("if halved:\nyield\ngain [%]", False),
-                     ("at nought:\nyield\n[%]", False), ("to the\ntarget\nalone", False),
-                     ("if doubled:\nyield\nloss [%]", False), ("may\ngrow\nto", False))
+    table = text_table(("half-widths of", True), ("if halved:\nyield\ngain [%]", False),
+                       ("at nought:\nyield\n[%]", False), ("to the\ntarget\nalone", False),
+                       ("if doubled:\nyield\nloss [%]", False), ("may\ngrow\nto", False))
     for one in result.variations:
         table.add_row(
             Text(two_rows(one.name, 26)), f"{_bare(one.halved.together)}\n{_signed(one.gain)}",
@@ -79,9 +72,9 @@ def print_center(result: CenterResult, lengths: LengthUnit, console: Console) ->
     basis = result.basis
     say(console, basis.title, style="bold")
     say(console, f"{_yields_words(basis, result.now)} {_aim_words(basis)}")
-    table = table_of(("line", True), (f"drawn\nwidth\ngap [{lengths}]", False), (f"best\nwidth\n[{lengths}]", False),
-                     (f"mean on\ntarget\n[{lengths}]", False), ("yield\nnow\n[%]", False),
-                     ("at the\nbest\n[%]", False), ("gain\n\n[%]", False), ("to im-\npedance\n[%]", False))
+    table = text_table(("line", True), (f"drawn\nwidth\ngap [{lengths}]", False), (f"best\nwidth\n[{lengths}]", False),
+                       (f"mean on\ntarget\n[{lengths}]", False), ("yield\nnow\n[%]", False),
+                       ("at the\nbest\n[%]", False), ("gain\n\n[%]", False), ("to im-\npedance\n[%]", False))
     for one in result.lines:
         table.add_row(Text(two_rows(one.name, name_width(console))), *_center_cells(one, lengths, moved=result.moved
                                                                                     is not None))
@@ -101,8 +94,8 @@ def print_promise(result: PromiseResult, console: Console) -> None:
     basis = result.basis
     aim = f"{trimmed(100.0 * basis.target_yield, 3)} %"
     say(console, basis.title, style="bold")
-    table = table_of(("line", True), ("target\n[ohm]", False), ("limit\nnow [%]", False),
-                     (f"tightest limit\nfor {aim} [%]", False), ("95 %\ninterval [%]", False), ("", True))
+    table = text_table(("line", True), ("target\n[ohm]", False), ("limit\nnow [%]", False),
+                       (f"tightest limit\nfor {aim} [%]", False), ("95 %\ninterval [%]", False), ("", True))
     for one in (*result.lines, result.together):
         needed = one.curve.needed
         digits = 2 if needed is None else min(max(percent_digits(needed), 1), 2)
@@ -125,8 +118,8 @@ def print_compare(result: CompareResult, console: Console) -> None:
     """Scenarios side by side, and which differences are real."""
     for number, one in enumerate(result.scenarios, start=1):
         say(console, f"{number}: {one.title} ({one.file})", style="bold")
-    table = table_of(("line", True), *((f"{number}\nyield [%]\n" + ("" if number == 1 else "less 1"), False)
-                                       for number in range(1, len(result.scenarios) + 1)))
+    table = text_table(("line", True), *((f"{number}\nyield [%]\n" + ("" if number == 1 else "less 1"), False)
+                                         for number in range(1, len(result.scenarios) + 1)))
     names = dict.fromkeys(name for one in result.scenarios for name in one.line_names)
     for name in (*names, ""):
         table.add_row(Text(two_rows(name or "all lines together", 24)),
@@ -146,43 +139,15 @@ def print_compare(result: CompareResult, console: Console) -> None:
     say(console, f"The same {result.coupons:,} draws for all (seed {result.seed}). {OF_COMPUTATION}")
 
 
-def note_text(result: NoteResult, lengths: LengthUnit) -> str:
-    """The note for the drawing as plain text: the impedance table, then numbered notes, 80 columns wide."""
-    heads = ("line", "target [ohm]", "limits [ohm]", "layer, planes", f"width, gap [{lengths}]")
-    rows = [heads, *(_note_row(one, lengths) for one in result.lines)]
-    widths = [max(len(row[column]) for row in rows) for column in range(len(heads))]
-    over = sum(widths) + 2 * (len(heads) - 1) - NOTE_WIDTH
-    widths[0] = max(widths[0] - max(over, 0), 12)
-    text = [f"IMPEDANCE TABLE: {result.title}", ""]
-    for row in rows:
-        text.append("  ".join(shorten(cell, width).ljust(width)
-                              for cell, width in zip(row, widths, strict=True)).rstrip())
-    text.append("")
-    for number, note in enumerate(result.notes, start=1):
-        text += textwrap.wrap(note, NOTE_WIDTH, initial_indent=f"{number}. ", subsequent_indent="   ")
-    return "\n".join(text) + "\n"
-
-
-def _note_row(one: NotedLine, lengths: LengthUnit) -> tuple[str, str, str, str, str]:
-    mode = {"single": "", "differential": " differential", "common": " common mode"}[one.mode]
-    layer = one.layer if one.partner is None else f"{one.layer} over {one.partner}"
-    drawn = [one.width, *(gap for gap in (one.gap, one.ground_gap) if gap is not None)]
-    sizes = ", ".join(length_text(each, lengths).removesuffix(f" {lengths}") for each in drawn)
-    sizes += " to ground" if one.ground_gap is not None else ""
-    limits = f"{trimmed(100.0 * one.limit, 2)} %, {trimmed(one.low_limit, 2)} to {trimmed(one.high_limit, 2)}"
-    place = place_words(layer, one.references, joint=", ").replace("references ", "").replace("reference ", "")
-    return one.name, f"{trimmed(one.target, 2)}{mode}", limits, place, sizes
-
-
 def _print_offers(basis: Basis, offers: Offers, console: Console) -> None:
-    table = table_of(("offer, taken alone", True), ("cost", False), ("yield\n[%]", False), ("gain\n[%]", False),
-                     ("lowest\nline [%]", False))
+    table = text_table(("offer, taken alone", True), ("cost", False), ("yield\n[%]", False), ("gain\n[%]", False),
+                       ("lowest\nline [%]", False))
     for one in offers.offers:
         table.add_row(Text(two_rows(f"{one.name} {one.tolerance}", 34)), f"{one.cost:g}", _bare(one.yields.together),
                       _signed(one.gain), _bare(basis.lowest(one.yields)[1]))
     print_table(console, table)
-    front = table_of(("no better set for the money", True), ("cost", False), ("yield\n[%]", False),
-                     ("lowest\nline [%]", False), ("", True))
+    front = text_table(("no better set for the money", True), ("cost", False), ("yield\n[%]", False),
+                       ("lowest\nline [%]", False), ("", True))
     for each in offers.front:
         words = textwrap.fill(", ".join(offers.names(each)) or "as it is", LONGEST_SET)
         front.add_row(Text(words), f"{each.cost:g}", _bare(each.yields.together),

@@ -74,7 +74,7 @@ def page_jobs(pages: Sequence[Page], folder: Path, *, figure_format: FigureForma
 
 def _save(name: str, draw: Callable[[], Figure], folder: Path, figure_format: FigureFormat) -> Path:
     page = draw()
-    content = _picture(page) if figure_format == "png" else _curves(page, figure_format, name)
+    content = picture(page) if figure_format == "png" else _curves(page, figure_format, name)
     return put_in_place(folder / f"{name}.{figure_format}", content)
 
 
@@ -188,7 +188,7 @@ def _head(page: Figure, title: str, subtitle: str, inside: Interval, target_yiel
     page.text(MARGIN, second, words, fontsize=size, color=FAINT_INK, va="center")
 
 
-def _picture(page: Figure) -> Callable[[Path], object]:
+def picture(page: Figure) -> Callable[[Path], object]:
     """The page drawn as points of red, green, blue and opacity; what writes them to a file."""
     canvas: Any = FigureCanvasAgg(page)  # its drawing is not typed
     with our_looks(), missing_glyphs_allowed():

@@ -6,11 +6,8 @@ from typing import TYPE_CHECKING
 
 from rich.text import Text
 
+from tolerance.report.printed import name_width, print_table, say, text_table
 from tolerance.report.reconcile_words import fit_sentence, moved_words, tied_sentence, verdict_sentence
-from tolerance.report.terminal import _name_width as name_width
-from tolerance.report.terminal import _print_table as print_table
-from tolerance.report.terminal import _say as say
-from tolerance.report.terminal import _table as text_table
 from tolerance.report.wording import CAUTION, LengthUnit, fixed, percent, share_text, two_rows, variable_words
 
 if TYPE_CHECKING:

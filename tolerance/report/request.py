@@ -11,9 +11,9 @@ from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from tolerance.report.files import put_in_place
+from tolerance.report.sheet_tables import put
 from tolerance.report.sheet_text import clean_text
 from tolerance.report.wording import LengthUnit, length_text, percent, trimmed
-from tolerance.report.workbook import _put as put
 from tolerance.scenario.amounts import Amount
 from tolerance.scenario.properties import MEASURE
 from tolerance.sheet.layout import (
@@ -251,7 +251,7 @@ def _lines_sheet(sheet: Worksheet, scenario: Scenario) -> None:
         cell.fill = PatternFill("solid", start_color=HEAD_FILL)
         cell.alignment = Alignment(wrap_text=True, vertical="top")
         cell.border = _line()
-        sheet.column_dimensions[get_column_letter(column)].width = 30 if column == 1 else 14
+        sheet.column_dimensions[get_column_letter(column)].width = 30 if column == 1 else 20
     for number, line in enumerate(scenario.lines, start=2):
         for column, value in enumerate(_line_cells(scenario, line), start=1):
             put(sheet, number, column, value).border = _line()

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import re
 
-from openpyxl.cell.cell import ILLEGAL_CHARACTERS_RE
+_NOT_HELD = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\ud800-\udfff\ufffe\uffff]")
 
 
 def clean_text(text: str) -> str:
-    """Without the control characters that a workbook cannot hold."""
-    return ILLEGAL_CHARACTERS_RE.sub("\N{REPLACEMENT CHARACTER}", text)
+    """Without the control characters, and the halves of characters, that a workbook cannot hold."""
+    return _NOT_HELD.sub("\N{REPLACEMENT CHARACTER}", text)
 
 
 _FORMULA = re.compile(r"[=+\-@\t\r]")

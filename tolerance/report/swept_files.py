@@ -15,9 +15,9 @@ import pandas as pd
 from openpyxl import Workbook
 
 from tolerance.report.files import put_in_place, remove_earlier
+from tolerance.report.sheet_tables import write_table
 from tolerance.report.sheet_text import plain_cell
 from tolerance.report.tables import Cell, Column, Table
-from tolerance.report.workbook import _write_table as write_table
 
 if TYPE_CHECKING:
     from tolerance.swept import SweepResult

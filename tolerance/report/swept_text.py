@@ -9,9 +9,7 @@ from typing import TYPE_CHECKING
 
 from rich.text import Text
 
-from tolerance.report.terminal import _print_table as print_table
-from tolerance.report.terminal import _say as say
-from tolerance.report.terminal import _table as text_table
+from tolerance.report.printed import print_table, say, text_table
 from tolerance.report.wording import share_with_range, two_rows
 from tolerance.results import Interval
 from tolerance.swept import SweptRow, shown_value

@@ -6,11 +6,8 @@ from typing import TYPE_CHECKING
 
 from rich.text import Text
 
+from tolerance.report.printed import name_width, print_table, say, text_table
 from tolerance.report.request import assumed_tolerance, importance
-from tolerance.report.terminal import _name_width as name_width
-from tolerance.report.terminal import _print_table as print_table
-from tolerance.report.terminal import _say as say
-from tolerance.report.terminal import _table as text_table
 from tolerance.report.wording import percent, share_with_range, two_rows
 from tolerance.sheet.layout import name_of
 

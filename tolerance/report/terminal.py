@@ -8,13 +8,12 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from rich import box
-from rich.padding import Padding
 from rich.table import Table as RichTable
 from rich.text import Text
 
-from tolerance.report.lots_tables import Heading, sentences, text_tables
+from tolerance.report.lots_tables import sentences, text_tables
 from tolerance.report.measured import intervals_of, measured_sentences
+from tolerance.report.printed import filled_table, name_width, print_table, say, text_table
 from tolerance.report.tables import MISSES, line_words, ranking, ranking_name
 from tolerance.report.weights import lever_words, ppm_words
 from tolerance.report.wording import (
@@ -39,9 +38,6 @@ if TYPE_CHECKING:
     from tolerance.nominal import CheckResult, NominalLine
     from tolerance.results import LineResult, RunResult
 
-NARROWEST_NAME = 15
-WIDEST_NAME = 40
-OTHER_COLUMNS = 65  # what the widest table needs beside the names
 DRIVERS_SHOWN = 3
 LEVERS_SHOWN = 2
 LONGEST_DRIVER = 38
@@ -51,82 +47,55 @@ NAMES_IN_VERDICT = 4
 def print_check(result: CheckResult, lengths: LengthUnit, console: Console, *, shares: bool = False) -> None:
     """Nominal impedance, effective Dk and delay of each line, and its losses; `shares`: charge and current by face."""
     per_length = "mm" if lengths == "um" else "inch"
-    table = _table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
-                   ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
-                   (f"delay\n\n[ps/{per_length}]", False))
+    table = text_table(("line", True), ("kind, layer,\ndimensions", True), ("target\n\n[ohm]", False),
+                       ("nominal\n\n[ohm]", False), ("off\ntarget\n[%]", False), ("eff.\nDk", False),
+                       (f"delay\n\n[ps/{per_length}]", False))
     for line in result.lines:
-        table.add_row(Text(two_rows(line.name, _name_width(console))), *_check_cells(line, lengths))
-    _say(console, result.title, style="bold")
-    _print_table(console, table)
+        table.add_row(Text(two_rows(line.name, name_width(console))), *_check_cells(line, lengths))
+    say(console, result.title, style="bold")
+    print_table(console, table)
     _say_modes(result, console)
     _say_losses(result, lengths, console)
     _say_rises(result, console)
     if shares:
-        _print_table(console, _share_table(result, _name_width(console)))
-        _say(console, "Shares of a trace's charge and, at small skin depth, of its current by face; fringe: share of "
-                      "the capacitance beyond that of parallel plates. Coupling: inductive, capacitive, and the "
-                      "backward crosstalk coefficient.")
+        print_table(console, _share_table(result, name_width(console)))
+        say(console, "Shares of a trace's charge and, at small skin depth, of its current by face; fringe: share of "
+                     "the capacitance beyond that of parallel plates. Coupling: inductive, capacitive, and the "
+                     "backward crosstalk coefficient.")
     if any(line.formulas is not None for line in result.lines):
-        _print_table(console, _formula_table(result, _name_width(console)))
-        _say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
-                      "by their authors.")
+        print_table(console, _formula_table(result, name_width(console)))
+        say(console, "Published formulas beside the field solver, for comparison only: no result uses them. Claimed: "
+                     "by their authors.")
 
 
 def print_run(result: RunResult, console: Console) -> None:
     """Yield of every line and of the board, what drives it, and how far the numbers can be trusted."""
-    _say(console, result.title, style="bold")
-    _print_table(console, _yield_table(result, _name_width(console)))
-    _print_table(console, _driver_table(result, _name_width(console), console.width))
-    for columns, rows in text_tables(result, _name_width(console)):
-        _print_table(console, _filled_table(columns, rows))
-    _say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
-                  f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
+    say(console, result.title, style="bold")
+    print_table(console, _yield_table(result, name_width(console)))
+    print_table(console, _driver_table(result, name_width(console), console.width))
+    for columns, rows in text_tables(result, name_width(console)):
+        print_table(console, filled_table(columns, rows))
+    say(console, f"All lines together: {headline_text(result.inside)} {share_range_text(result.inside)} of "
+                 f"{result.coupons:,} coupons pass (seed {result.seed}).", style="bold")
     _say_verdict(result, console)
     _say_impossible(result, console)
     _say_certificate(result, console)
     _say_rare(result, console)
     _say_direct(result, console)
     for sentence in sentences(result):
-        _say(console, sentence)
+        say(console, sentence)
     for sentence in measured_sentences(result):
-        _say(console, sentence)
+        say(console, sentence)
     if result.frequency is not None:
-        _say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
+        say(console, f"Impedances are those of the lossy lines at {result.frequency / 1e9:.6g} GHz, in magnitude.")
     _say_rises(result, console)
-    _say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
-
-
-def _name_width(console: Console) -> int:
-    return min(max(console.width - OTHER_COLUMNS, NARROWEST_NAME), WIDEST_NAME)
-
-
-def _table(*columns: tuple[str, bool]) -> RichTable:
-    """An empty table; a column is its heading and whether it holds text (on the left, may wrap) or numbers."""
-    table = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="")
-    for heading, is_text in columns:
-        table.add_column(Text(heading), justify="left" if is_text else "right", no_wrap=not is_text, overflow="fold")
-    return table
-
-
-def _filled_table(columns: tuple[Heading, ...], rows: list[tuple[str, ...]]) -> RichTable:
-    table = _table(*columns)
-    for cells in rows:
-        table.add_row(*(Text(cell) for cell in cells))
-    return table
-
-
-def _print_table(console: Console, table: RichTable) -> None:
-    console.print(Padding(table, (1, 0, 1, 0)))
-
-
-def _say(console: Console, sentence: str, *, style: str = "") -> None:
-    console.print(Text(sentence, style=style))
+    say(console, f"In brackets: 95 % intervals of {intervals_of(result)}. {CAUTION}")
 
 
 def _yield_table(result: RunResult, name_width: int) -> RichTable:
-    table = _table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
-                   ("dev.\n\n[ohm]", False), ("yield\ninterval\n[%]", False), ("below\nabove\n[%]", False),
-                   ("Cpk", False))
+    table = text_table(("line", True), ("target\nlimits\n[ohm]", False), ("nominal\nmean\n[ohm]", False),
+                       ("dev.\n\n[ohm]", False), ("yield\ninterval\n[%]", False), ("below\nabove\n[%]", False),
+                       ("Cpk", False))
     for line in result.lines:
         words = line_words(line, result.target_yield)
         missed = words.verdict == MISSES
@@ -145,8 +114,8 @@ def _driver_table(result: RunResult, name_width: int, width: int) -> RichTable:
     heading = f"largest drivers, by {ranking_name(result.lines)}"
     if any(lever_words(line, 1) for line in result.lines):
         heading += "\n/ points of yield gained, spread halved"
-    table = _table(("line", True), (heading, True),
-                   ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
+    table = text_table(("line", True), (heading, True),
+                       ("solver\nruns", False), ("held-out\nerror\n[ohm]", False))
     for line in result.lines:
         table.add_row(Text(two_rows(line.name, name_width)), Text(_drivers(line, width - name_width - 21)),
                       str(line.prediction.solver_runs), fixed(line.prediction.held_out_error, 4))
@@ -180,11 +149,11 @@ def _say_verdict(result: RunResult, console: Console) -> None:
     target = f"{trimmed(100.0 * result.target_yield, 3)} %"
     missing = [line.name for line in result.lines if line.inside.value < result.target_yield]
     if not missing:
-        _say(console, f"Every line meets the target yield of {target}.")
+        say(console, f"Every line meets the target yield of {target}.")
         return
     named = ", ".join(f'"{shorten(name, LONGEST_DRIVER)}"' for name in missing[:NAMES_IN_VERDICT])
     more = f" and {len(missing) - NAMES_IN_VERDICT} more" if len(missing) > NAMES_IN_VERDICT else ""
-    _say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
+    say(console, f"{MISSES} the target yield of {target}: {named}{more}.", style="bold red")
 
 
 def _say_impossible(result: RunResult, console: Console) -> None:
@@ -192,44 +161,44 @@ def _say_impossible(result: RunResult, console: Console) -> None:
         return
     lines = ", ".join(f'"{shorten(line.name, LONGEST_DRIVER)}" {line.impossible:,}'
                       for line in result.lines if line.impossible)
-    _say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
-                  f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
+    say(console, f"Impossible coupons (a width, gap, crest or length that is gone), counted as failing: "
+                 f"{result.impossible:,} of {result.coupons:,}{f'; {lines}' if lines else ''}.", style="bold")
 
 
 def _say_certificate(result: RunResult, console: Console) -> None:
     certain = [line.certificate for line in result.lines if line.certificate.certified]
     if certain:
         lines = "every line" if len(certain) == len(result.lines) else f"{len(certain)} lines"
-        _say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
-                      f"within {trimmed(certain[0].multiple, 1)} errors of a limit were solved themselves.")
+        say(console, f"Verdicts of {lines} are the field solver's: {sum(one.solved for one in certain):,} coupons "
+                     f"within {trimmed(certain[0].multiple, 1)} errors of a limit were solved themselves.")
     for line in result.lines:
         one = line.certificate
         if not one.certified:
-            _say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
-                          f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
-                          f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
+            say(console, f'Verdicts of "{shorten(line.name, LONGEST_DRIVER)}" are predicted: {one.needed:,} coupons '
+                         f"lie within {trimmed(one.multiple, 1)} errors ({fixed(one.error, 4)} ohm each) of a limit, "
+                         f"more than the {one.cap:,} that are solved at most; the interval allows for it.")
 
 
 def _say_rare(result: RunResult, console: Console) -> None:
     """Failures too rare to be counted."""
     rare = [f'"{shorten(line.name, LONGEST_DRIVER)}" {ppm_words(line.tail)}' for line in result.lines if line.tail]
     if rare:
-        _say(console, f"Coupons that fail too rarely to be counted, so integrated: {'; '.join(rare)}.")
+        say(console, f"Coupons that fail too rarely to be counted, so integrated: {'; '.join(rare)}.")
 
 
 def _say_direct(result: RunResult, console: Console) -> None:
     """The solver's own answers beside the predictions: one row a line."""
-    table = _table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
-                   ("off, most\n[ohm]", False), ("verdicts\nthat differ", False))
+    table = text_table(("line", True), ("coupons\nsolved", False), ("off, rms\n[ohm]", False),
+                       ("off, most\n[ohm]", False), ("verdicts\nthat differ", False))
     for line in result.lines:
         if line.direct is not None:
-            table.add_row(Text(two_rows(line.name, _name_width(console))), f"{line.direct.coupons:,}",
+            table.add_row(Text(two_rows(line.name, name_width(console))), f"{line.direct.coupons:,}",
                           fixed(line.direct.root_mean_square, 4), fixed(line.direct.largest, 4),
                           str(line.direct.verdicts_that_differ))
     if table.row_count:
-        _say(console, "")
-        _say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
-        _print_table(console, table)
+        say(console, "")
+        say(console, "Coupons that the field solver solved itself, and how far the predictions lie off:")
+        print_table(console, table)
 
 
 def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> None:
@@ -238,35 +207,35 @@ def _say_losses(result: CheckResult, lengths: LengthUnit, console: Console) -> N
     if not lossy:
         return
     per_length, unit = (1.0, "m") if lengths == "um" else (1000.0 * METRES_IN["mil"], "inch")
-    table = _table(("line", True), ("complex\nimpedance\n[ohm]", False), (f"R\n\n[ohm/{unit}]", False),
-                   (f"L\n\n[nH/{unit}]", False), (f"G\n\n[mS/{unit}]", False), (f"C\n\n[pF/{unit}]", False),
-                   ("loss\n\n[dB/m]", False), ("whole\n\n[dB/inch]", False))
+    table = text_table(("line", True), ("complex\nimpedance\n[ohm]", False), (f"R\n\n[ohm/{unit}]", False),
+                       (f"L\n\n[nH/{unit}]", False), (f"G\n\n[mS/{unit}]", False), (f"C\n\n[pF/{unit}]", False),
+                       ("loss\n\n[dB/m]", False), ("whole\n\n[dB/inch]", False))
     for line, losses in lossy:
         impedance = losses.complex_impedance
         table.add_row(
-            Text(two_rows(line.name, _name_width(console))),
+            Text(two_rows(line.name, name_width(console))),
             f"{fixed(impedance.real, 2)}\n{'-' if impedance.imag < 0.0 else '+'} j {fixed(abs(impedance.imag), 2)}",
             *(f"{scale * value * per_length:.4g}" for value, scale in (
                 (losses.resistance, 1.0), (losses.inductance, 1e9), (losses.conductance, 1e3),
                 (losses.capacitance, 1e12))),
             f"{fixed(losses.conductor_loss, 2)}\n+ {fixed(losses.dielectric_loss, 2)}",
             fixed((losses.conductor_loss + losses.dielectric_loss) * 1000.0 * METRES_IN["mil"], 3))
-    _print_table(console, table)
-    _say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one. "
-                  "Loss: by the copper, + by the dielectric.")
+    print_table(console, table)
+    say(console, f"At {lossy[0][1].frequency / 1e9:.6g} GHz: the impedance above is the magnitude of the complex one. "
+                 "Loss: by the copper, + by the dielectric.")
 
 
 def _say_rises(result: CheckResult | RunResult, console: Console) -> None:
     for line in result.lines:
         if line.rise is not None:
-            _say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.rise.position:.6g} mm '
-                          f"from the launch is higher by {fixed(line.rise.rise, 2)} ohm of series resistance "
-                          f"({line.rise.resistance:.3g} ohm/m to direct current).")
+            say(console, f'A reading of "{shorten(line.name, LONGEST_DRIVER)}" {1e3 * line.rise.position:.6g} mm '
+                         f"from the launch is higher by {fixed(line.rise.rise, 2)} ohm of series resistance "
+                         f"({line.rise.resistance:.3g} ohm/m to direct current).")
 
 
 def _share_table(result: CheckResult, name_width: int) -> RichTable:
-    table = _table(("line", True), ("face", True), ("charge\n[%]", False), ("current\n[%]", False),
-                   ("fringe\n[%]", False), ("coupling", True))
+    table = text_table(("line", True), ("face", True), ("charge\n[%]", False), ("current\n[%]", False),
+                       ("fringe\n[%]", False), ("coupling", True))
     for line in result.lines:
         if line.shares is None:
             continue
@@ -283,8 +252,8 @@ def _share_table(result: CheckResult, name_width: int) -> RichTable:
 
 
 def _formula_table(result: CheckResult, name_width: int) -> RichTable:
-    table = _table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
-                   ("claimed\n[%]", False))
+    table = text_table(("line", True), ("formula, remark", True), ("it says\n[ohm]", False), ("off solver\n[%]", False),
+                       ("claimed\n[%]", False))
     for line in result.lines:
         name = two_rows(line.name, name_width)
         if line.formulas is None or not line.formulas.opinions:
@@ -306,10 +275,10 @@ def _say_modes(result: CheckResult, console: Console) -> None:
     """What impedance, effective Dk and delay of a pair are."""
     pairs = {line.mode for line in result.lines if line.common_mode is not None}
     if pairs - {"common"}:
-        _say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
-                      "impedance of both traces tied together.")
+        say(console, "Pairs: differential impedance, with the odd mode's effective Dk and delay; common: the "
+                     "impedance of both traces tied together.")
     if "common" in pairs:
-        _say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
+        say(console, "Pairs in common mode: impedance, effective Dk and delay of both traces tied together.")
 
 
 def _check_cells(line: NominalLine, lengths: LengthUnit) -> tuple[Text, str, str, str, str, str]:

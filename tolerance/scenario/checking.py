@@ -22,13 +22,15 @@ from tolerance.scenario.tables import FORMAT, Readings, Report, Scenario
 from tolerance.scenario.variation_rules import variation_findings
 
 
-def load(path: str | os.PathLike[str]) -> Scenario:
+def load(path: str | os.PathLike[str], *, allow: Iterable[str | os.PathLike[str]] = ()) -> Scenario:
     """The scenario in the TOML file at `path`, with all it extends.
 
+    allow : folders, besides that of the scenario and those below it, in which files may stand that it names.
     Raises InputError when there is no such file to read, ScenarioError with every problem of its text otherwise.
     """
-    document, findings = read_document(Path(path))
-    return _checked(document, findings, source=str(path))
+    folders = tuple(map(Path, allow))
+    document, findings = read_document(Path(path), allow=folders)
+    return _checked(document, findings, source=str(path), allow=folders)
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,35 +40,43 @@ class Swept:
     swept: dict[str, object]
     source: str
     _document: Document = field(repr=False)
+    _allow: tuple[Path, ...] = ()
 
     def scenario(self) -> Scenario:
         """Raises ScenarioError with every problem that these values bring."""
-        return _checked(self._document, [], source=self.source)
+        return _checked(self._document, [], source=self.source, allow=self._allow)
 
 
-def sweep_of(path: str | os.PathLike[str]) -> tuple[int, Iterator[Swept]]:
+def sweep_of(
+    path: str | os.PathLike[str], *, allow: Iterable[str | os.PathLike[str]] = (),
+) -> tuple[int, Iterator[Swept]]:
     """How many scenarios the file stands for, and each of them: one without values where it has no [[sweep]].
 
     Raises InputError when there is no such file to read; ScenarioError when its outline or its [[sweep]] is bad, with
     every other problem of its text besides.
     """
-    document, findings = read_document(Path(path))
+    folders = tuple(map(Path, allow))
+    document, findings = read_document(Path(path), allow=folders)
     drafts, _ = draft_tables(document)
     axes, wrong = axes_of(document, drafts.sweep)
     if findings or wrong or any(draft.model is None for draft in drafts.sweep):
-        _checked(document, findings, source=str(path))
+        _checked(document, findings, source=str(path), allow=folders)
     count = math.prod(len(axis.rows) for axis in axes)
-    return count, (Swept(swept, str(path), one) for swept, one in swept_documents(document, axes))
+    return count, (Swept(swept, str(path), one, folders) for swept, one in swept_documents(document, axes))
 
 
-def parse(text: str, *, name: str = "scenario.toml", folder: str | os.PathLike[str] = ".") -> Scenario:
+def parse(
+    text: str, *, name: str = "scenario.toml", folder: str | os.PathLike[str] = ".",
+    allow: Iterable[str | os.PathLike[str]] = (),
+) -> Scenario:
     """The scenario in a text, as if it stood in the file `name` in `folder`. Raises ScenarioError."""
     content = text.encode("utf-8", errors="surrogatepass")
-    document, findings = document_of(content, name=name, folder=Path(folder))
-    return _checked(document, findings, source=name)
+    folders = tuple(map(Path, allow))
+    document, findings = document_of(content, name=name, folder=Path(folder), allow=folders)
+    return _checked(document, findings, source=name, allow=folders)
 
 
-def _checked(document: Document, findings: Sequence[Finding], *, source: str) -> Scenario:
+def _checked(document: Document, findings: Sequence[Finding], *, source: str, allow: Sequence[Path]) -> Scenario:
     """The document as a Scenario. Raises ScenarioError with all problems, sorted by place."""
     drafts, found = draft_tables(document)
     drafts, unmixed = with_mixtures(drafts)
@@ -78,21 +88,27 @@ def _checked(document: Document, findings: Sequence[Finding], *, source: str) ->
     problems = _one_for_each_key(problems)
     if problems:
         raise ScenarioError([finding.problem for finding in sorted(problems, key=lambda finding: finding.place)])
-    return _scenario(document, drafts, readings, applied, source)
+    return _scenario(document, drafts, readings, applied, source, allow)
 
 
 def _one_for_each_key(findings: Iterable[Finding]) -> list[Finding]:
-    """The first problem of every key; names in lists may each have one."""
+    """The first problem of every key; names in lists may each have one.
+
+    Of a misspelled key it is the first that the key has as the one that is meant.
+    """
     kept: dict[tuple[object, ...], Finding] = {}
     for finding in findings:
         problem = finding.problem
         several = problem.allowed if problem.key in ("of", "between", "references", "file") else ""
-        kept.setdefault((finding.place, problem.table, problem.entry, problem.key, several), finding)
+        key = (finding.place, problem.table, problem.entry, problem.key, several)
+        if key not in kept or problem.allowed.startswith(f"{kept[key].problem.allowed} As "):
+            kept[key] = finding
     return list(kept.values())
 
 
 def _scenario(
     document: Document, drafts: Drafts, readings: tuple[Readings, ...], applied: Applied | None, source: str,
+    allow: Sequence[Path],
 ) -> Scenario:
     return Scenario(
         format=FORMAT, title=document.top.values["title"], evaluation=_model(drafts.evaluation),
@@ -100,7 +116,7 @@ def _scenario(
         correlations=_models(drafts.correlations), offers=_models(drafts.offers), sweep=_models(drafts.sweep),
         test=None if drafts.test is None else _model(drafts.test),
         report=_model(drafts.report) if "report" in document.tables else Report(),
-        readings=readings, source=source,
+        readings=readings, source=source, allowed=tuple(map(str, allow)),
         origins={} if applied is None else dict(applied.origins),
         text=document.text if applied is None else _with_preset_text(document.text, applied),
     )

@@ -12,6 +12,7 @@ from typing import Any, NamedTuple
 from tolerance.errors import Problem
 from tolerance.scenario.keys import close_match, meant_by
 from tolerance.scenario.places import Lines
+from tolerance.scenario.trust import Trust
 
 TOP_KEYS = ("format", "title", "extends", "preset")
 SINGLE_TABLES = ("evaluation", "test", "report")
@@ -31,6 +32,7 @@ class Place(NamedTuple):
     number: int
     file: str
     folder: Path
+    trust: Trust
 
 
 class Finding(NamedTuple):
@@ -48,6 +50,7 @@ class Entry:
     values: Mapping[str, Any]
     place: Place
     places: Mapping[str, Place] = field(default_factory=dict)
+    misspelled: Mapping[str, str] = field(default_factory=dict)  # key that is meant -> as it is written
 
     @property
     def heading(self) -> str:
@@ -67,6 +70,9 @@ class Entry:
         where = place or self.places.get(key, self.place)
         shown = self.values.get(key) if given is None else given
         number = 0 if self.label or self.table not in ENTRY_TABLES else where.number
+        if key in self.misspelled:
+            allowed = f'{unknown_key(key)} As "{key}": {allowed}'
+            key = self.misspelled[key]
         return Finding(where, Problem(file=where.file, table=self.heading, entry=self.label, key=key, given=shown,
                                       allowed=allowed, number=number))
 
@@ -79,6 +85,7 @@ class Document:
     tables: Mapping[str, Entry]
     entries: Mapping[str, tuple[Entry, ...]]
     text: str
+    misplaced: frozenset[str] = frozenset()  # tables that stand there as something else, which is told
 
 
 def outline(raw: Mapping[str, Any], *, text: str, lines: Lines, origin: Place) -> tuple[Document, list[Finding]]:
@@ -91,6 +98,7 @@ def outline(raw: Mapping[str, Any], *, text: str, lines: Lines, origin: Place) -
     top_places: dict[str, Place] = {}
     tables: dict[str, Entry] = {}
     entries: dict[str, tuple[Entry, ...]] = {}
+    misplaced: set[str] = set()
     for written, value in raw.items():
         place = origin._replace(line=_line(lines, written, 0, "") or _line(lines, "", 0, written))
         name = written if written in _KNOWN else meant_by(written, _KNOWN) or written
@@ -106,8 +114,14 @@ def outline(raw: Mapping[str, Any], *, text: str, lines: Lines, origin: Place) -
             entries[name] = tuple(_entry(name, number, item, renamed, place) for number, item in enumerate(value, 1))
         elif written in _KNOWN:
             findings.append(_misplaced(written, value, place))
+            misplaced.add(name)
     top = Entry(table="", values=tops, place=origin, places=top_places)
-    return Document(top=top, tables=tables, entries=entries, text=text), findings
+    return Document(top=top, tables=tables, entries=entries, text=text, misplaced=frozenset(misplaced)), findings
+
+
+def unknown_key(meant: str) -> str:
+    """What is said of a key that comes near to another one."""
+    return f'unknown key; did you mean "{meant}"?'
 
 
 def _entry(table: str, number: int, values: Mapping[str, Any], lines: Lines, base: Place) -> Entry:

@@ -9,8 +9,9 @@ from typing import Any, Generic, TypeVar
 from pydantic import ValidationError
 from pydantic.fields import FieldInfo
 
-from tolerance.scenario.documents import Document, Entry, Finding
+from tolerance.scenario.documents import Document, Entry, Finding, unknown_key
 from tolerance.scenario.keys import FROM_FILE, Kind, RefusedError, Text, close_match, meant_by
+from tolerance.scenario.layer_keys import LAYER_KEYS
 from tolerance.scenario.tables import (
     Correlation,
     Evaluation,
@@ -105,17 +106,26 @@ def _draft(written: Entry, model: type[Model], findings: list[Finding]) -> Draft
 
 def _as_meant(entry: Entry, model: type[Table], findings: list[Finding]) -> Entry:
     """The entry without unknown keys, each told; a misspelled key is read as the one that is meant."""
-    known = model.model_fields
-    values, places = dict(entry.values), dict(entry.places)
+    known = _known_keys(entry, model)
+    values, places, misspelled = dict(entry.values), dict(entry.places), dict[str, str]()
     for key in entry.values:
-        if key in known:
+        if key in model.model_fields:
             continue
-        findings.append(entry.finding(key, f"unknown key{close_match(key, known)}"))
-        value, place = values.pop(key), places.pop(key)
         meant = meant_by(key, known)
+        findings.append(entry.finding(key, f"unknown key{close_match(key, known)}" if meant is None
+                                      else unknown_key(meant)))
+        value, place = values.pop(key), places.pop(key)
         if meant is not None and meant not in values:
-            values[meant], places[meant] = value, place
-    return replace(entry, values=values, places=places)
+            values[meant], places[meant], misspelled[meant] = value, place, key
+    return replace(entry, values=values, places=places, misspelled=misspelled)
+
+
+def _known_keys(entry: Entry, model: type[Table]) -> tuple[str, ...]:
+    """The keys that may be meant: of a layer those of its kind, where it says one."""
+    kind = entry.values.get("kind")
+    if model is Layer and isinstance(kind, str) and kind in LAYER_KEYS:
+        return ("name", "kind", *LAYER_KEYS[kind].needed, *LAYER_KEYS[kind].taken)
+    return tuple(model.model_fields)
 
 
 def _words(model: type[Table], key: str, error: Mapping[str, Any]) -> str:
@@ -141,7 +151,7 @@ def _top_findings(top: Entry, document: Document) -> list[Finding]:
         findings.append(top.finding("title", f"must be {reason}"))
     needed = {"layers": "one entry for each layer, top to bottom", "lines": "one entry for each line"}
     for name, what in needed.items():
-        if not document.entries.get(name):
+        if not document.entries.get(name) and name not in document.misplaced:
             findings.append(Entry(table=name, values={}, place=top.place._replace(line=10**9)).finding(
                 "", f"missing; must be {what}"))
     return findings

@@ -9,13 +9,12 @@ from typing import NamedTuple
 from tolerance.scenario.documents import Entry, Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
 from tolerance.scenario.keys import Range, listed
-from tolerance.scenario.mixtures import RESIN_KEYS
+from tolerance.scenario.layer_keys import LAYER_KEYS, RESIN_KEYS
 from tolerance.scenario.readings import file_finding
 from tolerance.scenario.tables import (
     COPPER,
     CORE,
     LARGEST_COUPONS,
-    MASK,
     PREPREG,
     SMALLEST_COUPONS,
     Evaluation,
@@ -25,22 +24,6 @@ from tolerance.scenario.tables import (
     Line,
     Variation,
 )
-
-
-class LayerKeys(NamedTuple):
-    """Keys that a kind of layer needs, and those it takes besides."""
-
-    needed: tuple[str, ...]
-    taken: tuple[str, ...]
-
-
-LAYER_KEYS: Mapping[str, LayerKeys] = MappingProxyType({
-    MASK: LayerKeys(("thickness", "over_copper", "dk"), ("df", "dk_frequency")),
-    COPPER: LayerKeys(("use", "foil"), ("plating", "etch_factor", "foot", "conductivity", "roughness_foot",
-                                        "roughness_crest", "copper_share")),
-    PREPREG: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS, "outflow")),
-    CORE: LayerKeys(("thickness", "dk"), ("df", "dk_frequency", *RESIN_KEYS)),
-})
 
 _ENDS = ("low", "high")
 _MEASURED = ("file", "column", "sheet")
@@ -89,10 +72,12 @@ def _layer(draft: Draft[Layer], has_frequency: bool) -> Iterator[Finding]:
     for key in entry.values:
         if key not in known and key not in draft.bad:
             yield entry.finding(key, f"not a key of {kind}, which has {listed(known[2:], 'and')}")
-    if by_resin and kind in (PREPREG, CORE):
+    if by_resin and kind in (PREPREG, CORE) and "dk" in entry.values:
+        needed = ("dk",)
+        given = listed([key for key in RESIN_KEYS if key in entry.values], "and")
+        yield entry.finding("dk", f"not together with {given}: give either dk or {listed(RESIN_KEYS, 'and')}")
+    elif by_resin and kind in (PREPREG, CORE):
         needed = RESIN_KEYS
-        if "dk" in entry.values:
-            yield entry.finding("dk", f"not together with {listed(RESIN_KEYS, 'and')}: give one or the other")
     elif "outflow" in entry.values and kind == PREPREG:
         yield entry.finding("outflow", f"only with {listed(RESIN_KEYS, 'and')}")
     if has_frequency and kind != COPPER:
@@ -156,7 +141,8 @@ def _half_width(draft: Draft[Variation], shape: str) -> Iterator[Finding]:
         yield entry.finding("tolerance", "not together with low and high: give one or the other")
     elif len(ends) == 1:
         missing = "high" if ends == ["low"] else "low"
-        yield entry.finding(missing, f"missing; low and high stand together: {kind_of(Variation, missing).allowed}")
+        allowed = kind_of(Variation, missing).allowed
+        yield entry.finding(missing, f"missing; low and high stand together; must be {allowed}")
     elif ends and shape == "uniform" and "shift" in entry.values:
         yield entry.finding("shift", "not together with the low and high of a uniform, which say all")
     if not ends and "tolerance" not in entry.values:

@@ -13,5 +13,5 @@ def fingerprint(scenario: Scenario) -> str:
 
     Where it was read from, how its text is laid out, and which other scenarios it stands for make no difference.
     """
-    content = scenario.model_dump(exclude={"source", "text", "sweep"})
+    content = scenario.model_dump(exclude={"source", "text", "sweep", "allowed"})
     return hashlib.sha256(json.dumps(content, sort_keys=True, default=repr).encode()).hexdigest()

@@ -23,6 +23,8 @@ FROM_FILE: Mapping[str, bool] = MappingProxyType({"from_file": True})
 _LONGEST_TEXT = 500
 _MOST_LISTED = 20
 _LARGEST_EXAMPLE = 1e6
+MOST_DIGITS = 4000  # of a whole number: with more it could not be written down again
+MOST_BITS = int(MOST_DIGITS * math.log2(10.0))
 _NUMBER_PATTERN = r"\s*[+-]?([0-9]+(\.[0-9]*)?|\.[0-9]+)([eE][+-]?[0-9]{1,3})?\s*"
 
 
@@ -109,8 +111,10 @@ class Quantity(Kind):
                 raise RefusedError(f"{self.allowed} ({reason})") from None
         if not from_file:
             return plain_number(given, self.allowed)
-        shown = is_number(given) and abs(given) < _LARGEST_EXAMPLE
-        example = f', such as "{given:.6g} {unit_names(self.measure)[0]}"' if shown else ""
+        example = ""
+        if is_number(given) and abs(given) < _LARGEST_EXAMPLE:
+            meant = 100.0 * given if self.measure == "share" and abs(given) < 1.0 else given
+            example = f', such as "{meant:.6g} {self.unit or unit_names(self.measure)[0]}"'
         raise RefusedError(f"{self.allowed}, a text with its unit{example}")
 
     def json_schema(self) -> dict[str, Any]:
@@ -148,15 +152,18 @@ class Whole(Kind):
 
     range: Range
     noun: str = "a whole number"
+    more: str = ""  # what else is to be said of it
 
     @property
     def allowed(self) -> str:
-        return f"{self.noun} {self.range.words(lambda end: str(int(end)))}".strip()
+        return f"{self.noun} {self.range.words(lambda end: str(int(end)))}{self.more}".strip()
 
     def read(self, given: object, *, from_file: bool) -> int:
         del from_file
         if isinstance(given, bool) or not isinstance(given, int) or not self.range.holds(given):
             raise RefusedError(self.allowed)
+        if given.bit_length() > MOST_BITS:
+            raise RefusedError(f"{self.allowed}, of fewer than {MOST_DIGITS} digits")
         return given
 
     def json_schema(self) -> dict[str, Any]:
@@ -193,12 +200,14 @@ class Text(Kind):
     @property
     def allowed(self) -> str:
         without = f", without {listed(list(self.forbidden))}" if self.forbidden else ""
-        return f"{self.noun}: text on one line, no blanks at its ends{without}"
+        return f"{self.noun}: printable text on one line, no blanks at its ends{without}"
 
     def read(self, given: object, *, from_file: bool) -> str:
         del from_file
-        if not isinstance(given, str) or not given or len(given) > _LONGEST_TEXT:
+        if not isinstance(given, str) or not given:
             raise RefusedError(self.allowed)
+        if len(given) > _LONGEST_TEXT:
+            raise RefusedError(f"{self.allowed}; at most {_LONGEST_TEXT} letters, not {len(given)}")
         if given != given.strip() or not given.isprintable() or any(one in given for one in self.forbidden):
             raise RefusedError(self.allowed)
         return given
@@ -235,8 +244,9 @@ class Texts(Kind):
 
     @property
     def allowed(self) -> str:
-        many = f"a list of {self.count} different {self.noun}" if self.count else f"a list of different {self.noun}"
-        return f"{self.noun} or {many}" if self.single else many
+        if self.single:
+            return f"{self.noun}, or a list of different ones"
+        return f"a list of {self.count} different {self.noun}" if self.count else f"a list of different {self.noun}"
 
     def read(self, given: object, *, from_file: bool) -> tuple[str, ...]:
         del from_file
@@ -319,8 +329,15 @@ def listed(items: Sequence[str], last: str = "or") -> str:
 
 def meant_by(name: str, known: Iterable[str]) -> str | None:
     """The known name that a misspelled one comes near to."""
-    near = difflib.get_close_matches(name, list(known), n=1, cutoff=0.6)
+    names = list(known)
+    same = [one for one in names if _plain(one) == _plain(name)]
+    near = same or difflib.get_close_matches(name, names, n=1, cutoff=0.6)
     return near[0] if near else None
+
+
+def _plain(name: str) -> str:
+    """Without what people spell differently: capitals, hyphens, underscores, blanks."""
+    return name.casefold().replace("-", "").replace("_", "").replace(" ", "")
 
 
 def close_match(name: str, known: Iterable[str]) -> str:

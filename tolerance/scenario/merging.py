@@ -54,7 +54,8 @@ def merge(base: Document, extension: Document) -> Document:
         for name in ENTRY_TABLES if name in base.entries or name in extension.entries
     }
     text = f"{extension.text.rstrip()}\n\n# ---- extends {base.top.place.file} ----\n{base.text}"
-    return Document(top=merge_entry(base.top, extension.top), tables=tables, entries=entries, text=text)
+    return Document(top=merge_entry(base.top, extension.top), tables=tables, entries=entries, text=text,
+                    misplaced=base.misplaced | extension.misplaced)
 
 
 def identity(entry: Entry) -> object:

@@ -19,8 +19,6 @@ from tolerance.scenario.stackup import LAMINATES, foot_at
 from tolerance.scenario.tables import COPPER, PREPREG, Layer, Scenario
 from tolerance.units import write_quantity
 
-RESIN_KEYS = ("resin_dk", "glass_dk", "resin_content", "glass_areal_weight")
-
 
 @dataclass(frozen=True, slots=True)
 class Mixture:

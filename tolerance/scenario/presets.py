@@ -7,11 +7,11 @@ content, masks. What a variation of the scenario names stays with that variation
 from __future__ import annotations
 
 import tomllib
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from importlib import resources
 from types import MappingProxyType
-from typing import Any
+from typing import Any, NamedTuple
 
 from tolerance.scenario.documents import Document, Entry, Finding
 from tolerance.scenario.drafts import Draft, Drafts
@@ -107,18 +107,23 @@ def with_preset(document: Document, drafts: Drafts) -> tuple[Drafts, Applied | N
     return replace(drafts, variations=(*drafts.variations, *added)), applied, []
 
 
-def _owned(drafts: Drafts) -> tuple[str, ...]:
+class _Owned(NamedTuple):
+    names: frozenset[str]
+    patterns: tuple[str, ...]
+
+
+def _owned(drafts: Drafts) -> _Owned:
     """Names and patterns that the scenario's own variations name."""
     found: list[str] = []
     for draft in drafts.variations:
         if draft.given("of"):
             value = draft.entry.values["of"]
             found += [value] if isinstance(value, str) else value
-    return tuple(found)
+    return _Owned(frozenset(found), tuple(text for text in found if "*" in text))
 
 
 def _variations(
-    entry: PresetEntry, layers: Sequence[Layer], owned: Iterable[str],
+    entry: PresetEntry, layers: Sequence[Layer], owned: _Owned,
 ) -> Iterator[tuple[list[str], dict[str, Any]]]:
     """(names, keys) of the variations that an entry comes to; those of one half-width in one."""
     by_tolerance: dict[object, list[str]] = {}
@@ -127,7 +132,8 @@ def _variations(
             continue
         there = [item for item in properties_of(layer) if item.property in entry.properties]
         there = sorted(there, key=lambda item: entry.properties.index(item.property))[: 1 if entry.one else None]
-        names = [item.name for item in there if not any(matches(pattern, item.name) for pattern in owned)]
+        names = [item.name for item in there if item.name not in owned.names
+                 and not any(matches(pattern, item.name) for pattern in owned.patterns)]
         if not names:
             continue
         if entry.keys.get("together"):

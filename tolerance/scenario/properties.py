@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
 
@@ -60,10 +60,18 @@ def members(scenario: Scenario, variation: Variation) -> tuple[Property, ...]:
     return matching(variation.of, properties(scenario))
 
 
-def matching(of: Iterable[str], known: Iterable[Property]) -> tuple[Property, ...]:
+def matching(of: Collection[str], known: Iterable[Property]) -> tuple[Property, ...]:
     """Those of the known properties that a name or pattern of `of` matches; `*` stands for any characters."""
-    texts = tuple(of)
-    return tuple(item for item in known if any(matches(text, item.name) for text in texts))
+    names = {text for text in of if "*" not in text}
+    patterns = [text for text in of if "*" in text]
+    return tuple(item for item in known if item.name in names or any(matches(text, item.name) for text in patterns))
+
+
+def named_by(text: str, known: Mapping[str, Property]) -> list[Property]:
+    """Those of the known properties, given by their names, that one name or pattern matches."""
+    if "*" not in text:
+        return [known[text]] if text in known else []
+    return [item for name, item in known.items() if matches(text, name)]
 
 
 def matches(pattern: str, name: str) -> bool:
@@ -75,7 +83,7 @@ def matches(pattern: str, name: str) -> bool:
     if len(name) < len(first) + len(last) or not (name.startswith(first) and name.endswith(last)):
         return False
     start, end = len(first), len(name) - len(last)
-    for part in middle:
+    for part in filter(None, middle):
         found = name.find(part, start, end)
         if found < 0:
             return False

@@ -5,9 +5,9 @@ from __future__ import annotations
 import statistics
 from collections.abc import Iterator
 from dataclasses import dataclass
-from pathlib import Path, PurePosixPath, PureWindowsPath
+from pathlib import Path
 
-from tolerance.measurements.readings import numbers_of
+from tolerance.measurements.readings import MOST_TOLD, numbers_of
 from tolerance.measurements.tables import MeasuredTable, TableError, read_table
 from tolerance.scenario.documents import Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
@@ -28,24 +28,25 @@ class _Place:
 
 
 def file_finding(draft: Draft[Variation] | Draft[Sweep]) -> Finding | None:
-    """What is wrong with `file` itself: it must be a CSV or XLSX that stands beside the scenario."""
+    """What is wrong with `file` itself: it must be a CSV or XLSX in the folder of the scenario, or below it."""
     file = draft.text("file")
     if file is None:
         return None
-    folder, entry = draft.entry.places["file"].folder, draft.entry
+    place, entry = draft.entry.places["file"], draft.entry
     if file.rpartition(".")[2].lower() not in ("csv", "xlsx"):
         return entry.finding("file", "must be the path of a CSV or XLSX file: its name must end in .csv or .xlsx")
-    absolute = PurePosixPath(file).is_absolute() or PureWindowsPath(file).drive or PureWindowsPath(file).root
-    if absolute or ".." in PureWindowsPath(file).parts:
-        return entry.finding("file", "must stand beside the scenario: a relative path without \"..\"")
+    outside = place.trust.why_not(place.folder, file)
+    if outside:
+        return entry.finding("file", outside)
     try:
-        if not (folder / file).is_file():
-            return entry.finding("file", "must be the path of a file, from the folder of "
-                                         f"{draft.entry.places['file'].file}: there is none")
-        inside = (folder / file).resolve().is_relative_to(folder.resolve())
+        path = place.folder / file
+        if path.is_dir():
+            return entry.finding("file", "must be the path of a file; this is a folder")
+        if not path.is_file():
+            return entry.finding("file", f"must be the path of a file, from the folder of {place.file}: there is none")
     except (OSError, RuntimeError, ValueError):
         return entry.finding("file", "must be the path of a file that can be read")
-    return None if inside else entry.finding("file", "must stand beside the scenario; it is a link to somewhere else")
+    return None
 
 
 def readings_of(drafts: Drafts) -> tuple[tuple[Readings, ...], list[Finding]]:
@@ -95,9 +96,11 @@ def _finding(draft: Draft[Variation], model: Variation, reason: str) -> Finding:
 def _values(table: MeasuredTable, column: str, item: Property) -> tuple[float, ...]:
     cells = table.column(column)
     values = numbers_of(cells, heading=column, measure=MEASURE[item.property])
-    reasons = list(_range_problems(item, [row for row, _ in cells], values))
-    if reasons:
-        raise TableError("; ".join(reasons[:5]) + (f"; and {len(reasons) - 5} more rows" if len(reasons) > 5 else ""))
+    outside = list(_outside(item, [row for row, _ in cells], values))
+    if outside:
+        more = f" and {len(outside) - MOST_TOLD} more rows" if len(outside) > MOST_TOLD else ""
+        words = _span(item.property).words(lambda end: _write(item, end))
+        raise TableError(f"{item.name} must be {words}; there are {', '.join(outside[:MOST_TOLD])}{more}")
     if len(values) < FEWEST:
         raise TableError(f"has {len(values)} reading{'s' * (len(values) != 1)}; at least {FEWEST} are needed")
     middle = statistics.median(values)
@@ -107,12 +110,11 @@ def _values(table: MeasuredTable, column: str, item: Property) -> tuple[float, .
     return values
 
 
-def _range_problems(item: Property, rows: list[int], values: tuple[float, ...]) -> Iterator[str]:
+def _outside(item: Property, rows: list[int], values: tuple[float, ...]) -> Iterator[str]:
+    """The readings that the property cannot have, each with its row."""
     span = _span(item.property)
-    for row, value in zip(rows, values, strict=True):
-        if not span.holds(value):
-            words = span.words(lambda end: _write(item, end))
-            yield f"row {row} holds {_write(item, value)}; of {item.name} must be {words}"
+    return (f"{_write(item, value)} in row {row}" for row, value in zip(rows, values, strict=True)
+            if not span.holds(value))
 
 
 def _span(name: str) -> Range:

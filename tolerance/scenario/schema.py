@@ -10,9 +10,9 @@ from collections.abc import Iterable
 from typing import Any
 
 from tolerance.scenario.drafts import kind_of
-from tolerance.scenario.entry_rules import LAYER_KEYS, SHAPE_KEYS
+from tolerance.scenario.entry_rules import SHAPE_KEYS
 from tolerance.scenario.keys import Kind, Text
-from tolerance.scenario.mixtures import RESIN_KEYS
+from tolerance.scenario.layer_keys import LAYER_KEYS, RESIN_KEYS
 from tolerance.scenario.presets import preset_names
 from tolerance.scenario.tables import (
     COPPER,

@@ -110,7 +110,7 @@ def _line(line: Draft[Line], drafts: Drafts, outlines: Sequence[Outline] | None)
         problems.append(line.entry.finding("partner", "must be another layer than the line's own"))
     problems += _references(line, drafts.layers)
     yield from problems
-    if outlines is None or layer is None or problems or {"partner", "references"} & line.bad:
+    if not outlines or layer is None or problems or {"partner", "references"} & line.bad:
         return
     if len({outline.name for outline in outlines}) < len(outlines):
         return
@@ -126,7 +126,9 @@ def _carrier(line: Draft[Line], key: str, layers: Sequence[Draft[Layer]]) -> Ite
         return
     layer = _named(layers, name)
     if layer is None and _all_named(layers):
-        yield line.entry.finding(key, f"must be the name of a layer{close_match(name, _copper(layers, 'signal'))}")
+        known = _copper(layers, "signal")
+        near = close_match(name, known) or '; there is no copper with use = "signal"'
+        yield line.entry.finding(key, f"must be the name of a layer{near}")
     elif layer is None:
         return
     elif _known_not(layer, "kind", COPPER):
@@ -194,8 +196,8 @@ def _crest(line: Draft[Line], layers: Sequence[Outline]) -> Iterator[Finding]:
 
 
 def _all_named(layers: Sequence[Draft[Layer]]) -> bool:
-    """Whether every layer's name reads; if not, a name that no layer has may be the one that does not."""
-    return all(layer.text("name") is not None for layer in layers)
+    """Whether there are layers and every name reads; if not, a name that no layer has may be the one that does not."""
+    return bool(layers) and all(layer.text("name") is not None for layer in layers)
 
 
 def _named(layers: Sequence[Draft[Layer]], name: str) -> Draft[Layer] | None:

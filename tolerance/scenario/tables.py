@@ -42,7 +42,8 @@ _DK = Number(Range(1.0, 100.0))
 _FREQUENCY = Quantity("frequency", Range(0.0, 1e12, low_in=False), "GHz")
 _LIMIT = Quantity("share", Range(0.0, 1.0, low_in=False, high_in=False))
 _NAME = Text("a name", forbidden="*")
-_OF = Texts('LAYER.PROPERTY names or patterns (such as "P1.thickness" or "P*.dk")', single=True)
+_LAYER = Text("the name of a layer", forbidden="*")
+_OF = Texts('a LAYER.PROPERTY name or pattern, such as "P1.thickness" or "P*.dk"', single=True)
 _COUNT = Whole(Range(1, 100_000))
 _OPTION = ConfigDict(frozen=True, extra="forbid")
 
@@ -62,7 +63,7 @@ class Evaluation(Table):
         default=None, description="Half-width of the impedance limits, of the target; here or on every line")
     target_yield: Annotated[float, Quantity("share", Range(0.0, 1.0, low_in=False))] = Field(
         default=0.99, description='Default aim of the decisions; default "99 %"')
-    coupons: Annotated[int, Whole(Range(1, LARGEST_COUPONS))] = Field(
+    coupons: Annotated[int, Whole(Range(1, LARGEST_COUPONS), more=", without levels a power of two from 256")] = Field(
         default=65536, description="Monte Carlo size: a power of two from 256 to 2^24; default 65536")
     seed: Annotated[int | None, Whole(Range(0))] = Field(
         default=None, description="Any integer from 0; absent: drawn, and shown in the result")
@@ -124,7 +125,7 @@ class Line(Table):
     """One controlled-impedance line, as drawn."""
 
     name: Annotated[str, _NAME] = Field(description="What results call the line")
-    layer: Annotated[str, _NAME] = Field(description="The signal copper that carries it")
+    layer: Annotated[str, _LAYER] = Field(description="The signal copper that carries it")
     width: Annotated[float, _length(20e-3)] = Field(
         description="Finished width at the foot (the face bonded to the laminate), drawn nominal")
     target: Annotated[float, Quantity("resistance", Range(0.0, 1000.0, low_in=False))] = Field(
@@ -133,7 +134,7 @@ class Line(Table):
         default=None, description="Half-width of the impedance limits, of the target; default: evaluation.limit")
     gap: Annotated[float | None, _SPACE] = Field(
         default=None, description="Makes it an edge-coupled pair: foot edge to foot edge")
-    partner: Annotated[str | None, _NAME] = Field(
+    partner: Annotated[str | None, _LAYER] = Field(
         default=None, description="Makes it a broadside pair with an equal trace on that layer")
     offset: Annotated[float, Quantity("length", Range(-5e-3, 5e-3), "um")] = Field(
         default=0.0, description="Broadside pair: sideways shift of the partner")
@@ -273,6 +274,7 @@ class Scenario(BaseModel):
     readings: tuple[Readings, ...] = ()  # of measured variations, one for each property
     origins: Mapping[str, str] = {}  # where a preset has the law of a property from, by the property's name
     source: str = ""  # path of the file
+    allowed: tuple[str, ...] = ()  # folders besides its own in which files that it names may stand
     text: str = ""  # the TOML as read, with that of every file it extends
 
     def layer(self, name: str) -> Layer:

@@ -10,9 +10,9 @@ import numpy as np
 from tolerance.scenario.amounts import Amount, AmountOf, EndOf, LevelShares
 from tolerance.scenario.documents import Entry, Finding
 from tolerance.scenario.drafts import Draft, Drafts, kind_of
-from tolerance.scenario.entry_rules import LAYER_KEYS
 from tolerance.scenario.keys import RefusedError, close_match, listed
-from tolerance.scenario.properties import MEASURE, VARYING, Property, matches, properties_of
+from tolerance.scenario.layer_keys import LAYER_KEYS
+from tolerance.scenario.properties import MEASURE, VARYING, Property, matches, named_by, properties_of
 from tolerance.scenario.tables import Layer, Offer, Variation
 from tolerance.units import write_quantity
 
@@ -32,41 +32,44 @@ class Named:
 def variation_findings(drafts: Drafts) -> Iterator[Finding]:
     """Everything that variations, offers and correlations have wrong about what they name."""
     findings: list[Finding] = []
-    named = [_named(draft, drafts.layers, findings) for draft in drafts.variations]
+    known = {item.name: item for layer in drafts.layers
+             if layer.model is not None and not layer.bad and layer.text("kind") for item in properties_of(layer.model)}
+    named = [_named(draft, drafts.layers, known, findings) for draft in drafts.variations]
     owners: dict[str, Entry] = {}
     for variation in named:
         findings += _owned(variation, owners)
         findings += _values(variation, drafts)
     for draft in drafts.offers:
-        findings += _offer(_named(draft, drafts.layers, findings), owners)
+        findings += _offer(_named(draft, drafts.layers, known, findings), owners)
     findings += correlation_findings(drafts, named)
     yield from findings
 
 
 def _named(
-    draft: Draft[Variation] | Draft[Offer], layers: Sequence[Draft[Layer]], findings: list[Finding],
+    draft: Draft[Variation] | Draft[Offer], layers: Sequence[Draft[Layer]], known: Mapping[str, Property],
+    findings: list[Finding],
 ) -> Named:
     """The properties that `of` names; names and patterns that hit nothing are told."""
     if not draft.given("of"):
         return Named(draft, (), complete=False)
-    known = [item for layer in layers if layer.model is not None and not layer.bad and layer.text("kind")
-             for item in properties_of(layer.model)]
     value = draft.entry.values["of"]
     texts: list[str] = [value] if isinstance(value, str) else value
     found: dict[str, Property] = {}
     complete = True
     for text in texts:
-        hits = [item for item in known if matches(text, item.name)]
+        hits = named_by(text, known)
         found |= {item.name: item for item in hits}
         complete = complete and bool(hits)
-        reason = "" if hits else _why_nothing(text, layers, known)
+        reason = "" if hits else _why_nothing(text, layers, list(known.values()))
         if reason:
             findings.append(draft.entry.finding("of", reason if len(texts) == 1 else f'"{text}": {reason}'))
-    return Named(draft, tuple(item for item in known if item.name in found), complete)
+    return Named(draft, tuple(item for item in known.values() if item.name in found), complete)
 
 
 def _why_nothing(text: str, layers: Sequence[Draft[Layer]], known: Sequence[Property]) -> str:
     """Why a name or pattern hits no property; "" where a layer that does not read may be what is meant."""
+    if not layers:  # that is told itself
+        return ""
     broken = [layer for layer in layers if _incomplete(layer)]
     if "*" in text:
         may_be = any(layer.text("name") is None or matches(text, f"{layer.text('name')}.{name}")

@@ -16,9 +16,9 @@ from openpyxl import load_workbook
 from openpyxl.utils import get_column_letter
 
 from tolerance.errors import InputError, as_toml
+from tolerance.measurements.archive import safe_content
 from tolerance.scenario.properties import members
 from tolerance.scenario.tables import Scenario, Variation
-from tolerance.sheet.archive import safe_content
 from tolerance.sheet.cells import CellError, SeenCell, Typed, basis_named, typed_of, unit_named
 from tolerance.sheet.layout import ABSOLUTE, HEADINGS, Heading, heading_of, name_of, plain, units_for
 

@@ -167,6 +167,9 @@ def crowding_of_rare(verdicts: BoolArray, cluster: int) -> float | None:
 
     With none at all: the whole cluster, for what is never seen may come by the lot.
     """
+    if cluster == 1:
+        count = int(np.count_nonzero(verdicts))
+        return None if min(count, len(verdicts) - count) >= min(RARE, 0.5 * len(verdicts)) else 1.0
     count = np.count_nonzero(verdicts.reshape(-1, cluster), axis=1)
     rarer = count if 2 * np.sum(count) <= len(verdicts) else cluster - count
     spread_over = np.count_nonzero(rarer)

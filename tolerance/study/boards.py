@@ -14,7 +14,7 @@ from tolerance.decisions.board import Board, LineModel
 from tolerance.process.draws import ETCH, Process, ProcessDraws, process_of
 from tolerance.process.laws import Law, quantile
 from tolerance.process.other_laws import seen_by_line, with_laws, with_variable
-from tolerance.process.remembered import Key, RememberedDraws, remember
+from tolerance.process.remembered import Remembered
 from tolerance.process.resin import with_causes
 from tolerance.scenario.properties import Property, properties
 from tolerance.scenario.tables import Line, Scenario
@@ -24,14 +24,13 @@ from tolerance.statistics.against_limit import LimitSample
 from tolerance.statistics.yields import Limits
 from tolerance.study.lines import PreparedLine, prepare
 from tolerance.study.lots import draw
-from tolerance.study.predicting import PredictedLine, fit_line, predict_line
+from tolerance.study.predicting import PredictedLine, SectionLogarithms, fit_line, predict_line
 from tolerance.study.run import limit_sample
 from tolerance.study.solved import SolvedCache
 from tolerance.surrogate.coordinates import REACH as DRAWS_REACH
 from tolerance.surrogate.prediction import BLOCK_ROWS, Predictor
 
 STEP = "solving lines"
-FEWEST_REMEMBERED = 4096  # coupons for which it is worth it to remember what unchanged laws come to
 
 
 @dataclass(frozen=True, slots=True)
@@ -124,53 +123,56 @@ def widened(process: Process, names: Sequence[str], reach: float, *, width: floa
 def _board(
     draws: ProcessDraws, fits: Sequence[tuple[PreparedLine, Predictor, float, int]], process: Process,
 ) -> FittedBoard:
-    lines = tuple(_model(prepared, predictor, process, error) for prepared, predictor, error, _ in fits)
+    germs = _Germs()
+    lines = tuple(_model(prepared, predictor, process, error, germs) for prepared, predictor, error, _ in fits)
     cluster = 1 if draws.lots is None else draws.lots.coupons
     return FittedBoard(Board(lines, draws.germ, draws.replicates, cluster), draws, tuple(fit[0] for fit in fits),
                        tuple(fit[1] for fit in fits), solver_runs=sum(fit[3] for fit in fits),
                        from_cache=sum(fit[0].from_cache for fit in fits))
 
 
-def _model(prepared: PreparedLine, predictor: Predictor, process: Process, error: float) -> LineModel:
+def _model(
+    prepared: PreparedLine, predictor: Predictor, process: Process, error: float, germs: _Germs,
+) -> LineModel:
     names = with_causes(properties_that_reach(prepared.surroundings, prepared.line), process.resins)
     line = prepared.line
     own = seen_by_line(process, names, width=line.width)
-    answers = _Answers(prepared, predictor, own)
     return LineModel(line.name, line.target, Limits(prepared.low_limit, prepared.high_limit), error, line.width,
-                     names, own, answers.impedance, answers.possible)
+                     names, own, _Answers(prepared, predictor, germs))
 
 
 class _Answers:
-    """A fitted line's answers for processes that differ from its own in a few laws.
+    """A fitted line's answers for processes that differ from its own in a few laws."""
 
-    What its own laws come to is remembered for the germs that were last asked about.
-    """
+    def __init__(self, prepared: PreparedLine, predictor: Predictor, germs: _Germs) -> None:
+        self._prepared, self._predictor, self._germs = prepared, predictor, germs
+        assert isinstance(predictor.seen.logarithms, SectionLogarithms)
+        self._dimensions = predictor.seen.logarithms.dimensions
 
-    def __init__(self, prepared: PreparedLine, predictor: Predictor, process: Process) -> None:
-        self._prepared, self._predictor, self._process = prepared, predictor, process
-        self._remembered: tuple[FloatArray, dict[Key, FloatArray]] | None = None
-
-    def impedance(self, process: Process, germ: FloatArray) -> FloatArray:
-        """Predicted impedances [ohm] (coupons,)."""
-        known = self._known(germ)
-        result = np.empty(len(germ))
+    def __call__(self, process: Process, germ: FloatArray) -> tuple[FloatArray, BoolArray]:
+        """Predicted impedances [ohm], and whether the sections can exist, both (coupons,)."""
+        impedance, possible = np.empty(len(germ)), np.empty(len(germ), dtype=np.bool_)
+        remembered, seen = self._germs.of(germ), self._predictor.seen
         for start in range(0, len(germ), BLOCK_ROWS):
             rows = slice(start, start + BLOCK_ROWS)
-            block = {key: values[rows] for key, values in known.items()}
-            result[rows] = self._predictor.impedance_of(RememberedDraws(process, germ[rows], known=block))
-        return result
+            section = self._prepared.section(remembered.draws(process, rows))
+            at = seen.coordinates.of(self._dimensions.logarithms(section))
+            impedance[rows] = np.exp(self._predictor.polynomial.evaluate(at))
+            possible[rows] = section.possible
+        return impedance, possible
 
-    def possible(self, process: Process, germ: FloatArray) -> BoolArray:
-        """Whether the sections can exist (coupons,)."""
-        return self._prepared.section(RememberedDraws(process, germ, known=self._known(germ))).possible
 
-    def _known(self, germ: FloatArray) -> dict[Key, FloatArray]:
-        if len(germ) < FEWEST_REMEMBERED:
-            return {}
-        remembered = self._remembered
-        if remembered is None or remembered[0] is not germ:
-            self._remembered = remembered = germ, remember(self._process, germ, width=self._prepared.line.width)
-        return remembered[1]
+class _Germs:
+    """What the lines of a board share: the germs that were last asked about, with what is remembered of them."""
+
+    def __init__(self) -> None:
+        self._last: Remembered | None = None
+
+    def of(self, germ: FloatArray) -> Remembered:
+        last = self._last
+        if last is None or last.germ is not germ:
+            self._last = last = Remembered(germ)
+        return last
 
 
 def _varies(process: Process, name: str) -> bool:

@@ -11,7 +11,7 @@ from scipy.optimize import brentq
 from tolerance.arrays import FloatArray
 from tolerance.cores import Progress, on_all_cores, plain_algebra, silent
 from tolerance.decided import Basis, CenterResult, CentredLine, GapWidth, MovedDimension, Way
-from tolerance.decisions.board import Board, LineModel, Side, sides_of
+from tolerance.decisions.board import Board, LineModel, Side
 from tolerance.decisions.centring import (
     centre_of,
     chance_when_centred,
@@ -20,13 +20,13 @@ from tolerance.decisions.centring import (
     on_grid,
     path_of_moves,
 )
-from tolerance.decisions.interpolation import Path
+from tolerance.decisions.interpolation import SMALLEST_IMPEDANCE, Path
 from tolerance.decisions.tightening import Judged, base_sides, judged
 from tolerance.errors import InputError, UnfinishedError
 from tolerance.process.other_laws import laws_of, moved, with_laws
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
-from tolerance.study.boards import FittedBoard, chosen_seed, fit_board, fit_wide_board
+from tolerance.study.boards import FittedBoard, chosen_seed, fit_wide_board
 from tolerance.study.decide import basis_of, offer_models, weigh_offers
 from tolerance.study.lines import nominal_impedance, prepare
 from tolerance.study.solved import SolvedCache
@@ -92,7 +92,10 @@ def center(
         chance = _to_impedance(board, board.lines[number], wishes)
         chances *= chance
         lines.append(_centred_line(board, line, placed[number], (base[number], sides[number]), chance, wishes))
-    lines = _with_gaps(scenario, lines, wishes, coupons=coupons, seed=own, tell=tell)
+    asker = _Asker(coupons, own, tell, cache)
+    lines = _with_gaps(scenario, lines, wishes, asker)
+    basis = replace(basis, solver_runs=basis.solver_runs + asker.solver_runs,
+                    from_cache=basis.from_cache + asker.from_cache)
     now, centred = judged(board, base), judged(board, sides)
     return CenterResult(
         basis, now, centred, mean_chance(chances, board.replicates), wishes.centring_error, wishes.reach, wishes.grid,
@@ -157,42 +160,61 @@ def _centred_line(
 
 def _to_impedance(board: Board, line: LineModel, wishes: Wishes) -> FloatArray:
     """Chance (coupons,) of a line when each lot is brought to its target."""
-    impedance = np.maximum(line.impedance(line.process, board.germ), 1e-6)
-    return chance_when_centred(impedance, line.possible(line.process, board.germ), line, error=wishes.centring_error,
+    impedance, possible = line.answers(line.process, board.germ)
+    return chance_when_centred(np.maximum(impedance, SMALLEST_IMPEDANCE), possible, line, error=wishes.centring_error,
                              lot_coupons=None if board.cluster == 1 else board.cluster)
 
 
+@dataclass(slots=True)
+class _Asker:
+    """Fits pairs that are drawn with other gaps, and counts the solver runs that this takes."""
+
+    coupons: int | None
+    seed: int
+    tell: Progress
+    cache: SolvedCache | None
+    solver_runs: int = 0
+    from_cache: int = 0
+
+    def widths(self, scenario: Scenario, gap: float) -> dict[str, GapWidth]:
+        """By name of the pairs of a scenario: drawn with this gap, the width that goes with it, and the yield."""
+        pairs = tuple(self._drawn(scenario, line, gap) for line in scenario.lines if line.gap is not None)
+        still: list[tuple[str, ...]] = [()] * len(pairs)
+        fitted = fit_wide_board(scenario.model_copy(update={"lines": pairs}), coupons=self.coupons, seed=self.seed,
+                                tell=self.tell, names=still, reach=[0.0] * len(pairs), cache=self.cache)
+        self.solver_runs += fitted.solver_runs
+        self.from_cache += fitted.from_cache
+        board = fitted.board
+        return {line.name: GapWidth(gap, line.width, board.share(board.sides(model, model.process)))
+                for line, model in zip(pairs, board.lines, strict=True)}
+
+    def _drawn(self, scenario: Scenario, line: Line, gap: float) -> Line:
+        """The pair with this gap and the width that brings its nominal impedance to the target."""
+        def off(width: float) -> float:
+            drawn = line.model_copy(update={"width": float(width), "gap": gap})
+            prepared = prepare(scenario, drawn, SolverSettings(), self.cache)
+            impedance = nominal_impedance(prepared)
+            self.solver_runs += 1
+            self.from_cache += prepared.from_cache
+            return impedance - line.target
+
+        low, high = (factor * line.width for factor in WIDTH_RANGE)
+        if off(low) * off(high) > 0.0:
+            raise UnfinishedError(f'"{line.name}": no width from {low * 1e6:.0f} to {high * 1e6:.0f} um has the '
+                                  f"target impedance with a gap of {gap * 1e6:.0f} um")
+        return line.model_copy(update={"width": float(brentq(off, low, high, xtol=1e-8)), "gap": gap})
+
+
 def _with_gaps(
-    scenario: Scenario, lines: list[CentredLine], wishes: Wishes, *, coupons: int | None, seed: int, tell: Progress,
+    scenario: Scenario, lines: list[CentredLine], wishes: Wishes, asker: _Asker,
 ) -> list[CentredLine]:
-    """For pairs, each asked gap with its width and yield: solved anew, with as many runs as a line takes."""
+    """For pairs, each asked gap with its width and yield."""
+    if all(line.gap is None for line in scenario.lines):
+        return lines
     for gap in wishes.gaps:
-        redrawn = [_drawn_with_gap(scenario, line, gap) if line.gap is not None else None for line in scenario.lines]
-        pairs = tuple(line for line in redrawn if line is not None)
-        if not pairs:
-            return lines
-        other = scenario.model_copy(update={"lines": pairs})
-        fitted = fit_board(other, coupons=coupons, seed=seed, tell=tell)
-        assert fitted.sample is not None
-        found = {}
-        for line, model, impedance, possible in zip(pairs, fitted.board.lines, fitted.sample.impedance,
-                                                    fitted.sample.possible, strict=True):
-            found[line.name] = GapWidth(gap, line.width, fitted.board.share(sides_of(impedance, possible, model)))
+        found = asker.widths(scenario, gap)
         lines = [replace(one, gaps=(*one.gaps, found[one.name])) if one.name in found else one for one in lines]
     return lines
-
-
-def _drawn_with_gap(scenario: Scenario, line: Line, gap: float) -> Line:
-    """The pair with this gap and the width that brings its nominal impedance to the target."""
-    def off(width: float) -> float:
-        drawn = line.model_copy(update={"width": float(width), "gap": gap})
-        return nominal_impedance(prepare(scenario, drawn, SolverSettings())) - line.target
-
-    low, high = (factor * line.width for factor in WIDTH_RANGE)
-    if off(low) * off(high) > 0.0:
-        raise UnfinishedError(f'"{line.name}": no width from {low * 1e6:.0f} to {high * 1e6:.0f} um has the target '
-                              f"impedance with a gap of {gap * 1e6:.0f} um")
-    return line.model_copy(update={"width": float(brentq(off, low, high, xtol=1e-8)), "gap": gap})
 
 
 def _moved_dimension(scenario: Scenario, placed: Sequence[_Placed], wishes: Wishes) -> MovedDimension | None:

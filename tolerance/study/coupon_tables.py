@@ -16,7 +16,6 @@ from tolerance.process.draws import ETCH, Process
 from tolerance.scenario.keys import close_match
 from tolerance.scenario.properties import MEASURE
 from tolerance.scenario.tables import Scenario
-from tolerance.sheet.archive import safe_content
 
 MOST_TOLD = 6
 
@@ -44,7 +43,7 @@ def read_coupons(path: Path, scenario: Scenario, *, sheet: str | None = None) ->
     table = _table(path, sheet)
     columns = _columns(table, path, needed=("line", "value"))
     lines = tuple(_text(cell) for _, cell in table.column(columns["line"]))
-    known = {line.name for line in scenario.lines}
+    known = dict.fromkeys(line.name for line in scenario.lines)
     wrong = [f"row {row.number}: no line is called {as_toml(name)}{close_match(name, known)}"
              for row, name in zip(table.rows, lines, strict=True) if name not in known]
     heading = columns["value"]
@@ -53,7 +52,7 @@ def read_coupons(path: Path, scenario: Scenario, *, sheet: str | None = None) ->
                                      heading=heading if unit_of(heading, "resistance") else "value ohm"))
     except TableError as problem:
         raise InputError("; ".join([f"{path}: {problem}", *wrong[:MOST_TOLD]])) from None
-    wrong += [f"row {row.number}: an impedance must be above 0 ohm" for row, value in
+    wrong += [f"row {row.number} holds {value:g} ohm; an impedance must be above 0 ohm" for row, value in
               zip(table.rows, values, strict=True) if value <= 0.0]
     _refuse(path, wrong)
     names = {key: tuple(_text(cell) for _, cell in table.column(columns[key])) if key in columns
@@ -97,8 +96,6 @@ def _property_of(name: str, scenario: Scenario) -> tuple[str, float]:
 
 
 def _table(path: Path, sheet: str | None) -> MeasuredTable:
-    if path.suffix.lower() == ".xlsx":
-        safe_content(path)
     try:
         return read_table(path, sheet=sheet)
     except TableError as problem:

@@ -24,7 +24,7 @@ from tolerance.decided import (
 from tolerance.decisions.board import Aim, Board, Side, every
 from tolerance.decisions.comparing import Difference, on_common_columns
 from tolerance.decisions.offers import OfferModel, board_for_offers, front_of_offers, judged_set
-from tolerance.decisions.tightening import Tightening, alone, base_logarithms, base_sides, judged, tightening
+from tolerance.decisions.tightening import Tightening, alone, base_of, base_sides, judged, tightening
 from tolerance.errors import InputError
 from tolerance.process.draws import Process, process_of
 from tolerance.scenario.properties import matching, members, properties
@@ -54,7 +54,7 @@ def tighten(
     offers = offer_models(scenario)
     fitted = fit_board(scenario, coupons=coupons, seed=(own := chosen_seed(scenario, seed)), tell=tell, cache=cache)
     board, basis = fitted.board, basis_of(scenario, fitted, seed=own, together=together)
-    base, logarithms = base_sides(board), base_logarithms(board)
+    base, logarithms = base_of(board)
 
     def follow(of: tuple[str, frozenset[str]]) -> Tightening:
         return tightening(alone(board, base, of[1], logarithms), of[0], aim=basis.aim, target_yield=basis.target_yield)

@@ -28,7 +28,7 @@ def ask(
 
     A line's variance counts in units of its own limit, so that the lines that fail most decide the order.
     """
-    result = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress, cache=cache)
+    result = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress, cache=cache, brief=True)
     return request_of(scenario, result)
 
 
@@ -77,13 +77,13 @@ def take(
     out = answered_path(base) if out is None else Path(out)
     read = read_reply(Path(reply), scenario)
     amendment, amended, notes = _checked(scenario, amend(scenario, read.answers), read, out, Path(reply).name)
-    before = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress, cache=cache)
+    before = run(scenario, coupons=coupons, seed=seed, on_progress=on_progress, cache=cache, brief=True)
     asked = request_of(scenario, before).rows
     missing = [row.variation for row in asked if row.variation not in read.rows]
     notes += [Note(read.sheet, f"the row {as_toml(name_of(variation.of))} is missing; nothing is changed there")
               for variation in missing]
     after = None if amended is None else run(amended, coupons=coupons, seed=before.seed, on_progress=on_progress,
-                                             cache=cache)
+                                             cache=cache, brief=True)
     return Taken(
         title=scenario.title, changes=amendment.changes, notes=tuple(notes), remarks=amendment.remarks,
         text="" if amended is None else _text(scenario, amendment, out, Path(reply).name), before=before,
@@ -104,7 +104,8 @@ def _checked(
     while amendment.changes:
         try:
             text = _text(scenario, amendment, out, reply)
-            return amendment, parse(text, name=out.name, folder=out.parent), notes
+            allow = map(Path, scenario.allowed)
+            return amendment, parse(text, name=out.name, folder=out.parent, allow=allow), notes
         except ScenarioError as error:
             refused = {(problem.table, problem.entry) for problem in error.problems}
             found = [(answer, table) for answer in read.answers for table in ("variations", "offers")

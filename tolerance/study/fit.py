@@ -10,7 +10,7 @@ from pathlib import Path
 import numpy as np
 
 from tolerance.arrays import FloatArray
-from tolerance.errors import InputError
+from tolerance.errors import InputError, as_toml
 from tolerance.fitted import ColumnLimits, FitResult, FittedColumn
 from tolerance.measurements.readings import measure_of, numbers_of
 from tolerance.measurements.tables import Cell, MeasuredTable, TableError, is_blank, read_table
@@ -41,6 +41,8 @@ def fit(
 
     lower, upper : limits with their unit, or in that of the heading. Raises InputError.
     """
+    if sheet is not None and path.suffix.lower() != ".xlsx":
+        raise InputError(f"--sheet {as_toml(sheet)}: only with an XLSX file")
     try:
         table = read_table(path, sheet=sheet)
         headings, left_out = ([column], ()) if column is not None else _headings(table)

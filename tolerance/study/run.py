@@ -36,13 +36,14 @@ from tolerance.study.weighing import Weights, weigh
 @plain_algebra
 def run(
     scenario: Scenario, *, coupons: int | None = None, seed: int | None = None, direct: int = 0,
-    on_progress: Progress | None = None, cache: SolvedCache | None = None,
+    on_progress: Progress | None = None, cache: SolvedCache | None = None, brief: bool = False,
 ) -> RunResult:
     """Yield and drivers of every line of a checked scenario.
 
     coupons, seed : instead of the scenario's.  direct : solve that many coupons themselves and report the difference.
     on_progress : called with the step's name, what is done of it, and how much there is.
     cache : of solved sections, such as tolerance.user_cache(); none is used if left out.
+    brief : without the groups of drivers and without what would raise the yield; all else is the same.
     Raises UnfinishedError where a line's impedance cannot be predicted.
     """
     tell = on_progress or silent
@@ -80,7 +81,7 @@ def run(
     clock.lap("doubt of readings")
 
     def rank(task: tuple[PredictedLine, np.random.Generator]) -> Weights:
-        return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated)
+        return weigh(scenario, task[0], chance=task[1], with_shapley=process.is_correlated, brief=brief)
 
     ranking = list(zip(predicted, driver_chance.spawn(len(predicted)), strict=True))
     weights = on_all_cores(rank, ranking, "ranking drivers", tell)

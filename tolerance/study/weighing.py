@@ -34,9 +34,12 @@ class Weights:
 
 
 def weigh(
-    scenario: Scenario, line: PredictedLine, *, chance: np.random.Generator, with_shapley: bool,
+    scenario: Scenario, line: PredictedLine, *, chance: np.random.Generator, with_shapley: bool, brief: bool = False,
 ) -> Weights:
-    """Drivers, groups and levers of a line, and the integral over its failures where those are rare."""
+    """Drivers, groups and levers of a line, and the integral over its failures where those are rare.
+
+    brief : no groups and no levers.
+    """
     driver_chance, group_chance, lever_chance, tail_chance = chance.spawn(4)
     model = model_of(line.predictor)
     drivers = rank_drivers(model, chance=driver_chance, with_shapley=with_shapley)
@@ -44,7 +47,8 @@ def weigh(
         return Weights(drivers, (), None, None, line.prepared.from_cache)
     seen = line.predictor.seen
     variables = [seen.process.variables[column] for column in seen.columns]
-    groups, levers = _groups(scenario, model, variables, drivers, group_chance), _levers(line, lever_chance)
+    groups = () if brief else _groups(scenario, model, variables, drivers, group_chance)
+    levers = None if brief else _levers(line, lever_chance)
     tail = tail_of(line, chance=tail_chance) if is_rare(line) else None
     return Weights(drivers, groups, levers, tail, line.prepared.from_cache)
 

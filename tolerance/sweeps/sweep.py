@@ -36,16 +36,17 @@ class _Planned:
 def sweep(
     paths: Sequence[str | os.PathLike[str]], folder: str | os.PathLike[str], *, workers: int | None = None,
     scheduler: str | None = None, fresh: bool = False, seed: int | None = None, coupons: int | None = None,
-    on_progress: Progress | None = None, on_row: RowDone | None = None,
+    allow: Sequence[str | os.PathLike[str]] = (), on_progress: Progress | None = None, on_row: RowDone | None = None,
 ) -> SweepResult:
     """Run every scenario that the files, and the *.toml of the folders, stand for.
 
     folder : finished rows are kept there and not computed again.  workers : processes; one for each core if left out.
     scheduler : address of a Dask scheduler whose workers compute the rows instead.  fresh : solve anew also what a
     worker's cache of solved sections holds.  seed, coupons : instead of the scenarios'.
+    allow : folders, besides that of each scenario, in which files may stand that it names.
     Raises InputError where there is nothing to run, UnfinishedError where the folder takes no files.
     """
-    plan = _plan(paths)
+    plan = _plan(paths, allow)
     kept, rows = KeptRows(Path(folder)), _Rows(plan, on_progress or silent, on_row)
     chosen = kept.seed() if seed is None else seed
     keys: dict[str, list[int]] = {}
@@ -101,12 +102,14 @@ class _Rows:
         return SweepResult(tuple(self._found[number] for number in range(len(self._plan))))
 
 
-def _plan(paths: Sequence[str | os.PathLike[str]]) -> list[_Planned]:
+def _plan(
+    paths: Sequence[str | os.PathLike[str]], allow: Sequence[str | os.PathLike[str]],
+) -> list[_Planned]:
     """Every row there will be. Raises InputError where there is none."""
     planned: list[_Planned] = []
     for path in _files(paths):
         try:
-            _, variants = sweep_of(path)
+            _, variants = sweep_of(path, allow=allow)
             planned += [_Planned(str(path), one.swept, one) for one in variants]
         except ToleranceError as problem:
             planned.append(_Planned(str(path), {}, None, str(problem)))
