@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from collections.abc import Callable
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from tolerance.screen import add_allow, add_fresh, cache_for, check_folder, console, progress, tell_from_cache
 
@@ -18,7 +18,7 @@ PAGE = "page.html"
 Checked = Callable[..., None]  # that --coupons and --seed may be what they are
 
 
-def add_page(commands: argparse._SubParsersAction[argparse.ArgumentParser], checked: Checked) -> None:
+def add_page(commands: Any, checked: Checked) -> None:
     """Add the command."""
     page = commands.add_parser("page", help="a run as one HTML file in which tolerances, means, widths and limits move")
     page.add_argument("file", type=Path, metavar="FILE", help="scenario (TOML)")
@@ -46,7 +46,7 @@ def _page(options: argparse.Namespace, checked: Checked) -> int:
         options.logbook.run(result)
         written = write_the_page(scenario, result, folder, tell, cache)
     if not options.quiet:
-        console().print(f"Written: {written}. Open it in a browser.", highlight=False)
+        console().print(f"Written: {written}. Open it in a browser.", highlight=False, soft_wrap=True)
     tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
     return 0
 

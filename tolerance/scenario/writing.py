@@ -21,6 +21,7 @@ LIMIT, LINE, VARIATION = "limit", "line", "variation"
 LINE_KEYS = ("width", "gap", "ground_gap", "limit")
 VARIATION_KEYS = ("shape", "tolerance", "sigmas", "cpk", "shift", "low", "high", "file", "column", "sheet")
 KEPT_KEYS = ("shape", "sigmas", "cpk", "file", "column", "sheet")  # of these: what no slider moves
+LONGEST_MIL = 7  # signs; what needs more was not written in mil
 FEWEST_DIGITS, MOST_DIGITS = 6, 17  # tried; a double needs no more
 
 
@@ -46,11 +47,11 @@ def kept_keys(scenario: Scenario, variation: Variation) -> str:
     return _Writer(scenario).keys(variation, KEPT_KEYS, _measure_of(scenario, variation))
 
 
-def number_text(value: float, unit: str, measure: MeasureName) -> str:
-    """The fewest digits with which `value` [SI] is read back from this unit as it is."""
+def number_text(value: float, unit: str, measure: MeasureName) -> str | None:
+    """The fewest digits with which `value` [SI] is read back from this unit as it is; None where none are enough."""
     factor = unit_factor(unit, measure)
     texts = (f"{value / float(factor):.{digits}g}" for digits in range(FEWEST_DIGITS, MOST_DIGITS + 1))
-    return next((text for text in texts if float(Fraction(text) * factor) == value), repr(value / float(factor)))
+    return next((text for text in texts if float(Fraction(text) * factor) == value), None)
 
 
 def quoted(text: str) -> str:
@@ -127,7 +128,7 @@ class _Writer:
                 shares = ((name, getattr(value, name)) for name in LEVELS)
                 return f"{{ {', '.join(f'{name} = {share!r}' for name, share in shares if share)} }}"
             case Reading():
-                return f'{{ position = "{number_text(value.position, "mm", "length")} mm" }}'
+                return f"{{ position = {self._with_unit(value.position, 'length', 'mm')} }}"
             case Amount(relative=True):
                 return self._with_unit(value.value, "share", None)
             case Amount():
@@ -141,7 +142,11 @@ class _Writer:
                 return repr(value)
 
     def _with_unit(self, value: float, measure: MeasureName, unit: str | None) -> str:
+        """In this unit or the measure's first; um as mil where the report has mil and few digits are enough."""
         unit = unit or unit_names(measure)[0]
-        if measure in ("length", "copper length") and unit == "um":
-            unit = self._scenario.report.lengths
-        return f'"{number_text(value, unit, measure)} {unit}"'
+        if unit == "um" and self._scenario.report.lengths == "mil":
+            text = number_text(value, "mil", measure)
+            if text is not None and len(text) <= LONGEST_MIL:
+                return f'"{text} mil"'
+        text = number_text(value, unit, measure)
+        return f'"{repr(value / float(unit_factor(unit, measure))) if text is None else text} {unit}"'
