@@ -10,7 +10,9 @@ import io
 import os
 import re
 import shlex
+import shutil
 from pathlib import Path
+from tempfile import TemporaryDirectory
 
 from rich.console import Console
 
@@ -20,7 +22,7 @@ from tolerance.results import Driver, LineResult, RunResult
 
 ROOT = Path(__file__).parents[1]
 README = ROOT / "README.md"
-_OUTPUT = r"^<!-- (output: (?:last (\d+) lines of )?tolerance (.+)) -->$"
+_OUTPUT = r"^<!-- (output: (?:(first|last) (\d+) lines of )?tolerance (.+)) -->$"
 _NUMBER = r"(\[?[0-9][0-9., ]*\]?)"
 
 
@@ -50,21 +52,35 @@ def refreshed(text: str, result: RunResult) -> str:
     text = text[: block.start("inside")] + terminal_text(result) + text[block.end("inside"):]
     for sentence, numbers in _sentences(result):
         text = _with_numbers(text, sentence, numbers)
-    for mark, last, words in re.findall(_OUTPUT, text, re.MULTILINE):
-        block = _block(text, mark)
-        shown = command_output(shlex.split(words)).splitlines(keepends=True)
-        inside = "".join(shown[-int(last):] if last else shown)
-        text = text[: block.start("inside")] + inside + text[block.end("inside"):]
+    with TemporaryDirectory() as folder, contextlib.chdir(folder):
+        _lay_out(Path(folder))
+        for mark, end, count, words in re.findall(_OUTPUT, text, re.MULTILINE):
+            block = _block(text, mark)
+            shown = command_output(shlex.split(words)).splitlines(keepends=True)
+            inside = "".join(shown[-int(count):] if end == "last" else shown[: int(count)] if end else shown)
+            text = text[: block.start("inside")] + inside + text[block.end("inside"):]
     return text
 
 
+def _lay_out(folder: Path) -> None:
+    """What the README's commands find: the scenarios, and the copy of some that the README has made."""
+    shutil.copytree(ROOT / "scenarios", folder / "scenarios")
+    (folder / "talk").mkdir()
+    for path in (folder / "scenarios").glob("tram-stop*"):
+        shutil.copy(path, folder / "talk")
+
+
 def command_output(words: list[str]) -> str:
-    """What a command prints where the output is no terminal, run from the root of the repository."""
+    """What a command prints where the output is no terminal, run where we are. ValueError where it does not succeed."""
     from tolerance.command import main
 
     written = io.StringIO()
-    with contextlib.chdir(ROOT), contextlib.redirect_stdout(written), contextlib.suppress(SystemExit):
-        main(words)
+    try:
+        with contextlib.redirect_stdout(written):
+            main(words)
+    except SystemExit as ended:
+        if ended.code:
+            raise ValueError(f"tolerance {shlex.join(words)}: exit status {ended.code}") from ended
     return "\n".join(line.rstrip() for line in written.getvalue().splitlines()) + "\n"
 
 

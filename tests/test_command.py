@@ -84,7 +84,7 @@ def test_a_line_that_is_renamed_leaves_no_old_figure_behind_and_what_is_not_ours
     assert command("run", board, "--coupons", 256, "--quiet", "--out", folder) == 0
     assert {path.name for path in folder.iterdir() if not path.name.startswith(".")} == {
         "tolerance.xlsx", "all-lines.png", "yield-against-limit.png", "antenna-feed.png", "clock.png", "notes.png",
-        "clock-pair.png"}
+        "clock-pair.png", "run-record.json"}
     assert command("run", board, "--coupons", 256, "--quiet", "--out", folder, "--figures", "svg") == 0
     assert {path.name for path in folder.glob("*.png")} == {"notes.png", "clock-pair.png"}
     assert {path.name for path in folder.glob("*.svg")} == {

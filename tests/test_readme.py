@@ -12,6 +12,7 @@ from pathlib import Path
 import jsonschema
 import pytest
 from matplotlib.axes import Axes
+from openpyxl import load_workbook
 
 from tests.readme_numbers import README, ROOT, marked_block, python_example, refreshed
 from tolerance.results import RunResult
@@ -78,7 +79,7 @@ def test_every_scenario_is_in_the_table() -> None:
 
 @pytest.mark.parametrize("words", [[word] for word in (
     "run", "check", "fit", "new", "presets", "schema", "tighten", "center", "promise", "compare", "note", "ask",
-    "take", "reconcile", "sweep")])
+    "take", "reconcile", "sweep", "again", "doctor")])
 def test_every_option_is_told(words: list[str], capsys: pytest.CaptureFixture[str]) -> None:
     from tolerance.command import main
 
@@ -106,3 +107,48 @@ def test_the_check_runs_the_two_commands_as_they_stand(tmp_path: Path) -> None:
     assert subprocess.run(["bash", str(script)], capture_output=True, check=False).returncode != 0
     (copy / "README.md").write_text(text.replace("<!-- command: tests -->", ""), encoding="utf-8")
     assert subprocess.run(["bash", str(script)], capture_output=True, check=False).returncode != 0
+
+
+def test_the_negotiation_hangs_together() -> None:
+    """What its sentences and its scenarios say is what its commands say."""
+    first, moved, agreed = (load(ROOT / "scenarios" / f"tram-stop-{name}.toml")
+                            for name in ("display-4-layer", "moved-4-layer", "agreed-4-layer"))
+    for one, other, file in ((first, moved, "scenarios/tram-stop-display-4-layer.toml"),
+                             (moved, agreed, "talk/tram-stop-moved-4-layer-answered.toml")):
+        shown = marked_block(TEXT, f'output: tolerance center {file} --grid "1 um"')
+        for old, new in zip(one.lines, other.lines, strict=True):
+            assert re.search(rf"^{old.name} +{old.width * 1e6:.0f} +{new.width * 1e6:.0f} ", shown, re.MULTILINE)
+        widths = "{:.0f}, {:.0f} and {:.0f} um".format(*(line.width * 1e6 for line in other.lines))
+        assert f"to {widths}" in " ".join(TEXT.split())
+        for old, new in zip(one.lines, other.lines, strict=True):
+            assert (old.gap or 0.0) + old.width == pytest.approx((new.gap or 0.0) + new.width) or old.gap is None
+    center = marked_block(TEXT, 'output: tolerance center scenarios/tram-stop-display-4-layer.toml --grid "1 um"')
+    prices = re.findall(r"^(?:Tighten|Both): reaches the target for ([0-9.]+) ", center, re.MULTILINE)
+    assert f"for {prices[1]} instead of {prices[0]}." in " ".join(TEXT.split())
+    promised = marked_block(TEXT, "output: tolerance promise talk/tram-stop-agreed-4-layer.toml")
+    for line, before in zip(agreed.lines, first.lines, strict=True):
+        found = re.search(rf"^{line.name} .* (\d+) +([0-9.]+)  \[.*\]  holds$", promised, re.MULTILINE)
+        assert found is not None
+        assert float(found[1]) == pytest.approx(100.0 * agreed.limit_of(line))
+        assert float(found[2]) <= float(found[1]), "what is signed can be held"
+        assert agreed.limit_of(line) < first.limit_of(before)
+
+
+def test_the_filled_sheet_is_the_one_that_is_asked(tmp_path: Path) -> None:
+    """The reply has the rows and columns of the sheet that `ask` writes now, and its answers are what was agreed on."""
+    from tolerance.report.request import write_request
+    from tolerance.study.exchange import ask, take
+
+    path = ROOT / "scenarios" / "tram-stop-moved-4-layer.toml"
+    asked = write_request(ask(load(path), coupons=256), tmp_path / "ask.xlsx")
+    now, reply = (load_workbook(one)["Tolerances"] for one in (asked, ROOT / "scenarios" / "tram-stop-reply.xlsx"))
+    assert [row[:7] for row in now.iter_rows(min_row=5, values_only=True)] == [
+        row[:7] for row in reply.iter_rows(min_row=5, values_only=True)], "what is ours, left of the yellow columns"
+    answered = take(load(path), ROOT / "scenarios" / "tram-stop-reply.xlsx", out=tmp_path / "answered.toml",
+                    coupons=256).scenario
+    assert answered is not None
+    agreed = load(ROOT / "scenarios" / "tram-stop-agreed-4-layer.toml")
+    offer = next(one for one in answered.offers if one.cost == 2.5)
+    for before, after in zip(answered.variations, agreed.variations, strict=True):
+        bought = {"tolerance": offer.tolerance} if before.of == offer.of else {}
+        assert after == before.model_copy(update=bought)

@@ -13,6 +13,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 from openpyxl import Workbook
+from scipy.optimize import minimize_scalar
+from scipy.special import erf
 
 from tests.scenario_texts import HEAD, LINES, SIX_LAYERS
 from tolerance.arrays import FloatArray
@@ -116,6 +118,18 @@ def test_a_linear_normal_case_is_the_conditional_normal() -> None:
     expected = float((values - 50.0) @ np.linalg.inv(whole) @ (values - 50.0))
     assert misfit_of(linear, Observed(values, NOISE), PRIOR) == pytest.approx(expected, rel=1e-7)
     assert chance_of_more(expected, 2) == pytest.approx(np.exp(-0.5 * expected))  # chi-squared of 2 degrees, exact
+
+
+def test_the_search_settles_where_the_response_bends_over() -> None:
+    """Towards the end of a uniform law nothing more follows; the mode is that of scipy's search along a line."""
+    def response(germ: FloatArray) -> FloatArray:
+        return np.asarray(0.05 * erf(germ * np.sqrt(0.5)))
+
+    for seen in (0.1, 0.45, 0.7):
+        found = most_plausible(response, Observed(np.array([seen]), np.array([[0.01]])), np.eye(1))
+        exact = minimize_scalar(lambda germ, seen=seen: (seen - 0.05 * erf(germ * np.sqrt(0.5))) ** 2 / 0.01 + germ**2,
+                                bounds=(0.0, 6.0), method="bounded", options={"xatol": 1e-10})
+        assert found.mean[0] == pytest.approx(exact.x, abs=1e-4), "slopes are differences over a tenth of a germ"
 
 
 def test_the_evidence_of_a_single_cause_is_that_of_a_normal() -> None:
@@ -232,7 +246,7 @@ def test_tables_are_read_and_what_is_wrong_is_told_by_its_row(tmp_path: Path) ->
     assert (table.lots, table.panels) == (("A", "A"), ("1", "2"))
     bad = tmp_path / "bad.csv"
     bad.write_text("line,value\nradio fed,50\nradio feed,-3\n", encoding="utf-8")
-    with pytest.raises(InputError, match=r'row 2: no line is called "radio fed"; did you mean "radio feed".*row 3: an'):
+    with pytest.raises(InputError, match=r'row 2: no line is called "radio fed"; did you mean.*row 3 holds -3 ohm'):
         read_coupons(bad, scenario)
     bad.write_text("trace,value\nradio feed,50\n", encoding="utf-8")
     with pytest.raises(InputError, match=r'needs a column headed line; it has "trace", "value"'):

@@ -8,6 +8,7 @@ from hypothesis import strategies as some
 
 from tolerance.report.files import file_names
 from tolerance.report.wording import (
+    doubt_text,
     fixed,
     headline_text,
     length_text,
@@ -31,6 +32,18 @@ from tolerance.results import Interval
 ])
 def test_a_share_shows_the_digits_that_its_interval_allows(interval: Interval, expected: str) -> None:
     assert share_with_range(interval) == expected
+
+
+@pytest.mark.parametrize(("interval", "expected"), [
+    (Interval(0.98432, 0.98384, 0.98480), "[98.38, 98.48]"),
+    (Interval(0.99998, 0.99991, 1.0), "[99.991, 100.000]"),
+    (Interval(1.0 - 26.33e-6, 1.0 - 26.42e-6, 1.0 - 26.24e-6), "26.3 ppm fail"),
+    (Interval(1.0 - 1.827e-8, 1.0 - 1.873e-8, 1.0 - 1.781e-8), "0.0183 ppm fail"),
+    (Interval(1.0, 1.0 - 1e-7, 1.0), "under 0.1 ppm fail"),
+    (Interval(0.0, 0.0, 1e-7), "[0.000, 0.000]"),
+])
+def test_an_interval_too_narrow_to_read_is_told_by_what_fails(interval: Interval, expected: str) -> None:
+    assert doubt_text(interval) == expected
 
 
 @pytest.mark.parametrize(("interval", "target", "expected"), [

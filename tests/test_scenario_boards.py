@@ -29,7 +29,7 @@ def test_nominals_come_near_their_targets(path: Path) -> None:
 @pytest.mark.parametrize("path", FILES, ids=lambda path: path.stem)
 def test_every_tolerance_says_where_it_comes_from(path: Path) -> None:
     text = path.read_text(encoding="utf-8")
-    variations = text.split("[[variations]]", 1)[1]
+    variations = text.partition("[[variations]]")[2]
     for entry in re.split(r"^\[+[a-z]+\]+$", variations, flags=re.MULTILINE):
         numbers = [line for line in entry.split("\n") if line.startswith(("tolerance ", "low ", "coefficient "))]
         assert not numbers or any(status in entry for status in STATUSES), entry

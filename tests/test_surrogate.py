@@ -12,12 +12,13 @@ from scipy.special import ellipk, ellipkm1
 from tests.process_examples import predictor_of, process, variable
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
-from tolerance.process.draws import Process, ProcessDraws, draw_process
+from tolerance.process.draws import Process, ProcessDraws, Variable, draw_process
 from tolerance.process.laws import Law, Shape
 from tolerance.process.values import ProcessValues
 from tolerance.scenario.amounts import Amount
+from tolerance.scenario.properties import Property
 from tolerance.surrogate.coordinates import BoxValues, box_ends, training_shares
-from tolerance.surrogate.polynomial import BLOCK_ROWS, fit, full_exponents, polynomial
+from tolerance.surrogate.polynomial import BLOCK_ROWS, Slopes, fit, full_exponents, polynomial
 from tolerance.surrogate.prediction import Predictor
 
 
@@ -82,6 +83,35 @@ def test_leave_one_out_is_what_refits_give() -> None:
         errors[left] = values[left] - refit.evaluate(where[[left]])[0]
     assert np.corrcoef(errors, whole.leave_one_out)[0, 1] > 0.9
     assert np.sqrt(np.mean(whole.leave_one_out**2)) == pytest.approx(np.sqrt(np.mean(errors**2)), rel=0.25)
+
+
+def slopes_of_smooth(where: FloatArray) -> Slopes:
+    return Slopes(np.arange(len(where)), smooth(where)[:, np.newaxis] * [0.08, -0.06, 0.04, 0.02, 0.01, 0.005])
+
+
+def test_points_with_their_derivatives_say_more_than_many_times_as_many_without() -> None:
+    few, many, elsewhere = points(16, 6), points(60, 6), points(2000, 6, seed=3)
+    known = fit(few, smooth(few), slopes=slopes_of_smooth(few))
+    plain = fit(many, smooth(many))
+    assert np.std(known.evaluate(elsewhere) - smooth(elsewhere)) < 0.5 * np.std(
+        plain.evaluate(elsewhere) - smooth(elsewhere))
+    assert np.std(known.evaluate(elsewhere) - smooth(elsewhere)) < 2e-5
+
+
+def test_a_point_is_left_out_with_all_that_is_known_there() -> None:
+    where = points(20, 3)
+    values = np.exp(where @ [0.4, -0.3, 0.2])
+    steep = values[:, np.newaxis] * [0.4, -0.3, 0.2]
+    some = np.arange(0, 20, 2)
+    whole = fit(where, values, slopes=Slopes(some, steep[some]))
+    errors = np.empty(20)
+    for left in range(20):
+        kept = np.delete(np.arange(20), left)
+        sloped = np.flatnonzero(np.isin(kept, some))
+        refit = fit(where[kept], values[kept], slopes=Slopes(sloped, steep[kept][sloped]), prior=whole.prior)
+        errors[left] = values[left] - refit.evaluate(where[[left]])[0]
+    assert np.corrcoef(errors, whole.leave_one_out)[0, 1] > 0.9
+    assert np.sqrt(np.mean(whole.leave_one_out**2)) == pytest.approx(np.sqrt(np.mean(errors**2)), rel=0.3)
 
 
 def test_the_doubt_is_of_the_size_of_the_error() -> None:
@@ -248,6 +278,18 @@ def test_the_box_is_wider_than_the_tolerances_and_keeps_lengths_above_nought() -
     low, high = box_ends(Law("normal", 12e-6, tolerance=Amount(11e-6, relative=False)), reference=12e-6)
     assert low == pytest.approx(0.5e-6)  # half of the low end of the tolerance
     assert high > 23e-6
+
+
+def test_what_is_drawn_together_hangs_together_in_the_box_as_in_draws() -> None:
+    """The smaller one would be below nought at the end of the box: the larger one ends there with it."""
+    pair = [(Property(f"M1.{key}", "M1", key, nominal), Law("normal", nominal, tolerance=Amount(9e-6, relative=False)))
+            for key, nominal in (("thickness", 25e-6), ("over_copper", 12e-6))]
+    known = replace(process(), variables=(Variable("mask", tuple(pair)),), correlation=np.eye(1),
+                    nominals={"M1.thickness": 25e-6, "M1.over_copper": 12e-6})
+    for values in (BoxValues(known, (0,), 1e-4, np.linspace(-1.0, 1.0, 9)[:, np.newaxis]),
+                   ProcessDraws(known, np.linspace(-3.0, 3.0, 9)[:, np.newaxis])):
+        assert values.value("M1.thickness") - values.value("M1.over_copper") == pytest.approx(np.full(9, 13e-6))
+        assert np.min(values.value("M1.over_copper")) > 1e-6
 
 
 def test_predictions_of_draws_are_finite_however_wide_the_law() -> None:

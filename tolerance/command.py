@@ -33,14 +33,15 @@ from tolerance.screen import (
 from tolerance.talk_commands import add_talk
 
 if TYPE_CHECKING:
+    from tolerance.report.figures import FigureFormat
     from tolerance.results import RunResult
     from tolerance.scenario import Scenario
-    from tolerance.study.solved import SolvedCache
+    from tolerance.scenario.entered import EnteredFile
 
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
-LOGGED = ("run", "page", "sweep", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
+LOGGED = ("run", "page", "sweep", "again", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
@@ -198,12 +199,14 @@ def _write_pictures(scenario: Scenario, folder: Path, options: argparse.Namespac
 
 def _run(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
+    from tolerance.scenario.entered import entered_files
 
     check_folder(options.out)
     scenario = load(options.file, allow=options.allow)
     _check_numbers(options, in_lots=scenario.has_levels)
     if options.page and options.json and options.out is None:
         raise InputError("--page: with --json only where --out says where it goes")
+    entered = entered_files(options.file, allow=options.allow)
     from tolerance.study.run import run
 
     cache = cache_for(options)
@@ -212,8 +215,11 @@ def _run(options: argparse.Namespace) -> int:
                      cache=cache)
         options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
-        written = [] if folder is None else _write_files(result, scenario, folder, options, tell,
-                                                             cache)
+        record = partial(_write_record, result, scenario, entered, direct=options.direct)
+        more = [record]
+        if options.page:
+            more.append(partial(write_the_page, scenario, result, tell=tell, cache=cache))
+        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell, more)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -246,22 +252,34 @@ def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
 
 
 def _write_files(
-    result: RunResult, scenario: Scenario, folder: Path, options: argparse.Namespace,
-    tell: Callable[[str, int, int], None], cache: SolvedCache | None,
+    result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
+    tell: Callable[[str, int, int], None], more: Sequence[Callable[[Path], Path]],
 ) -> list[Path]:
     from tolerance.cores import on_all_cores
     from tolerance.report.figures import page_jobs, run_pages
-    from tolerance.report.files import remove_earlier
+    from tolerance.report.files import remove_earlier, remove_left_over
     from tolerance.report.workbook import write_workbook
     from tolerance.study.note import note
 
     workbook: Callable[[], Path] = partial(
         write_workbook, result, scenario, folder / "tolerance.xlsx", note(scenario))
-    figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=options.figures)
-    written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
-    written += [write_the_page(scenario, result, folder, tell, cache)] if options.page else []
+    figures = page_jobs(run_pages(result, scenario.report.lengths), folder, figure_format=figure_format)
+    try:
+        written = on_all_cores(lambda job: job(), [workbook, *figures], "writing workbook and figures", tell)
+    except BaseException:
+        remove_left_over(folder)
+        raise
+    written += [write(folder) for write in more]
     remove_earlier(folder, written, job="run")
     return written
+
+
+def _write_record(
+    result: RunResult, scenario: Scenario, entered: tuple[EnteredFile, ...], folder: Path, *, direct: int,
+) -> Path:
+    from tolerance.records.record import write_record
+
+    return write_record(result, scenario, entered, folder, direct=direct)
 
 
 def _new(options: argparse.Namespace) -> int:

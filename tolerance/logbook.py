@@ -31,7 +31,7 @@ class Logbook:
         self._start = time.perf_counter()
         self._step, self._step_start = "", self._start
         try:
-            self._file = None if path is None else path.open("a", encoding="utf-8")
+            self._file = None if path is None else path.open("ab", buffering=0)
         except OSError as problem:
             raise UnfinishedError(f"--log {path}: cannot be written: {problem.strerror or problem}") from problem
 
@@ -42,10 +42,9 @@ class Logbook:
         head = {"time": datetime.now(UTC).isoformat(timespec="milliseconds"),
                 "elapsed": round(time.perf_counter() - self._start, 3), "event": event}
         try:
-            self._file.write(json.dumps({**head, **fields}, default=str) + "\n")
-            self._file.flush()
+            self._file.write(f"{json.dumps({**head, **fields}, default=str)}\n".encode())
         except OSError as problem:
-            self._file = None
+            self.close()
             self._complain(f"--log {self._path}: could not be written, going on without: {problem.strerror or problem}")
 
     def tell(self, step: str, done: int, total: int) -> None:

@@ -1,4 +1,4 @@
-"""The command for many scenarios: sweep."""
+"""The commands for many runs, for one again, and for the installation: sweep, again, doctor."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tolerance.errors import InputError, ToleranceError
-from tolerance.screen import add_allow, add_fresh, check_folder, console, progress
+from tolerance.screen import add_allow, add_fresh, cache_for, check_folder, console, progress
 from tolerance.talk_commands import check_numbers
 
 if TYPE_CHECKING:
@@ -34,6 +34,58 @@ def add_many(commands: Any) -> None:
     add_fresh(sweep)
     add_allow(sweep)
     sweep.set_defaults(command=_sweep)
+    add_again(commands)
+    add_doctor(commands)
+
+
+def add_again(commands: Any) -> None:
+    """Add the command that re-makes a run."""
+    again = commands.add_parser("again", help="re-make a run from its record, and say what is not as it was")
+    again.add_argument("folder", type=Path, metavar="OUT", help="folder of a run, or its run-record.json")
+    again.add_argument("--json", action="store_true", help="the result as one JSON object on standard output")
+    again.add_argument("--quiet", action="store_true", help="print nothing but what is asked for or wrong")
+    add_fresh(again)
+    again.set_defaults(command=_again)
+
+
+def add_doctor(commands: Any) -> None:
+    """Add the command that looks at the installation."""
+    doctor = commands.add_parser("doctor", help="what is installed, how fast it is, whether exact results come out")
+    doctor.add_argument("--json", action="store_true", help="the same as one JSON object on standard output")
+    doctor.set_defaults(command=_doctor)
+
+
+def _doctor(options: argparse.Namespace) -> int:
+    from tolerance.report.diagnosis_text import diagnosis_json, print_diagnosis
+    from tolerance.study.doctor import doctor
+    from tolerance.study.solved import user_cache
+
+    found = doctor(user_cache())
+    if options.json:
+        print(diagnosis_json(found))
+    else:
+        print_diagnosis(found, console())
+    return 0 if found.well else UNFINISHED
+
+
+def _again(options: argparse.Namespace) -> int:
+    from tolerance.records.again import again
+
+    cache = cache_for(options)
+    with progress(quiet=options.quiet, log=options.logbook) as tell:
+        made = again(options.folder, on_progress=tell, cache=cache)
+    options.logbook.run(made.result)
+    for name, then, now in made.made_with:
+        options.logbook.write("warning", message=f"{name}: {then} then, {now} now")
+    if options.json:
+        from tolerance.report.json_text import run_json
+
+        print(run_json(made.result))
+    elif not options.quiet:
+        from tolerance.records.words import print_again
+
+        print_again(made, console())
+    return 0 if made.same else UNFINISHED
 
 
 def _sweep(options: argparse.Namespace) -> int:

@@ -44,7 +44,7 @@ def _page(options: argparse.Namespace, checked: Checked) -> int:
     with progress(quiet=options.quiet, log=options.logbook) as tell:
         result = run(scenario, coupons=options.coupons, seed=options.seed, on_progress=tell, cache=cache)
         options.logbook.run(result)
-        written = write_the_page(scenario, result, folder, tell, cache)
+        written = write_the_page(scenario, result, folder, tell=tell, cache=cache)
     if not options.quiet:
         console().print(f"Written: {written}. Open it in a browser.", highlight=False, soft_wrap=True)
     tell_from_cache(options, result.record.from_cache, result.record.solver_runs)
@@ -52,7 +52,7 @@ def _page(options: argparse.Namespace, checked: Checked) -> int:
 
 
 def write_the_page(
-    scenario: Scenario, result: RunResult, folder: Path, tell: Callable[[str, int, int], None],
+    scenario: Scenario, result: RunResult, folder: Path, *, tell: Callable[[str, int, int], None],
     cache: SolvedCache | None,
 ) -> Path:
     """Fit what the page needs and write it to the folder."""

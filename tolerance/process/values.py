@@ -31,6 +31,10 @@ class NominalValues:
 
     def value(self, name: str) -> FloatArray:
         """See ProcessValues."""
+        return self.own(name)
+
+    def own(self, name: str) -> FloatArray:
+        """The nominal, which is also what resin makes of it."""
         return np.array([self.nominals[name]])
 
     def etch(self, layer: str, *, width: float) -> FloatArray:  # noqa: ARG002  the nominal etch of any line is nought

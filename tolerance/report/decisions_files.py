@@ -12,7 +12,7 @@ from openpyxl import Workbook
 from tolerance.decided import CenterResult, CompareResult, PromiseResult, TightenResult
 from tolerance.report.decisions_plot import compare_page, front_page, promise_page, tighten_page, widths_page
 from tolerance.report.figures import picture
-from tolerance.report.files import put_in_place, remove_earlier
+from tolerance.report.files import put_in_place, put_workbook_in_place, remove_earlier
 from tolerance.report.sheet_tables import write_table
 from tolerance.report.tables import Cell, Column, Table
 from tolerance.report.wording import METRES_IN, LengthUnit
@@ -36,7 +36,7 @@ def write_decision(result: Decision, folder: Path, lengths: LengthUnit) -> list[
         sheet = book.create_sheet(name)
         write_table(sheet, table_of_frame(frame, lengths), top=1)
         sheet.freeze_panes = "B2"
-    written = [put_in_place(folder / f"{job}.xlsx", book.save),
+    written = [put_workbook_in_place(folder / f"{job}.xlsx", book),
                put_in_place(folder / f"{job}.png", picture(page()))]
     remove_earlier(folder, written, job=job)
     return written

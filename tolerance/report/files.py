@@ -2,17 +2,25 @@
 
 from __future__ import annotations
 
+import glob
 import hashlib
+import io
 import json
 import os
-from collections.abc import Callable, Sequence
+import platform
+from collections.abc import Callable, Iterable, Sequence
 from contextlib import suppress
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from tolerance.errors import UnfinishedError
 
+if TYPE_CHECKING:
+    from openpyxl import Workbook
+
 LONGEST = 60
 NOTE = ".tolerance-files.json"  # beside the files: what was written there
+PART = ".part"  # how the name of a file that is being written ends
 RESERVED = {"con", "prn", "aux", "nul", *(f"{port}{number}" for port in ("com", "lpt") for number in range(10))}
 
 
@@ -39,9 +47,10 @@ def put_in_place(path: Path, write: Callable[[Path], object]) -> Path:
 
     Raises UnfinishedError where that cannot be done (no room, no right, the file open elsewhere).
     """
-    beside = path.with_name(f".{path.name}.{os.getpid()}.part")
+    beside = path.with_name(f".{path.name}.{platform.node()}-{os.getpid()}{PART}")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
+        _remove_dead(path.parent.glob(f".{glob.escape(path.name)}.*{PART}"))
         try:
             write(beside)
             os.replace(beside, path)
@@ -50,6 +59,42 @@ def put_in_place(path: Path, write: Callable[[Path], object]) -> Path:
     except OSError as problem:
         raise UnfinishedError(f"could not write {path}: {problem.strerror or problem}") from problem
     return path
+
+
+def put_workbook_in_place(path: Path, book: Workbook) -> Path:
+    """As `put_in_place`. The workbook is packed in memory: an archive that cannot be finished complains later on."""
+    content = io.BytesIO()
+    try:
+        book.save(content)
+    except OSError as problem:  # its sheets go through temporary files
+        raise UnfinishedError(f"could not write {path}: {problem.strerror or problem}") from problem
+    return put_in_place(path, lambda beside: beside.write_bytes(content.getvalue()))
+
+
+def remove_left_over(folder: Path) -> None:
+    """Remove what processes of this machine that are gone left half-written in the folder."""
+    _remove_dead(folder.glob(f".*{PART}"))
+
+
+def _remove_dead(parts: Iterable[Path]) -> None:
+    with suppress(OSError):
+        for part in parts:
+            host, _, process = part.name.removesuffix(PART).rpartition(".")[2].rpartition("-")
+            if host == platform.node().rpartition(".")[2] and process.isdigit() and not _lives(int(process)):
+                part.unlink(missing_ok=True)
+
+
+def _lives(process: int) -> bool:
+    """Whether a process of this machine lives; where that cannot be asked without harm, it does."""
+    if os.name == "nt":
+        return True
+    try:
+        os.kill(process, 0)
+    except ProcessLookupError:
+        return False
+    except (OSError, OverflowError):
+        return True
+    return True
 
 
 def remove_earlier(folder: Path, written: Sequence[Path], *, job: str) -> None:

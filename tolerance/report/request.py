@@ -10,7 +10,7 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.properties import PageSetupProperties
 
-from tolerance.report.files import put_in_place
+from tolerance.report.files import put_workbook_in_place
 from tolerance.report.sheet_tables import put
 from tolerance.report.sheet_text import clean_text
 from tolerance.report.wording import LengthUnit, length_text, percent, trimmed
@@ -52,7 +52,7 @@ _SHAPE_WORDS = {"uniform": "limits, all between alike", "triangular": "limits, m
 
 def write_request(request: Request, path: Path, *, hide_targets: bool = False) -> Path:
     """Write the workbook, whole or not at all. hide_targets : no targets, limits or line names in it."""
-    return put_in_place(path, request_workbook(request, hide_targets=hide_targets).save)
+    return put_workbook_in_place(path, request_workbook(request, hide_targets=hide_targets))
 
 
 def request_workbook(request: Request, *, hide_targets: bool = False) -> Workbook:

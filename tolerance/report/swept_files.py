@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING
 import pandas as pd
 from openpyxl import Workbook
 
-from tolerance.report.files import put_in_place, remove_earlier
+from tolerance.report.files import put_in_place, put_workbook_in_place, remove_earlier
 from tolerance.report.sheet_tables import write_table
 from tolerance.report.sheet_text import plain_cell
 from tolerance.report.tables import Cell, Column, Table
@@ -30,7 +30,7 @@ _SHARE = re.compile(r"(?:.*: |lowest_line_)?(?:yield(?:_low|_high)?|below|above)
 def write_sweep(result: SweepResult, folder: Path) -> list[Path]:
     """Write the tables into `folder`: a row a scenario, and a row a scenario and line. Raises UnfinishedError."""
     frames = {"sweep": result.table, "sweep-lines": result.line_table}
-    written = [put_in_place(folder / "sweep.xlsx", _workbook(frames).save)]
+    written = [put_workbook_in_place(folder / "sweep.xlsx", _workbook(frames))]
     for name, frame in frames.items():
         written.append(put_in_place(folder / f"{name}.csv", partial(_write_csv, frame)))
         if find_spec("pyarrow") is not None:

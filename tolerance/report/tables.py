@@ -12,11 +12,11 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from tolerance.report.wording import (
+    doubt_text,
     fixed,
     headline_text,
     percent,
     percent_digits,
-    share_range_text,
     share_text,
     trimmed,
     variable_words,
@@ -99,7 +99,7 @@ def line_words(line: LineResult, target_yield: float) -> LineWords:
         deviation=fixed(line.deviation.value, 2),
         inside=share_text(line.inside, target=target_yield),
         headline=headline_text(line.inside, target=target_yield),
-        inside_range=share_range_text(line.inside, target=target_yield),
+        inside_range=doubt_text(line.inside, target=target_yield),
         below=below,
         above=above,
         cpk=fixed(None if line.cpk is None else line.cpk.value, 2),

@@ -58,6 +58,17 @@ def share_range_text(interval: Interval, *, target: float | None = None) -> str:
     return f"[{fixed(100.0 * interval.low, digits)}, {fixed(100.0 * interval.high, digits)}]"
 
 
+def doubt_text(interval: Interval, *, target: float | None = None) -> str:
+    """What stands under a yield: the ends of its interval, or where those read the same "0.0183 ppm fail"."""
+    text = share_range_text(interval, target=target)
+    low, high = text[1:-1].split(", ")
+    if low != high or interval.value < 0.5:
+        return text
+    if interval.value == 1.0:
+        return f"under {1e6 * (1.0 - interval.low):.2g} ppm fail"
+    return f"{1e6 * (1.0 - interval.value):.3g} ppm fail"
+
+
 def headline_text(interval: Interval, *, target: float | None = None) -> str:
     """The share in percent for a headline; where it or its interval reaches 100 %: "above 99.99 %"."""
     rounded = round(100.0 * interval.value, percent_digits(interval))

@@ -12,7 +12,7 @@ from openpyxl.styles.differential import DifferentialStyle
 from openpyxl.utils import get_column_letter
 
 from tolerance.report.charts import Placed, draw_charts
-from tolerance.report.files import put_in_place
+from tolerance.report.files import put_workbook_in_place
 from tolerance.report.lots_tables import (
     acceptance_sentence,
     acceptance_table,
@@ -56,7 +56,7 @@ RECORD_WIDTH = 120  # letters, of the values of the run record: whole lines of a
 
 def write_workbook(result: RunResult, scenario: Scenario, path: Path, note: NoteResult | None = None) -> Path:
     """Write the workbook, whole or not at all. Raises UnfinishedError where it cannot be written."""
-    return put_in_place(path, workbook(result, scenario, note).save)
+    return put_workbook_in_place(path, workbook(result, scenario, note))
 
 
 def workbook(result: RunResult, scenario: Scenario, note: NoteResult | None = None) -> Workbook:

@@ -85,6 +85,7 @@ class Document:
     tables: Mapping[str, Entry]
     entries: Mapping[str, tuple[Entry, ...]]
     text: str
+    files: tuple[Path, ...] = ()  # it was read from: the scenario, then what it extends
     misplaced: frozenset[str] = frozenset()  # tables that stand there as something else, which is told
 
 

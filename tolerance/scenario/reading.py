@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable
+from dataclasses import replace
 from pathlib import Path
 
 from tolerance.errors import InputError, Problem, ScenarioError
@@ -39,6 +40,7 @@ def document_of(
     """As `read_document`, from the bytes of a scenario that stands (or would stand) in `folder` as `name`."""
     room = _LARGEST - len(content)
     seen = [_resolved(path)] if path is not None else []
+    files = [path or folder / name]
     chain: list[Document] = []
     findings: list[Finding] = []
     place = Place(depth=0, line=0, number=0, file=name, folder=folder, trust=Trust.around(folder, allow))
@@ -50,6 +52,7 @@ def document_of(
             break
         base = _base_path(document, seen, findings)
         seen.append(_resolved(base))
+        files.append(base)
         place = place._replace(depth=len(chain), file=_shown(base, folder), folder=base.parent)
         try:
             content = _bytes_of(base, room)
@@ -59,7 +62,7 @@ def document_of(
     merged = chain.pop()
     while chain:
         merged = merge(merged, chain.pop())
-    return _in_proportion(merged, name), findings
+    return replace(_in_proportion(merged, name), files=tuple(files)), findings
 
 
 def _in_proportion(document: Document, name: str) -> Document:
@@ -125,7 +128,9 @@ def _format_findings(document: Document) -> list[Finding]:
     value = top.values.get("format")
     if "format" not in top.values or (value == FORMAT and isinstance(value, int) and not isinstance(value, bool)):
         return []
-    return [top.finding("format", f"must be {FORMAT}, the version of the format that this program reads")]
+    later = isinstance(value, int) and value > FORMAT
+    advice = "; a later format needs a later version of it" if later else ""
+    return [top.finding("format", f"must be {FORMAT}, the version of the format that this program reads{advice}")]
 
 
 def _base_path(document: Document, seen: list[Path], findings: list[Finding]) -> Path:

@@ -20,8 +20,16 @@ def write_starter(path: str | os.PathLike[str]) -> None:
     Raises InputError when there is something at `path` already (which stays as it is), or when it cannot be written.
     """
     try:
-        with Path(path).open("x", encoding="utf-8", newline="\n") as file:
-            file.write(starter_text())
+        place = Path(path)
+        with place.open("x", encoding="utf-8", newline="\n") as file:
+            whole = False
+            try:
+                file.write(starter_text())
+                file.flush()
+                whole = True
+            finally:
+                if not whole:
+                    place.unlink()
     except FileExistsError:
         raise InputError(f"{path}: is there already; it was left as it is") from None
     except OSError as problem:

@@ -59,7 +59,8 @@ class Dimensions:
                 dks.append(side.dks[run[0]])
                 dfs += [DF_SCALE * side.dfs[run[0]]] if side.dfs else []
         if isinstance(section, Section) and section.mask is not None:
-            lengths += [section.mask.on_laminate, section.mask.over_copper]
+            lengths += [section.mask.on_laminate + 0.5 * section.foot_width,
+                        section.mask.over_copper + section.thickness]
             dks.append(section.mask.dk)
             dfs += [] if section.mask.df is None else [DF_SCALE * section.mask.df]
         if isinstance(section, Section) and section.band_dk is not None:
@@ -84,12 +85,21 @@ def _copper_lengths(section: Section | LayeredSection) -> list[FloatArray]:
 
 
 def _ratios(section: Section | LayeredSection) -> list[FloatArray]:
-    """How far the traces of a broadside pair lie apart sideways, over the foot; it may be nought and change sign."""
+    """How far the traces of a broadside pair lie apart sideways: logarithm of a distance, over what it is without that.
+
+    Registration to one side or the other makes the same pair mirrored. So the impedance is an even function of the
+    sideways distance, and smooth in its square; and where that is large it goes with the whole distance.
+    """
     if not isinstance(section, LayeredSection):
         return []
     first = section.traces[0]
-    foot = np.maximum(first.foot_width, SMALLEST_LENGTH)
-    return [(trace.centre - first.centre) / foot for trace in section.traces[1:]]
+    ratios = []
+    for trace in section.traces[1:]:
+        low, high = sorted((first.layer, trace.layer))
+        between = sum(section.thicknesses[low + 1 : high], start=np.zeros(section.count))
+        straight = np.maximum(first.foot_width + between, SMALLEST_LENGTH)
+        ratios.append(0.5 * np.log1p(((trace.centre - first.centre) / straight) ** 2))
+    return ratios
 
 
 @dataclass(frozen=True, slots=True)

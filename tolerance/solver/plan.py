@@ -53,6 +53,12 @@ class Plan:
         """Unknowns and quadrature places of `edge`, also of one that the nominal section does not have."""
         return self.counts.get(edge.name) or _counts(edge, 4.0, self.settings)
 
+    def serving(self, other: Plan) -> Plan:
+        """This plan with so many nodes on every edge that it serves sections of the other plan too."""
+        counts = {name: (max(own[0], more[0]), max(own[1], more[1]))
+                  for name, own in self.counts.items() for more in [other.counts.get(name, own)]}
+        return replace(self, counts={**other.counts, **counts})
+
 
 def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
     """The plan for a line whose nominal section is the first of `section`."""

@@ -155,14 +155,18 @@ def _downhill(
     response: Response, observed: Observed, weight: FloatArray, stiffness: FloatArray, shift: FloatArray,
     step: FloatArray, cost: float,
 ) -> tuple[FloatArray, float, float]:
-    """The step, halved until the cost does not rise: (new shift, its cost, how far it moved)."""
+    """The step, halved until the cost does not rise and as long as it falls by that: (new shift, its cost, how far it
+    moved). Where the response bends, as it does towards the end of a uniform law, whole steps would go to and fro."""
+    best = shift, cost, 0.0
     for _ in range(HALVINGS):
         trial = shift + step
         new = _cost(response, observed, weight, stiffness, trial)
+        if best[2] and new >= best[1]:
+            break
         if new <= cost:
-            return trial, new, float(np.max(np.abs(step), initial=0.0))
+            best = trial, new, float(np.max(np.abs(step), initial=0.0))
         step = 0.5 * step
-    return shift, cost, 0.0
+    return best
 
 
 def _regular(noise: FloatArray) -> FloatArray:

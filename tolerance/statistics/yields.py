@@ -17,7 +17,6 @@ from tolerance.errors import UnfinishedError
 from tolerance.statistics.estimates import CONFIDENCE, Interval, half_interval
 
 RARE = 20  # coupons, or lots with such coupons: with fewer on one side the binomial interval stands
-NEXT_TO_ONE = float(np.nextafter(1.0, 0.0))
 STILL = 1e-12  # relative range of impedances below which nothing moves them
 FEWEST_POSSIBLE = 2  # coupons of each replicate that must be possible, for a deviation
 
@@ -40,8 +39,10 @@ class LineYield:
 
     def from_tails(self, below: Interval, above: Interval, failing: Interval) -> LineYield:
         """The same line with its shares from an integral over its failures, which are too rare to be counted."""
-        low, high = min(1.0 - failing.high, NEXT_TO_ONE), min(1.0 - failing.low, 1.0)
-        return replace(self, below=below, above=above, inside=Interval(1.0 - failing.value, low, high))
+        value = 1.0 - failing.value
+        low, high = (float(np.nextafter(value, end)) for end in (0.0, 2.0))  # never narrower than numbers can tell
+        inside = Interval(value, min(1.0 - failing.high, low), min(max(1.0 - failing.low, high), 1.0))
+        return replace(self, below=below, above=above, inside=inside)
 
 
 @dataclass(frozen=True, slots=True)

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from tolerance.arrays import FloatArray
 from tolerance.process.values import NominalValues, ProcessValues, nominals_of
-from tolerance.scenario.tables import Line, Scenario
+from tolerance.scenario.properties import Property, members
+from tolerance.scenario.tables import Line, Scenario, Variation
 from tolerance.sections.as_built import as_built
 from tolerance.sections.reading import ReadingRise, reading_rise
 from tolerance.sections.section import Section
@@ -22,11 +23,12 @@ from tolerance.sections.surroundings import (
 from tolerance.solver.derivatives import parameters, solve_with_derivatives
 from tolerance.solver.line import AnyPlan, AnySection, ModeSolution, plan_line, solve_modes
 from tolerance.solver.lossy import cross_section, solve_lossy
-from tolerance.solver.plan import Plan, SolverSettings
+from tolerance.solver.plan import Plan, SolverSettings, plan_for
 from tolerance.solver.transmission import LineParameters
 from tolerance.study.solved import SolvedCache, SolvedLine
 
 EVEN, ODD = 1, -1
+SMALLEST_SHARE = 0.1  # of a nominal thickness of mask, for which the solver is planned
 
 
 @dataclass(frozen=True, slots=True)
@@ -146,10 +148,44 @@ def prepare(
     surroundings = around(scenario, line)
     nominal = as_built(line, surroundings, NominalValues(nominals_of(scenario)))
     half = line.target * scenario.limit_of(line)
-    return PreparedLine(line, surroundings, nominal, plan_line(nominal, settings),
+    return PreparedLine(line, surroundings, nominal, _planned(scenario, nominal, settings),
                         low_limit=line.target - half, high_limit=line.target + half,
                         frequency=scenario.evaluation.frequency, rise=_rise(scenario, line, nominal),
                         solved=None if cache is None else cache.for_line())
+
+
+def _planned(scenario: Scenario, nominal: AnySection, settings: SolverSettings) -> AnyPlan:
+    """The plan of a line: with a mask, it serves the nominal one and the thinnest that the tolerances allow.
+
+    Charges on the crest and on the face of the mask answer to each other over its thickness: with nodes that suit the
+    nominal mask only, one of a fifth of it gives impedances that are off by up to 0.5 %.
+    """
+    plan = plan_line(nominal, settings)
+    if not isinstance(nominal, Section) or nominal.mask is None or not isinstance(plan, Plan):
+        return plan
+    mask = nominal.mask
+    shares = [_least_share(scenario, f"{mask.name}.{item}") for item in ("thickness", "over_copper")]
+    thinnest = replace(mask, on_laminate=shares[0] * mask.on_laminate, over_copper=shares[1] * mask.over_copper)
+    return plan.serving(plan_for(replace(nominal, mask=thinnest), settings))
+
+
+def _least_share(scenario: Scenario, name: str) -> float:
+    """The low end of a property's tolerance over its nominal, SMALLEST_SHARE at least; 1 where it does not vary."""
+    for variation in scenario.variations:
+        for each in members(scenario, variation):
+            if each.name == name:
+                return min(1.0, max(SMALLEST_SHARE, _low_end(scenario, variation, each) / each.nominal))
+    return 1.0
+
+
+def _low_end(scenario: Scenario, variation: Variation, each: Property) -> float:
+    if variation.shape == "measured":
+        return min(scenario.readings_of(each.name).values)
+    if variation.low is not None:
+        return variation.low
+    shift, half = (0.0 if amount is None else amount.of(each.nominal)
+                   for amount in (variation.shift, variation.tolerance))
+    return each.nominal + shift - half
 
 
 def _rise(scenario: Scenario, line: Line, nominal: AnySection) -> ReadingRise | None:

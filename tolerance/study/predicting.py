@@ -14,14 +14,28 @@ from tolerance.process.values import NominalValues, ProcessValues
 from tolerance.results import Certificate, DirectCheck, Prediction
 from tolerance.sections.dimensions import Dimensions, dimensions_like
 from tolerance.sections.surroundings import properties_that_reach
-from tolerance.study.lines import PreparedLine
-from tolerance.surrogate.coordinates import FARTHEST, BoxValues, training_shares
+from tolerance.study.lines import PreparedLine, section_parameters
+from tolerance.surrogate.coordinates import FARTHEST, BoxValues, box_spans, gathered, training_shares
+from tolerance.surrogate.polynomial import Prior, Slopes
 from tolerance.surrogate.prediction import Predictor, Seen, fit_predictor, see
+from tolerance.surrogate.steps import OwnValues, Stepped, along_coordinates
 
-RUNS = 60  # of the field solver for a line's prediction, the nominal section included; fewer for few variables
-RUNS_PER_VARIABLE = 12
-COUPON_SHARE = 0.4  # of these runs: coupons of the sample; the others lie evenly in the box
-MOST_RUNS = 240
+
+@dataclass(frozen=True, slots=True)
+class Budget:
+    """Runs of the field solver for a line's prediction, the nominal section included.
+
+    runs : at first, fewer for few variables.  most : where the prediction is poor.
+    coupon_share : of these runs, coupons of the sample; the others lie in the box.
+    """
+
+    runs: int
+    per_variable: int
+    most: int
+    coupon_share: float
+
+
+WITH_SLOPES, VALUES_ONLY = Budget(24, 5, 96, 0.33), Budget(60, 12, 240, 0.4)
 UNLIKE = 4  # places in the box where plies must have the same Dk to count as one
 LARGEST_ERROR = 0.02  # of the distance from target to limit: above it the runs are doubled
 
@@ -44,25 +58,50 @@ class SectionLogarithms:
         return self.dimensions.logarithms(self.prepared.section(values))
 
 
+@dataclass(frozen=True, slots=True)
+class SolvedRuns:
+    """Solved sections: coordinates (runs, coordinates), impedance (runs,) [ohm], and what is known of its slopes."""
+
+    coordinates: FloatArray
+    impedance: FloatArray
+    slopes: Slopes
+
+
 @dataclass(slots=True)
 class Training:
     """Solved sections: coordinates (runs, coordinates), impedance (runs,) [ohm]; the coupons among them by row.
 
     coupon_runs : which runs are coupons.  rows : their rows in the sample, in the same order.
+    slopes : of ln Z by the coordinates, in the runs where they are known.
     """
 
     coordinates: FloatArray
     impedance: FloatArray
     coupon_runs: IntArray
     rows: IntArray
+    slopes: Slopes
 
-    def add(self, coordinates: FloatArray, impedance: FloatArray, rows: IntArray | None = None) -> None:
+    @staticmethod
+    def empty(coordinates: int) -> Training:
+        """No runs yet."""
+        none = np.empty(0, dtype=np.int64)
+        nowhere = np.empty((0, coordinates))
+        return Training(nowhere, np.empty(0), none, none, Slopes(none, nowhere))
+
+    def add(self, solved: SolvedRuns, rows: IntArray | None = None) -> None:
         """Further runs; rows: where they are coupons."""
+        first = len(self.impedance)
         if rows is not None:
-            self.coupon_runs = np.concatenate([self.coupon_runs, len(self.impedance) + np.arange(rows.size)])
+            self.coupon_runs = np.concatenate([self.coupon_runs, first + np.arange(rows.size)])
             self.rows = np.concatenate([self.rows, rows])
-        self.coordinates = np.concatenate([self.coordinates, coordinates])
-        self.impedance = np.concatenate([self.impedance, impedance])
+        self.coordinates = np.concatenate([self.coordinates, solved.coordinates])
+        self.impedance = np.concatenate([self.impedance, solved.impedance])
+        self.slopes = Slopes(np.concatenate([self.slopes.points, first + solved.slopes.points]),
+                             np.concatenate([self.slopes.values, solved.slopes.values]))
+
+    def fit(self, seen: Seen, *, prior: Prior | None = None) -> Predictor:
+        """The prediction from these runs."""
+        return fit_predictor(seen, self.coordinates, self.impedance, slopes=self.slopes, prior=prior)
 
 
 @dataclass(frozen=True, slots=True)
@@ -112,9 +151,8 @@ def predict_line(
     checked = _solve_directly(prepared, draws, impedance, possible, direct) if direct else None
     runs = prediction.solver_runs + certificate.solved + (checked.coupons if checked else 0)
     return PredictedLine(
-        prepared, float(prepared.impedance(prepared.nominal)[0]), predictor, replace(prediction, solver_runs=runs),
-        impedance, possible,
-        certificate, checked, training,
+        prepared, _nominal(prepared, draws, training, predictor.seen), predictor,
+        replace(prediction, solver_runs=runs), impedance, possible, certificate, checked, training,
     )
 
 
@@ -137,37 +175,46 @@ def _train(
     see_chance, box_chance, coupon_chance = chance.spawn(3)
     columns = columns_moving(draws.process, properties_that_reach(prepared.surroundings, prepared.line))
     seen = _seen(prepared, draws, columns, see_chance)
+    budget = WITH_SLOPES if prepared.has_gradient else VALUES_ONLY
     training = _first_run(prepared, draws, seen, columns)
     wanted = LARGEST_ERROR * (prepared.high_limit - prepared.line.target)
-    shares = training_shares(len(columns), runs=MOST_RUNS, chance=box_chance)
-    rows = coupon_chance.permutation(np.flatnonzero(possible))[:MOST_RUNS]
-    runs = min(RUNS, RUNS_PER_VARIABLE * (len(columns) + 1)) if columns else 1
+    shares = gathered(draws.process, columns, training_shares(len(columns), runs=budget.most, chance=box_chance))
+    rows = coupon_chance.permutation(np.flatnonzero(possible))[: budget.most]
+    runs = min(budget.runs, budget.per_variable * (len(columns) + 1)) if columns else 1
     used, picked = 0, 0
     while True:
-        coupons = math.floor(COUPON_SHARE * runs)
+        coupons = math.floor(budget.coupon_share * runs)
         box = BoxValues(draws.process, columns, prepared.line.width, shares[used : runs - 1 - coupons])
-        _solve_possible(prepared, seen, box, training)
+        training.add(_solve_box(prepared, seen, box))
         fresh = rows[picked:coupons]
         if fresh.size:
-            _solve_rows(prepared, seen, draws, fresh, training)
-        predictor = fit_predictor(seen, training.coordinates, training.impedance)
+            training.add(solve_runs(prepared, seen, draws.rows(fresh), slopes=True), fresh)
+        predictor = training.fit(seen)
         used, picked = runs - 1 - coupons, coupons
         error = _root_mean_square(predictor.leave_one_out[training.coupon_runs]) if columns else 0.0
-        if error <= wanted or 2 * runs > MOST_RUNS:
+        if error <= wanted or 2 * runs > budget.most:
             return training, predictor
         runs *= 2
 
 
 def _first_run(prepared: PreparedLine, draws: ProcessDraws, seen: Seen, columns: tuple[int, ...]) -> Training:
     """The nominal section; where the process lies so far from it that the fit cannot see it, the middle of the box."""
-    none = np.empty(0, dtype=np.int64)
-    at = seen.of(NominalValues(draws.process.nominals))
-    if np.all(np.abs(at) < FARTHEST):
-        return Training(at, prepared.impedance(prepared.nominal), none, none)
-    middle = BoxValues(draws.process, columns, prepared.line.width, np.zeros((1, len(columns))))
-    training = Training(at[:0], np.empty(0), none, none)
-    _solve_possible(prepared, seen, middle, training)
+    training = Training.empty(seen.coordinates.count)
+    if _sees_nominal(draws, seen):
+        training.add(solve_runs(prepared, seen, NominalValues(draws.process.nominals), slopes=True))
+    else:
+        middle = BoxValues(draws.process, columns, prepared.line.width, np.zeros((1, len(columns))))
+        training.add(_solve_box(prepared, seen, middle))
     return training
+
+
+def _sees_nominal(draws: ProcessDraws, seen: Seen) -> bool:
+    return bool(np.all(np.abs(seen.of(NominalValues(draws.process.nominals))) < FARTHEST))
+
+
+def _nominal(prepared: PreparedLine, draws: ProcessDraws, training: Training, seen: Seen) -> float:
+    """Impedance [ohm] of the nominal section: the first run, where the fit sees it."""
+    return float(training.impedance[0] if _sees_nominal(draws, seen) else prepared.impedance(prepared.nominal)[0])
 
 
 def _seen(
@@ -180,17 +227,27 @@ def _seen(
     return see(draws.process, columns, logarithms, width=prepared.line.width, chance=chance)
 
 
-def _solve_possible(prepared: PreparedLine, seen: Seen, values: ProcessValues, training: Training) -> None:
-    section = prepared.section(values)
-    rows = np.flatnonzero(section.possible)
-    training.add(seen.of(values)[rows], prepared.impedance(section.rows(rows)))
+def _solve_box(prepared: PreparedLine, seen: Seen, box: BoxValues) -> SolvedRuns:
+    """Those of the sections in the box that can exist."""
+    rows = np.flatnonzero(prepared.section(box).possible)
+    return solve_runs(prepared, seen, replace(box, shares=box.shares[rows]), slopes=True)
 
 
-def _solve_rows(
-    prepared: PreparedLine, seen: Seen, draws: ProcessDraws, rows: IntArray, training: Training,
-) -> None:
-    sample = draws.rows(rows)
-    training.add(seen.of(sample), prepared.impedance(prepared.section(sample)), rows)
+def solve_runs(prepared: PreparedLine, seen: Seen, values: OwnValues, *, slopes: bool = False) -> SolvedRuns:
+    """Solved sections of process values, all possible; slopes: with those of ln Z where the solver knows them."""
+    at, section = seen.of(values), prepared.section(values)
+    if not (slopes and prepared.has_gradient and seen.columns):
+        none = np.empty(0, dtype=np.int64)
+        return SolvedRuns(at, prepared.impedance(section), Slopes(none, np.empty((0, at.shape[1]))))
+    impedance, gradient = prepared.impedance_and_gradient(section)
+    process = seen.process
+    spans = box_spans(process, seen.columns, width=prepared.line.width)
+    stepped = Stepped(values, spans, len(seen.columns), process.resins)
+    moved = stepped.by_variable(section_parameters(prepared.section(stepped)).T)
+    by_variable = np.einsum("vrp,pr->vr", moved, gradient / impedance)
+    along = along_coordinates(by_variable, stepped.by_variable(seen.of(stepped)))
+    near = np.flatnonzero(np.all(np.abs(at) < FARTHEST, axis=1))
+    return SolvedRuns(at, impedance, Slopes(near, along[near]))
 
 
 def certify(
@@ -207,9 +264,9 @@ def certify(
         rows = band.rows_within(training)
         if rows.size <= WORTH_A_REFIT:
             break
-        _solve_rows(prepared, predictor.seen, draws, _spread(rows, REFIT_RUNS), training)
-        predictor = fit_predictor(predictor.seen, training.coordinates, training.impedance,
-                                  prior=predictor.polynomial.prior)
+        some = _spread(rows, REFIT_RUNS)
+        training.add(solve_runs(prepared, predictor.seen, draws.rows(some)), some)
+        predictor = training.fit(predictor.seen, prior=predictor.polynomial.prior)
         band = _Band(prepared, draws, possible, predictor)
     impedance = band.impedance.copy()
     impedance[training.rows] = training.impedance[training.coupon_runs]

@@ -124,4 +124,5 @@ def _refitted(predictor: Predictor, training: Training, learnt: _Checked) -> Pre
         return predictor
     return fit_predictor(
         predictor.seen, np.concatenate([training.coordinates, learnt.coordinates]),
-        np.concatenate([training.impedance, learnt.impedance]), prior=predictor.polynomial.prior)
+        np.concatenate([training.impedance, learnt.impedance]), slopes=training.slopes,
+        prior=predictor.polynomial.prior)

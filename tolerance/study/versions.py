@@ -8,6 +8,8 @@ from functools import cache
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 
+from threadpoolctl import threadpool_info
+
 from tolerance.solver.plan import SolverSettings
 
 PACKAGES = ("tolerance", "numpy", "scipy", "pandas", "SALib")
@@ -29,6 +31,13 @@ def version_of(package: str) -> str | None:
 def settings_of(settings: SolverSettings) -> dict[str, str]:
     """The settings of the field solver, by name."""
     return {f"solver {name.replace('_', ' ')}": str(getattr(settings, name)) for name in settings.__slots__}
+
+
+def machine() -> dict[str, str]:
+    """What computes here: the same versions may differ in the last bits on another kind of processor."""
+    algebra = sorted({f"{one.get('internal_api')} {one.get('version')} for {one.get('architecture')}"
+                      for one in threadpool_info() if one.get("user_api") == "blas"})
+    return {"system": platform.system(), "processor": platform.machine(), "linear algebra": ", ".join(algebra)}
 
 
 @cache

@@ -13,7 +13,7 @@ from tolerance.process.changes import Change, ChangedValues
 from tolerance.process.draws import Process, ProcessDraws
 from tolerance.process.values import ProcessValues
 from tolerance.surrogate.coordinates import BoxValues, Coordinates, coordinates_of, small_steps, training_shares
-from tolerance.surrogate.polynomial import Polynomial, Prior, fit
+from tolerance.surrogate.polynomial import Polynomial, Prior, Slopes, fit
 
 BLOCK_ROWS = 8192  # coupons predicted at a time: what they need stays in the cache
 PLACES = 256  # of the box, from which the reach of the coordinates is known
@@ -105,17 +105,18 @@ class Predictor:
 
 
 def fit_predictor(
-    seen: Seen, coordinates: FloatArray, impedance: FloatArray, *, prior: Prior | None = None
+    seen: Seen, coordinates: FloatArray, impedance: FloatArray, *, slopes: Slopes | None = None,
+    prior: Prior | None = None,
 ) -> Predictor:
     """Predictor from training runs at `coordinates` (runs, coordinates), impedance (runs,) [ohm].
 
-    prior : that of an earlier fit; found anew where absent.
+    slopes : of ln Z by the coordinates, where they are known.  prior : that of an earlier fit; found anew where absent.
     Raises UnfinishedError where an impedance is not a finite positive number, or as `polynomial.fit` does.
     """
     if not np.all(np.isfinite(impedance) & (impedance > 0.0)):
         raise UnfinishedError("a training run gave an impedance that is not a positive number")
     logarithm = np.log(impedance)
-    polynomial = fit(coordinates, logarithm, prior=prior)
+    polynomial = fit(coordinates, logarithm, slopes=slopes, prior=prior)
     return Predictor(seen, polynomial, float(np.exp(np.mean(logarithm))))
 
 

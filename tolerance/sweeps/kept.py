@@ -9,7 +9,7 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
-from tolerance.report.files import put_in_place
+from tolerance.report.files import put_in_place, remove_left_over
 from tolerance.scenario import Scenario
 from tolerance.scenario.fingerprint import fingerprint
 from tolerance.solver.plan import SolverSettings
@@ -35,6 +35,7 @@ class KeptRows:
 
     def __init__(self, folder: Path) -> None:
         self._folder = folder
+        remove_left_over(folder / "rows")
 
     def seed(self) -> int:
         """The seed of scenarios that have none: drawn once for the folder, so that a resumed sweep goes on with it.
