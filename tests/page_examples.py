@@ -13,7 +13,7 @@ import numpy as np
 from scipy.special import ndtri
 
 from tolerance.arrays import FloatArray
-from tolerance.paged import Form, Page, PagedDraws, PagedLine
+from tolerance.paged import Form, Page, PagedDraws, PagedLine, Sum
 from tolerance.report.page.document import page_text
 from tolerance.scenario import Scenario, load, parse
 from tolerance.study.page import page
@@ -301,9 +301,11 @@ def impedance_of(line: PagedLine, values: Mapping[str, FloatArray]) -> FloatArra
 def _row(form: Form, forms: Sequence[Form], rows: Sequence[FloatArray], inputs: Sequence[FloatArray]) -> FloatArray:
     if form.crest is not None:
         foot, thickness, factor = form.crest
-        high = _row(forms[thickness], forms, rows, inputs)
-        return np.asarray(rows[foot] - 2.0 * high / inputs[factor])
-    total = np.full(len(inputs[0]), form.constant)
-    for place, slope in zip(form.inputs, form.factors, strict=True):
-        total = total + slope * inputs[place]
-    return total if form.over is None else total / rows[form.over]
+        return np.asarray(rows[foot] - 2.0 * _total(forms[thickness].sum, inputs) / inputs[factor])
+    own = _total(form.sum, inputs)
+    return own if form.over is None else np.asarray(0.5 * np.log1p((own / _total(form.over, inputs)) ** 2))
+
+
+def _total(each: Sum, inputs: Sequence[FloatArray]) -> FloatArray:
+    start = np.full(len(inputs[0]), each.constant)
+    return sum((slope * inputs[place] for place, slope in zip(each.inputs, each.factors, strict=True)), start=start)

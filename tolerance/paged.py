@@ -65,23 +65,31 @@ class PagedVariation:
 
 
 @dataclass(frozen=True, slots=True)
-class Form:
-    """A sum over inputs of a line, `constant` + factors x inputs, by number of the input.
-
-    least : what it must lie above for the section to exist, or with `least_in` at least; None: anything.
-    logarithm : whether its logarithm is what coordinates are made of.
-    crest : numbers of the forms of foot and thickness, and of the input of the etch factor: then it is the foot less
-        twice the thickness over the factor.  over : number of the form that the sum is divided by.
-    """
+class Sum:
+    """`constant` + factors x inputs of a line, by number of the input."""
 
     constant: float
     inputs: tuple[int, ...]
     factors: tuple[float, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Form:
+    """A dimension of a line's section: a sum, or what is made of sums.
+
+    least : what it must lie above for the section to exist, or with `least_in` at least; None: anything.
+    logarithm : whether its logarithm is what coordinates are made of.
+    crest : numbers of the forms of foot and thickness, and of the input of the etch factor: then it is the foot less
+        twice the thickness over the factor.
+    over : then it is half the logarithm of 1 + the square of the ratio of the two sums.
+    """
+
+    sum: Sum
     least: float | None
     least_in: bool
     logarithm: bool
     crest: tuple[int, int, int] | None = None
-    over: int | None = None
+    over: Sum | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,7 +9,7 @@ import numpy as np
 
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
-from tolerance.paged import Form, Input, PagedLine, PagedProperty
+from tolerance.paged import Form, Input, PagedLine, PagedProperty, Sum
 from tolerance.process.draws import ETCH, Process, ProcessDraws, Variable, sobol_normals
 from tolerance.process.laws import Law, quantile
 from tolerance.process.other_laws import Amount, half_width_of, laws_of, scaled
@@ -19,6 +19,7 @@ from tolerance.scenario.properties import Property
 from tolerance.scenario.tables import Line
 from tolerance.sections.dimensions import Dimensions, dimensions_like
 from tolerance.sections.layered import LayeredSection
+from tolerance.sections.section import Section
 from tolerance.sections.surroundings import BroadsideSurroundings, properties_that_reach
 from tolerance.study.lines import PreparedLine
 from tolerance.surrogate.coordinates import REACH, BoxValues, box_ends, training_shares
@@ -39,6 +40,7 @@ OUTLYING = 30.0  # times the median error: such sections are left out of the fit
 MOST_LEFT_OUT = 0.05  # of the sections
 PROVED = 256  # places where the forms must come to what sections have
 SAME = 1e-9
+LEAST_CONSTANT = 1e-15
 EVERYWHERE = 1e9  # [SI] farther than any property goes
 
 
@@ -226,72 +228,78 @@ def _inputs(
     return tuple(inputs)
 
 
-def _rows(prepared: PreparedLine, dimensions: Dimensions, values: ProcessValues) -> tuple[list[FloatArray], ...]:
-    return dimensions.rows(prepared.section(values))
-
-
 def _forms(prepared: PreparedLine, fit: WideFit, names: tuple[str, ...]) -> tuple[Form, ...]:
     """The dimensions, found by moving one input at a time; what is not a sum is known by its place."""
     nominals = fit.process.nominals
     start = np.array([nominals.get(name, 0.0) for name in names])
     step = np.maximum(0.1 * np.abs(start), 1e-6)
     points = np.vstack([start, start + np.diag(step)]) if names else start[np.newaxis]
-    given = _Given(dict(zip(names, points.T, strict=True)), nominals, len(points))
-    layered = isinstance(prepared.surroundings, BroadsideSurroundings)
-    lengths, dks, plain = _rows(prepared, fit.dimensions, given)
+    section = prepared.section(_Given(dict(zip(names, points.T, strict=True)), nominals, len(points)))
+    lengths, dks, plain = fit.dimensions.rows(section)
 
-    def form(values: FloatArray, least: float | None, *, least_in: bool, logarithm: bool) -> Form:
+    def summed(values: FloatArray) -> Sum:
         slopes = (values[1:] - values[0]) / step
         slopes[np.abs(slopes) < SAME] = 0.0
         slopes = np.round(slopes, 10)
         constant = float(values[0] - slopes @ start)
-        constant = 0.0 if abs(constant) < 1e-15 else constant
         at = np.flatnonzero(slopes)
-        return Form(constant, tuple(at.tolist()), tuple(slopes[at].tolist()), least, least_in, logarithm)
+        return Sum(0.0 if abs(constant) < LEAST_CONSTANT else constant, tuple(at.tolist()), tuple(slopes[at].tolist()))
 
-    forms = [form(row, 0.0, least_in=False, logarithm=True) for row in lengths]
-    for trace, layer in enumerate(_trace_layers(prepared)):
-        factor = f"{layer}.etch_factor"
-        if factor in names:
-            forms[3 * trace + 1] = Form(0.0, (), (), 0.0, least_in=False, logarithm=True,
-                                        crest=(3 * trace, 3 * trace + 2, names.index(factor)))
-    forms += [form(row, 1.0, least_in=True, logarithm=True) for row in dks]
-    if layered:
-        shift = form(plain[0] * lengths[0], None, least_in=False, logarithm=False)
-        forms.append(Form(shift.constant, shift.inputs, shift.factors, None, least_in=False, logarithm=False, over=0))
-    forms += [form(row, 0.0, least_in=True, logarithm=False) for row in plain[1 if layered else 0:]]
-    single = Dimensions(tuple(tuple((number,) for number in range(sum(map(len, runs))))
-                              for runs in fit.dimensions.sides), scale_free=False)
-    alone = [form(row, 0.0, least_in=False, logarithm=True) for row in _rows(prepared, single, given)[0]]
-    return (*forms, *(each for each in alone if each not in forms and each.inputs
-                      and not _is_crest(prepared, alone.index(each), names)))
+    forms = [Form(summed(row), 0.0, least_in=False, logarithm=True) for row in lengths]
+    for row, crest in _crests(prepared, names).items():
+        forms[row] = Form(Sum(0.0, (), ()), 0.0, least_in=False, logarithm=True, crest=crest)
+    forms += [Form(summed(row), 1.0, least_in=True, logarithm=True) for row in dks]
+    if isinstance(section, LayeredSection):
+        apart, straight = (summed(values) for values in _sideways(section))
+        forms.append(Form(apart, None, least_in=False, logarithm=False, over=straight))
+        plain = plain[1:]
+    forms += [Form(summed(row), 0.0, least_in=True, logarithm=False) for row in plain]
+    alone = [Form(summed(row), 0.0, least_in=False, logarithm=True) for row in _plies(section)]
+    return (*forms, *(each for each in alone if each not in forms and each.sum.inputs))
 
 
-def _trace_layers(prepared: PreparedLine) -> tuple[str, ...]:
+def _crests(prepared: PreparedLine, names: tuple[str, ...]) -> dict[int, tuple[int, int, int]]:
+    """The rows of the lengths that are crests whose etch factor varies, and what they are made of: see Form."""
     around = prepared.surroundings
-    if isinstance(around, BroadsideSurroundings):
-        return around.upper.layer, around.lower.layer
-    return (prepared.line.layer,)
+    layers = (around.upper.layer, around.lower.layer) if isinstance(around, BroadsideSurroundings) \
+        else (prepared.line.layer,)
+    return {3 * trace + 1: (3 * trace, 3 * trace + 2, names.index(factor)) for trace, layer in enumerate(layers)
+            if (factor := f"{layer}.etch_factor") in names}
 
 
-def _is_crest(prepared: PreparedLine, row: int, names: tuple[str, ...]) -> bool:
-    """Whether a row of the lengths is a crest that is no sum."""
-    return any(row == 3 * trace + 1 and f"{layer}.etch_factor" in names
-               for trace, layer in enumerate(_trace_layers(prepared)))
+def _sideways(section: LayeredSection) -> tuple[FloatArray, FloatArray]:
+    """How far the traces of a broadside pair lie apart sideways, and what that is held against [m] (sections,)."""
+    first, second = section.traces
+    low, high = sorted((first.layer, second.layer))
+    between = sum(section.thicknesses[low + 1 : high], start=np.zeros(section.count))
+    return second.centre - first.centre, first.foot_width + between
+
+
+def _plies(section: Section | LayeredSection) -> list[FloatArray]:
+    """Thicknesses [m] that must be there one by one, also where dimensions only hold their sums."""
+    if isinstance(section, LayeredSection):
+        return list(section.thicknesses)
+    mask = [] if section.mask is None else [section.mask.on_laminate, section.mask.over_copper]
+    return [*(ply.thickness for ply in (*section.foot_side, *section.crest_side)), *mask]
 
 
 def evaluate_forms(forms: Sequence[Form], inputs: Sequence[FloatArray]) -> list[FloatArray]:
     """What the forms come to for values of the inputs, each (coupons,)."""
+    def total(each: Sum) -> FloatArray:
+        row = np.full(len(inputs[0]) if inputs else 1, each.constant)
+        for place, slope in zip(each.inputs, each.factors, strict=True):
+            row = row + slope * inputs[place]
+        return row
+
     rows: list[FloatArray] = []
     for form in forms:
         if form.crest is not None:
             foot, thickness, factor = form.crest
-            rows.append(np.asarray(rows[foot] - 2.0 * evaluate_forms([forms[thickness]], inputs)[0] / inputs[factor]))
-            continue
-        row = np.full(len(inputs[0]) if inputs else 1, form.constant)
-        for place, slope in zip(form.inputs, form.factors, strict=True):
-            row = row + slope * inputs[place]
-        rows.append(row if form.over is None else row / rows[form.over])
+            rows.append(np.asarray(rows[foot] - 2.0 * total(forms[thickness].sum) / inputs[factor]))
+        elif form.over is not None:
+            rows.append(np.asarray(0.5 * np.log1p((total(form.sum) / total(form.over)) ** 2)))
+        else:
+            rows.append(total(form.sum))
     return rows
 
 
@@ -308,5 +316,3 @@ def _prove(prepared: PreparedLine, fit: WideFit, names: tuple[str, ...], forms: 
     for row, known in zip(evaluate_forms(forms, inputs), truth, strict=False):
         if not np.allclose(row[possible], known[possible], rtol=SAME, atol=1e-15):
             raise RuntimeError(f"{prepared.line.name}: a dimension of the section is not the form that the page has")
-    assert len(truth) <= len(forms)
-    assert isinstance(section, LayeredSection) == isinstance(prepared.surroundings, BroadsideSurroundings)

@@ -188,11 +188,14 @@ class Board {
     for (const form of line.forms) {
       const row = new Float64Array(count);
       if (form.crest !== null) {
-        const [foot, thickness, factor] = form.crest, high = this.sum(line.forms[thickness], inputs, count);
+        const [foot, thickness, factor] = form.crest, high = this.sum(line.forms[thickness].sum, inputs, count);
         for (let k = 0; k < count; k++)
           row[k] = inputs[factor][k] > 0 ? rows[foot][k] - 2 * high[k] / inputs[factor][k] : -Infinity;
-      } else row.set(this.sum(form, inputs, count));
-      if (form.over !== null) for (let k = 0; k < count; k++) row[k] /= rows[form.over][k];
+      } else row.set(this.sum(form.sum, inputs, count));
+      if (form.over !== null) {
+        const over = this.sum(form.over, inputs, count);
+        for (let k = 0; k < count; k++) row[k] = 0.5 * Math.log1p((row[k] / over[k]) ** 2);
+      }
       if (form.least !== null) {
         for (let k = 0; k < count; k++)
           if (!(form.leastIn ? row[k] >= form.least : row[k] > form.least)) possible[k] = 0;
@@ -207,10 +210,10 @@ class Board {
     return this.polynomial(line, rows, possible, count);
   }
 
-  sum(form, inputs, count) {
-    const row = new Float64Array(count).fill(form.constant);
-    form.inputs.forEach((place, number) => {
-      const factor = form.factors[number], values = inputs[place];
+  sum(each, inputs, count) {
+    const row = new Float64Array(count).fill(each.constant);
+    each.inputs.forEach((place, number) => {
+      const factor = each.factors[number], values = inputs[place];
       for (let k = 0; k < count; k++) row[k] += factor * values[k];
     });
     return row;
@@ -256,18 +259,14 @@ class Board {
       return Process.atGerm(view.laws.get(input.property), 0, this.data.properties[input.property].measured)
         + (input.drawn ? view.width - line.width : 0);
     });
-    const rows = [];
+    const rows = [], total = each => each.inputs.reduce((sum, place, slot) =>
+      sum + each.factors[slot] * inputs[place], each.constant);
     for (const form of line.forms) {
-      let row = form.constant;
-      form.inputs.forEach((place, slot) => { row += form.factors[slot] * inputs[place]; });
-      if (form.crest !== null) {
-        const thick = line.forms[form.crest[1]];
-        row = thick.constant;
-        thick.inputs.forEach((place, slot) => { row += thick.factors[slot] * inputs[place]; });
-        row = rows[form.crest[0]] - 2 * row / inputs[form.crest[2]];
-      }
-      if (form.over !== null) row /= rows[form.over];
-      if (form.least !== null && !(row > 0)) return line.error * 4;
+      let row = total(form.sum);
+      if (form.crest !== null)
+        row = rows[form.crest[0]] - 2 * total(line.forms[form.crest[1]].sum) / inputs[form.crest[2]];
+      if (form.over !== null) row = 0.5 * Math.log1p((row / total(form.over)) ** 2);
+      if (form.least !== null && !(form.leastIn ? row >= form.least : row > form.least)) return line.error * 4;
       rows.push(row);
     }
     const at = line.matrix.map((factors, i) => factors.reduce((x, factor, r) =>

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from tolerance.arrays import FloatArray, IntArray
-from tolerance.paged import Form, Page, PagedLine, PagedProperty, PagedResin, PagedVariation, PowerTree
+from tolerance.paged import Form, Page, PagedLine, PagedProperty, PagedResin, PagedVariation, PowerTree, Sum
 from tolerance.report.wording import METRES_IN, variable_words
 from tolerance.results import Interval, LineResult
 from tolerance.scenario.amounts import Amount
@@ -128,9 +128,13 @@ def _run(line: LineResult) -> dict[str, Any]:
 
 
 def _form(form: Form) -> dict[str, Any]:
-    return {"constant": _number(form.constant, 16), "inputs": list(form.inputs), "factors": _floats(form.factors),
-            "least": form.least, "leastIn": form.least_in, "logarithm": form.logarithm,
-            "crest": None if form.crest is None else list(form.crest), "over": form.over}
+    return {"sum": _sum(form.sum), "least": form.least, "leastIn": form.least_in, "logarithm": form.logarithm,
+            "crest": None if form.crest is None else list(form.crest),
+            "over": None if form.over is None else _sum(form.over)}
+
+
+def _sum(each: Sum) -> dict[str, Any]:
+    return {"constant": _number(each.constant, 16), "inputs": list(each.inputs), "factors": _floats(each.factors)}
 
 
 def _tree(tree: PowerTree) -> dict[str, Any]:
