@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import base64
 import json
+import tracemalloc
 import zlib
 from collections.abc import Callable
 from pathlib import Path
@@ -182,8 +183,11 @@ def test_a_folder_without_a_record(tmp_path: Path) -> None:
 def test_a_packed_bomb_is_not_unpacked(changed: Changed, tmp_path: Path) -> None:
     bomb = base64.b64encode(zlib.compress(bytes(200_000_000))).decode()
     record = read_record(changed(files=lambda files: [{**files[0], "zlib_base64": bomb}, *files[1:]]))
+    tracemalloc.start()
     with pytest.raises(InputError, match="is damaged"):
         lay_out(record, tmp_path / "laid")
+    assert tracemalloc.get_traced_memory()[1] < 20_000_000
+    tracemalloc.stop()
 
 
 def test_files_land_under_the_folder_only(made: Path, tmp_path: Path) -> None:

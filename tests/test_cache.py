@@ -150,7 +150,7 @@ def test_everything_of_a_section_enters_the_key() -> None:
     changed_ones = [replace(section(), **{name: value}) for name, value in changes_of(section())]  # type: ignore[arg-type]
     assert len(changed_ones) == len(fields(Section))
     entering: list[object] = [(one, plan, None, 1) for one in (section(), *changed_ones)]
-    entering += [(section(), replace(plan, counts={**plan.counts, "foot": (10, 20)}), None, 1),
+    entering += [(section(), replace(plan, counts={**plan.counts, "foot": (10, 20, 10)}), None, 1),
                  (section(), replace(plan, settings=SolverSettings(copper_nodes=10)), None, 1),
                  (section(), plan, 1e9, 1), (section(), plan, None, -1), (section().rows(slice(0, 2)), plan, None, 1)]
     assert len({key_of(one) for one in entering}) == len(entering)
@@ -252,6 +252,7 @@ def test_decisions_after_a_run_ask_the_solver_nothing(tmp_path: Path, monkeypatc
     again = center(scenario, Wishes(), coupons=COUPONS, cache=cache)
     assert center_json(again) == center_json(moved)
     assert moved.basis.from_cache == len(scenario.lines)  # the nominal sections
+    assert moved.basis.solver_runs <= before.record.solver_runs
     assert again.basis.from_cache == moved.basis.solver_runs
 
 

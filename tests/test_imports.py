@@ -29,7 +29,7 @@ ROWS: list[list[str]] = [
     ["surrogate"],
     ["statistics"],
     ["decisions"],
-    ["nominal", "results", "fitted", "decided", "pictures", "diagnosed"],
+    ["nominal", "noted", "results", "fitted", "decided", "pictures", "diagnosed"],
     ["exchanged", "reconciled", "swept", "paged"],
     ["study"],
     ["report"],
@@ -100,6 +100,7 @@ def test_every_room_stands_in_the_table() -> None:
 
 @pytest.mark.parametrize(("modules_loaded", "heavy"), [
     ("tolerance.command", ("numpy", "pandas", "scipy", "matplotlib", "openpyxl", "SALib", "pydantic", "rich")),
+    ("tolerance.study.note", ("pandas", "scipy.special", "scipy.stats", "matplotlib", "openpyxl", "SALib")),
     ("tolerance.study.check", ("pandas", "scipy.special", "scipy.stats", "matplotlib", "openpyxl", "SALib")),
 ])
 def test_what_must_start_fast_loads_nothing_heavy(modules_loaded: str, heavy: tuple[str, ...]) -> None:

@@ -58,11 +58,13 @@ sample_size = 5
 accept_number = 1
 """
     text = text.replace('of = "L2.foil"', 'of = "L2.foil"\nlevel = { lot = 0.25, coupon = 0.75 }')
+    text = text.replace('tolerance = 0.02', 'tolerance = 0.02\nlevel = "coupon"')
     text = text.replace('title = "Every shape"', r'title = "Every \"shape\" \\ of # them"')
     scenario = scenario_of(text)
     again = scenario_of("".join(each.text for each in scenario_pieces(scenario, seed=11, coupons=8192)))
     left_out = {"text", "source", "origins"}
     assert again.model_dump(exclude=left_out) == scenario.model_dump(exclude=left_out)
+    assert [each.has_level for each in again.variations] == [each.has_level for each in scenario.variations]
 
 
 @pytest.mark.parametrize("text", [SMALL, EVERY_SHAPE], ids=["small", "every shape"])

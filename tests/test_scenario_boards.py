@@ -10,6 +10,7 @@ import pytest
 from tolerance.scenario import load
 from tolerance.scenario.tables import Scenario
 from tolerance.study.check import check
+from tolerance.study.run import run
 
 FOLDER = Path(__file__).parents[1] / "scenarios"
 FILES = sorted(FOLDER.glob("*.toml"))
@@ -63,3 +64,17 @@ def test_the_boards_are_of_the_sizes_promised() -> None:
     assert any(line.layer in outside for line in largest.lines)
     assert any(line.layer not in outside for line in largest.lines)
     assert {line.is_pair for line in largest.lines} == {True, False}
+
+
+def test_registration_of_the_ferry_beacon_shows_in_no_slope_and_comes_first_by_yield() -> None:
+    """What the file says of itself: to either side the pair is the same, mirrored, and higher than in the middle."""
+    line = run(load(FOLDER / "ferry-beacon-6-layer.toml"), coupons=16384).lines[1]
+    assert line.mean.low > line.nominal + 0.3
+    assert line.drivers[0].variable == "C1.thickness"
+    moved = {driver.variable: driver for driver in line.drivers}["L3.registration"]
+    assert moved.first.value < 0.5 * moved.total.value
+    assert line.levers is not None
+    assert {lever.variable for lever in line.levers.each[:2]} == {"L3.registration", "L4.registration"}
+    gains = {lever.variable: lever.halved for lever in line.levers.each}
+    assert gains["L3.registration"].low > 2.0 * gains["C1.thickness"].value
+    assert line.above.value > 0.95 * (line.above.value + line.below.value)

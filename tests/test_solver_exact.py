@@ -19,6 +19,7 @@ from tests.conformal_maps import (
     trapezoid_capacitance,
 )
 from tests.section_examples import EVEN, ODD, impedance, microstrip, solve, stripline
+from tolerance.solver.plan import plan_for
 
 IMPEDANCE_OF_SPACE = 376.730313668  # [ohm], CODATA 2018
 CLOSE = 2e-5  # relative, in impedance: ten times closer than the 0.02 % that the solver promises
@@ -49,13 +50,36 @@ def test_centred_strip(width_over_spacing: float, printed: float | None) -> None
     assert impedance(section) == pytest.approx(exact, rel=CLOSE), "Cohn 1954, exact"
 
 
-@pytest.mark.parametrize("width_over_spacing", [6.0, 8.0, 10.0, 20.0, 40.0])
+@pytest.mark.parametrize("width_over_spacing", [6.0, 8.0, 10.0, 20.0, 40.0, 120.0, 200.0])
 def test_wide_centred_strip(width_over_spacing: float) -> None:
     """Far wider than any line of 50 ohm (about 0.4 on Dk 4): still within what the solver promises."""
     exact = exact_impedance(centred_strip_capacitance(width=width_over_spacing, plane_spacing=1.0))
     section = stripline(foot=width_over_spacing, crest=width_over_spacing, thickness=0.0, core=(0.5, 1.0),
                         prepreg=(0.5, 1.0))
     assert impedance(section) == pytest.approx(exact, rel=1e-4), "Cohn 1954, exact"
+
+
+@pytest.mark.parametrize("thickness_over_spacing", [0.02, 0.1, 0.25])
+@pytest.mark.parametrize("width_over_spacing", [3.0, 10.0, 60.0, 200.0])
+def test_wide_thick_strip(width_over_spacing: float, thickness_over_spacing: float) -> None:
+    """S. B. Cohn, "Characteristic impedance of the shielded-strip transmission line", 1954: a wide thick strip whose
+    ends do not feel each other; exact to e^(-pi width / (spacing - thickness))."""
+    x = 1.0 / (1.0 - thickness_over_spacing)
+    fringe = (2.0 * x * np.log(x + 1.0) - (x - 1.0) * np.log(x**2 - 1.0)) / np.pi
+    exact = IMPEDANCE_OF_SPACE / 4.0 / (width_over_spacing * x + fringe)
+    height = 0.5 * (1.0 - thickness_over_spacing)
+    section = stripline(foot=width_over_spacing, crest=width_over_spacing, thickness=thickness_over_spacing,
+                        core=(height, 1.0), prepreg=(height, 1.0))
+    assert impedance(section) == pytest.approx(exact, rel=1e-4), "Cohn 1954"
+
+
+def test_a_trace_far_wider_than_its_dielectric_takes_no_more_unknowns() -> None:
+    section = microstrip(foot=20_000, crest=19_980, thickness=35, height=100, dk=4.0)
+    wider = microstrip(foot=40_000, crest=39_980, thickness=35, height=100, dk=4.0)
+    counts = [sum(unknowns for unknowns, _, _ in plan_for(one).counts.values()) for one in (section, wider)]
+    assert counts[1] <= counts[0] + 20 <= 120
+    rise = IMPEDANCE_OF_SPACE / impedance(wider) - IMPEDANCE_OF_SPACE / impedance(section)
+    assert rise == pytest.approx(2.0 * 20_000 / 100, rel=2e-3), "exact for plates without end: sqrt(Dk) width / height"
 
 
 @pytest.mark.parametrize(("width", "gap"), COUPLED)

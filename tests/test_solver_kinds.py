@@ -180,3 +180,15 @@ def test_a_mask_that_buries_gap_and_grounds_is_continuous_in_its_height() -> Non
 
     assert impedance(47.01) == pytest.approx(impedance(46.99), rel=1e-4)
     assert impedance(60.0) < impedance(47.0) < impedance(30.0)
+
+
+@pytest.mark.parametrize(("foot", "core"), [(1200.0, 100.0), (4000.0, 100.0), (2000.0, 12.0)])
+def test_a_broad_pair_is_plates(foot: float, core: float) -> None:
+    """Two plates, exact but for their ends, which wider plates do not change: capacitance grows by Dk width / spacing
+    towards each face that it sees."""
+    def odd(width: float) -> float:
+        pair = broadside(foot=width, crest=width, thickness=15, lower=(165, 4.0), core=(core, 4.0), upper=(165, 4.0))
+        return float(solved(pair)[ODD].capacitance[0])
+
+    wider = 1.5 * foot
+    assert odd(wider) - odd(foot) == pytest.approx(4.0 * (wider - foot) * (2.0 / core + 1.0 / 150.0), rel=2e-4)

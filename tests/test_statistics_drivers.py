@@ -175,6 +175,23 @@ def test_drivers_of_a_predicted_line_are_the_closed_form_ones() -> None:
         assert driver.shapley is None
 
 
+def test_indices_keep_the_order_that_holds_exactly() -> None:
+    """Of a sum first order and total are the same, 1 and 0 here: estimates lie to either side, those told do not."""
+    model = Model(("one", "other"), germ_itself, lambda x: 50.0 + x[:, 0] + 1e-4 * x[:, 1], np.eye(2))
+    for seed in range(8):
+        for driver in rank_drivers(model, chance=np.random.default_rng(seed), with_shapley=False):
+            assert 0.0 <= driver.first.value <= driver.total.value <= 1.0
+            for interval in (driver.first, driver.total):
+                assert interval.low <= interval.value <= interval.high
+
+
+def test_a_variable_that_moves_the_rounding_alone_has_nought() -> None:
+    model = Model(("one", "nothing"), germ_itself, lambda x: 50.0 + x[:, 0] + 1e-14 * x[:, 1], np.eye(2))
+    found = {driver.variable: driver for driver in rank_drivers(
+        model, chance=np.random.default_rng(1), with_shapley=False)}
+    assert found["nothing"].first.value == found["nothing"].total.value == found["nothing"].total.high == 0.0
+
+
 def test_a_line_that_nothing_moves_has_no_drivers() -> None:
     still = Model((), germ_itself, lambda x: np.full(len(x), 50.0), np.zeros((0, 0)))
     assert rank_drivers(still, chance=np.random.default_rng(0), with_shapley=True) == ()

@@ -124,9 +124,21 @@ def test_where_no_coupon_fails_each_lot_is_one_trial() -> None:
         assert interval.high == 1.0
 
 
-def test_the_coupon_level_is_the_same_as_none_told() -> None:
+def test_the_coupon_level_told_makes_whole_lots_of_independent_coupons() -> None:
+    """Exact: of independent coupons all n of a panel or lot pass with the n-th power of the yield."""
     told = BOARD.replace("tolerance = ", 'level = "coupon"\ntolerance = ')
-    assert run_json(run(parse(told), coupons=256)) == run_json(run(parse(BOARD), coupons=256))
+    result = run(parse(told), coupons=20000)
+    assert parse(told).has_levels
+    assert not parse(BOARD).has_levels
+    assert result.lots is not None
+    for line in result.lines:
+        assert line.nested is not None
+        assert line.variance is not None
+        assert line.variance.coupon.value == pytest.approx(1.0, abs=1e-9)
+        for interval, size in ((line.nested.panel, 2), (line.nested.lot, 40)):
+            assert interval.low - 0.01 < line.inside.value**size < interval.high + 0.01
+    plain = run(parse(BOARD), coupons=16384)
+    assert result.inside.value == pytest.approx(plain.inside.value, abs=0.006)
 
 
 def test_the_test_judges_readings_and_lots(nested: RunResult) -> None:

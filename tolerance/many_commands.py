@@ -98,15 +98,16 @@ def _sweep(options: argparse.Namespace) -> int:
     from tolerance.sweeps.sweep import sweep
 
     folder = options.out or Path("out") / f"{options.paths[0].resolve().stem}-sweep"
-    done, failed = 0, 0
+    done, failed, bad = 0, 0, 0
 
     def note(number: int, row: SweptRow, outcome: Outcome) -> None:
-        nonlocal done, failed
-        done, failed = done + 1, failed + (row.result is None)
+        nonlocal done, failed, bad
+        done, failed, bad = done + 1, failed + (row.result is None), bad + outcome.bad_input
         options.logbook.write(
             "row", row=number + 1, scenario=row.source, swept=row.swept, failed=row.result is None,
             message=row.message or None, solver_runs=None if row.result is None else row.result["solver_runs"],
-            from_cache=outcome.from_cache, seconds=round(outcome.seconds, 3), worker=outcome.worker or None,
+            from_cache=outcome.from_cache, seconds=round(outcome.seconds, 3),
+            processor_seconds=round(outcome.of_processor, 3), worker=outcome.worker or None,
             **({"trace": outcome.trace} if outcome.trace else {}))
 
     try:
@@ -121,7 +122,7 @@ def _sweep(options: argparse.Namespace) -> int:
         raise
     from tolerance.report.swept_files import write_sweep
 
-    if result.failed == len(result.rows):
+    if bad == len(result.rows):
         raise InputError("\n".join(f"{row.source}: {row.message}" for row in result.rows[:20]))
     write_sweep(result, folder)
     if options.json:

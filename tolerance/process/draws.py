@@ -33,12 +33,13 @@ class Variable:
     """One standard draw and the properties it moves, each by a law of its own.
 
     The name is that of the property, or, of properties drawn together, those of all joined by " + ".
-    levels : which shares of the variance of the draw lots, panels and coupons carry.
+    levels : which shares of the variance of the draw lots, panels and coupons carry.  levelled : the scenario says so.
     """
 
     name: str
     members: tuple[tuple[Property, Law], ...]
     levels: LevelShares = COUPON_ALONE
+    levelled: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,6 +55,18 @@ class Process:
     nominals: Mapping[str, float]
     correlation: FloatArray
     resins: Mapping[str, Resin] = field(default_factory=dict)  # by layer
+    _places: Mapping[str, tuple[int, Law]] = field(init=False, repr=False, compare=False, default_factory=dict)
+
+    def __post_init__(self) -> None:
+        places: dict[str, tuple[int, Law]] = {}
+        for column, variable in enumerate(self.variables):
+            for member, law in variable.members:
+                places.setdefault(member.name, (column, law))
+        object.__setattr__(self, "_places", places)
+
+    def place(self, name: str) -> tuple[int, Law] | None:
+        """Column of the germ and law of the property `name`; None where it does not vary."""
+        return self._places.get(name)
 
     @property
     def is_correlated(self) -> bool:
@@ -61,8 +74,9 @@ class Process:
 
     @property
     def has_levels(self) -> bool:
-        """Whether coupons of one lot or panel share anything."""
-        return any(variable.levels.lot > 0.0 or variable.levels.panel > 0.0 for variable in self.variables)
+        """Whether a level is told of any variable, be it the coupon; then coupons are drawn as whole lots."""
+        return any(variable.levelled or variable.levels.lot > 0.0 or variable.levels.panel > 0.0
+                   for variable in self.variables)
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,11 +134,7 @@ class ProcessDraws:
         return ProcessDraws(self.process, read_only(self.germ[index]))
 
     def _law(self, name: str) -> tuple[int, Law] | None:
-        for column, variable in enumerate(self.process.variables):
-            for member, law in variable.members:
-                if member.name == name:
-                    return column, law
-        return None
+        return self.process.place(name)
 
 
 def process_of(scenario: Scenario) -> Process:
@@ -214,9 +224,10 @@ def sobol_uniforms(dimensions: int, points: int, chance: np.random.Generator) ->
 def _variables(scenario: Scenario, variation: Variation) -> tuple[Variable, ...]:
     """One variable for each property that the variation names, or one for all where they are drawn together."""
     pairs = tuple((each, _law(scenario, each, variation)) for each in members(scenario, variation))
+    told = variation.has_level
     if variation.together:
-        return (Variable(" + ".join(each.name for each, _ in pairs), pairs, variation.level),)
-    return tuple(Variable(each.name, ((each, law),), variation.level) for each, law in pairs)
+        return (Variable(" + ".join(each.name for each, _ in pairs), pairs, variation.level, told),)
+    return tuple(Variable(each.name, ((each, law),), variation.level, told) for each, law in pairs)
 
 
 def _law(scenario: Scenario, each: Property, variation: Variation) -> Law:

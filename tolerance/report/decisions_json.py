@@ -13,7 +13,6 @@ if TYPE_CHECKING:
         Compared,
         CompareResult,
         Judged,
-        NoteResult,
         Offers,
         OfferSet,
         PromiseResult,
@@ -21,6 +20,7 @@ if TYPE_CHECKING:
         TightenResult,
         YieldByLimit,
     )
+    from tolerance.noted import NoteResult
     from tolerance.results import Interval
 
 UM = 1e6  # micrometres in a metre

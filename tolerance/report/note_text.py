@@ -9,7 +9,7 @@ from tolerance.report.tables import Cell, Column, Table
 from tolerance.report.wording import METRES_IN, LengthUnit, length_text, shorten, trimmed
 
 if TYPE_CHECKING:
-    from tolerance.decided import NotedLine, NoteResult
+    from tolerance.noted import NotedLine, NoteResult
 
 NOTE_WIDTH = 80
 MODE_WORDS = {"single": "", "differential": " differential", "common": " common mode"}

@@ -43,7 +43,7 @@ if TYPE_CHECKING:
 
     from openpyxl.worksheet.worksheet import Worksheet
 
-    from tolerance.decided import NoteResult
+    from tolerance.noted import NoteResult
     from tolerance.results import RunResult
     from tolerance.scenario.tables import Scenario
 

@@ -20,7 +20,6 @@ from tolerance.scenario.tables import (
     Evaluation,
     ImpedanceTest,
     Layer,
-    LevelShares,
     Line,
     Variation,
 )
@@ -208,11 +207,8 @@ def _coupons(draft: Draft[Evaluation], variations: tuple[Draft[Variation], ...])
 
 
 def has_levels(draft: Draft[Variation]) -> bool:
-    """Whether the variation has a share at lot or panel level."""
-    if "level" in draft.bad or "level" not in draft.entry.values:
-        return False
-    level = kind_of(Variation, "level").read(draft.entry.values["level"], from_file=True)
-    return isinstance(level, LevelShares) and (level.lot > 0.0 or level.panel > 0.0)
+    """Whether the variation says at which level its spread arises."""
+    return "level" in draft.entry.values and "level" not in draft.bad
 
 
 def _nearest_powers(coupons: int) -> str:

@@ -12,6 +12,9 @@ from tolerance.scenario.stackup import LAMINATES, decided_foot, span
 from tolerance.scenario.tables import COPPER, MASK, Foot, Layer, Line
 from tolerance.units import write_quantity
 
+#: How many times wider than the laminate next to it, and than its copper or the mask on it, a trace may be.
+WIDEST_OVER_LAMINATE, WIDEST_OVER_COPPER = 200.0, 2000.0
+
 
 @dataclass(frozen=True, slots=True)
 class Outline:
@@ -117,6 +120,7 @@ def _line(line: Draft[Line], drafts: Drafts, outlines: Sequence[Outline] | None)
     yield from _planes(line, outlines, *span(outlines, layer, partner))
     yield from _under_mask(line, outlines, partner)
     yield from _crest(line, [outline for outline in outlines if outline.name in (layer, partner)])
+    yield from _flat(line, outlines, span(outlines, layer, partner))
 
 
 def _carrier(line: Draft[Line], key: str, layers: Sequence[Draft[Layer]]) -> Iterator[Finding]:
@@ -179,6 +183,24 @@ def _under_mask(line: Draft[Line], layers: Sequence[Outline], partner: str | Non
             yield line.entry.finding("partner", "a broadside pair with a trace under solder mask "
                                                 f'("{layers[index].name}") is not yet acted on by this version; leave '
                                                 "the line out to run")
+
+
+def _flat(line: Draft[Line], layers: Sequence[Outline], traces: tuple[int, int]) -> Iterator[Finding]:
+    """A trace that is wider than so many times what lies next to it is no line that the field solver takes."""
+    if line.model is None:
+        return
+    for index in sorted(set(traces)):
+        for at in (index - 1, index, index + 1):
+            model = layers[at].draft.model if 0 <= at < len(layers) else None
+            if model is None:
+                continue
+            times = WIDEST_OVER_LAMINATE if model.kind in LAMINATES else WIDEST_OVER_COPPER
+            thicknesses = {COPPER: model.copper_thickness, MASK: model.over_copper}
+            thickness = thicknesses.get(model.kind, model.thickness)
+            if thickness is not None and line.model.width > times * thickness:
+                yield line.entry.finding(
+                    "width", f"must be up to {write_quantity(times * thickness, 'length')}, {times:g} times what "
+                             f'"{model.name}" is thick{" over copper" if model.kind == MASK else ""}')
 
 
 def _crest(line: Draft[Line], layers: Sequence[Outline]) -> Iterator[Finding]:

@@ -185,6 +185,11 @@ class Variation(Table):
         """How many deviations the half-width covers; 3 unless given."""
         return 3.0 if self.sigmas is None else self.sigmas
 
+    @property
+    def has_level(self) -> bool:
+        """Whether it says at which level its spread arises, be it the coupon."""
+        return "level" in self.model_fields_set
+
 
 class Correlation(Table):
     """Two variables whose underlying standard normals go together (a Gaussian copula)."""
@@ -293,8 +298,8 @@ class Scenario(BaseModel):
 
     @property
     def has_levels(self) -> bool:
-        """Whether anything is shared by the coupons of a lot or a panel; then coupons are drawn as whole lots."""
-        return any(each.level.lot > 0.0 or each.level.panel > 0.0 for each in self.variations)
+        """Whether any variation says at which level its spread arises; then coupons are drawn as whole lots."""
+        return any(each.has_level for each in self.variations)
 
     def limit_of(self, line: Line) -> float:
         """Half-width of the line's impedance limits, as a share of the target."""

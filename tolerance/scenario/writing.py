@@ -107,11 +107,12 @@ class _Writer:
         yield Piece(self.keys(entry, moved, measure), slot, number)
 
     def keys(self, table: Table, names: Collection[str], measure: MeasureName | None = None) -> str:
-        """Lines of the keys that say something else than their default."""
+        """Lines of the keys that say something else than their default; a level that is told stays told."""
         text = ""
         for key, field in type(table).model_fields.items():
             value = getattr(table, key)
-            if key in names and value != field.default:
+            told = key == "level" and isinstance(table, Variation) and table.has_level
+            if key in names and (told or value != field.default):
                 text += f"{key} = {self._value(table, key, value, measure)}\n"
         return text
 

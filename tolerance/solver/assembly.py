@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from tolerance.arrays import FloatArray, NumberArray
-from tolerance.solver.edges import Edge, Nodes, place_nodes
+from tolerance.solver.edges import Edge, NodeCounts, Nodes, place_nodes
 from tolerance.solver.kernels import FarImages, SpectralRest
 
 
@@ -52,14 +52,13 @@ class System:
 
 
 def near_system(
-    edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[tuple[int, int]], mirror: bool = True,
+    edges: Sequence[Edge], images: Sequence[NearImage], *, counts: Sequence[NodeCounts], mirror: bool = True,
 ) -> System:
     """Place the nodes (copper edges first) and set up the matrices of the near images.
 
     mirror : the edges are the right half of a section that is mirrored at x = 0.
     """
-    nodes = tuple(place_nodes(edge, unknowns=unknowns, fine=fine)
-                  for edge, (unknowns, fine) in zip(edges, counts, strict=True))
+    nodes = tuple(place_nodes(edge, count) for edge, count in zip(edges, counts, strict=True))
     across = np.concatenate([n.across for n in nodes], axis=1)
     height = np.concatenate([n.height for n in nodes], axis=1)
     copper = sum(n.across.shape[1] for n in nodes if n.edge.conducts)
@@ -110,7 +109,10 @@ def full_matrix(
     if medium.far is not None:
         _add_far_images(matrix, system, medium.far, sign, size, kept)
     if medium.rest is not None:
-        matrix += medium.rest.matrix(system.across[:, :size], system.height[:, :size], sign)
+        sent = sent_from(system, size)
+        nodes = system.across[:, :size], system.height[:, :size]
+        rest = medium.rest.matrix(nodes, nodes if sent.spread is None else (sent.across, sent.height), sign)
+        matrix += rest if sent.spread is None else rest @ sent.spread
     if not air:
         _turn_into_interface_conditions(matrix, system)
     return matrix
@@ -169,7 +171,7 @@ def _add_far_images(
         stop = start + source.across.shape[1]
         if start >= size:
             break
-        source_across, source_height = far_places(source)
+        source_across, source_height = source.places.far_across, source.places.far_height
         total = height[:, :, None] + source_height[:, None, :]
         runs = [across[:, :, None] - source_across[:, None, :], across[:, :, None] + source_across[:, None, :]]
         block = np.zeros(total.shape, dtype=matrix.dtype)
@@ -179,18 +181,41 @@ def _add_far_images(
             mirrored = _kernel(runs[1], rise, normals, system.copper)
             kernel += mirrored if sign > 0 else -mirrored
             if kept is not None:
-                kept[number][:, :, start:stop] = kernel @ source.refine if source.edge.tail else kernel
+                kept[number][:, :, start:stop] = kernel if source.spread is None else kernel @ source.spread
             block += kernel * far.factors[:, number, None, None]
-        matrix[:, :, start:stop] += block @ source.refine if source.edge.tail else block
+        matrix[:, :, start:stop] += block if source.spread is None else block @ source.spread
         start = stop
 
 
-def far_places(source: Nodes) -> tuple[FloatArray, FloatArray]:
-    """Where an edge's charge is seen from by far images: at its nodes.
+@dataclass(frozen=True, slots=True)
+class Sent:
+    """Where far images and rests see charges from: (sections, sources).
 
-    A tail's nodes lie further apart than the images lie below it: it needs its finer places.
+    spread : (sources, unknowns) charges there from the unknown ones; None where they are the same.
     """
-    return (source.fine_across, source.fine_height) if source.edge.tail else (source.across, source.height)
+
+    across: FloatArray
+    height: FloatArray
+    spread: FloatArray | None
+
+
+def sent_from(system: System, size: int) -> Sent:
+    """The sources of the first `size` unknowns, which are whole edges."""
+    kept, filled = [], 0
+    for nodes in system.nodes:
+        if filled < size:
+            kept.append(nodes)
+            filled += nodes.across.shape[1]
+    if all(nodes.spread is None for nodes in kept):
+        return Sent(system.across[:, :size], system.height[:, :size], None)
+    blocks = [np.eye(nodes.across.shape[1]) if nodes.spread is None else nodes.spread for nodes in kept]
+    spread = np.zeros((sum(len(block) for block in blocks), size))
+    row = column = 0
+    for block in blocks:
+        spread[row : row + block.shape[0], column : column + block.shape[1]] = block
+        row, column = row + block.shape[0], column + block.shape[1]
+    return Sent(np.concatenate([nodes.places.far_across for nodes in kept], axis=1),
+                np.concatenate([nodes.places.far_height for nodes in kept], axis=1), spread)
 
 
 def _turn_into_interface_conditions(matrix: NumberArray, system: System) -> None:

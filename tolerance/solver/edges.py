@@ -25,6 +25,9 @@ from tolerance.solver.rules import (
     tail_rule,
 )
 
+#: Of an edge: unknowns, places of the quadrature, places where far images and waves see it (the unknowns, or more).
+NodeCounts = tuple[int, int, int]
+
 Role = Literal["copper", "strip", "ground", "dielectric"]
 #: Grading by how the charge grows towards the ends: like distance^(-1/3) at corners of copper, like distance^(-1/2)
 #: at the edges of a strip without thickness, more mildly on dielectric faces.
@@ -64,6 +67,8 @@ class Edge:
 class Places:
     """Where an edge has its unknowns, and the finer places of its quadrature: arrays (sections, unknowns or fine) [m].
 
+    far_across, far_height : where images that are not near, and waves, see its charge: the unknowns themselves, or
+        finer places where those lie further apart than the images are away.
     jacobian : quadrature weight in metres: density is charge over it.  length : (sections,), see Edge.
     """
 
@@ -71,6 +76,8 @@ class Places:
     height: FloatArray
     fine_across: FloatArray
     fine_height: FloatArray
+    far_across: FloatArray
+    far_height: FloatArray
     jacobian: FloatArray
     length: FloatArray
 
@@ -80,20 +87,23 @@ class Nodes:
     """An edge with its unknowns.
 
     refine : (fine, unknowns) charges at fine places from the unknown charges.
+    spread : (far, unknowns) charges at far places; None where they are the unknowns themselves.
     alone  : (sections, unknowns, unknowns) logarithmic potential of the edge on itself; None on dielectric.
     mirrored : the same of the mirror image of a folded edge, else None.
     normal : (x, y) of the unit normal to the left, arrays (sections,).
-    share, fine_share : (unknowns,), (fine,) how far along from start to stop the places lie, in every section.
+    share, fine_share, far_share : how far along from start to stop the places lie, in every section: (places,).
     """
 
     edge: Edge
     places: Places
     refine: FloatArray
+    spread: FloatArray | None
     alone: FloatArray | None
     mirrored: FloatArray | None
     normal: tuple[FloatArray, FloatArray]
     share: FloatArray
     fine_share: FloatArray
+    far_share: FloatArray
 
     @property
     def across(self) -> FloatArray:
@@ -121,22 +131,25 @@ class Nodes:
         return self.places.jacobian
 
 
-def edge_places(edge: Edge, *, unknowns: int, fine: int) -> Places:
-    """Places of `edge`; a folded edge gets half of `unknowns` and `fine`, which must be even."""
+def edge_places(edge: Edge, counts: NodeCounts) -> Places:
+    """Places of `edge`; a folded edge gets half of each count, which must be even."""
+    unknowns, fine, far = counts
     rule, fine_rule = (_rule(edge, count) for count in (unknowns, fine))
-    keep, keep_fine = (slice(unknowns // 2, None), slice(fine // 2, None)) if edge.folded else (slice(None),) * 2
     length = edge.length
     stretch = length if edge.tail else 0.5 * length
-    return Places(*_along(edge, length, rule, keep), *_along(edge, length, fine_rule, keep_fine),
-                  stretch[:, None] * (rule.weights * rule.slope)[keep], length)
+    across, height = _along(edge, length, rule, _kept(edge, unknowns))
+    far_across, far_height = (across, height) if far == unknowns else _along(
+        edge, length, _rule(edge, far), _kept(edge, far))
+    return Places(across, height, *_along(edge, length, fine_rule, _kept(edge, fine)), far_across, far_height,
+                  stretch[:, None] * (rule.weights * rule.slope)[_kept(edge, unknowns)], length)
 
 
-def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
+def place_nodes(edge: Edge, counts: NodeCounts) -> Nodes:
     """Nodes of `edge`, with what it does to itself; see edge_places."""
-    places = edge_places(edge, unknowns=unknowns, fine=fine)
+    unknowns, fine, far = counts
+    places = edge_places(edge, counts)
     length, power = places.length, GRADING[edge.role]
-    keep, keep_fine = (slice(unknowns // 2, None), slice(fine // 2, None)) if edge.folded else (slice(None),) * 2
-    refine = refinement(unknowns, fine)
+    keep = _kept(edge, unknowns)
     alone: FloatArray | None = None
     mirrored: FloatArray | None = None
     if edge.conducts and edge.tail:
@@ -145,12 +158,25 @@ def place_nodes(edge: Edge, *, unknowns: int, fine: int) -> Nodes:
         full = self_potential(unknowns, power) + np.log(0.5 * length)[:, None, None]
         alone = full[:, keep, keep]
         mirrored = full[:, keep, : unknowns // 2][:, :, ::-1] if edge.folded else None
-    if edge.folded:
-        refine = refine[keep_fine, keep] + refine[keep_fine, : unknowns // 2][:, ::-1]
     direction = ((edge.stop[0] - edge.start[0]) / length, (edge.stop[1] - edge.start[1]) / length)
-    return Nodes(edge=edge, places=places, refine=refine, alone=alone, mirrored=mirrored,
+    return Nodes(edge=edge, places=places, refine=_refined(edge, unknowns, fine),
+                 spread=None if far == unknowns else _refined(edge, unknowns, far), alone=alone, mirrored=mirrored,
                  normal=(-direction[1], direction[0]), share=_share(edge, unknowns)[keep],
-                 fine_share=_share(edge, fine)[keep_fine])
+                 fine_share=_share(edge, fine)[_kept(edge, fine)], far_share=_share(edge, far)[_kept(edge, far)])
+
+
+def _kept(edge: Edge, count: int) -> slice:
+    """Which of `count` places carry unknowns of their own: the right half of a folded edge."""
+    return slice(count // 2, None) if edge.folded else slice(None)
+
+
+def _refined(edge: Edge, unknowns: int, finer: int) -> FloatArray:
+    """Charges at `finer` places from the unknown ones."""
+    whole = refinement(unknowns, finer)
+    if not edge.folded:
+        return whole
+    rows, columns = _kept(edge, finer), _kept(edge, unknowns)
+    return np.asarray(whole[rows, columns] + whole[rows, : unknowns // 2][:, ::-1])
 
 
 def _rule(edge: Edge, count: int) -> Rule:

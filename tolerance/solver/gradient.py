@@ -14,7 +14,7 @@ from dataclasses import dataclass, fields
 import numpy as np
 
 from tolerance.arrays import FloatArray, IntArray, NumberArray
-from tolerance.solver.assembly import Medium, NearImage, System, far_places
+from tolerance.solver.assembly import Medium, NearImage, System, sent_from
 from tolerance.solver.edges import Nodes
 from tolerance.solver.kernels import FarImages, SpectralRest
 
@@ -101,8 +101,7 @@ class _Places:
         self.levels = np.zeros((count, images))
         self.at_nodes = shares_of_ends([nodes.share for nodes in system.nodes])
         self.at_fine = shares_of_ends([nodes.fine_share for nodes in system.nodes])
-        self.at_far = shares_of_ends([nodes.fine_share if nodes.edge.tail else nodes.share
-                                       for nodes in system.nodes])
+        self.at_far = shares_of_ends([nodes.far_share for nodes in system.nodes])
 
     def add(self, across: FloatArray, height: FloatArray, shares: FloatArray) -> None:
         """Gradients with respect to places (sections, places) that lie at `shares` of the edges."""
@@ -278,10 +277,8 @@ def _add_far(
 
 def _far_sources(system: System, charges: NumberArray) -> tuple[FloatArray, FloatArray, NumberArray]:
     """Where far images see charges from, and the charges there."""
-    kept = [(nodes, part) for nodes, part in _parts(system) if part.start < charges.shape[1]]
-    across, height = (np.concatenate([far_places(nodes)[axis] for nodes, _ in kept], axis=1) for axis in (0, 1))
-    return across, height, np.concatenate([
-        charges[:, part] @ nodes.refine.T if nodes.edge.tail else charges[:, part] for nodes, part in kept], axis=1)
+    sent = sent_from(system, charges.shape[1])
+    return sent.across, sent.height, charges if sent.spread is None else charges @ sent.spread.T
 
 
 def _at_first(air: FarImages | None, filled: FarImages | None) -> bool:
@@ -452,36 +449,55 @@ def _add_rest(
     """Adds the gradient with respect to places, and returns that with respect to what the rest is made of."""
     system, size = sums.system, charges.shape[1]
     across, height = system.across[:, :size], system.height[:, :size]
-    k = rest.wavenumber[:, None, :]
-    phase = k * across[:, :, None]
-    wave, slope = (np.cos(phase), -k * np.sin(phase)) if sign > 0 else (np.sin(phase), k * np.cos(phase))
-    down = np.exp(-k * height[:, :, None])
-    up = np.exp(-k * (rest.body_thickness[:, None] - height)[:, :, None])
-    carriers = (wave * down, wave * up, wave)
-    taken, sent = (np.stack([(weights[:, None, :] @ carrier)[:, 0] for carrier in carriers], axis=1)
-                   for weights in (rows, charges))
-    run, rising = np.zeros(across.shape), np.zeros(across.shape)
-    for weights, other in ((rows, sent), (charges, taken)):
-        of_down = (rest.lower * other[:, 0] + rest.cross * other[:, 1])[:, :, None]
-        of_up = (rest.upper * other[:, 1] + rest.cross * other[:, 0])[:, :, None]
-        of_level = (rest.level * other[:, 2])[:, :, None]
-        run -= 2.0 * np.real(weights * ((slope * down) @ of_down + (slope * up) @ of_up + slope @ of_level)[:, :, 0])
-        k_down, k_up = rest.wavenumber[:, :, None] * of_down, rest.wavenumber[:, :, None] * of_up
-        rising -= 2.0 * np.real(weights * (carriers[1] @ k_up - carriers[0] @ k_down)[:, :, 0])
+    from_across, from_height, sent_charges = _far_sources(system, charges)
+    at_nodes = _Carried(rest, across, height, sign)
+    at_sources = at_nodes if sent_charges is charges else _Carried(rest, from_across, from_height, sign)
+    taken, sent = at_nodes.sums(rows), at_sources.sums(sent_charges)
+    for carried, weights, other, shares in ((at_nodes, rows, sent, sums.at_nodes),
+                                            (at_sources, sent_charges, taken, sums.at_far)):
+        sums.add(*carried.slopes(rest, weights, other), shares)
     thickness = 2.0 * np.real((rest.wavenumber * (2.0 * rest.upper * taken[:, 1] * sent[:, 1] + rest.cross * (
         taken[:, 0] * sent[:, 1] + taken[:, 1] * sent[:, 0]))).sum(axis=1))
     compensation = np.zeros(len(across), dtype=rows.dtype)
     for side in (1.0, -1.0) if np.any(rest.compensation) else ():
         way = 1.0 if side > 0 else float(sign)
-        apart = across[:, :, None] - side * across[:, None, :]
+        apart = across[:, :, None] - side * from_across[:, None, :]
         square = apart * apart + (rest.distance**2)[:, None, None]
-        compensation -= 0.5 * way * _form(rows, np.log(square), charges)
+        compensation -= 0.5 * way * _form(rows, np.log(square), sent_charges)
         apart /= square
-        carried = -(way * rest.compensation)[:, None] * rows
-        run += np.real(carried * (apart @ charges[:, :, None])[:, :, 0])
-        run -= side * np.real((carried[:, None, :] @ apart)[:, 0] * charges)
-    sums.add(run, rising, sums.at_nodes)
+        weighted = -(way * rest.compensation)[:, None] * rows
+        sums.add(np.real(weighted * (apart @ sent_charges[:, :, None])[:, :, 0]), np.zeros(across.shape), sums.at_nodes)
+        sums.add(-side * np.real((weighted[:, None, :] @ apart)[:, 0] * sent_charges), np.zeros(from_across.shape),
+                 sums.at_far)
     return RestGradient(
         -2.0 * taken[:, 0] * sent[:, 0], -2.0 * taken[:, 1] * sent[:, 1],
         -2.0 * (taken[:, 0] * sent[:, 1] + taken[:, 1] * sent[:, 0]), -2.0 * taken[:, 2] * sent[:, 2], thickness,
         compensation)
+
+
+class _Carried:
+    """The waves of a spectral rest at places (sections, places): going down, going up, level."""
+
+    def __init__(self, rest: SpectralRest, across: FloatArray, height: FloatArray, sign: int) -> None:
+        self.k = rest.wavenumber
+        k = self.k[:, None, :]
+        phase = k * across[:, :, None]
+        wave, self.slope = (np.cos(phase), -k * np.sin(phase)) if sign > 0 else (np.sin(phase), k * np.cos(phase))
+        self.down = np.exp(-k * height[:, :, None])
+        self.up = np.exp(-k * (rest.body_thickness[:, None] - height)[:, :, None])
+        self.carriers = (wave * self.down, wave * self.up, wave)
+
+    def sums(self, weights: NumberArray) -> NumberArray:
+        """What `weights` (sections, places) make of each wave: (sections, 3, k)."""
+        return np.stack([(weights[:, None, :] @ carrier)[:, 0] for carrier in self.carriers], axis=1)
+
+    def slopes(self, rest: SpectralRest, weights: NumberArray, other: NumberArray) -> tuple[FloatArray, FloatArray]:
+        """Gradient with respect to x and y of the places; `other`: the sums at the other end."""
+        of_down = (rest.lower * other[:, 0] + rest.cross * other[:, 1])[:, :, None]
+        of_up = (rest.upper * other[:, 1] + rest.cross * other[:, 0])[:, :, None]
+        of_level = (rest.level * other[:, 2])[:, :, None]
+        slope = self.slope
+        run = (slope * self.down) @ of_down + (slope * self.up) @ of_up + slope @ of_level
+        k = self.k[:, :, None]
+        rise = self.carriers[1] @ (k * of_up) - self.carriers[0] @ (k * of_down)
+        return -2.0 * np.real(weights * run[:, :, 0]), -2.0 * np.real(weights * rise[:, :, 0])

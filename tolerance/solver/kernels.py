@@ -24,8 +24,12 @@ import numpy as np
 from tolerance.arrays import FloatArray, NumberArray, read_only
 from tolerance.solver.rules import legendre
 
+Places = tuple[FloatArray, FloatArray]  # x and y
+
 #: Where exp(-k * distance) counts as nought in the spectral rest.
 LAST_EXPONENT = 17.0
+#: Fewest wavenumbers of a panel, where there are several.
+PANEL = 100
 #: Wavenumbers at which far images are fitted.
 FIT_PLACES = 80
 #: Largest error by far images, of 1 + reflection: what the potential of a charge near the plane goes as.
@@ -94,26 +98,34 @@ class SpectralRest:
     compensation: NumberArray  # (sections,) factor of the logarithm taken off in the near part
     distance: FloatArray  # (sections,) [m]
 
-    def matrix(self, across: FloatArray, height: FloatArray, sign: int) -> NumberArray:
-        """Rest between all nodes (sections, nodes, nodes), even (`sign` 1) or odd (-1) about x = 0."""
-        phase = self.wavenumber[:, None, :] * across[:, :, None]
-        wave = np.cos(phase) if sign > 0 else np.sin(phase)
-        down = wave * np.exp(-self.wavenumber[:, None, :] * height[:, :, None])
-        up = wave * np.exp(-self.wavenumber[:, None, :] * (self.body_thickness[:, None] - height)[:, :, None])
+    def matrix(self, nodes: Places, sources: Places, sign: int) -> NumberArray:
+        """Rest between nodes and sources, each (x, y) of arrays (sections, places): (sections, nodes, sources).
+
+        sign : even (1) or odd (-1) about x = 0.
+        """
+        down, up, wave = self._waves(nodes, sign)
         lower, upper, cross = (factor[:, None, :] for factor in (self.lower, self.upper, self.cross))
         left = np.concatenate([down * lower + up * cross, up * upper + down * cross, wave * self.level[:, None, :]], 2)
-        right = np.concatenate([down, up, wave], axis=2)
+        right = np.concatenate((down, up, wave) if sources[0] is nodes[0] else self._waves(sources, sign), axis=2)
         result = -2.0 * (left @ right.transpose(0, 2, 1))
         if np.any(self.compensation):
             square = (self.distance**2)[:, None, None]
-            own = np.log((across[:, :, None] - across[:, None, :]) ** 2 + square)
-            mirrored = np.log((across[:, :, None] + across[:, None, :]) ** 2 + square)
+            own = np.log((nodes[0][:, :, None] - sources[0][:, None, :]) ** 2 + square)
+            mirrored = np.log((nodes[0][:, :, None] + sources[0][:, None, :]) ** 2 + square)
             result -= 0.5 * self.compensation[:, None, None] * (own + sign * mirrored)
         return np.asarray(result)
 
-    def whole_matrix(self, across: FloatArray, height: FloatArray) -> NumberArray:
-        """Rest between all nodes of a section that is not mirrored: half the sum of even and odd."""
-        return 0.5 * (self.matrix(across, height, 1) + self.matrix(across, height, -1))
+    def _waves(self, places: Places, sign: int) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Going down, going up, level, at places: each (sections, places, k)."""
+        phase = self.wavenumber[:, None, :] * places[0][:, :, None]
+        wave = np.cos(phase) if sign > 0 else np.sin(phase)
+        down = wave * np.exp(-self.wavenumber[:, None, :] * places[1][:, :, None])
+        up = wave * np.exp(-self.wavenumber[:, None, :] * (self.body_thickness[:, None] - places[1])[:, :, None])
+        return down, up, wave
+
+    def whole_matrix(self, nodes: Places, sources: Places) -> NumberArray:
+        """The same of a section that is not mirrored: half the sum of even and odd."""
+        return 0.5 * (self.matrix(nodes, sources, 1) + self.matrix(nodes, sources, -1))
 
 
 def image_multiples(stack: FlatStack, body_dk: NumberArray) -> tuple[float, ...]:
@@ -190,8 +202,22 @@ def spectral_rest(
 
 def spectral_quadrature(distance: FloatArray, count: int) -> tuple[FloatArray, FloatArray]:
     """Wavenumbers (sections, count) [1/m], crowded towards nought, and their weights over d k / k: (count,)."""
-    nodes, weights = legendre(count)
-    return LAST_EXPONENT / distance[:, None] * (0.5 * (1.0 + nodes)) ** 2, weights * 2.0 / (1.0 + nodes)
+    root, weight = _spectral_rule(count)
+    return LAST_EXPONENT / distance[:, None] * root**2, weight
+
+
+@lru_cache(maxsize=64)
+def _spectral_rule(count: int) -> tuple[FloatArray, FloatArray]:
+    """Root of the wavenumber over the last one, and weight over d k / k: both (count,).
+
+    Many nodes stand in panels: in one they would crowd so much towards nought that what planes on both sides do there
+    would be lost in rounding.
+    """
+    panels = max(1, count // PANEL)
+    nodes, weights = legendre(count // panels)
+    start = np.arange(panels)[:, None] / panels
+    root = (start + 0.5 * (1.0 + nodes) / panels).ravel()
+    return read_only(root), read_only(np.tile(weights, panels) / panels / root)
 
 
 @lru_cache(maxsize=64)

@@ -15,8 +15,8 @@ import numpy as np
 
 from tolerance.arrays import FloatArray, IntArray, NumberArray
 from tolerance.sections.layered import LayeredSection
-from tolerance.solver.assembly import Medium, NearImage, System, near_system
-from tolerance.solver.edges import Edge
+from tolerance.solver.assembly import Medium, NearImage, System, near_system, sent_from
+from tolerance.solver.edges import Edge, NodeCounts
 from tolerance.solver.kernels import LAST_EXPONENT, FlatStack, spectral_quadrature, spectral_rest
 from tolerance.solver.plan import PLANE_WAVENUMBERS, SolverSettings, edge_counts
 
@@ -25,7 +25,7 @@ from tolerance.solver.plan import PLANE_WAVENUMBERS, SolverSettings, edge_counts
 class LayeredPlan:
     """Node counts by edge name, and nodes over the wavenumber for each pair of layers."""
 
-    counts: Mapping[str, tuple[int, int]]
+    counts: Mapping[str, NodeCounts]
     wavenumbers: Mapping[tuple[int, int], int]
     plane_wavenumbers: int = 0
 
@@ -132,9 +132,8 @@ def whole_matrix(section: LayeredSection, plan: LayeredPlan, systems: Mapping[in
         result[:, parts[low], parts[low]] = _within(section, plan, low, systems[low])
         for high in systems:
             if high > low:
-                between = _between(section, plan, (low, systems[low]), (high, systems[high]))
-                result[:, parts[low], parts[high]] = between
-                result[:, parts[high], parts[low]] = between.transpose(0, 2, 1)
+                result[:, parts[low], parts[high]], result[:, parts[high], parts[low]] = _between(
+                    section, plan, (low, systems[low]), (high, systems[high]))
     return result
 
 
@@ -157,7 +156,11 @@ def _within(section: LayeredSection, plan: LayeredPlan, layer: int, system: Syst
     """M over Dk of the traces of one layer among themselves."""
     medium = layer_medium(section, plan, layer)
     assert medium.rest is not None
-    matrix = medium.rest.whole_matrix(system.across, system.height)
+    sent = sent_from(system, system.across.shape[1])
+    nodes = system.across, system.height
+    matrix = medium.rest.whole_matrix(nodes, nodes if sent.spread is None else (sent.across, sent.height))
+    if sent.spread is not None:
+        matrix = matrix @ sent.spread
     for factor, own in zip(medium.factors, system.own, strict=True):
         if np.any(factor):
             matrix += factor[:, None, None] * own
@@ -210,21 +213,33 @@ def through(section: LayeredSection, layer: int, wavenumber: FloatArray) -> Floa
 
 def _between(
     section: LayeredSection, plan: LayeredPlan, lower: tuple[int, System], upper: tuple[int, System],
-) -> NumberArray:
-    """M over Dk of points in the lower and charges in the upper layer: (sections, lower nodes, upper nodes)."""
-    (low, at_low), (high, at_high) = lower, upper
+) -> tuple[NumberArray, NumberArray]:
+    """M over Dk of points in the lower and charges in the upper layer, and the other way round: (sections, nodes,
+    nodes)."""
+    low, high = lower[0], upper[0]
     waves = waves_between(section, plan, low, high)
-    k = waves.wavenumber[:, None, :]
-    low_thickness, high_thickness = section.thicknesses[low], section.thicknesses[high]
-    taken = np.exp(-k * (low_thickness[:, None] - at_low.height)[:, :, None]) + (
-        waves.back[low] * through(section, low, waves.wavenumber))[:, None, :] * np.exp(-k * at_low.height[:, :, None])
-    sent = np.exp(-k * at_high.height[:, :, None]) + (waves.up * through(section, high, waves.wavenumber))[
-        :, None, :] * np.exp(-k * (high_thickness[:, None] - at_high.height)[:, :, None])
-    taken = taken * (waves.weight * waves.factor / section.dks[high][:, None])[:, None, :]
-    phase_low, phase_high = k * at_low.across[:, :, None], k * at_high.across[:, :, None]
-    left = np.concatenate([taken * np.cos(phase_low), taken * np.sin(phase_low)], axis=2)
-    right = np.concatenate([sent * np.cos(phase_high), sent * np.sin(phase_high)], axis=2)
-    return np.asarray(-(left @ right.transpose(0, 2, 1)))
+    back, up = (factor * through(section, layer, waves.wavenumber)
+                for factor, layer in ((waves.back[low], low), (waves.up, high)))
+    strength = (waves.weight * waves.factor / section.dks[high][:, None])[:, None, :]
+
+    def carried(layer: int, across: FloatArray, height: FloatArray) -> NumberArray:
+        k = waves.wavenumber[:, None, :]
+        at_foot = np.exp(-k * height[:, :, None])
+        at_top = np.exp(-k * (section.thicknesses[layer][:, None] - height)[:, :, None])
+        wave = at_top + back[:, None, :] * at_foot if layer == low else at_foot + up[:, None, :] * at_top
+        phase = k * across[:, :, None]
+        return np.concatenate([wave * np.cos(phase), wave * np.sin(phase)], axis=2)
+
+    at_nodes = [carried(layer, system.across, system.height) for layer, system in (lower, upper)]
+    sources = []
+    for (layer, system), same in zip((lower, upper), at_nodes, strict=True):
+        sent = sent_from(system, system.across.shape[1])
+        sources.append(same if sent.spread is None else sent.spread.T @ carried(layer, sent.across, sent.height))
+    twice = np.concatenate([strength, strength], axis=2)
+    downwards = -(at_nodes[0] * twice) @ sources[1].transpose(0, 2, 1)
+    if sources[0] is at_nodes[0] and sources[1] is at_nodes[1]:
+        return downwards, downwards.transpose(0, 2, 1)
+    return downwards, -(at_nodes[1] * twice) @ sources[0].transpose(0, 2, 1)
 
 
 def stack_below(section: LayeredSection, layer: int) -> FlatStack:

@@ -12,7 +12,7 @@ import numpy as np
 
 from tolerance.arrays import FloatArray, NumberArray
 from tolerance.sections.layered import LayeredSection
-from tolerance.solver.assembly import System
+from tolerance.solver.assembly import Sent, System, sent_from
 from tolerance.solver.gradient import Excited, gradient, shares_of_ends
 from tolerance.solver.layered import (
     LayeredPlan,
@@ -170,12 +170,14 @@ def _add_waves(
     section, waves = one.section, waves_between(one.section, plan, low, high)
     k = waves.wavenumber
     back, up = (factor * through(section, layer, k) for factor, layer in ((waves.back[low], low), (waves.up, high)))
-    taken = _Carriers(k, at_low, section.thicknesses[low], back, from_above=True)
-    sent = _Carriers(k, at_high, section.thicknesses[high], up, from_above=False)
+    (low_nodes, low_sent), (high_nodes, high_sent) = (
+        _carriers(k, system, section.thicknesses[layer], mirrored, from_above=from_above)
+        for layer, system, mirrored, from_above in ((low, at_low, back, True), (high, at_high, up, False)))
     strength = -waves.weight * waves.factor / section.dks[high][:, None]
     of_back, of_up, form = (np.zeros(k.shape, dtype=one.charges.dtype) for _ in range(3))
-    for rows, charges in ((one.adjoint[:, low_part], one.charges[:, high_part]),
-                          (one.charges[:, low_part], one.adjoint[:, high_part])):
+    for taken, sent, rows, charges in (
+            (low_nodes, high_sent, one.adjoint[:, low_part], high_sent.spread(one.charges[:, high_part])),
+            (low_sent, high_nodes, low_sent.spread(one.charges[:, low_part]), one.adjoint[:, high_part])):
         at_rows, at_charges = taken.sums(rows), sent.sums(charges)
         for way in (0, 1):  # cosine, sine
             form += at_rows[way] * at_charges[way]
@@ -183,31 +185,35 @@ def _add_waves(
             of_up += strength * at_rows[way] * at_charges[2 + way]
         for layer, carriers, weights, other in ((low, taken, rows, at_charges), (high, sent, charges, at_rows)):
             run, rise = carriers.slopes(weights, [strength * other[way] for way in (0, 1)])
-            shares = shares_of_ends([nodes.share for nodes in carriers.system.nodes])
-            edges = len(carriers.system.nodes)
-            faces[layer][:, 0] += (run @ shares)[:, :edges]
-            faces[layer][:, 2] += (run @ shares)[:, edges:]
-            faces[layer][:, 1] += (rise @ shares)[:, :edges]
-            faces[layer][:, 3] += (rise @ shares)[:, edges:]
+            edges = faces[layer].shape[2]
+            for axis, slope in enumerate((run @ carriers.shares, rise @ carriers.shares)):
+                faces[layer][:, axis] += slope[:, :edges]
+                faces[layer][:, 2 + axis] += slope[:, edges:]
             sums.add(layer, thickness=carriers.of_thickness(weights, [strength * other[way] for way in (0, 1)]))
     _add_way(sums, section, waves, (low, high), strength * form, of_back, of_up, filled=filled)
 
 
 class _Carriers:
-    """The waves between two layers at the nodes of one: (a + b c) times cosine or sine of k x.
+    """The waves between two layers at places in one: (a + b c) times cosine or sine of k x.
 
     a, b : of the lower layer exp(-k (thickness - y)) and exp(-k y), of the upper one the other way round.
     mirrored : c, what comes back from beyond (sections, k).
     """
 
     def __init__(
-        self, k: FloatArray, system: System, thickness: FloatArray, mirrored: NumberArray, *, from_above: bool,
+        self, k: FloatArray, places: Sent, shares: FloatArray, thickness: FloatArray, mirrored: NumberArray, *,
+        from_above: bool,
     ) -> None:
-        self.k, self.system, self.mirrored, self.from_above = k, system, mirrored[:, None, :], from_above
-        phase = k[:, None, :] * system.across[:, :, None]
+        self.k, self.shares, self.mirrored, self.from_above = k, shares, mirrored[:, None, :], from_above
+        self._spread = places.spread
+        phase = k[:, None, :] * places.across[:, :, None]
         self.cosine, self.sine = np.cos(phase), np.sin(phase)
-        self.at_foot = np.exp(-k[:, None, :] * system.height[:, :, None])
-        self.at_top = np.exp(-k[:, None, :] * (thickness[:, None] - system.height)[:, :, None])
+        self.at_foot = np.exp(-k[:, None, :] * places.height[:, :, None])
+        self.at_top = np.exp(-k[:, None, :] * (thickness[:, None] - places.height)[:, :, None])
+
+    def spread(self, charges: NumberArray) -> NumberArray:
+        """Charges at the places from those at the nodes."""
+        return charges if self._spread is None else charges @ self._spread.T
 
     @property
     def _parts(self) -> tuple[FloatArray, FloatArray]:
@@ -236,6 +242,19 @@ class _Carriers:
         for wave, one in ((self.cosine, other[0]), (self.sine, other[1])):
             total -= ((weights[:, None, :] @ (top * wave))[:, 0] * self.k * one).sum(axis=1)
         return np.asarray(np.real(total))
+
+
+def _carriers(
+    k: FloatArray, system: System, thickness: FloatArray, mirrored: NumberArray, *, from_above: bool,
+) -> tuple[_Carriers, _Carriers]:
+    """At the nodes, and where charges are seen from."""
+    sent = sent_from(system, system.across.shape[1])
+    at_nodes = _Carriers(k, Sent(system.across, system.height, None), shares_of_ends(
+        [nodes.share for nodes in system.nodes]), thickness, mirrored, from_above=from_above)
+    if sent.spread is None:
+        return at_nodes, at_nodes
+    shares = shares_of_ends([nodes.far_share for nodes in system.nodes])
+    return at_nodes, _Carriers(k, sent, shares, thickness, mirrored, from_above=from_above)
 
 
 def _add_way(

@@ -13,13 +13,20 @@ import numpy as np
 
 from tolerance.arrays import FloatArray
 from tolerance.sections.section import Section
-from tolerance.solver.edges import Edge
+from tolerance.solver.edges import Edge, NodeCounts
 from tolerance.solver.kernels import LAST_EXPONENT, image_multiples
 from tolerance.solver.structure import Structure, shortest_remaining_way, structure
 
 #: Unknowns per unit of length over distance: keeps centred strips within 2e-5 of Cohn 1954 at any width.
 NODES_ALONG_BROAD_FACE = 1.6
+#: Unknowns that are enough for any broad face.
+BROADEST = 24
 
+#: Longer edges, over the way to their neighbours, get no more places for it.
+LONGEST = 4000.0
+LONGEST_GROUND = 200.0
+#: More nodes over the wavenumber than this would only follow grounded copper far out, where nothing is left.
+MOST_WAVENUMBERS = 4000
 #: Nodes over the wavenumber for the current in planes under a narrow line.
 PLANE_WAVENUMBERS = 24
 
@@ -38,24 +45,24 @@ class SolverSettings:
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """Nodes (unknowns, quadrature places) by edge name, image places, and nodes over the wavenumber.
+    """Node counts by edge name, image places, and nodes over the wavenumber.
 
     plane_wavenumbers : those for the currents in the planes.
     """
 
-    counts: Mapping[str, tuple[int, int]]
+    counts: Mapping[str, NodeCounts]
     multiples: tuple[float, ...]
     wavenumbers: int
     plane_wavenumbers: int = 0
     settings: SolverSettings = field(default_factory=SolverSettings)
 
-    def count(self, edge: Edge) -> tuple[int, int]:
-        """Unknowns and quadrature places of `edge`, also of one that the nominal section does not have."""
+    def count(self, edge: Edge) -> NodeCounts:
+        """Node counts of `edge`, also of one that the nominal section does not have."""
         return self.counts.get(edge.name) or _counts(edge, 4.0, self.settings)
 
     def serving(self, other: Plan) -> Plan:
         """This plan with so many nodes on every edge that it serves sections of the other plan too."""
-        counts = {name: (max(own[0], more[0]), max(own[1], more[1]))
+        counts = {name: (max(own[0], more[0]), max(own[1], more[1]), max(own[2], more[2]))
                   for name, own in self.counts.items() for more in [other.counts.get(name, own)]}
         return replace(self, counts={**other.counts, **counts})
 
@@ -63,7 +70,7 @@ class Plan:
 def plan_for(section: Section, settings: SolverSettings | None = None) -> Plan:
     """The plan for a line whose nominal section is the first of `section`."""
     settings = settings or SolverSettings()
-    counts: dict[str, tuple[int, int]] = {}
+    counts: dict[str, NodeCounts] = {}
     multiples: tuple[float, ...] = ()
     wavenumbers, plane_wavenumbers = 0, 0
     for section_as in _as_drawn_and_across(section.rows(slice(0, 1))):
@@ -90,18 +97,26 @@ def _as_drawn_and_across(nominal: Section) -> list[Section]:
     return [nominal, replace(nominal, mask=replace(mask, on_laminate=level))]
 
 
-def _counts(edge: Edge, ratio: float, settings: SolverSettings, *, breadth: float = 0.0) -> tuple[int, int]:
-    """Unknowns and quadrature places for an edge `ratio` times as long as the way to its next neighbour.
+def _counts(edge: Edge, ratio: float, settings: SolverSettings, *, breadth: float = 0.0) -> NodeCounts:
+    """Node counts for an edge `ratio` times as long as the way to its next neighbour.
 
     breadth : length over the way to the next flat face. Along a broad face the charge is level but for its ends,
-    each as long as that way, and the polynomial needs nodes in proportion (seen against exact wide strips).
+    each as long as that way, and the quadrature needs places in proportion. So do the unknowns up to a limit:
+    beyond, they crowd at the ends closely enough, and images see the finer places. A long edge
+    along a near one needs places closer than their distance.
     """
     if edge.tail:
-        return settings.tail_nodes, (6 if edge.conducts else 3) * settings.tail_nodes
+        fine = (6 if edge.conducts else 3) * settings.tail_nodes
+        return settings.tail_nodes, fine, fine
     base = settings.copper_nodes if edge.conducts else settings.dielectric_nodes
     more = max(0.0, math.log2(ratio / 2.5)) if ratio > 0.0 else 0.0
-    unknowns = _even(max(base + 4.0 * more, NODES_ALONG_BROAD_FACE * breadth))
-    return unknowns, _even(max(2.0 * unknowns, 2.0 * ratio))
+    if edge.role == "ground":  # further out than this from its corner nothing is left
+        ratio, breadth = min(ratio, LONGEST_GROUND), min(breadth, LONGEST_GROUND)
+    along = NODES_ALONG_BROAD_FACE * breadth
+    unknowns = _even(max(base + 4.0 * more, min(along, BROADEST)))
+    far = _even(2.0 * along)
+    fine = _even(max(2.0 * unknowns, 2.0 * along, 2.0 * ratio, 6.0 * ratio - 150.0))
+    return unknowns, fine, far if far > 2 * unknowns else unknowns
 
 
 def _multiples(parts: Structure) -> tuple[float, ...]:
@@ -115,7 +130,8 @@ def _wavenumbers(parts: Structure) -> int:
     shortest = float(shortest_remaining_way(parts)[0])
     across = max(float(np.abs(end[0]).max()) for edge in parts.edges for end in (edge.start, edge.stop))
     depth = float(np.max([parts.below.depth + parts.above.depth]))
-    return math.ceil(16.0 + 0.5 * LAST_EXPONENT * 2.0 * across / shortest + 4.0 * math.sqrt(depth / shortest))
+    wanted = math.ceil(16.0 + 0.5 * LAST_EXPONENT * 2.0 * across / shortest + 4.0 * math.sqrt(depth / shortest))
+    return min(wanted, MOST_WAVENUMBERS)
 
 
 def _plane_wavenumbers(parts: Structure) -> int:
@@ -132,18 +148,21 @@ def _plane_wavenumbers(parts: Structure) -> int:
 
 def edge_counts(
     edges: Sequence[Edge], settings: SolverSettings, *, levels: Sequence[float], bases: Mapping[str, float],
-) -> dict[str, tuple[int, int]]:
+) -> dict[str, NodeCounts]:
     """Node counts of edges without mirror: their heights are counted from `bases` [m] by name.
 
-    levels : heights of the planes [m].
+    levels : heights of the planes [m]. Half-way to another trace there may be the like of a plane too.
     """
     outlines = [(edge, _points(edge) + np.array([0.0, bases[edge.name]])) for edge in edges]
     counts = {}
     for edge, points in outlines:
         length = float(edge.length[0])
         flat = min((float(np.abs(points[:, 1] - level).min()) for level in levels), default=np.inf)
-        ways = [flat] + [_way(points, there, float(other.length[0])) for other, there in outlines if other is not edge]
-        counts[edge.name] = _counts(edge, length / max(min(ways), 1e-3 * length), settings, breadth=length / flat)
+        beside = [_way(points, there, float(other.length[0])) for other, there in outlines if other is not edge]
+        partner = min((_way(points, there, 0.0) for other, there in outlines
+                       if other.name.split()[0] != edge.name.split()[0]), default=np.inf)
+        breadth = length / max(min(flat, 0.5 * partner), length / LONGEST)
+        counts[edge.name] = _counts(edge, length / max(min(flat, *beside), length / LONGEST), settings, breadth=breadth)
     return counts
 
 
@@ -166,7 +185,7 @@ def _crowding(parts: Structure) -> list[tuple[Edge, float, float]]:
         flat = min(ways, default=np.inf)
         ways += [_way(points, there, float(other.length[0])) for other, there in others
                  if other is not edge or there[0, 0] != points[0, 0]]
-        result.append((edge, length / max(min(ways), 1e-3 * length), length / max(flat, 1e-3 * length)))
+        result.append((edge, length / max(min(ways), length / LONGEST), length / max(flat, length / LONGEST)))
     return result
 
 

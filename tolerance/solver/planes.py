@@ -34,10 +34,9 @@ def sources_of(system: System, parts: Structure, charges: FloatArray) -> Sources
         stop = start + nodes.across.shape[1]
         if not nodes.edge.conducts:
             break
-        finer = nodes.edge.tail
-        across.append(nodes.fine_across if finer else nodes.across)
-        height.append(nodes.fine_height if finer else nodes.height)
-        weights.append(charges[:, start:stop] @ nodes.refine.T if finer else charges[:, start:stop])
+        across.append(nodes.places.far_across)
+        height.append(nodes.places.far_height)
+        weights.append(charges[:, start:stop] if nodes.spread is None else charges[:, start:stop] @ nodes.spread.T)
         start = stop
     heights = np.concatenate(height, axis=1)
     to_lower = heights + parts.below.depth[:, None] if parts.below.plane else None

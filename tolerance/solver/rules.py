@@ -9,6 +9,8 @@ Numerische Mathematik 58 (1990), pages 145-161.
 
 from __future__ import annotations
 
+import itertools
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
@@ -20,6 +22,8 @@ from tolerance.arrays import FloatArray, read_only
 
 #: Panels that halve towards a logarithmic singularity; the smallest is 2^-31 of the largest.
 HALVINGS = 32
+#: Nodes of a Gauss-Legendre rule from which on it is found by Newton's method.
+LONG_RULE = 200
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,15 +41,27 @@ class Rule:
 
 @lru_cache(maxsize=256)
 def legendre(count: int) -> tuple[FloatArray, FloatArray]:
-    """Nodes and weights of the Gauss-Legendre rule on -1..1: (count,)."""
-    nodes, weights = np.polynomial.legendre.leggauss(count)
-    return read_only(nodes), read_only(weights)
+    """Nodes and weights of the Gauss-Legendre rule on -1..1: (count,).
+
+    Long rules by Newton's method on the three-term recurrence: eigenvalues would cost the third power of the count.
+    """
+    if count <= LONG_RULE:
+        nodes, weights = np.polynomial.legendre.leggauss(count)
+        return read_only(nodes), read_only(weights)
+    nodes = -np.cos(np.pi * (np.arange(count) + 0.75) / (count + 0.5))  # Tricomi's first guess
+    for _ in range(4):
+        value, before = nodes.copy(), np.ones(count)
+        for degree in range(2, count + 1):
+            value, before = ((2 * degree - 1) * nodes * value - (degree - 1) * before) / degree, value
+        slope = count * (before - nodes * value) / (1.0 - nodes**2)
+        nodes = nodes - value / slope
+    return read_only(nodes), read_only(2.0 / ((1.0 - nodes**2) * slope**2))
 
 
 @lru_cache(maxsize=256)
 def graded_rule(count: int, power: int) -> Rule:
     """The rule with `count` nodes for an edge with a corner at both ends."""
-    nodes, weights = np.polynomial.legendre.leggauss(count)
+    nodes, weights = legendre(count)
     position, slope = _graded_map(nodes, power)
     return Rule(*(read_only(values) for values in (nodes, weights, position, slope)))
 
@@ -53,7 +69,7 @@ def graded_rule(count: int, power: int) -> Rule:
 @lru_cache(maxsize=256)
 def tail_rule(count: int) -> Rule:
     """The rule for an edge that runs from a corner to infinity: x = scale * position, position = u^2 / (1 - u)."""
-    nodes, weights = np.polynomial.legendre.leggauss(count)
+    nodes, weights = legendre(count)
     near, far = 0.5 * (1.0 + nodes), 0.5 * (1.0 - nodes)
     slope = near / far + 0.5 * near**2 / far**2
     return Rule(*(read_only(values) for values in (nodes, weights, near**2 / far, slope)))
@@ -62,7 +78,7 @@ def tail_rule(count: int) -> Rule:
 @lru_cache(maxsize=256)
 def ground_rule(count: int) -> Rule:
     """The rule for copper that reaches far out from a corner: x = scale * position, up to 50 scales."""
-    nodes, weights = np.polynomial.legendre.leggauss(count)
+    nodes, weights = legendre(count)
     return Rule(*(read_only(values) for values in (nodes, weights, *_ground_map(nodes))))
 
 
@@ -72,16 +88,16 @@ def refinement(count: int, fine_count: int) -> FloatArray:
 
     The density in s is the polynomial through the coarse nodes; the charge of a node is weight times density.
     """
-    nodes, weights = np.polynomial.legendre.leggauss(count)
-    fine_nodes, fine_weights = np.polynomial.legendre.leggauss(fine_count)
+    nodes, weights = legendre(count)
+    fine_nodes, fine_weights = legendre(fine_count)
     return read_only(fine_weights[:, None] * _interpolation(nodes, fine_nodes) / weights)
 
 
 @lru_cache(maxsize=64)
 def piece_charges(count: int, pieces: int) -> FloatArray:
     """Charges on pieces of equal length in s from charges at `count` nodes: shape (pieces, count)."""
-    nodes, weights = np.polynomial.legendre.leggauss(count)
-    places, shares = np.polynomial.legendre.leggauss(4 + count // 2)
+    nodes, weights = legendre(count)
+    places, shares = legendre(4 + count // 2)
     middle = (2.0 * np.arange(pieces) + 1.0) / pieces - 1.0
     values = _interpolation(nodes, (middle[:, None] + places / pieces).ravel())
     return read_only(shares @ values.reshape(pieces, places.size, count) / pieces / weights)
@@ -122,10 +138,9 @@ def ground_self_potential(count: int) -> FloatArray:
 
 def _self_potential(rule: Rule, position: Callable[[FloatArray], FloatArray], *, symmetric: bool) -> FloatArray:
     count = rule.nodes.size
-    panel_nodes, panel_weights = np.polynomial.legendre.leggauss(14 + count // 2)  # exact for the polynomials, and more
     matrix = np.empty((count, count))
     for row in range((count + 1) // 2 if symmetric else count):
-        distance, sign, weight = _halving_panels(float(rule.nodes[row]), panel_nodes, panel_weights)
+        distance, sign, weight = _halving_panels(float(rule.nodes[row]), count)
         place = rule.nodes[row] + sign * distance
         across = np.abs(position(place) - rule.position[row])
         across = np.where(distance < 1e-6, rule.slope[row] * distance, across)
@@ -135,15 +150,19 @@ def _self_potential(rule: Rule, position: Callable[[FloatArray], FloatArray], *,
     return read_only(matrix / rule.weights)
 
 
-def _halving_panels(node: float, nodes: FloatArray, weights: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Distances from `node`, their sides (-1 or 1) and weights of a rule refined towards it from both sides."""
+def _halving_panels(node: float, count: int) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Distances from `node`, their sides (-1 or 1) and weights of a rule refined towards it from both sides.
+
+    Exact on every panel for polynomials of `count` coefficients, and more: shorter panels see less of them.
+    """
     distances, signs, panel_weights = [], [], []
     for side in (-1.0, 1.0):
         ends = np.append(abs(side - node) * 0.5 ** np.arange(HALVINGS), 0.0)
-        middle, half = 0.5 * (ends[:-1] + ends[1:]), 0.5 * (ends[:-1] - ends[1:])
-        distances.append((middle[:, None] + half[:, None] * nodes).ravel())
-        panel_weights.append((half[:, None] * weights).ravel())
-        signs.append(np.full(distances[-1].shape, side))
+        for outer, inner in itertools.pairwise(ends):
+            nodes, weights = legendre(14 + math.ceil(0.5 * count * min(1.0, 2.0 * (outer - inner))))
+            distances.append(0.5 * (outer + inner) + 0.5 * (outer - inner) * nodes)
+            panel_weights.append(0.5 * (outer - inner) * weights)
+            signs.append(np.full(nodes.shape, side))
     return np.concatenate(distances), np.concatenate(signs), np.concatenate(panel_weights)
 
 
@@ -166,7 +185,7 @@ def _ground_map(nodes: FloatArray) -> tuple[FloatArray, FloatArray]:
 
 def _interpolation(nodes: FloatArray, places: FloatArray) -> FloatArray:
     """Values at `places` of the polynomials that are one at a node and nought at the others (barycentric form)."""
-    difference = nodes[:, None] - nodes
+    difference = 2.0 * (nodes[:, None] - nodes)  # in units that keep long products in range
     np.fill_diagonal(difference, 1.0)
     scale = 1.0 / np.prod(difference, axis=1)
     offset = places[:, None] - nodes

@@ -4,7 +4,9 @@ The estimators are SALib's: first order by Saltelli et al. 2010, total by Jansen
 (one Sobol' sequence over twice the variables gives the matrices A and B; A with one column of B gives the rest), laid
 out in whole arrays, because SALib writes its own cell by cell, and moved to the middle of the Sobol' cells, so that no
 normal draw is infinite. Intervals come from independent scrambles: a bootstrap over one such design is many times too
-wide. An estimate may come out slightly negative; it is shown as it is.
+wide. Of independent variables 0 <= first <= total <= 1 holds exactly, of estimates only within their errors: what
+is reported is held to it (the estimate of the total is the surer one), its interval is left as it is. A variable that
+moves nothing has indices of exactly 0.
 Sources: A. Saltelli et al., "Variance based sensitivity analysis of model output", Computer Physics Communications,
 volume 181, pages 259-270, 2010; M. J. W. Jansen, "Analysis of variance designs for model output", Computer Physics
 Communications, volume 117, pages 35-43, 1999; J. Herman and W. Usher, "SALib", Journal of Open Source Software,
@@ -20,11 +22,13 @@ import numpy as np
 from SALib.analyze.sobol import first_order, total_order
 
 from tolerance.arrays import FloatArray
-from tolerance.process.draws import sobol_normals
-from tolerance.statistics.estimates import Driver, interval_of
+from tolerance.process.draws import correlated_groups, sobol_normals
+from tolerance.statistics.estimates import Driver, Interval, interval_of
 
 REPLICATES = 8
 POINTS = 2048  # of each replicate: index errors of 0.0013 at most over ten designs of a ten-variable product
+
+MOVES_NOTHING = 1e-11  # of the mean: what a variable changes at most that changes nothing but the rounding
 
 
 @dataclass(frozen=True, slots=True)
@@ -76,8 +80,9 @@ def sobol_indices(
         centre, scale = np.mean(both), np.std(both)
         if scale <= 1e-12 * abs(centre):
             continue
+        moving = np.max(np.abs(mixed - base[:, np.newaxis]), axis=0) > MOVES_NOTHING * abs(centre)
         base, other, mixed = ((values - centre) / scale for values in (base, other, mixed))
-        for position in range(model.dimensions):
+        for position in np.flatnonzero(moving):
             first[replicate, position] = first_order(base, mixed[:, position], other)
             total[replicate, position] = total_order(base, mixed[:, position], other)
     return Indices(first, total)
@@ -103,12 +108,21 @@ def ranked(model: Model, first: FloatArray, total: FloatArray, shapley: FloatArr
 
     Equal ones stay in the order of the model.
     """
-    drivers = (
-        Driver(name, interval_of(first[:, position]), interval_of(total[:, position]),
-               None if shapley is None else interval_of(shapley[:, position]))
-        for position, name in enumerate(model.names)
-    )
+    independent = not correlated_groups(model.correlation)
+    drivers = []
+    for position, name in enumerate(model.names):
+        alone, whole = interval_of(first[:, position]), interval_of(total[:, position])
+        if independent:
+            whole = _held(whole, 1.0)
+            alone = _held(alone, whole.value)
+        drivers.append(Driver(name, alone, whole, None if shapley is None else interval_of(shapley[:, position])))
     return tuple(sorted(drivers, key=_share_that_ranks, reverse=True))
+
+
+def _held(estimate: Interval, most: float) -> Interval:
+    """The estimate held between 0 and `most`; its interval still spans it."""
+    value = min(max(estimate.value, 0.0), most)
+    return Interval(value, min(estimate.low, value), max(estimate.high, value))
 
 
 def _share_that_ranks(driver: Driver) -> float:

@@ -21,6 +21,8 @@ from tolerance.statistics.tails import Bundle, Failing, bundle, failing
 from tolerance.statistics.yields import Limits
 
 LINES = 64  # of each replicate
+MORE_LINES = 512  # where those leave the failing share unsure: a response that bends rather than rises
+UNSURE = 0.2  # half of the interval over the failing share
 STEPS = 12  # along a line
 HALF = 0.5
 STEP = 1e-3  # of a deviation or of its logarithm, and along a line, for derivatives
@@ -64,8 +66,7 @@ def levers_of(
     def unchanged(points: FloatArray) -> FloatArray:
         return response(points, None)
 
-    through = bundle(unchanged, len(names), chance=chance, lines=lines)
-    base = failing(unchanged, through, limits, steps=STEPS)
+    through, base = _failing_surely(unchanged, len(names), limits, chance, lines)
     fails, edge = through.by_replicate(base.below + base.above), _Edge.of(unchanged, through, base)
     gains, means, deviations = (np.empty((len(names), through.replicates)) for _ in range(3))
     for place, moved in enumerate(moments):
@@ -83,6 +84,20 @@ def levers_of(
         tuple(Lever(names[place], interval_of(gains[place]), interval_of(means[place]), interval_of(deviations[place]),
                     probability) for place, probability in zip(ranking, [*order, 1.0], strict=True)),
     )
+
+
+def _failing_surely(
+    unchanged: Callable[[FloatArray], FloatArray], dimensions: int, limits: Limits, chance: np.random.Generator,
+    lines: int,
+) -> tuple[Bundle, Failing]:
+    """A bundle and what fails along it: of more lines where those asked for say too little."""
+    for count in (lines, MORE_LINES):
+        through = bundle(unchanged, dimensions, chance=chance, lines=count)
+        base = failing(unchanged, through, limits, steps=STEPS)
+        fails = interval_of(through.by_replicate(base.below + base.above))
+        if fails.high - fails.low <= 2.0 * UNSURE * fails.value:
+            break
+    return through, base
 
 
 @dataclass(frozen=True, slots=True)

@@ -29,6 +29,7 @@ FARTHEST_MASS = float(ndtr(-FARTHEST))  # what lies beyond: 1e-19
 LOOKED_AT = 6.0  # deviations along a line within which it should rise throughout
 STEPS = 24  # between the ends of a line
 REFINEMENTS = 5  # of each crossing
+NEAR_ENOUGH = 1e-8  # of the limit: some 1e-6 of a share that fails
 
 Response = Callable[[FloatArray], FloatArray]  # independent standard normals (points, d) -> impedance [ohm] (points,)
 
@@ -93,12 +94,33 @@ def bundle(response: Response, dimensions: int, *, chance: np.random.Generator, 
     return Bundle(direction, places - np.outer(places @ direction, direction))
 
 
-def failing(response: Response, through: Bundle, limits: Limits, *, steps: int = STEPS) -> Failing:
-    """What fails along the lines of a bundle, at either limit. steps : in which crossings are looked for."""
+@dataclass(frozen=True, slots=True)
+class Profile:
+    """A response along the lines of a bundle: values [ohm] (lines, places) at the same places (places,) of each."""
+
+    response: Response
+    through: Bundle
+    grid: FloatArray
+    values: FloatArray
+
+
+def profile(response: Response, through: Bundle, *, steps: int = STEPS) -> Profile:
+    """The response along the lines. steps : in which crossings are looked for."""
     grid = np.linspace(-FARTHEST, FARTHEST, steps + 1)
     count = len(through.beside)
     numbers = np.repeat(np.arange(count), grid.size)
     values = response(through.points(numbers, np.tile(grid, count))).reshape(count, grid.size)
+    return Profile(response, through, grid, values)
+
+
+def failing(response: Response, through: Bundle, limits: Limits, *, steps: int = STEPS) -> Failing:
+    """What fails along the lines of a bundle, at either limit. steps : in which crossings are looked for."""
+    return failing_along(profile(response, through, steps=steps), limits)
+
+
+def failing_along(known: Profile, limits: Limits) -> Failing:
+    """What fails along lines whose profile is known, at either limit."""
+    response, through, grid, values = known.response, known.through, known.grid, known.values
     below, low = _beyond(response, through, grid, values, limits.low, sign=-1.0)
     above, high = _beyond(response, through, grid, values, limits.high, sign=1.0)
     return Failing(below, above, low, high,
@@ -143,7 +165,7 @@ def _root(
         right, at_right = place, value
         done = at_right == at_left
         at_left = np.where(done, at_left - np.finfo(float).tiny, at_left)
-        if np.all(np.abs(value) < 1e-14):
+        if np.all(np.abs(value) < NEAR_ENOUGH):
             break
     return place
 

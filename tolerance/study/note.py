@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from tolerance.decided import NotedLine, NoteResult
+from tolerance.noted import NotedLine, NoteResult
 from tolerance.scenario.tables import Line, Scenario
 from tolerance.solver.plan import SolverSettings
 from tolerance.study.lines import prepare

@@ -10,7 +10,17 @@ from tolerance.arrays import FloatArray
 from tolerance.process.draws import ProcessDraws
 from tolerance.results import Tail
 from tolerance.statistics.estimates import Interval, interval_of
-from tolerance.statistics.tails import FARTHEST_MASS, Bundle, Crossings, Failing, Response, bundle, failing
+from tolerance.statistics.tails import (
+    FARTHEST_MASS,
+    Bundle,
+    Crossings,
+    Failing,
+    Response,
+    bundle,
+    failing,
+    failing_along,
+    profile,
+)
 from tolerance.statistics.yields import Limits
 from tolerance.study.predicting import PredictedLine, Training
 from tolerance.surrogate.prediction import Predictor, fit_predictor
@@ -54,11 +64,11 @@ def tail_of(line: PredictedLine, *, chance: np.random.Generator) -> Tail:
     found = failing(response_of(line.predictor), through, limits)
     learnt = _solve_where_it_fails(line, line.predictor, through, found, first_chance)
     predictor = _refitted(line.predictor, line.training, learnt)
-    found = failing(response_of(predictor), through, limits)
+    along = profile(response_of(predictor), through)
+    found = failing_along(along, limits)
     checked = _solve_where_it_fails(line, predictor, through, found, second_chance)
     error = float(np.sqrt(np.mean(checked.difference**2))) if checked.difference.size else 0.0
-    wide, close = (failing(response_of(predictor), through, Limits(limits.low - side * error,
-                                                                   limits.high + side * error))
+    wide, close = (failing_along(along, Limits(limits.low - side * error, limits.high + side * error))
                    for side in (1.0, -1.0))
     return Tail(
         below=_share(through, found.below, wide.below, close.below),

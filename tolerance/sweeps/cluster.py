@@ -69,7 +69,8 @@ def _client(address: str) -> Client:
         from distributed import Client
     except ImportError:
         raise InputError("--scheduler: needs the extra `cluster`: pip install 'tolerance[cluster]'") from None
-    logging.getLogger("distributed").setLevel(logging.CRITICAL)  # what matters is told by us
+    for name in ("distributed", *(one for one in logging.root.manager.loggerDict if one.startswith("distributed."))):
+        logging.getLogger(name).setLevel(logging.CRITICAL)  # what matters is told by us
     try:
         client = Client(address, timeout=SECONDS_TO_ANSWER, set_as_default=False)
     except (OSError, ValueError) as problem:

@@ -13,10 +13,8 @@ from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, wai
 from concurrent.futures.process import BrokenProcessPool
 from contextlib import contextmanager
 from multiprocessing.connection import Connection
-from multiprocessing.connection import wait as wait_for
 from multiprocessing.context import BaseContext
 from types import ModuleType
-from typing import Any
 
 from tolerance.sweeps.work import Outcome, Task, do
 
@@ -117,13 +115,11 @@ def _context() -> BaseContext:
 
 
 def _begin(told_to_end: Connection) -> None:
-    """In a worker: leave the keyboard to the process that commands, and end when it says so or is gone."""
+    """In a worker: leave the keyboard to the process that commands, and end when that closes its end or is gone."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    parent = multiprocessing.parent_process()
-    watched: list[Any] = [told_to_end] if parent is None else [told_to_end, parent.sentinel]
 
     def watch() -> None:
-        wait_for(watched)
+        told_to_end.poll(None)
         os._exit(1)
 
     threading.Thread(target=watch, daemon=True).start()

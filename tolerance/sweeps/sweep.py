@@ -48,23 +48,23 @@ def sweep(
     """
     plan = _plan(paths, allow)
     kept, rows = KeptRows(Path(folder)), _Rows(plan, on_progress or silent, on_row)
-    chosen = kept.seed() if seed is None else seed
     keys: dict[str, list[int]] = {}
 
     def tasks() -> Iterator[Task]:
         """What is not finished; what is, or cannot be read, becomes a row on the way."""
-        here = program()
+        here, drawn = program(), None
         for number, planned in enumerate(plan):
             try:
                 scenario = None if planned.swept is None else planned.swept.scenario()
             except ToleranceError as problem:
-                rows.done(number, Outcome(None, str(problem)))
+                rows.done(number, Outcome(None, str(problem), bad_input=True))
                 continue
             if scenario is None:
-                rows.done(number, Outcome(None, planned.message))
+                rows.done(number, Outcome(None, planned.message, bad_input=True))
                 continue
-            own = scenario.evaluation.seed
-            of_row = chosen if seed is not None or own is None else own
+            drawn = kept.seed() if drawn is None else drawn  # nothing is written where every input is bad
+            own = drawn if scenario.evaluation.seed is None else scenario.evaluation.seed
+            of_row = own if seed is None else seed
             key = key_of(scenario, seed=of_row, coupons=coupons, program=here)
             found = kept.find(key)
             if found is not None:

@@ -38,15 +38,19 @@ class Outcome:
     """What came of a task: a result, or a message why there is none.
 
     lasting : the same would come of it again; what is not lasting is tried anew by the next sweep.
-    trace : where a defect of the program arose.  from_cache (solver runs), seconds, worker : for the log only.
+    bad_input : the scenario could not be read, and nothing was computed.
+    trace : where a defect of the program arose.  from_cache (solver runs), seconds, of_processor [s], worker : for
+    the log only.
     """
 
     result: Mapping[str, Any] | None
     message: str = ""
     lasting: bool = True
+    bad_input: bool = False
     trace: str = ""
     from_cache: int = 0
     seconds: float = 0.0
+    of_processor: float = 0.0
     worker: str = ""
 
 
@@ -57,7 +61,7 @@ def program() -> dict[str, str]:
 
 def do(task: Task) -> Outcome:
     """Run the study of a task; whatever goes wrong with it is its outcome."""
-    here, start = program(), time.perf_counter()
+    here, start, processor_start = program(), time.perf_counter(), time.thread_time()
     if here != task.program:
         return Outcome(None, _differences(task.program, here), lasting=False)
     try:
@@ -70,6 +74,7 @@ def do(task: Task) -> Outcome:
         told = f"{type(defect).__name__}: {defect}".splitlines()[0]
         return Outcome(None, f"a defect of the program: {told}", lasting=False, trace=traceback.format_exc())
     return Outcome(run_object(found), from_cache=found.record.from_cache, seconds=time.perf_counter() - start,
+                   of_processor=time.thread_time() - processor_start,
                    worker=f"process {os.getpid()} on {platform.node()}")
 
 
