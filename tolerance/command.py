@@ -30,7 +30,7 @@ from tolerance.screen import (
     tell_from_cache,
     tell_problem,
 )
-from tolerance.talk_commands import add_talk
+from tolerance.talk_commands import add_talk, check_numbers
 
 if TYPE_CHECKING:
     from tolerance.report.figures import FigureFormat
@@ -236,19 +236,10 @@ def _run(options: argparse.Namespace) -> int:
 
 
 def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
-    """The same ranges as in a scenario; whole lots need no power of two of coupons. Raises InputError."""
-    from tolerance.scenario.tables import LARGEST_COUPONS, SMALLEST_COUPONS
-
-    coupons, seed, direct = options.coupons, options.seed, options.direct
-    if in_lots and coupons is not None:
-        if not 1 <= coupons <= LARGEST_COUPONS:
-            raise InputError(f"--coupons {coupons}: must be from 1 to {LARGEST_COUPONS}")
-    elif coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
-        raise InputError(f"--coupons {coupons}: must be a power of two from {SMALLEST_COUPONS} to {LARGEST_COUPONS}")
-    if seed is not None and seed < 0:
-        raise InputError(f"--seed {seed}: must be 0 or more")
-    if direct < 0:
-        raise InputError(f"--direct {direct}: must be 0 or more")
+    """The same ranges as in a scenario. Raises InputError."""
+    check_numbers(options, in_lots=in_lots)
+    if options.direct < 0:
+        raise InputError(f"--direct {options.direct}: must be 0 or more")
 
 
 def _write_files(
