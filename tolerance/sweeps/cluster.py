@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import ctypes
 import logging
+import sys
 import uuid
 from collections.abc import Iterable, Iterator
 from typing import TYPE_CHECKING, Any
@@ -17,6 +19,7 @@ AHEAD = 3  # tasks for each thread of a worker that the scheduler has, so that n
 FEWEST_AHEAD = 32
 SECONDS_TO_ANSWER = 10
 SECONDS_TO_JOIN = 60
+_HANDED_BACK_ABOVE, _FROM_THE_SYSTEM_ABOVE = -1, -3  # parameters of mallopt (malloc.h): bytes
 
 
 def by_cluster(tasks: Iterable[Task], address: str) -> Iterator[tuple[Task, Outcome]]:
@@ -32,6 +35,16 @@ def by_cluster(tasks: Iterable[Task], address: str) -> Iterator[tuple[Task, Outc
         client.close(timeout=1)
 
 
+def do_there(task: Task) -> Outcome:
+    """As `do`, in a worker of Dask, which tells the C library to hand memory back early: a study takes half as long
+    again by that. Told otherwise here, where the library is one that can be told so."""
+    mallopt = getattr(ctypes.CDLL(None), "mallopt", None) if sys.platform == "linux" else None
+    if mallopt is not None:
+        mallopt(ctypes.c_int(_FROM_THE_SYSTEM_ABOVE), ctypes.c_int(32 << 20))
+        mallopt(ctypes.c_int(_HANDED_BACK_ABOVE), ctypes.c_int(256 << 20))
+    return do(task)
+
+
 def _done(client: Client, tasks: Iterable[Task], address: str) -> Iterator[tuple[Task, Outcome]]:
     from distributed import as_completed
     from distributed.scheduler import KilledWorker
@@ -45,7 +58,7 @@ def _done(client: Client, tasks: Iterable[Task], address: str) -> Iterator[tuple
         task = next(coming, None)
         if task is None:
             return False
-        future = client.submit(do, task, key=f"tolerance-{name}-{task.key}", pure=False)
+        future = client.submit(do_there, task, key=f"tolerance-{name}-{task.key}", pure=False)
         out[future.key] = task
         finished.add(future)
         return True
