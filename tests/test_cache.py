@@ -312,6 +312,14 @@ def test_where_the_users_cache_is(tmp_path: Path, monkeypatch: pytest.MonkeyPatc
         assert found.cache.folder.parent.parent == tmp_path
 
 
+def test_a_user_without_a_home_has_no_cache(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.delenv(solved.FOLDER_VARIABLE)
+    monkeypatch.setattr("platformdirs.user_cache_path", lambda *_, **__: Path("~") / ".cache" / "tolerance")
+    monkeypatch.chdir(tmp_path)
+    assert user_cache() is None
+    assert list(tmp_path.iterdir()) == []
+
+
 @pytest.fixture
 def board(tmp_path: Path) -> Path:
     path = tmp_path / "board.toml"

@@ -289,3 +289,17 @@ def test_what_is_asked_rests_on_the_run_itself() -> None:
     assert [line.tail for line in found.lines] == [line.tail for line in known.lines]
     assert all(line.levers is None and line.groups == () for line in found.lines), "nobody asks for them here"
     assert all(line.levers is not None and line.groups for line in known.lines)
+
+
+def test_whole_lots_need_no_power_of_two_of_coupons(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    path = tmp_path / "orchard.toml"
+    path.write_text(TEXT.replace('of = "P1.thickness"', 'of = "P1.thickness"\nlevel = "lot"'), encoding="utf-8")
+    for command, status in (("ask", 0), ("run", 0)):
+        with pytest.raises(SystemExit) as ended:
+            main([command, str(path), "--coupons", "1000", "--json"])
+        assert ended.value.code == status
+    path.write_text(TEXT, encoding="utf-8")
+    with pytest.raises(SystemExit) as ended:
+        main(["ask", str(path), "--coupons", "1000", "--json"])
+    assert ended.value.code == 2
+    assert "must be a power of two" in capsys.readouterr().err

@@ -258,6 +258,14 @@ def test_the_run_record_keeps_what_remakes_the_run(tmp_path: Path) -> None:
     assert values["version: numpy"] == "2.4.0"
 
 
+@pytest.mark.parametrize("seed", [10**15, 10**15 + 1, 99999999999999999999999999, 10**3999])
+def test_a_seed_of_many_digits_keeps_them_all(tmp_path: Path, seed: int) -> None:
+    """A cell holds 15 digits as a number; what has more stands there as text."""
+    book = load_workbook(written(tmp_path, replace(made_up_result(), seed=seed)))
+    values = {row[0]: row[1] for row in book["Run record"].iter_rows(values_only=True)}
+    assert str(values["seed"]) == str(seed)
+
+
 def test_no_row_is_cut_off_and_none_stands_open_for_nothing(tmp_path: Path) -> None:
     """A default row is 15 points high; a text goes on in as many rows as its column makes it need."""
     name = "differential camera link from the front connector to the image processor, channel 12"

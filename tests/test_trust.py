@@ -134,6 +134,19 @@ def test_a_scenario_may_extend_one_that_stands_anywhere(path: str, folders: Path
     assert load(written(folders, path.format(there=folders) + ".toml")).title == "Orchard gateway"
 
 
+def test_nothing_is_told_of_what_stands_elsewhere_and_is_no_scenario(folders: Path) -> None:
+    (folders / "base.toml").write_text('[registry]\ntoken = "secret"\n', encoding="utf-8")
+    (folders / "library" / "base.toml").write_text('token = "secret"\n', encoding="utf-8")
+    for path in ("../base.toml", "../library/base.toml", "away/base.toml", "out.toml", str(folders / "base.toml")):
+        scenario = written(folders, path)
+        with pytest.raises(ScenarioError, match=r"^board.toml: extends = .*: must be a scenario; ") as told:
+            load(scenario)
+        assert "secret" not in str(told.value)
+        assert "token" not in str(told.value)
+        with pytest.raises(ScenarioError, match=r"unknown (key|table)"):
+            load(scenario, allow=[folders])
+
+
 def test_a_base_names_tables_beside_itself_and_beside_the_scenario(folders: Path) -> None:
     (folders / "library" / "base.toml").write_text(MEASURED.replace("FILE", "press.csv"), encoding="utf-8")
     assert load(written(folders, "../library/base.toml")).title == "Orchard gateway"

@@ -17,6 +17,7 @@ from tolerance.decision_commands import add_decisions
 from tolerance.errors import InputError, ToleranceError, on_one_line
 from tolerance.logbook import Logbook
 from tolerance.many_commands import add_many
+from tolerance.page_command import add_page, write_the_page
 from tolerance.screen import (
     Parser,
     add_allow,
@@ -29,7 +30,7 @@ from tolerance.screen import (
     tell_from_cache,
     tell_problem,
 )
-from tolerance.talk_commands import add_talk
+from tolerance.talk_commands import add_talk, check_numbers
 
 if TYPE_CHECKING:
     from tolerance.report.figures import FigureFormat
@@ -40,7 +41,7 @@ if TYPE_CHECKING:
 MISSED_TARGET = 1
 UNFINISHED = 3
 INTERRUPTED = 130
-LOGGED = ("run", "sweep", "again", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
+LOGGED = ("run", "page", "sweep", "again", "tighten", "center", "promise", "compare", "ask", "take", "reconcile")
 
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
@@ -97,6 +98,7 @@ def _parser() -> argparse.ArgumentParser:
     check.set_defaults(command=_check)
     add_decisions(commands, _check_numbers)
     _add_fit(commands.add_parser("fit", help="what a table of readings says, and a variation to paste"))
+    add_page(commands, _check_numbers)
     add_talk(commands)
     add_many(commands)
     new = commands.add_parser("new", help="write a commented starter scenario that runs as it is")
@@ -121,6 +123,7 @@ def _add_run(run: argparse.ArgumentParser) -> None:
     run.add_argument("--json", action="store_true",
                      help="the result as one JSON object on standard output; no files unless --out is given")
     run.add_argument("--figures", choices=("png", "svg", "pdf"), default="png", help="format of the figures")
+    run.add_argument("--page", action="store_true", help="also write page.html, which can be moved: see `page`")
     run.add_argument("--seed", type=int, metavar="N", help="instead of the scenario's")
     run.add_argument("--coupons", type=int, metavar="N", help="instead of the scenario's: a power of two")
     run.add_argument("--direct", type=int, default=0, metavar="N",
@@ -201,6 +204,8 @@ def _run(options: argparse.Namespace) -> int:
     check_folder(options.out)
     scenario = load(options.file, allow=options.allow)
     _check_numbers(options, in_lots=scenario.has_levels)
+    if options.page and options.json and options.out is None:
+        raise InputError("--page: with --json only where --out says where it goes")
     entered = entered_files(options.file, allow=options.allow)
     from tolerance.study.run import run
 
@@ -211,7 +216,10 @@ def _run(options: argparse.Namespace) -> int:
         options.logbook.run(result)
         folder = options.out or (None if options.json else Path("out") / options.file.stem)
         record = partial(_write_record, result, scenario, entered, direct=options.direct)
-        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell, record)
+        more = [record]
+        if options.page:
+            more.append(partial(write_the_page, scenario, result, tell=tell, cache=cache))
+        written = [] if folder is None else _write_files(result, scenario, folder, options.figures, tell, more)
     if options.json:
         from tolerance.report.json_text import run_json
 
@@ -228,24 +236,15 @@ def _run(options: argparse.Namespace) -> int:
 
 
 def _check_numbers(options: argparse.Namespace, *, in_lots: bool) -> None:
-    """The same ranges as in a scenario; whole lots need no power of two of coupons. Raises InputError."""
-    from tolerance.scenario.tables import LARGEST_COUPONS, SMALLEST_COUPONS
-
-    coupons, seed, direct = options.coupons, options.seed, options.direct
-    if in_lots and coupons is not None:
-        if not 1 <= coupons <= LARGEST_COUPONS:
-            raise InputError(f"--coupons {coupons}: must be from 1 to {LARGEST_COUPONS}")
-    elif coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
-        raise InputError(f"--coupons {coupons}: must be a power of two from {SMALLEST_COUPONS} to {LARGEST_COUPONS}")
-    if seed is not None and seed < 0:
-        raise InputError(f"--seed {seed}: must be 0 or more")
-    if direct < 0:
-        raise InputError(f"--direct {direct}: must be 0 or more")
+    """The same ranges as in a scenario. Raises InputError."""
+    check_numbers(options, in_lots=in_lots)
+    if options.direct < 0:
+        raise InputError(f"--direct {options.direct}: must be 0 or more")
 
 
 def _write_files(
     result: RunResult, scenario: Scenario, folder: Path, figure_format: FigureFormat,
-    tell: Callable[[str, int, int], None], record: Callable[[Path], Path],
+    tell: Callable[[str, int, int], None], more: Sequence[Callable[[Path], Path]],
 ) -> list[Path]:
     from tolerance.cores import on_all_cores
     from tolerance.report.figures import page_jobs, run_pages
@@ -261,7 +260,7 @@ def _write_files(
     except BaseException:
         remove_left_over(folder)
         raise
-    written.append(record(folder))
+    written += [write(folder) for write in more]
     remove_earlier(folder, written, job="run")
     return written
 

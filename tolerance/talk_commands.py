@@ -56,7 +56,7 @@ def _ask(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
     scenario = load(options.file, allow=options.allow)
-    check_numbers(options)
+    check_numbers(options, in_lots=scenario.has_levels)
     out = options.out or (None if options.json else Path(f"{options.file.stem}-ask.xlsx"))
     _must_be_new(out, ".xlsx")
     from tolerance.report.request import write_request
@@ -83,7 +83,7 @@ def _take(options: argparse.Namespace) -> int:
     from tolerance.scenario import load
 
     scenario = load(options.file, allow=options.allow)
-    check_numbers(options)
+    check_numbers(options, in_lots=scenario.has_levels)
     from tolerance.study.exchange import answered_path, take
 
     stands = options.out or answered_path(options.file)
@@ -113,7 +113,7 @@ def _reconcile(options: argparse.Namespace) -> int:
 
     check_folder(options.out)
     scenario = load(options.file, allow=options.allow)
-    check_numbers(options)
+    check_numbers(options, in_lots=scenario.has_levels)
     repeatability = _resistance(options.repeatability)
     from tolerance.study.reconcile import reconcile
 
@@ -174,12 +174,15 @@ def _must_be_new(path: Path | None, ending: str) -> None:
         raise InputError(f"{path}: is there already and is left alone; name another file with --out")
 
 
-def check_numbers(options: argparse.Namespace) -> None:
-    """The same ranges as in a scenario. Raises InputError."""
+def check_numbers(options: argparse.Namespace, *, in_lots: bool = False) -> None:
+    """The same ranges as in a scenario; whole lots need no power of two of coupons. Raises InputError."""
     from tolerance.scenario.tables import LARGEST_COUPONS, SMALLEST_COUPONS
 
     coupons, seed = options.coupons, options.seed
-    if coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
+    if in_lots and coupons is not None:
+        if not 1 <= coupons <= LARGEST_COUPONS:
+            raise InputError(f"--coupons {coupons}: must be from 1 to {LARGEST_COUPONS}")
+    elif coupons is not None and not (SMALLEST_COUPONS <= coupons <= LARGEST_COUPONS and coupons & (coupons - 1) == 0):
         raise InputError(f"--coupons {coupons}: must be a power of two from {SMALLEST_COUPONS} to {LARGEST_COUPONS}")
     if seed is not None and seed < 0:
         raise InputError(f"--seed {seed}: must be 0 or more")

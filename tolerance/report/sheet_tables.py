@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from openpyxl.worksheet.worksheet import Worksheet
 
 INK, HEAD_FILL, HAIRLINE = "1D2433", "DBE3EC", "B4BAC8"
+LARGEST_EXACT = 10**15  # a cell holds 15 digits
 LIKE_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 NARROWEST, WIDEST = 9, 58  # letters, of a column; the filter button takes some
 PAGE = 240.0  # letters across a printed page at most; a wider table goes on on further ones
@@ -68,6 +69,8 @@ def number_format(column: Column) -> str:
 def put(sheet: Worksheet, row: int, column: int, value: Cell) -> SheetCell:
     """Write one cell. Text stays text, also where it begins like a formula."""
     cell = sheet.cell(row=row, column=column)
+    if isinstance(value, int) and abs(value) > LARGEST_EXACT:
+        value = str(value)  # all of its digits
     assert isinstance(cell, SheetCell)
     if isinstance(value, str):
         cell.value = clean_text(value)

@@ -189,5 +189,3 @@ def _record_sheet(sheet: Worksheet, result: RunResult) -> None:
 def _pieces(line: str) -> list[str]:
     """A line of text in pieces that a cell takes."""
     return [line[start:start + LONGEST_TEXT] for start in range(0, max(len(line), 1), LONGEST_TEXT)]
-
-

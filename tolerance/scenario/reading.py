@@ -16,6 +16,8 @@ from tolerance.scenario.toml_text import MOST_ITEMS, read_toml
 from tolerance.scenario.trust import Trust
 
 _LARGEST = 500_000  # bytes, with all it extends; a scenario is a short text
+_NO_SCENARIO = ("must be a scenario; what stands there has tables or keys of its own, and nothing is told of it "
+                "(to be told, allow its folder: --allow DIR)")
 _LONGEST_CHAIN = 20  # scenarios that extend each other
 _NOT_TEXT = ((b"PK\x03\x04", "is a workbook or an archive"), (b"\xd0\xcf\x11\xe0", "is an office document"),
              (b"%PDF", "is a PDF"), (b"\x89PNG", "is a picture"), (b"\x1f\x8b", "is an archive"))
@@ -45,7 +47,10 @@ def document_of(
     findings: list[Finding] = []
     place = Place(depth=0, line=0, number=0, file=name, folder=folder, trust=Trust.around(folder, allow))
     while True:
+        before = len(findings)
         document = _parsed(content, place, findings)
+        if chain and len(findings) > before and place.trust.why_not(folder, place.file):
+            raise _refused(chain[-1], _NO_SCENARIO, findings[:before])
         chain.append(document)
         findings += _format_findings(document)
         if "extends" not in document.top.values:

@@ -39,6 +39,19 @@ class Dimensions:
 
         Where a line is evaluated at a frequency the ratios hold its loss tangents too.
         """
+        lengths, dks, plain = self.rows(section)
+        split = len(lengths)
+        result = np.empty((split + len(dks) + len(plain), section.count))
+        np.log(np.maximum(lengths, SMALLEST_LENGTH), out=result[:split])
+        np.log(np.maximum(dks, SMALLEST_DK), out=result[split : split + len(dks)])
+        if self.scale_free:
+            result[:split] -= np.mean(result[:split], axis=0)
+        for row, ratio in enumerate(plain, start=split + len(dks)):
+            result[row] = ratio
+        return result
+
+    def rows(self, section: Section | LayeredSection) -> tuple[list[FloatArray], list[FloatArray], list[FloatArray]]:
+        """What the logarithms are of, each (sections,): lengths [m], Dk, and ratios and loss tangents as they stand."""
         lengths, dks, dfs = list(_copper_lengths(section)), [], []
         for side, runs in zip(_sides(section), self.sides, strict=True):
             for run in runs:
@@ -52,15 +65,7 @@ class Dimensions:
             dfs += [] if section.mask.df is None else [DF_SCALE * section.mask.df]
         if isinstance(section, Section) and section.band_dk is not None:
             dks.append(section.band_dk)
-        split, ratios = len(lengths), [*_ratios(section), *dfs]
-        result = np.empty((split + len(dks) + len(ratios), section.count))
-        np.log(np.maximum(lengths, SMALLEST_LENGTH), out=result[:split])
-        np.log(np.maximum(dks, SMALLEST_DK), out=result[split : split + len(dks)])
-        if self.scale_free:
-            result[:split] -= np.mean(result[:split], axis=0)
-        for row, ratio in enumerate(ratios, start=split + len(dks)):
-            result[row] = ratio
-        return result
+        return lengths, dks, [*_ratios(section), *dfs]
 
 
 def dimensions_like(section: Section | LayeredSection, *, scale_free: bool = True) -> Dimensions:

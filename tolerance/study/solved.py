@@ -72,13 +72,16 @@ class SolvedLine:
 def user_cache(*, fresh: bool = False) -> SolvedCache | None:
     """The cache of the command line: in the user's cache folder, or where TOLERANCE_CACHE says.
 
-    fresh : what is there is not read, and made anew.  None where TOLERANCE_CACHE is set to nothing.
+    fresh : what is there is not read, and made anew.  None where TOLERANCE_CACHE is set to nothing, or where this user
+    has no folder for such things.
     """
     named = os.environ.get(FOLDER_VARIABLE)
     if named is None:
         from platformdirs import user_cache_path
 
         folder = user_cache_path("tolerance", appauthor=False) / "solved-sections"
+        if not folder.is_absolute():  # a user without a home
+            return None
     elif named:
         folder = Path(named)
     else:
