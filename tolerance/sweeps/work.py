@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import platform
+import threading
 import time
 import traceback
 from collections.abc import Mapping
@@ -16,6 +17,9 @@ from tolerance.scenario.tables import Scenario
 from tolerance.study.run import run
 from tolerance.study.solved import user_cache
 from tolerance.study.versions import program_digest, versions
+
+#: A worker with several threads would have them undo each other's limits of linear algebra.
+_ONE_AT_A_TIME = threading.Lock()
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,7 +69,8 @@ def do(task: Task) -> Outcome:
     if here != task.program:
         return Outcome(None, _differences(task.program, here), lasting=False)
     try:
-        found = run(task.scenario, seed=task.seed, coupons=task.coupons, cache=user_cache(fresh=task.fresh))
+        with _ONE_AT_A_TIME:
+            found = run(task.scenario, seed=task.seed, coupons=task.coupons, cache=user_cache(fresh=task.fresh))
     except ToleranceError as problem:
         return Outcome(None, str(problem))
     except MemoryError:
