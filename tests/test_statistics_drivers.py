@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -173,6 +174,17 @@ def test_drivers_of_a_predicted_line_are_the_closed_form_ones() -> None:
         assert driver.total.value == pytest.approx(exact[NAMES.index(driver.variable)], abs=0.003)
         assert driver.total.low < driver.total.value < driver.total.high
         assert driver.shapley is None
+
+
+def test_the_shorter_way_to_swapped_columns_gives_the_same_values() -> None:
+    known = process(*(variable(name, 4.0, shape="uniform", tolerance=0.1) for name in NAMES),
+                    variable("P9.dk", 4.0, tolerance=0.5))
+    model = model_of(power_law_predictor(known))
+    assert model.swapped is not None
+    short, long = (saltelli_values(one, points=16384, chance=np.random.default_rng(4))
+                   for one in (model, replace(model, swapped=None)))
+    for one, other in zip(short, long, strict=True):
+        assert np.array_equal(one, other)
 
 
 def test_indices_keep_the_order_that_holds_exactly() -> None:

@@ -38,12 +38,15 @@ class Model:
     coordinate : (position, germ (points,)) -> coordinate (points,) of that variable.
     response : coordinates (points, dimensions) -> values (points,).
     correlation : of the germs, (dimensions, dimensions).
+    swapped : where the model has a shorter way for it: (germ, other), both (points, dimensions) -> responses at the
+        one, at the other, and at the one with each column in turn from the other, (2 + dimensions, points).
     """
 
     names: tuple[str, ...]
     coordinate: Callable[[int, FloatArray], FloatArray]
     response: Callable[[FloatArray], FloatArray]
     correlation: FloatArray
+    swapped: Callable[[FloatArray, FloatArray], FloatArray] | None = None
 
     @property
     def dimensions(self) -> int:
@@ -93,6 +96,9 @@ def saltelli_values(
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Values of the response at A (points,), at B (points,), and at A with column i of B: (points, dimensions)."""
     germ = sobol_normals(2 * model.dimensions, points, chance)
+    if model.swapped is not None:
+        values = model.swapped(germ[:, : model.dimensions], germ[:, model.dimensions :])
+        return values[0], values[1], values[2:].T
     base = model.coordinates(germ[:, : model.dimensions])
     other = model.coordinates(germ[:, model.dimensions :])
     mixed = np.empty((points, model.dimensions))

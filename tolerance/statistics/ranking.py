@@ -14,7 +14,8 @@ from tolerance.surrogate.prediction import Predictor
 
 def model_of(predictor: Predictor) -> Model:
     """The predicted impedance [ohm] of one line, as a response of the variables that reach it."""
-    return Model(predictor.names, lambda _, germ: germ, predictor.impedance_at, predictor.correlation)
+    return Model(predictor.names, lambda _, germ: germ, predictor.impedance_at, predictor.correlation,
+                 swapped=predictor.impedance_swapped)
 
 
 def rank_drivers(model: Model, *, chance: np.random.Generator, with_shapley: bool) -> tuple[Driver, ...]:

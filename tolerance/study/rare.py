@@ -26,6 +26,7 @@ from tolerance.study.predicting import PredictedLine, Training
 from tolerance.surrogate.prediction import Predictor, fit_predictor
 
 RARE = 1e-4  # share of failing coupons below which the sample says too little
+FIRST_STEPS = 12  # between the ends of a line, where only places to solve are looked for
 POINTS = 12  # solved at each limit, first for the fit and then for the check
 COUNTS = 1e-3  # share of all failures that a limit must have for points to be spent on it
 
@@ -61,7 +62,7 @@ def tail_of(line: PredictedLine, *, chance: np.random.Generator) -> Tail:
     limits = Limits(line.prepared.low_limit, line.prepared.high_limit)
     bundle_chance, first_chance, second_chance = chance.spawn(3)
     through = bundle(response_of(line.predictor), len(line.predictor.names), chance=bundle_chance)
-    found = failing(response_of(line.predictor), through, limits)
+    found = failing(response_of(line.predictor), through, limits, steps=FIRST_STEPS)
     learnt = _solve_where_it_fails(line, line.predictor, through, found, first_chance)
     predictor = _refitted(line.predictor, line.training, learnt)
     along = profile(response_of(predictor), through)

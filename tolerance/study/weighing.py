@@ -21,6 +21,8 @@ from tolerance.statistics.yields import Limits
 from tolerance.study.predicting import PredictedLine
 from tolerance.study.rare import is_rare, tail_of
 
+GROUP_POINTS = 1024  # of each replicate
+
 
 @dataclass(frozen=True, slots=True)
 class Weights:
@@ -82,7 +84,7 @@ def _groups(
             found[layer.name, "layer"] = moving
             found.setdefault((layer.kind, "material"), set()).update(moving)
     several = sorted({tuple(sorted(places)) for places in found.values() if len(places) > 1})
-    totals = group_totals(model, [list(places) for places in several], chance=chance)
+    totals = group_totals(model, [list(places) for places in several], chance=chance, points=GROUP_POINTS)
     alone = {driver.variable: driver.total for driver in drivers}
     shares = {places: interval_of(totals[:, number]) for number, places in enumerate(several)}
     groups = []

@@ -10,7 +10,8 @@ import numpy as np
 from tolerance.arrays import FloatArray
 from tolerance.errors import UnfinishedError
 from tolerance.process.changes import Change, ChangedValues
-from tolerance.process.draws import Process, ProcessDraws
+from tolerance.process.draws import ETCH, Process, ProcessDraws
+from tolerance.process.resin import through_resin
 from tolerance.process.values import ProcessValues
 from tolerance.surrogate.coordinates import BoxValues, Coordinates, coordinates_of, small_steps, training_shares
 from tolerance.surrogate.polynomial import Polynomial, Prior, Slopes, fit
@@ -89,19 +90,69 @@ class Predictor:
         change : to mean or spread of a variable.
         """
         result = np.empty(len(germ))
-        variables = len(self.seen.process.variables)
         for start in range(0, len(germ), BLOCK_ROWS):
             rows = slice(start, start + BLOCK_ROWS)
-            whole = np.zeros((len(germ[rows]), variables), order="F")
-            whole[:, self.seen.columns] = germ[rows]
-            draws = ProcessDraws(self.seen.process, whole)
+            draws = ProcessDraws(self.seen.process, self._whole(germ[rows]))
             result[rows] = self.impedance_of(draws if change is None else ChangedValues(draws, change))
         return result
+
+    def impedance_swapped(self, germ: FloatArray, other: FloatArray) -> FloatArray:
+        """Impedances [ohm] (2 + variables, points) at germs of the variables that reach the line, (points, variables):
+        at `germ`, at `other`, and at `germ` with one column after another from `other`.
+
+        What laws come to is worked out once for each of the two.
+        """
+        result = np.empty((2 + len(self.seen.columns), len(germ)))
+        for start in range(0, len(germ), BLOCK_ROWS):
+            rows = slice(start, start + BLOCK_ROWS)
+            pair = [ProcessDraws(self.seen.process, self._whole(part[rows])) for part in (germ, other)]
+            known: dict[tuple[bool, str], FloatArray] = {}
+            for number, column in enumerate((-1, None, *self.seen.columns)):
+                result[number, rows] = self.impedance_of(_Swapped(pair[0], pair[1], column, known))
+        return result
+
+    def _whole(self, germ: FloatArray) -> FloatArray:
+        """Germs of the whole process from those of the variables that reach the line."""
+        whole = np.zeros((len(germ), len(self.seen.process.variables)), order="F")
+        whole[:, self.seen.columns] = germ
+        return whole
 
     def doubt(self, germ: FloatArray) -> FloatArray:
         """Standard error [ohm] of the predicted impedances, (coupons,), as the fit itself sees it."""
         at = self.seen.of(ProcessDraws(self.seen.process, germ))
         return self.polynomial.doubt(at) * np.exp(self.polynomial.evaluate(at))
+
+
+@dataclass(frozen=True, slots=True)
+class _Swapped:
+    """Draws with the variable of one column from other draws (None: all of them, -1: none): see ProcessValues.
+
+    known : what laws came to, by whether it is of the other draws, and the property's name; filled as it is asked.
+    The etch is asked for one width only: that of the line.
+    """
+
+    draws: ProcessDraws
+    other: ProcessDraws
+    column: int | None
+    known: dict[tuple[bool, str], FloatArray]
+
+    def value(self, name: str) -> FloatArray:
+        """Values [SI] of the property `name`."""
+        return through_resin(name, self._own, self.draws.process.resins)
+
+    def etch(self, layer: str, *, width: float) -> FloatArray:
+        """Finished foot width minus drawn width [m] of a line `width` [m] wide."""
+        return self._once(f"{layer}.{ETCH}", lambda draws: draws.etch(layer, width=width))
+
+    def _own(self, name: str) -> FloatArray:
+        return self._once(name, lambda draws: draws.own(name))
+
+    def _once(self, name: str, work: Callable[[ProcessDraws], FloatArray]) -> FloatArray:
+        place = self.draws.process.place(name)
+        swapped = self.column is None or (place is not None and place[0] == self.column)
+        if (swapped, name) not in self.known:
+            self.known[swapped, name] = work(self.other if swapped else self.draws)
+        return self.known[swapped, name]
 
 
 def fit_predictor(

@@ -3,6 +3,7 @@
 
 const Judging = (() => {
   const STUDENT = 2.3646; // 95 %, two-sided, of 8 replicates
+  const UNSEEN = 3; // coupons: 95 % that a share of which none is seen is below 3 of all
   const BINS = 72;
 
   // Every line's coupons against its limits, over the first `blocks` blocks.
@@ -47,7 +48,7 @@ const Judging = (() => {
   }
 
   // A yield of the run, moved by the difference between two tallies of the same coupons.
-  function moved(run, now, given, doubt) {
+  function moved(run, now, given, doubt, still) {
     const each = now.count / now.passes.length;
     const steps = Array.from(now.passes, (passes, replicate) => (passes - given.passes[replicate]) / each);
     const mean = steps.reduce((sum, step) => sum + step, 0) / steps.length;
@@ -55,7 +56,7 @@ const Judging = (() => {
     const half = STUDENT * spread / Math.sqrt(steps.length);
     const value = run.value + mean, down = run.value - run.low, up = run.high - run.value;
     const inside = share => Math.min(Math.max(share, 0), 1);
-    const least = steps.every(step => step === 0) ? 0 : 1 / now.count;
+    const least = still ? 0 : UNSEEN / now.count; // what no coupon shows may be as much as this
     return {value: inside(value), low: inside(value - Math.hypot(down, half, least) - doubt),
       high: inside(value + Math.hypot(up, half, least) + doubt)};
   }
@@ -76,13 +77,13 @@ const Judging = (() => {
       const mean = run.mean + told.mean - base.mean;
       const deviation = base.deviation > 0 ? run.deviation * told.deviation / base.deviation : told.deviation;
       const capability = deviation > 0 ? Math.min(limits[1] - mean, mean - limits[0]) / (3 * deviation) : null;
-      return {yield: moved(run.yield, told, base, doubt), below: share("below"), above: share("above"), mean, deviation,
+      return {yield: moved(run.yield, told, base, doubt, still), below: share("below"), above: share("above"), mean, deviation,
         capability: still && run.cpk !== undefined ? run.cpk : capability, limits, bins: told.bins, doubt,
         impossible: told.impossible, error: views[number].error, failing: told.below + told.above + told.impossible,
         count: told.count, still};
     });
     const doubt = lines.reduce((sum, line) => sum + line.doubt, 0);
-    const together = moved(board.data.together, now.together, given.together, doubt);
+    const together = moved(board.data.together, now.together, given.together, doubt, lines.every(line => line.still));
     const lowest = Math.min(...lines.map(line => line.yield.value));
     together.value = Math.min(together.value, lowest);
     together.low = Math.min(together.low, together.value);
