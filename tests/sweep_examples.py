@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 import subprocess
 import sys
 from pathlib import Path
@@ -51,6 +52,11 @@ def write(folder: Path, text: str, name: str = "vane.toml") -> Path:
     return path
 
 
+def heed_interrupts() -> None:
+    """In a process that is to be interrupted: a job in the background, and so its tests, would else ignore it."""
+    signal.signal(signal.SIGINT, signal.SIG_DFL)
+
+
 def start(*arguments: object, cwd: Path, **more: object) -> subprocess.Popen[str]:
     """The command line in a process (group) of its own."""
     return python("-m", "tolerance", *arguments, cwd=cwd, **more)
@@ -62,4 +68,4 @@ def python(*arguments: object, cwd: Path, **more: object) -> subprocess.Popen[st
     path = os.pathsep.join([str(Path(__file__).parents[1]), os.environ.get("PYTHONPATH", "")])
     return subprocess.Popen(  # type: ignore[call-overload, no-any-return]
         words, cwd=cwd, env={**os.environ, "PYTHONPATH": path}, text=True, stdout=subprocess.PIPE,
-        stderr=subprocess.PIPE, start_new_session=True, **more)
+        stderr=subprocess.PIPE, start_new_session=True, **{"preexec_fn": heed_interrupts, **more})

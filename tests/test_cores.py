@@ -11,6 +11,8 @@ import time
 
 import pytest
 
+from tests.sweep_examples import heed_interrupts
+
 #: Work is tried in a process of its own: copies are made only where no other thread runs, and a test runner has some.
 ROUND_THE_CORES = """
     import os, signal, sys, time
@@ -88,7 +90,7 @@ def test_workers_end_with_the_original(sent: signal.Signals, whole_group: bool) 
             print("interrupted", flush=True)
     """)
     with subprocess.Popen([sys.executable, "-c", code], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
-                          start_new_session=True) as original:
+                          start_new_session=True, preexec_fn=heed_interrupts) as original:
         assert original.stdout is not None
         assert original.stderr is not None
         workers = {int(original.stdout.readline()) for _ in range(2)}

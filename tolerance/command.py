@@ -60,10 +60,11 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
             log.write("failed", message=str(problem))
         status = problem.exit_status
     except BrokenPipeError:  # whoever read our output has stopped reading
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _let_go_of_output()
         status = 0
     except OSError as problem:
         tell_problem(f"could not be finished: {problem}")
+        _let_go_of_output()
         status = UNFINISHED
     except KeyboardInterrupt:
         tell_problem("interrupted")
@@ -72,6 +73,14 @@ def main(arguments: Sequence[str] | None = None) -> NoReturn:
         log.write("ended", status=status)
         log.close()
     sys.exit(status)
+
+
+def _let_go_of_output() -> None:
+    """Where standard output takes nothing more, have what is left go nowhere, or the end would fail once more."""
+    try:
+        sys.stdout.flush()
+    except OSError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _parser() -> argparse.ArgumentParser:

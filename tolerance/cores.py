@@ -124,7 +124,8 @@ def _serve(
 
     not_ours : the ends that belong to the original; closed, so that its death is noticed.
     """
-    signal.signal(signal.SIGINT, signal.SIG_DFL)  # the original tells of an interruption
+    if signal.getsignal(signal.SIGINT) is not signal.SIG_IGN:  # as in a job in the background
+        signal.signal(signal.SIGINT, signal.SIG_DFL)  # the original tells of an interruption
     for end in not_ours:
         end.close()
     with suppress(EOFError, BrokenPipeError, ConnectionResetError), threadpool_limits(limits=1, user_api="blas"):
