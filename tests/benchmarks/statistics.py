@@ -1,7 +1,7 @@
 """What the statistics cost and whether the verdicts are the solver's: `python -m tests.benchmarks.statistics`.
 
 One million predicted coupons of a line from normal draws, inverse distributions included; fit and Sobol' indices of
-eight inputs; and the verdicts of a sample against the field solver on every one of its coupons (65,536; with
+eight inputs; and the verdicts of a sample against the field solver on every one of its coupons (131,072; with
 `--short` 4,096).
 """
 
@@ -45,7 +45,7 @@ def main() -> None:
     if INSIDE not in sys.argv:
         command = [sys.executable, "-m", "tests.benchmarks.statistics", INSIDE, *sys.argv[1:]]
         sys.exit(subprocess.run(command, env={**os.environ, **SINGLE_THREAD}, check=False).returncode)
-    coupons = 4096 if SHORT in sys.argv else 65536
+    coupons = 4096 if SHORT in sys.argv else 131072
     a_million_coupons()
     fit_and_indices()
     print(f"\n{'verdicts against the solver':<44}{'coupons':>9}{'runs':>7}{'near':>6}{'wrong':>7}{'uncertified':>13}")
