@@ -60,11 +60,14 @@ def silent(step: str, done: int, total: int) -> None:
     """Tell nobody."""
 
 
-def _cores() -> int:
+def usable_cores() -> int:
     """Cores that this process may use."""
-    if multiprocessing.parent_process() is not None:
-        return 1
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def _cores() -> int:
+    """Cores that work is spread over: one in a process that is itself somebody's worker."""
+    return usable_cores() if multiprocessing.parent_process() is None else 1
 
 
 def _finished(

@@ -11,7 +11,7 @@ from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
-from tolerance.cores import Progress, silent
+from tolerance.cores import Progress, silent, usable_cores
 from tolerance.errors import InputError, ToleranceError
 from tolerance.scenario.checking import Swept, sweep_of
 from tolerance.sweeps.cluster import by_cluster
@@ -74,7 +74,7 @@ def sweep(
                 if len(keys[key]) == 1:
                     yield Task(key, scenario, of_row, coupons, here, fresh)
 
-    done = by_processes(tasks(), workers or _cores()) if scheduler is None else by_cluster(tasks(), scheduler)
+    done = by_processes(tasks(), workers or usable_cores()) if scheduler is None else by_cluster(tasks(), scheduler)
     for task, outcome in done:
         kept.keep(task.key, outcome)
         for number in keys.pop(task.key):
@@ -129,7 +129,3 @@ def _files(paths: Sequence[str | os.PathLike[str]]) -> list[Path]:
         else:
             raise InputError(f"{path}: there is no such file or folder")
     return list(dict.fromkeys(found))
-
-
-def _cores() -> int:
-    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
